@@ -1,0 +1,1 @@
+//! The daemon: one worker per sink, HTTP/JSON, event stream, metrics, supervision.

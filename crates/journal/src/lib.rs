@@ -1,0 +1,1 @@
+//! The record on disk: durable append, recovery, seal, verify, reading back, export.

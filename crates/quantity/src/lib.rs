@@ -1,0 +1,1 @@
+//! Quantities of the bench as types: integers in micro-units, with parsing and printing.

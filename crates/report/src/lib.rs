@@ -1,0 +1,1 @@
+//! Figures and record to one self-contained HTML page with plots.

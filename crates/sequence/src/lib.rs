@@ -1,0 +1,1 @@
+//! The sequence file: parsing with positions, checks, compiling to a plan, profile import.

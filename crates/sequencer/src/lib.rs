@@ -1,0 +1,1 @@
+//! The run as a pure state machine: plan, readings and time in; orders and findings out.

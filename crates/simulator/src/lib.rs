@@ -1,0 +1,1 @@
+//! Simulated sources, thermal model and the firmware core behind a port, in virtual time.

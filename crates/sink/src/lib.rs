@@ -1,0 +1,1 @@
+//! The physics of one sink: front end, envelope, calibration with uncertainty.

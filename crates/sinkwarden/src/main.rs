@@ -1,0 +1,3 @@
+//! The command line of Sinkwarden: a thin face on the crates and on the daemon's HTTP interface.
+
+fn main() {}

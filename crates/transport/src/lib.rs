@@ -1,0 +1,1 @@
+//! Ports, the acknowledged session over them, clock alignment, reconnecting.

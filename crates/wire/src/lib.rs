@@ -1,0 +1,1 @@
+//! The line protocol: messages, encoding, checksum and an incremental decoder.

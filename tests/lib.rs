@@ -1,0 +1,1 @@
+//! Whole-system tests: a real daemon process, real pseudo-terminals, real files.

@@ -1,0 +1,3 @@
+//! The project's own chores: demo, test, bench, generated documents.
+
+fn main() {}
