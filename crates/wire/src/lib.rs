@@ -1,1 +1,27 @@
-//! The line protocol: messages, encoding, checksum and an incremental decoder.
+//! The line protocol between a bench host and a current sink, version 1.
+//!
+//! The text that binds both sides is `firmware-protocol/PROTOCOL.md`; this crate is its Rust
+//! half: messages as types, encoding, checksum, an incremental decoder. The C half is the
+//! reference firmware. Both run the vectors in `firmware-protocol/vectors`.
+//!
+//! Invariants:
+//! - Nothing here allocates, panics on input, reads a clock or knows a port.
+//! - A line that fails any rule yields a named error and no message: never half a message.
+//! - All values are nominal, as the sink sees them.
+//!
+//! What it deliberately does not do: numbering, retransmission and time are the session's
+//! (`transport`); meaning is the sequencer's.
+#![no_std]
+
+mod message;
+
+pub use message::{
+    Abilities, Cause, Counters, Description, HostLine, LimitKind, Mode, Order, OrderNumber,
+    Readback, ReasonRefused, Reset, SinkLine, SinkState, Step, TemperatureReading, Token,
+};
+
+/// The longest line in bytes, line end included.
+pub const LINE_BYTES_MAX: usize = 96;
+
+/// The version of the protocol this crate speaks.
+pub const PROTOCOL_VERSION: u16 = 1;
