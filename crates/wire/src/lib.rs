@@ -14,11 +14,13 @@
 #![no_std]
 
 mod message;
+mod reading;
 
 pub use message::{
     Abilities, Cause, Counters, Description, HostLine, LimitKind, Mode, Order, OrderNumber,
     Readback, ReasonRefused, Reset, SinkLine, SinkState, Step, TemperatureReading, Token,
 };
+pub use reading::{OrderId, Reading};
 
 /// The longest line in bytes, line end included.
 pub const LINE_BYTES_MAX: usize = 96;
