@@ -1,3 +1,43 @@
-//! The project's own chores: demo, test, bench, generated documents.
+//! The project's own chores, run as `cargo xtask CHORE`.
+//!
+//! - `demo` runs the main job on the simulator, with nothing to configure;
+//! - `test` runs everything the project can check about itself;
+//! - `bench` measures, and prints ratios to references measured in the same run;
+//! - `docs` rewrites the generated documents.
 
-fn main() {}
+mod bench;
+mod command;
+mod demo;
+mod parts;
+mod test;
+
+use anyhow::Result;
+use clap::{Parser, Subcommand};
+
+#[derive(Parser)]
+#[command(name = "cargo xtask", about = "The project's own chores")]
+struct Arguments {
+    #[command(subcommand)]
+    chore: Chore,
+}
+
+#[derive(Subcommand)]
+enum Chore {
+    /// Run the overnight discharge on the simulated bench, from check to figures.
+    Demo,
+    /// Run every check and test; install nothing, name what is missing.
+    Test(test::Options),
+    /// Measure what must be fast, as ratios to references of the same run.
+    Bench,
+    /// Rewrite the documents that are generated from the code.
+    Docs,
+}
+
+fn main() -> Result<()> {
+    match Arguments::parse().chore {
+        Chore::Demo => demo::run(),
+        Chore::Test(options) => test::run_everything(&options),
+        Chore::Bench => bench::measure(),
+        Chore::Docs => test::rewrite_documents(),
+    }
+}
