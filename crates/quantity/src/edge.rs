@@ -4,7 +4,10 @@
 //! infinite or out of the type's range is refused. Out: the nearest `f64`, which
 //! comes back in as the same value below 2^50 base units (a billion units).
 
-use crate::{Charge, Current, Energy, Power, Quantity, Resistance, Span, Temperature, Voltage};
+use crate::{
+    Area, Charge, Current, Energy, Length, Power, Quantity, Ratio, Resistance, Span,
+    SquareLawFactor, Temperature, TemperatureCoefficient, ThermalResistance, Voltage,
+};
 
 /// A float that is no quantity: NaN, infinite, or beyond the type's range.
 #[derive(Copy, Clone, Debug, PartialEq, thiserror::Error)]
@@ -86,4 +89,10 @@ edge! {
     Energy: from_watt_hours, watt_hours, "Wh", "watt-hours", 3.6e9;
     Temperature: from_degrees_celsius, degrees_celsius, "degC", "degrees Celsius", 1e3;
     Span: from_seconds, seconds, "s", "seconds", 1e6;
+    ThermalResistance: from_kelvins_per_watt, kelvins_per_watt, "K/W", "kelvins per watt", 1e6;
+    Ratio: from_fraction, fraction, "(of one)", "a fraction of one", 1e6;
+    TemperatureCoefficient: from_fraction_per_kelvin, fraction_per_kelvin, "1/K", "a fraction per kelvin", 1e9;
+    SquareLawFactor: from_amperes_per_square_volt, amperes_per_square_volt, "A/V2", "amperes per square volt", 1e6;
+    Length: from_metres, metres, "m", "metres", 1e6;
+    Area: from_square_millimetres, square_millimetres, "mm2", "square millimetres", 1e6;
 }

@@ -38,7 +38,10 @@ mod unit;
 pub use edge::NotFinite;
 pub use parse::{ParseError, ParseErrorKind};
 pub use rated::CurrentSpec;
-pub use scalar::{Charge, Current, Energy, Power, Quantity, Resistance, Temperature, Voltage};
+pub use scalar::{
+    Area, Charge, Current, Energy, Length, Power, Quantity, Ratio, Resistance, SquareLawFactor,
+    Temperature, TemperatureCoefficient, ThermalResistance, Voltage,
+};
 pub use text::{Text, Textual};
 pub use time::{HostTime, SinkTime, Span};
 pub use unit::Dimension;

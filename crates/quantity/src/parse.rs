@@ -10,7 +10,10 @@ use core::fmt;
 use core::str::FromStr;
 
 use crate::unit::Dimension;
-use crate::{Charge, Current, Energy, Power, Quantity, Resistance, Span, Temperature, Voltage};
+use crate::{
+    Area, Charge, Current, Energy, Length, Power, Quantity, Ratio, Resistance, Span,
+    SquareLawFactor, Temperature, TemperatureCoefficient, ThermalResistance, Voltage,
+};
 
 /// Why a text is no quantity.
 #[derive(Clone, Debug, PartialEq, Eq)]
@@ -346,3 +349,4 @@ macro_rules! from_str {
 }
 
 from_str!(Current Voltage Power Resistance Charge Energy Temperature Span);
+from_str!(ThermalResistance Ratio TemperatureCoefficient SquareLawFactor Length Area);

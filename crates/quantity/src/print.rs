@@ -7,7 +7,10 @@
 use core::fmt;
 
 use crate::unit::{Dimension, Unit};
-use crate::{Charge, Current, Energy, Power, Quantity, Resistance, Span, Temperature, Voltage};
+use crate::{
+    Area, Charge, Current, Energy, Length, Power, Quantity, Ratio, Resistance, Span,
+    SquareLawFactor, Temperature, TemperatureCoefficient, ThermalResistance, Voltage,
+};
 
 /// The units tried in turn: the first whose rule holds is used.
 struct Choice {
@@ -73,6 +76,12 @@ const TIME: &[Choice] = &[
     choice("ms", 1_000, 1),
     choice("us", 1, 1),
 ];
+const THERMAL_RESISTANCE: &[Choice] = &[choice("K/W", 0, 1)];
+const RATIO: &[Choice] = &[choice("%", 100, 100), choice("ppm", 0, 1)];
+const TEMPERATURE_COEFFICIENT: &[Choice] = &[choice("ppm/K", 0, 1)];
+const SQUARE_LAW_FACTOR: &[Choice] = &[choice("A/V2", 1_000_000, 1), choice("mA/V2", 0, 1)];
+const LENGTH: &[Choice] = &[choice("m", 1_000_000, 1), choice("mm", 0, 1)];
+const AREA: &[Choice] = &[choice("mm2", 0, 1)];
 
 const fn choices(dimension: Dimension) -> &'static [Choice] {
     match dimension {
@@ -84,6 +93,12 @@ const fn choices(dimension: Dimension) -> &'static [Choice] {
         Dimension::Energy => ENERGY,
         Dimension::Temperature => TEMPERATURE,
         Dimension::Time => TIME,
+        Dimension::ThermalResistance => THERMAL_RESISTANCE,
+        Dimension::Ratio => RATIO,
+        Dimension::TemperatureCoefficient => TEMPERATURE_COEFFICIENT,
+        Dimension::SquareLawFactor => SQUARE_LAW_FACTOR,
+        Dimension::Length => LENGTH,
+        Dimension::Area => AREA,
     }
 }
 
@@ -98,6 +113,12 @@ const fn zero_unit(dimension: Dimension) -> &'static str {
         Dimension::Energy => "Wh",
         Dimension::Temperature => "degC",
         Dimension::Time => "s",
+        Dimension::ThermalResistance => "K/W",
+        Dimension::Ratio => "%",
+        Dimension::TemperatureCoefficient => "ppm/K",
+        Dimension::SquareLawFactor => "A/V2",
+        Dimension::Length => "m",
+        Dimension::Area => "mm2",
     }
 }
 
@@ -162,3 +183,4 @@ macro_rules! display {
 }
 
 display!(Current Voltage Power Resistance Charge Energy Temperature Span);
+display!(ThermalResistance Ratio TemperatureCoefficient SquareLawFactor Length Area);

@@ -210,3 +210,38 @@ scalar!(
     from_millidegrees_celsius, millidegrees_celsius,
     thousand: "degrees Celsius" from_whole_degrees_celsius
 );
+scalar!(
+    /// A thermal resistance, in millionths of a kelvin per watt.
+    ThermalResistance, ThermalResistance, "microkelvins per watt",
+    from_microkelvins_per_watt, microkelvins_per_watt,
+    thousand: "millikelvins per watt" from_millikelvins_per_watt
+);
+scalar!(
+    /// A ratio, such as a tolerance, in parts per million (1 % is 10 000 ppm).
+    Ratio, Ratio, "parts per million", from_parts_per_million, parts_per_million,
+    thousand: "thousandths" from_thousandths
+);
+scalar!(
+    /// A relative change per kelvin, such as a resistor's temperature
+    /// coefficient, in parts in 10^9 per kelvin.
+    TemperatureCoefficient, TemperatureCoefficient, "parts in 10^9 per kelvin",
+    from_parts_per_billion_per_kelvin, parts_per_billion_per_kelvin,
+    thousand: "ppm per kelvin" from_ppm_per_kelvin
+);
+scalar!(
+    /// The factor k of a MOSFET's square law I = k/2 (V_gs - V_th)^2, in
+    /// microamperes per square volt.
+    SquareLawFactor, SquareLawFactor, "microamperes per square volt",
+    from_microamperes_per_square_volt, microamperes_per_square_volt,
+    thousand: "milliamperes per square volt" from_milliamperes_per_square_volt
+);
+scalar!(
+    /// A length, such as a lead's, in micrometres.
+    Length, Length, "micrometres", from_micrometres, micrometres,
+    thousand: "millimetres" from_millimetres
+);
+scalar!(
+    /// An area, such as a lead's cross-section, in square micrometres.
+    Area, Area, "square micrometres", from_square_micrometres, square_micrometres,
+    thousand: "thousand square micrometres" from_thousand_square_micrometres
+);

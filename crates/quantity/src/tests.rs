@@ -9,8 +9,9 @@ use proptest::prelude::*;
 
 use crate::unit::Dimension;
 use crate::{
-    Charge, Current, CurrentSpec, Energy, HostTime, ParseError, Power, Quantity, Resistance,
-    SinkTime, Span, Temperature, Text, Textual, Voltage,
+    Area, Charge, Current, CurrentSpec, Energy, HostTime, Length, ParseError, Power, Quantity,
+    Ratio, Resistance, SinkTime, Span, SquareLawFactor, Temperature, TemperatureCoefficient, Text,
+    Textual, ThermalResistance, Voltage,
 };
 
 fn check_error<T: Textual + core::fmt::Debug>(text: &str, expected: &Expect) {
@@ -300,6 +301,30 @@ fn every_printable_unit_is_in_the_table() {
 }
 
 #[test]
+fn the_figures_of_a_data_sheet_keep_their_unit() {
+    assert_eq!(
+        "1.5 K/W".parse::<ThermalResistance>().unwrap().to_string(),
+        "1.5 K/W"
+    );
+    assert_eq!("0.5 %".parse::<Ratio>().unwrap().parts_per_million(), 5_000);
+    assert_eq!("0.5%".parse::<Ratio>().unwrap().to_string(), "0.5 %");
+    assert_eq!("15 ppm".parse::<Ratio>().unwrap().to_string(), "15 ppm");
+    assert_eq!(
+        "50 ppm/K".parse::<TemperatureCoefficient>().unwrap(),
+        TemperatureCoefficient::from_ppm_per_kelvin(50)
+    );
+    assert_eq!(
+        "4 A/V^2".parse::<SquareLawFactor>().unwrap().to_string(),
+        "4 A/V2"
+    );
+    assert_eq!("120 cm".parse::<Length>().unwrap().to_string(), "1.2 m");
+    assert_eq!(
+        "1.5 mm²".parse::<Area>().unwrap().square_micrometres(),
+        1_500_000
+    );
+}
+
+#[test]
 fn no_spelling_belongs_to_two_units() {
     let mut seen = std::collections::BTreeSet::new();
     for dimension in Dimension::ALL {
@@ -502,6 +527,12 @@ proptest! {
         check_round_trip::<Energy>(units);
         check_round_trip::<Temperature>(units);
         check_round_trip::<Span>(units.abs());
+        check_round_trip::<ThermalResistance>(units);
+        check_round_trip::<Ratio>(units);
+        check_round_trip::<TemperatureCoefficient>(units);
+        check_round_trip::<SquareLawFactor>(units);
+        check_round_trip::<Length>(units);
+        check_round_trip::<Area>(units);
         let spec = CurrentSpec::RatedMultiple { parts_per_million: (raw >> shift).unsigned_abs() };
         prop_assert_eq!(spec.to_string().parse::<CurrentSpec>(), Ok(spec));
     }

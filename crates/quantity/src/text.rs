@@ -17,7 +17,8 @@ use serde::{Deserialize, Deserializer, Serialize, Serializer};
 use crate::parse::ParseError;
 use crate::unit::Dimension;
 use crate::{
-    Charge, Current, CurrentSpec, Energy, Power, Quantity, Resistance, Span, Temperature, Voltage,
+    Area, Charge, Current, CurrentSpec, Energy, Length, Power, Quantity, Ratio, Resistance, Span,
+    SquareLawFactor, Temperature, TemperatureCoefficient, ThermalResistance, Voltage,
 };
 
 /// What can be written as a quantity's text.
@@ -66,6 +67,12 @@ textual! {
     Energy: "EnergyText";
     Temperature: "TemperatureText";
     Span: "SpanText";
+    ThermalResistance: "ThermalResistanceText";
+    Ratio: "RatioText";
+    TemperatureCoefficient: "TemperatureCoefficientText";
+    SquareLawFactor: "SquareLawFactorText";
+    Length: "LengthText";
+    Area: "AreaText";
 }
 
 impl Textual for CurrentSpec {
@@ -199,7 +206,7 @@ impl<T: Textual> Visitor<'_> for TextVisitor<T> {
 fn schema<T: Textual>() -> schemars::Schema {
     let pattern = alloc::format!(
         r"^[+-]?[0-9]+(\.[0-9]+)? ?({})$",
-        T::unit_spellings().join("|")
+        T::unit_spellings().join("|").replace('^', r"\^")
     );
     schemars::json_schema!({
         "type": "string",

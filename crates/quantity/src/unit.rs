@@ -27,6 +27,18 @@ pub enum Dimension {
     Temperature,
     /// A length of time, base unit µs.
     Time,
+    /// Thermal resistance, base unit µK/W.
+    ThermalResistance,
+    /// A ratio, base unit one part in a million.
+    Ratio,
+    /// Relative change per kelvin, base unit one part in 10^9 per kelvin.
+    TemperatureCoefficient,
+    /// Square-law factor of a MOSFET, base unit µA/V².
+    SquareLawFactor,
+    /// Length, base unit µm.
+    Length,
+    /// Area, base unit µm².
+    Area,
 }
 
 /// A unit: how it is written and how many base units it is.
@@ -109,9 +121,28 @@ const TIME: &[Unit] = &[
     unit(&["h"], 3_600_000_000),
     unit(&["d"], 86_400_000_000),
 ];
+const THERMAL_RESISTANCE: &[Unit] = &[
+    unit(&["K/W", "degC/W", "°C/W"], 1_000_000),
+    unit(&["mK/W"], 1_000),
+];
+const RATIO: &[Unit] = &[unit(&["%"], 10_000), unit(&["ppm"], 1)];
+const TEMPERATURE_COEFFICIENT: &[Unit] = &[
+    unit(&["ppm/K", "ppm/degC", "ppm/°C"], 1_000),
+    unit(&["%/K", "%/degC", "%/°C"], 10_000_000),
+];
+const SQUARE_LAW_FACTOR: &[Unit] = &[
+    unit(&["A/V2", "A/V^2", "A/V²"], 1_000_000),
+    unit(&["mA/V2", "mA/V^2", "mA/V²"], 1_000),
+];
+const LENGTH: &[Unit] = &[
+    unit(&["m"], 1_000_000),
+    unit(&["cm"], 10_000),
+    unit(&["mm"], 1_000),
+];
+const AREA: &[Unit] = &[unit(&["mm2", "mm^2", "mm²"], 1_000_000)];
 
 impl Dimension {
-    pub(crate) const ALL: [Self; 8] = [
+    pub(crate) const ALL: [Self; 14] = [
         Self::Current,
         Self::Voltage,
         Self::Power,
@@ -120,6 +151,12 @@ impl Dimension {
         Self::Energy,
         Self::Temperature,
         Self::Time,
+        Self::ThermalResistance,
+        Self::Ratio,
+        Self::TemperatureCoefficient,
+        Self::SquareLawFactor,
+        Self::Length,
+        Self::Area,
     ];
 
     /// Its name in a sentence: "current", "length of time"...
@@ -133,6 +170,12 @@ impl Dimension {
             Self::Energy => "energy",
             Self::Temperature => "temperature",
             Self::Time => "length of time",
+            Self::ThermalResistance => "thermal resistance",
+            Self::Ratio => "ratio",
+            Self::TemperatureCoefficient => "temperature coefficient",
+            Self::SquareLawFactor => "square-law factor",
+            Self::Length => "length",
+            Self::Area => "area",
         }
     }
 
@@ -147,6 +190,12 @@ impl Dimension {
             Self::Energy => "an energy",
             Self::Temperature => "a temperature",
             Self::Time => "a length of time",
+            Self::ThermalResistance => "a thermal resistance",
+            Self::Ratio => "a ratio",
+            Self::TemperatureCoefficient => "a temperature coefficient",
+            Self::SquareLawFactor => "a square-law factor",
+            Self::Length => "a length",
+            Self::Area => "an area",
         }
     }
 
@@ -161,6 +210,12 @@ impl Dimension {
             Self::Energy => "uJ",
             Self::Temperature => "thousandth of a degC",
             Self::Time => "us",
+            Self::ThermalResistance => "uK/W",
+            Self::Ratio => "ppm",
+            Self::TemperatureCoefficient => "part in 10^9 per kelvin",
+            Self::SquareLawFactor => "uA/V2",
+            Self::Length => "um",
+            Self::Area => "square micrometre",
         }
     }
 
@@ -175,6 +230,12 @@ impl Dimension {
             Self::Energy => "1.2 Wh",
             Self::Temperature => "40 degC",
             Self::Time => "10 min",
+            Self::ThermalResistance => "1.5 K/W",
+            Self::Ratio => "1 %",
+            Self::TemperatureCoefficient => "50 ppm/K",
+            Self::SquareLawFactor => "4 A/V2",
+            Self::Length => "1.2 m",
+            Self::Area => "1.5 mm2",
         }
     }
 
@@ -188,6 +249,12 @@ impl Dimension {
             Self::Energy => ENERGY,
             Self::Temperature => TEMPERATURE,
             Self::Time => TIME,
+            Self::ThermalResistance => THERMAL_RESISTANCE,
+            Self::Ratio => RATIO,
+            Self::TemperatureCoefficient => TEMPERATURE_COEFFICIENT,
+            Self::SquareLawFactor => SQUARE_LAW_FACTOR,
+            Self::Length => LENGTH,
+            Self::Area => AREA,
         }
     }
 
