@@ -13,17 +13,31 @@
 //! (`transport`); meaning is the sequencer's.
 #![no_std]
 
-mod message;
-mod reading;
+#[cfg(test)]
+extern crate std;
 
+mod decode;
+mod encode;
+mod field;
+mod fields;
+mod line;
+mod message;
+mod parse;
+mod word;
+
+pub use decode::{Decoder, Line, LineError};
+pub use field::Field;
+pub use line::{EncodeError, LineBuffer, checksum};
 pub use message::{
     Abilities, Cause, Counters, Description, HostLine, LimitKind, Mode, Order, OrderNumber,
     Readback, ReasonRefused, Reset, SinkLine, SinkState, Step, TemperatureReading, Token,
 };
-pub use reading::{OrderId, Reading};
 
 /// The longest line in bytes, line end included.
 pub const LINE_BYTES_MAX: usize = 96;
 
 /// The version of the protocol this crate speaks.
 pub const PROTOCOL_VERSION: u16 = 1;
+
+#[cfg(test)]
+mod tests;

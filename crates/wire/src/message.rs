@@ -11,17 +11,49 @@ pub type Token = u16;
 #[serde(transparent)]
 pub struct OrderNumber(pub u16);
 
+impl OrderNumber {
+    /// No order: before the first step, and in the answer to a line without a readable number.
+    pub const NONE: Self = Self(0);
+    /// The first order of every session.
+    pub const FIRST: Self = Self(1);
+
+    /// The number that follows: 65535 is followed by 1, and no order by the first.
+    #[must_use]
+    pub const fn next(self) -> Self {
+        match self.0.checked_add(1) {
+            Some(number) => Self(number),
+            None => Self::FIRST,
+        }
+    }
+}
+
 /// A line from the host.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum HostLine {
     /// Begins a session; answered by the description.
-    Hello { token: Token, session: u32 },
+    Hello {
+        /// Echoed in each line of the description.
+        token: Token,
+        /// The host's number for the session, never 0.
+        session: u32,
+    },
     /// Asks for the sink's time.
-    Clock { token: Token },
+    Clock {
+        /// Echoed in the answer.
+        token: Token,
+    },
     /// Turns the current off, whatever else is going on.
-    Off { token: Token },
+    Off {
+        /// Echoed in the answer.
+        token: Token,
+    },
     /// A numbered order, executed at most once.
-    Order { number: OrderNumber, order: Order },
+    Order {
+        /// Its place in the session.
+        number: OrderNumber,
+        /// What is ordered.
+        order: Order,
+    },
 }
 
 /// What a host can order.
@@ -29,21 +61,45 @@ pub enum HostLine {
 #[serde(rename_all = "snake_case")]
 pub enum Order {
     /// Sets one of the sink's own limits.
-    Limit { limit: LimitKind, persistence: Span },
+    Limit {
+        /// Which one, with its value.
+        limit: LimitKind,
+        /// How long every sample must cross it; zero: one sample is enough. At most 60 s.
+        persistence: Span,
+    },
     /// Longest silence of the host before the sink turns itself off.
-    Deadman { interval: Span },
+    Deadman {
+        /// 100 ms to 10 s.
+        interval: Span,
+    },
     /// Interval between readbacks; zero stops them.
-    Readback { interval: Span },
+    Readback {
+        /// At most an hour, and not below the fastest the sink states.
+        interval: Span,
+    },
     /// Queues a step.
     Step(Step),
     /// Drops queued steps starting at `from` or later; `SinkTime::ZERO` drops all.
-    Clear { from: SinkTime },
+    Clear {
+        /// The earliest start that is dropped.
+        from: SinkTime,
+    },
     /// Clears a latch, if its cause is gone.
     Reset,
     /// Opens or closes the isolator relay.
-    Isolator { closed: bool },
+    Isolator {
+        /// True closes it.
+        closed: bool,
+    },
     /// Captures samples around an edge.
-    Burst { at: SinkTime, before: u16, after: u16 },
+    Burst {
+        /// Sink time of the edge.
+        at: SinkTime,
+        /// Samples kept from before it.
+        before: u16,
+        /// Samples taken from it on.
+        after: u16,
+    },
 }
 
 /// A step in the sink's queue.
@@ -55,7 +111,7 @@ pub struct Step {
     pub start: SinkTime,
     /// Time over which the setpoint moves in a straight line to the target.
     pub ramp: Span,
-    /// How long after its start it may last if nothing follows.
+    /// How long after its start it may last if nothing follows; never zero.
     pub hold: Span,
 }
 
@@ -93,39 +149,156 @@ pub enum LimitKind {
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum SinkLine {
     /// The order was executed.
-    Ok { number: OrderNumber },
+    Ok {
+        /// The order's number.
+        number: OrderNumber,
+    },
     /// Answer to `off`.
-    OffDone { token: Token },
+    OffDone {
+        /// The ask's token.
+        token: Token,
+    },
     /// The order was not executed.
-    No { number: OrderNumber, reason: ReasonRefused },
+    No {
+        /// The order's number; 0 answers a line that bore no readable order number.
+        number: OrderNumber,
+        /// Why not.
+        reason: ReasonRefused,
+    },
     /// The order was not the expected one.
-    NoGap { number: OrderNumber, expected: OrderNumber },
+    NoGap {
+        /// The order's number.
+        number: OrderNumber,
+        /// The number the sink expects next.
+        expected: OrderNumber,
+    },
     /// Answer to `clock`.
-    Clock { token: Token, time: SinkTime },
+    Clock {
+        /// The ask's token.
+        token: Token,
+        /// Sink time at which the ask was handled.
+        time: SinkTime,
+    },
     /// First line of a readback pair.
-    Counters { readback: u16, counters: Counters },
+    Counters {
+        /// Counts readbacks, 1 to 65535, then 1 again.
+        readback: u16,
+        /// What it carries.
+        counters: Counters,
+    },
     /// Second line of a readback pair; time in its low 32 bits.
-    Readback { readback: u16, time_low: u32, values: Readback },
+    Readback {
+        /// Counts readbacks, the same as in the pair's first line.
+        readback: u16,
+        /// Low 32 bits of the sink time in the pair's first line, in microseconds.
+        time_low: u32,
+        /// What it carries.
+        values: Readback,
+    },
     /// A step began.
-    Edge { event: u16, time: SinkTime, step: OrderNumber },
+    Edge {
+        /// Counts events, 1 to 65535, then 1 again.
+        event: u16,
+        /// Sink time of the edge.
+        time: SinkTime,
+        /// Number of the order that queued the step.
+        step: OrderNumber,
+    },
     /// The last step's hold ran out: off.
-    End { event: u16, time: SinkTime },
+    End {
+        /// Counts events.
+        event: u16,
+        /// Sink time at which the current went off.
+        time: SinkTime,
+    },
     /// The sink turned itself off and latched.
-    Trip { event: u16, time: SinkTime, cause: Cause, value: i64 },
+    Trip {
+        /// Counts events.
+        event: u16,
+        /// Sink time at which the current went off.
+        time: SinkTime,
+        /// Why.
+        cause: Cause,
+        /// What was measured, in the unit of the cause.
+        value: i64,
+    },
     /// Up to four burst samples from `index` on.
-    Burst { burst: u16, index: u16, len: u8, samples: [(Current, Voltage); 4] },
+    Burst {
+        /// Counts captures, 1 to 65535, then 1 again.
+        burst: u16,
+        /// Index of the first of these samples within the capture, from 0.
+        index: u16,
+        /// How many of `samples` are meant, 1 to 4; the others are zero.
+        len: u8,
+        /// Current and voltage of each sample.
+        samples: [(Current, Voltage); 4],
+    },
     /// All samples of a capture have been sent.
-    BurstDone { burst: u16 },
+    BurstDone {
+        /// Counts captures.
+        burst: u16,
+    },
     /// Description, first line.
-    About { token: Token, protocol: u16, firmware: u32, serial: u32, reset: Reset },
+    About {
+        /// The ask's token.
+        token: Token,
+        /// Protocol version the sink speaks.
+        protocol: u16,
+        /// Firmware version: major * 10000 + minor * 100 + patch.
+        firmware: u32,
+        /// Serial number.
+        serial: u32,
+        /// Why the sink last started.
+        reset: Reset,
+    },
     /// Description, second line.
-    Front { token: Token, tick: Span, queue: u16, fastest: Span, burst: u16, abilities: Abilities },
+    Front {
+        /// The ask's token.
+        token: Token,
+        /// Time between samples.
+        tick: Span,
+        /// Steps the queue holds.
+        queue: u16,
+        /// Shortest readback interval.
+        fastest: Span,
+        /// Samples a burst can hold; 0: none.
+        burst: u16,
+        /// What it can do beyond constant current.
+        abilities: Abilities,
+    },
     /// Description, third line.
-    Drive { token: Token, bits: u8, full_scale: Voltage, span: u8, sense: Resistance },
+    Drive {
+        /// The ask's token.
+        token: Token,
+        /// Bits of the converter that sets.
+        bits: u8,
+        /// Its full scale.
+        full_scale: Voltage,
+        /// 0: a code is full scale / 2^bits; 1: full scale / (2^bits - 1).
+        span: u8,
+        /// Sense resistor.
+        sense: Resistance,
+    },
     /// Description, fourth line.
-    Sense { token: Token, bits: u8, current: Current, voltage: Voltage },
+    Sense {
+        /// The ask's token.
+        token: Token,
+        /// Bits of the converter that reads.
+        bits: u8,
+        /// Current at its full scale.
+        current: Current,
+        /// Voltage at its full scale.
+        voltage: Voltage,
+    },
     /// Description, last line: the session has begun.
-    Ready { token: Token, session: u32, time: SinkTime },
+    Ready {
+        /// The ask's token.
+        token: Token,
+        /// The session that has begun.
+        session: u32,
+        /// Sink time.
+        time: SinkTime,
+    },
 }
 
 /// The counters of a readback pair.
@@ -260,7 +433,10 @@ pub enum Reset {
 
 /// What a sink can do beyond constant current.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default, Serialize, Deserialize)]
-#[expect(clippy::struct_excessive_bools, reason = "four independent abilities, each yes or no")]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "four independent abilities, each yes or no"
+)]
 pub struct Abilities {
     /// Constant power steps.
     pub power: bool,
