@@ -6,5 +6,11 @@ use crate::command::{cargo, run};
 
 /// Builds the benchmarks as a user's build would be, and runs them.
 pub(crate) fn measure() -> Result<()> {
-    run(&mut cargo(&["run", "--release", "--quiet", "--package", "bench"]))
+    run(&mut cargo(&[
+        "run",
+        "--release",
+        "--quiet",
+        "--package",
+        "bench",
+    ]))
 }

@@ -35,7 +35,7 @@ enum Chore {
 
 fn main() -> Result<()> {
     match Arguments::parse().chore {
-        Chore::Demo => demo::run(),
+        Chore::Demo => demo::run_through(),
         Chore::Test(options) => test::run_everything(&options),
         Chore::Bench => bench::measure(),
         Chore::Docs => test::rewrite_documents(),

@@ -49,7 +49,10 @@ impl Tally {
     }
 }
 
-#[expect(clippy::print_stdout, reason = "a chore talks to the person who started it")]
+#[expect(
+    clippy::print_stdout,
+    reason = "a chore talks to the person who started it"
+)]
 /// Runs everything and prints the closing line.
 pub(crate) fn run_everything(options: &Options) -> Result<()> {
     let mut tally = Tally::default();
