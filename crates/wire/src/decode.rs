@@ -207,7 +207,36 @@ impl<T: Line> Decoder<T> {
     ///
     /// Run the iterator to its end, or the rest of the bytes is lost.
     pub fn feed<'a>(&'a mut self, bytes: &'a [u8]) -> impl Iterator<Item = Result<T, LineError>> {
-        bytes.iter().filter_map(|byte| self.push(*byte))
+        let mut rest = bytes;
+        core::iter::from_fn(move || {
+            while let Some(end) = rest.iter().position(|byte| *byte == b'\n') {
+                let (line, after) = rest.split_at_checked(end)?;
+                rest = after.get(1..)?;
+                if let Some(result) = self.take_line(line) {
+                    return Some(result);
+                }
+            }
+            for byte in core::mem::take(&mut rest) {
+                self.push(*byte);
+            }
+            None
+        })
+    }
+
+    /// Takes the rest of a line up to its end; a whole sound one is read where it lies.
+    fn take_line(&mut self, line: &[u8]) -> Option<Result<T, LineError>> {
+        let begun = self.len > 0 || self.fault.is_some() || self.returned;
+        // Without a branch, so that many bytes are judged at once.
+        let sound = line
+            .iter()
+            .fold(true, |sound, byte| sound & printable(*byte));
+        if !begun && sound && (1..=CONTENT_BYTES_MAX).contains(&line.len()) {
+            return Some(decode_printable(line));
+        }
+        for byte in line {
+            self.push(*byte);
+        }
+        self.finish()
     }
 
     /// Forgets the line under way, as after reopening a port.

@@ -46,7 +46,14 @@ impl<'a> Fields<'a> {
 
     /// The next field as an integer within its range.
     pub(crate) fn integer(&mut self, field: Field) -> Result<i64, LineError> {
-        in_range(field, self.text()?)
+        let rest = self.rest.ok_or(LineError::Fields)?;
+        let (value, rest) = leading_integer(rest).ok_or(LineError::Number { field: field.name })?;
+        self.rest = rest;
+        if field.holds(value) {
+            Ok(value)
+        } else {
+            Err(LineError::Range { field, value })
+        }
     }
 
     /// The next field as an integer of a narrower type, which its range must fit.
@@ -92,36 +99,42 @@ impl<'a> Fields<'a> {
 
 /// Reads an integer and holds it against the field's range.
 pub(crate) fn in_range(field: Field, text: &[u8]) -> Result<i64, LineError> {
-    let value = integer(text).ok_or(LineError::Number { field: field.name })?;
-    if field.holds(value) {
-        Ok(value)
-    } else {
-        Err(LineError::Range { field, value })
-    }
+    Fields::new(text).integer(field)
 }
 
-/// Reads a decimal integer of at most 64 signed bits, written in the one way there is.
-fn integer(text: &[u8]) -> Option<i64> {
+/// Reads a decimal integer of at most 64 signed bits, written in the one way there is, up to a
+/// space or the end; also gives what follows the space.
+fn leading_integer(text: &[u8]) -> Option<(i64, Option<&[u8]>)> {
     let (negative, digits) = match text.split_first() {
         Some((b'-', digits)) => (true, digits),
         _ => (false, text),
     };
-    let zero_leads = digits.first() == Some(&b'0') && (negative || digits.len() > 1);
-    // Nineteen digits cannot overflow 64 unsigned bits.
-    if digits.is_empty() || digits.len() > 19 || zero_leads {
+    let mut magnitude = 0_u64;
+    let mut len = 0;
+    let mut ended = false;
+    for byte in digits {
+        let digit = byte.wrapping_sub(b'0');
+        if digit > 9 {
+            ended = true;
+            break;
+        }
+        // Nineteen digits cannot overflow 64 unsigned bits; more are refused below.
+        magnitude = magnitude.wrapping_mul(10).wrapping_add(u64::from(digit));
+        len += 1;
+    }
+    let rest = match (ended, digits.get(len..)) {
+        (false, _) => None,
+        (true, Some([b' ', rest @ ..])) => Some(rest),
+        (true, _) => return None,
+    };
+    let zero_leads = digits.first() == Some(&b'0') && (negative || len > 1);
+    if len == 0 || len > 19 || zero_leads {
         return None;
     }
-    let mut magnitude = 0_u64;
-    for digit in digits {
-        let value = digit.wrapping_sub(b'0');
-        if value > 9 {
-            return None;
-        }
-        magnitude = magnitude * 10 + u64::from(value);
-    }
-    if negative {
-        0_i64.checked_sub_unsigned(magnitude)
+    let value = if negative {
+        0_i64.checked_sub_unsigned(magnitude)?
     } else {
-        i64::try_from(magnitude).ok()
-    }
+        i64::try_from(magnitude).ok()?
+    };
+    Some((value, rest))
 }

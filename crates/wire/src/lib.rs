@@ -17,15 +17,18 @@
 extern crate std;
 
 mod decode;
+mod description;
 mod encode;
 mod field;
 mod fields;
+mod human;
 mod line;
 mod message;
 mod parse;
 mod word;
 
 pub use decode::{Decoder, Line, LineError};
+pub use description::{DescriptionBuilder, DescriptionError};
 pub use field::Field;
 pub use line::{EncodeError, LineBuffer, checksum};
 pub use message::{

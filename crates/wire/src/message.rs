@@ -484,3 +484,30 @@ pub struct Description {
     /// Voltage at its full scale.
     pub sense_voltage: Voltage,
 }
+
+impl Description {
+    /// What a description is gathered into: no sink at all.
+    pub(crate) const BLANK: Self = Self {
+        protocol: 0,
+        firmware: 0,
+        serial: 0,
+        reset: Reset::Unknown,
+        tick: Span::ZERO,
+        queue: 0,
+        fastest_readback: Span::ZERO,
+        burst: 0,
+        abilities: Abilities {
+            power: false,
+            resistance: false,
+            burst: false,
+            isolator: false,
+        },
+        drive_bits: 0,
+        drive_full_scale: Voltage::ZERO,
+        drive_spans_full_scale: false,
+        sense_resistor: Resistance::ZERO,
+        sense_bits: 0,
+        sense_current: Current::ZERO,
+        sense_voltage: Voltage::ZERO,
+    };
+}

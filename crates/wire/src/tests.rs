@@ -3,4 +3,7 @@
 mod any;
 mod checksum;
 mod decoder;
+mod description;
+mod limits;
 mod round_trip;
+mod words;

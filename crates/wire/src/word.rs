@@ -208,3 +208,15 @@ impl fmt::Display for Reset {
         f.pad(self.word())
     }
 }
+
+/// The word where there is one; the number is what travels in a readback.
+impl fmt::Display for SinkState {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Self::Off => f.pad("off"),
+            Self::On => f.pad("on"),
+            Self::Saturated => f.pad("out of headroom"),
+            Self::Latched(cause) => write!(f, "latched: {cause}"),
+        }
+    }
+}

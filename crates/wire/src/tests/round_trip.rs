@@ -143,4 +143,31 @@ proptest! {
         let results = decode_all::<SinkLine>(&bytes);
         prop_assert_eq!(results.last(), Some(&Ok(line)));
     }
+
+    #[test]
+    fn it_does_not_matter_in_which_pieces_bytes_arrive(
+        lines in proptest::collection::vec(sink_line(), 1..4),
+        noise in "(\r|\n|[ -~]{0,120}|\x01)",
+        cuts in proptest::collection::vec(1..60_usize, 1..20),
+    ) {
+        let mut bytes: Vec<u8> = lines.iter().flat_map(sink_bytes).collect();
+        bytes.extend(noise.bytes());
+        bytes.extend(lines.iter().flat_map(sink_bytes));
+        let whole = decode_all::<SinkLine>(&bytes);
+        let mut one_by_one = Decoder::<SinkLine>::new();
+        let single: Vec<_> = bytes.iter().filter_map(|byte| one_by_one.push(*byte)).collect();
+        prop_assert_eq!(&single, &whole);
+        let mut in_pieces = Decoder::<SinkLine>::new();
+        let mut pieces = Vec::new();
+        let mut rest = &bytes[..];
+        for cut in cuts.iter().cycle() {
+            let (piece, after) = rest.split_at(rest.len().min(*cut));
+            pieces.extend(in_pieces.feed(piece));
+            rest = after;
+            if rest.is_empty() {
+                break;
+            }
+        }
+        prop_assert_eq!(&pieces, &whole);
+    }
 }
