@@ -25,6 +25,7 @@ mod human;
 mod line;
 mod message;
 mod parse;
+mod reading;
 mod word;
 
 pub use decode::{Decoder, Line, LineError};
@@ -35,6 +36,7 @@ pub use message::{
     Abilities, Cause, Counters, Description, HostLine, LimitKind, Mode, Order, OrderNumber,
     Readback, ReasonRefused, Reset, SinkLine, SinkState, Step, TemperatureReading, Token,
 };
+pub use reading::{OrderId, Reading};
 
 /// The longest line in bytes, line end included.
 pub const LINE_BYTES_MAX: usize = 96;
