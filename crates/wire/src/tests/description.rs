@@ -83,15 +83,18 @@ fn take(builder: &mut DescriptionBuilder, lines: &[SinkLine]) -> Vec<Taken> {
     lines.iter().map(|line| builder.push(line)).collect()
 }
 
-fn complete() -> Taken {
-    Ok(Some((left(), SinkTime::from_micros(1_234_567))))
+fn complete() -> (Description, SinkTime) {
+    (left(), SinkTime::from_micros(1_234_567))
 }
 
 #[test]
 fn five_lines_in_order_make_a_description() {
     let mut builder = DescriptionBuilder::new(TOKEN, SESSION);
     let taken = take(&mut builder, &lines(TOKEN, SESSION));
-    assert_eq!(taken, [Ok(None), Ok(None), Ok(None), Ok(None), complete()]);
+    assert_eq!(
+        taken,
+        [Ok(None), Ok(None), Ok(None), Ok(None), Ok(Some(complete()))]
+    );
 }
 
 #[test]
@@ -105,7 +108,7 @@ fn lines_of_other_kinds_may_stand_between() {
         assert_eq!(builder.push(&between), Ok(None));
         last = builder.push(&line);
     }
-    assert_eq!(last, complete());
+    assert_eq!(last, Ok(Some(complete())));
 }
 
 #[test]
@@ -118,7 +121,7 @@ fn a_missing_line_is_found_and_a_fresh_answer_is_taken() {
         let taken = take(&mut builder, &some);
         assert!(taken.iter().any(Result::is_err));
         assert!(taken.iter().all(|taken| !matches!(taken, Ok(Some(_)))));
-        assert_eq!(take(&mut builder, &all).last(), Some(&complete()));
+        assert_eq!(take(&mut builder, &all).last(), Some(&Ok(Some(complete()))));
     }
 }
 
@@ -130,7 +133,7 @@ fn a_repeated_answer_begins_anew() {
         take(&mut builder, &all[..3]),
         [Ok(None), Ok(None), Ok(None)]
     );
-    assert_eq!(take(&mut builder, &all).last(), Some(&complete()));
+    assert_eq!(take(&mut builder, &all).last(), Some(&Ok(Some(complete()))));
 }
 
 #[test]

@@ -1,6 +1,5 @@
 //! Words, numbers that stand for states, order numbers, and orders as people read them.
 
-use std::format;
 use std::string::{String, ToString};
 use std::vec::Vec;
 
@@ -124,8 +123,8 @@ fn orders_read_as_a_person_would_say_them() {
             after: 200,
         },
     ];
-    let text: String = orders.iter().map(|order| format!("{order}\n")).collect();
-    expect![[r#"
+    let lines: Vec<String> = orders.iter().map(ToString::to_string).collect();
+    expect![[r"
         step: 640 mA from 12.000 s, hold 5 h
         step: 420 mA at once, ramp 120 ms, hold 500 ms
         step: rest from 1.999 s, hold 1 min
@@ -146,8 +145,8 @@ fn orders_read_as_a_person_would_say_them() {
         isolator: close
         isolator: open
         burst: 50 samples before 12.000 s, 200 from then on
-    "#]]
-    .assert_eq(&text);
+    "]]
+    .assert_eq(&(lines.join("\n") + "\n"));
 }
 
 #[test]
