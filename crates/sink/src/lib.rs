@@ -14,4 +14,5 @@
 //! What this crate deliberately does not do: it does not drive a sink, and it
 //! judges no run; interlocks are decided by the sequencer and by the sink.
 
+pub mod bench;
 pub mod correction;
