@@ -32,7 +32,9 @@ pub enum LineError {
         byte: u8,
     },
     /// No checksum at the end.
-    #[error("line does not end in a space and four upper-case hexadecimal digits")]
+    #[error(
+        "line does not end in a space and four upper-case hexadecimal digits, after at least a word"
+    )]
     ChecksumMissing,
     /// The checksum does not fit the line.
     #[error("line has checksum {found:04X}, its bytes give {expected:04X}")]
@@ -149,7 +151,8 @@ fn decode_printable<T: Line>(line: &[u8]) -> Result<T, LineError> {
         .checked_sub(CHECKSUM_BYTES)
         .and_then(|at| line.split_at_checked(at));
     let (body, found) = match split {
-        Some((body, [b' ', digits @ ..])) => (body, hex_value(digits)),
+        // A checksum of nothing is no line.
+        Some((body, [b' ', digits @ ..])) if !body.is_empty() => (body, hex_value(digits)),
         _ => (line, None),
     };
     let found = found.ok_or(LineError::ChecksumMissing)?;

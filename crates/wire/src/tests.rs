@@ -6,4 +6,5 @@ mod decoder;
 mod description;
 mod limits;
 mod round_trip;
+mod vectors;
 mod words;
