@@ -249,6 +249,7 @@ void sink_parse(const char *text, size_t length, struct sink_host_line *line)
     line->kind = SINK_KIND_UNKNOWN;
     line->fault = SINK_NO_UNKNOWN;
     if (count == 0) {
+        line->fault = SINK_NO_RANGE;
         return;
     }
     for (i = 0; i < sizeof KINDS / sizeof KINDS[0]; i++) {

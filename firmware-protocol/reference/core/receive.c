@@ -46,6 +46,11 @@ static void take_line(struct sink_core *core, uint64_t now_us)
     struct sink_host_line line;
     size_t text;
 
+    /* An empty line is no line: a host sends one to end whatever noise stood
+     * in the way before it. */
+    if (core->line_length == 0 && !core->line_overlong) {
+        return;
+    }
     text = core->line_overlong ? 0 : checked_length(core->line, core->line_length);
     core->line_length = 0;
     core->line_overlong = false;

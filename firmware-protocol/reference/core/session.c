@@ -248,7 +248,7 @@ static void take_order(struct sink_core *core, const struct sink_host_line *line
     uint8_t age;
 
     if (line->number == 0) {
-        put_answer(core, 0, line->kind == SINK_KIND_UNKNOWN ? SINK_NO_UNKNOWN : SINK_NO_RANGE);
+        put_answer(core, 0, line->fault);
         return;
     }
     if (core->session == 0) {
