@@ -222,32 +222,32 @@ fn the_longest_lines_fit() {
     longest(host_line.encode(&mut buffer), &buffer, 86);
 }
 
-/// A night of twelve hours at a readback pair a tenth of a second is 864,000 lines. The bound is
-/// loose, since a test may share its processor; the figure is printed.
+/// A night of twelve hours at a readback pair a tenth of a second is 864,000 lines, to be decoded
+/// well within half a second. The fastest of many batches counts, since a test may share its
+/// processor, and the bound leaves room for slower ones; the figure is printed.
 #[test]
 #[expect(clippy::disallowed_methods, reason = "speed is what is tested")]
 fn a_nights_lines_are_decoded_within_seconds() {
-    const PAIRS: u32 = 432_000;
+    const BATCHES: u32 = 40;
+    const PAIRS: u32 = 1_000;
     let mut pair = std::vec::Vec::new();
     let mut buffer = LineBuffer::new();
     for line in [widest_counters(), widest_readback()] {
         line.encode(&mut buffer).unwrap();
         pair.extend_from_slice(buffer.as_bytes());
     }
+    let bytes = pair.repeat(PAIRS as usize);
     let mut decoder = Decoder::<SinkLine>::new();
-    let begun = std::time::Instant::now();
-    let mut messages = 0_u32;
-    for _ in 0..PAIRS {
-        for result in decoder.feed(std::hint::black_box(&pair)) {
-            assert!(std::hint::black_box(result).is_ok());
-            messages += 1;
-        }
+    let mut fastest = core::time::Duration::MAX;
+    for _ in 0..BATCHES {
+        let begun = std::time::Instant::now();
+        let messages = decoder
+            .feed(&bytes)
+            .filter(|line| std::hint::black_box(line).is_ok());
+        assert_eq!(messages.count(), 2 * PAIRS as usize);
+        fastest = fastest.min(begun.elapsed());
     }
-    let elapsed = begun.elapsed();
-    println!(
-        "{messages} lines in {elapsed:?}, {:?} each",
-        elapsed / messages
-    );
-    assert_eq!(messages, 2 * PAIRS);
-    assert!(elapsed.as_secs() < 5, "{elapsed:?}");
+    let each = fastest / (2 * PAIRS);
+    println!("{each:?} a line");
+    assert!(each.as_nanos() < 2_000, "{each:?} a line");
 }
