@@ -1,7 +1,7 @@
 //! Orders as people read them, in logs and on the command line.
 //!
-//! What it deliberately does not do: nothing reads this text back, so it may round nothing and
-//! leave out only what is plain (no ramp, no persistence).
+//! Invariant: quantities are exact; sink times are cut to milliseconds, and what is plain (no
+//! ramp, no persistence) is left out. Nothing reads this text back.
 
 use core::fmt;
 
