@@ -208,7 +208,8 @@ struct sink_core {
     /* Line being received. */
     char line[SINK_LINE_BYTES];
     uint8_t line_length;
-    bool line_overlong;
+    bool line_damaged;  /* too long, or a byte that is not printable */
+    bool line_returned; /* a carriage return came last */
     struct sink_transmit transmit;
 
     struct sink_limit limits[SINK_LIMITS];

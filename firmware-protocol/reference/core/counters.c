@@ -121,6 +121,17 @@ static uint8_t state(const struct sink_core *core)
     return core->saturated ? 2 : 1;
 }
 
+/* Within the range of its field. */
+static int32_t reported_temperature(const struct sink_core *core)
+{
+    int32_t value = core->sample.temperature_mc;
+
+    if (value < SINK_TEMPERATURE_LEAST) {
+        return SINK_TEMPERATURE_LEAST;
+    }
+    return value > SINK_TEMPERATURE_MOST ? SINK_TEMPERATURE_MOST : value;
+}
+
 static void write_readback(const struct sink_core *core, uint64_t now_us, struct sink_text *text)
 {
     const struct sink_window *window = &core->window;
@@ -135,7 +146,7 @@ static void write_readback(const struct sink_core *core, uint64_t now_us, struct
     sink_text_unsigned(text, window->voltage_min);
     sink_text_unsigned(text, window->voltage_max);
     if (core->sample.sensor == SINK_SENSOR_GOOD) {
-        sink_text_signed(text, core->sample.temperature_mc);
+        sink_text_signed(text, reported_temperature(core));
     } else {
         sink_text_word(text, core->sample.sensor == SINK_SENSOR_OPEN ? "open" : "short");
     }

@@ -8,6 +8,10 @@
 
 #define SINK_NEVER UINT64_MAX
 
+/* Thousandths of a degree that a line can carry (section 8). */
+#define SINK_TEMPERATURE_LEAST (-99999)
+#define SINK_TEMPERATURE_MOST 999999
+
 /* Nominal value of a code: (code * full scale + half) / 2^bits, rounded down.
  * 2^16 * 2^30 fits 64 bits, and the result 32. */
 static inline uint32_t sink_nominal(uint16_t code, uint32_t full_scale, uint8_t bits)

@@ -8,13 +8,10 @@
 
 #define FIELDS_MAX 8u
 
-/* The ranges of the protocol's fields (section 1: a field out of its range is
- * refused). They are what keeps every product in the core within 64 bits. */
+/* The ranges of the protocol's fields (section 8). They are what keeps every product in the core within 64 bits. */
 #define VALUE_MOST 999999999
 #define VOLTAGE_LEAST (-99999999)
 #define RESISTANCE_MOST 2147483647u
-#define TEMPERATURE_LEAST (-99999)
-#define TEMPERATURE_MOST 999999
 #define PERSIST_MOST 60000000u
 #define READBACK_MOST 3600000000u
 #define SPAN_MOST UINT64_C(2678400000000) /* 31 days */
@@ -148,7 +145,7 @@ static const struct limit_row LIMITS[SINK_LIMITS] = {
     {"power", 0, VALUE_MOST},
     {"voltage-high", VOLTAGE_LEAST, VALUE_MOST},
     {"voltage-low", VOLTAGE_LEAST, VALUE_MOST},
-    {"temperature", TEMPERATURE_LEAST, TEMPERATURE_MOST},
+    {"temperature", SINK_TEMPERATURE_LEAST, SINK_TEMPERATURE_MOST},
     {"excess", 0, VALUE_MOST},
 };
 

@@ -46,14 +46,7 @@ static void take_line(struct sink_core *core, uint64_t now_us)
     struct sink_host_line line;
     size_t text;
 
-    /* An empty line is no line: a host sends one to end whatever noise stood
-     * in the way before it. */
-    if (core->line_length == 0 && !core->line_overlong) {
-        return;
-    }
-    text = core->line_overlong ? 0 : checked_length(core->line, core->line_length);
-    core->line_length = 0;
-    core->line_overlong = false;
+    text = core->line_damaged ? 0 : checked_length(core->line, core->line_length);
     if (text == 0) {
         count_damaged(core);
         return;
@@ -70,23 +63,38 @@ static void take_line(struct sink_core *core, uint64_t now_us)
     sink_session_line(core, &line, now_us);
 }
 
+static void gather(struct sink_core *core, uint8_t byte)
+{
+    /* A return that no line end followed was a byte like any other. */
+    if (core->line_returned || byte < 0x20 || byte > 0x7E ||
+        core->line_length == SINK_LINE_BYTES - 1u) {
+        core->line_damaged = true;
+    } else {
+        core->line[core->line_length] = (char)byte;
+        core->line_length++;
+    }
+    core->line_returned = false;
+}
+
 void sink_core_receive(struct sink_core *core, const uint8_t *bytes, size_t length,
                        uint64_t now_us)
 {
     size_t i;
 
     for (i = 0; i < length; i++) {
-        char byte = (char)bytes[i];
-
-        if (byte == '\n') {
-            take_line(core, now_us);
-        } else if (byte == '\r') {
-            continue;
-        } else if (core->line_length < SINK_LINE_BYTES - 1u) {
-            core->line[core->line_length] = byte;
-            core->line_length++;
+        if (bytes[i] == '\r' && !core->line_returned) {
+            core->line_returned = true;
+        } else if (bytes[i] != '\n') {
+            gather(core, bytes[i]);
         } else {
-            core->line_overlong = true;
+            /* An empty line is no line: a host sends one to end whatever noise
+             * stood in the way before it. */
+            if (core->line_length != 0 || core->line_damaged) {
+                take_line(core, now_us);
+            }
+            core->line_length = 0;
+            core->line_damaged = false;
+            core->line_returned = false;
         }
     }
 }

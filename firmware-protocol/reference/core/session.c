@@ -280,7 +280,7 @@ void sink_session_line(struct sink_core *core, const struct sink_host_line *line
     if (line->kind > SINK_KIND_OFF) {
         take_order(core, line, now_us);
     } else if (line->fault != SINK_OK) {
-        put_answer(core, line->number, SINK_NO_RANGE);
+        put_answer(core, 0, SINK_NO_RANGE);
     } else if (line->kind == SINK_KIND_HELLO) {
         ask_hello(core, line, now_us);
     } else if (line->kind == SINK_KIND_CLOCK) {

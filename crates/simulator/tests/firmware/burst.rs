@@ -56,7 +56,7 @@ fn one_capture_at_a_time_until_it_is_wholly_sent() {
     bench.ticks(20);
     bench.refused("burst", &format!("{} 2 40", bench.now + TICK_US), "full");
     bench.ticks(30);
-    assert_eq!(bench.firmware.transmit_waiting() > 0, true);
+    assert!(bench.firmware.transmit_waiting() > 0);
     bench.refused("burst", &format!("{} 2 40", bench.now + TICK_US), "full");
     collect(&mut bench, 1);
     bench.must("burst", &format!("{} 2 40", bench.now + TICK_US));

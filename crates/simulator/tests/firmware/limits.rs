@@ -178,9 +178,12 @@ fn current_power_and_voltage_are_not_judged_while_off() {
     assert!(bench.heard().is_empty());
 }
 
+/// How a sensor fails, and the VALUE of the trip.
+type Fault = (fn(&mut Bench), u8);
+
 #[test]
 fn faulty_sensors_trip_and_are_named() {
-    let faults: [(fn(&mut Bench), u8); 4] = [
+    let faults: [Fault; 4] = [
         (
             |bench| bench.plant.temperature = TemperatureReading::Open,
             1,

@@ -1,6 +1,12 @@
 //! The firmware core held to `firmware-protocol/PROTOCOL.md`, guarantee by guarantee, in virtual
 //! time. "Section" in these tests means a section of that text.
 
+#![expect(
+    clippy::unwrap_used,
+    clippy::indexing_slicing,
+    reason = "helpers of tests stand outside `#[test]`: a failure there is a failed test"
+)]
+
 mod bench;
 mod burst;
 mod counters;
@@ -11,3 +17,4 @@ mod same;
 mod session;
 mod steps;
 mod transmit;
+mod vectors;

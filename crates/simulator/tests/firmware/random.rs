@@ -91,18 +91,22 @@ proptest! {
             let words: Vec<&str> = text.split(' ').collect();
             for answer in bench.heard() {
                 let answer: Vec<&str> = answer.split(' ').collect();
-                match answer[0] {
-                    "ready" => { told.current = None; number = 1; }
-                    "ok" if answer.len() == 2 && words[0] == "limit" && words[2] == "current" => {
-                        told.current = Some(words[3].parse().unwrap());
-                    }
-                    "ok" if answer.len() == 2 && words[0] == "reset" => told.latched = false,
-                    _ => {}
+                if answer[0] == "ready" {
+                    told.current = None;
+                    number = 1;
                 }
-                let answers_order = (answer[0] == "ok" && answer.len() == 2)
-                    || (answer[0] == "no" && !["gap", "session"].contains(&answer[2]));
-                if answers_order && answer[1] == number.to_string() {
-                    number += 1;
+                // Repeated answers, and those that use up no number, change nothing.
+                let executed = answer[0] == "ok" && answer.len() == 2;
+                let refused = answer[0] == "no" && answer[2] != "gap" && answer[2] != "session";
+                if !(executed || refused) || answer[1] != number.to_string() {
+                    continue;
+                }
+                number += 1;
+                if executed && words[0] == "limit" && words[2] == "current" {
+                    told.current = Some(words[3].parse().unwrap());
+                }
+                if executed && words[0] == "reset" {
+                    told.latched = false;
                 }
             }
             bench.plant.voltage_code = voltage;

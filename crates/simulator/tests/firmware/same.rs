@@ -20,8 +20,8 @@ fn act() -> impl Strategy<Value = Act> {
             .boxed()
     };
     let step =
-        (0_u64..5, 0_u32..2_000, 0_u64..40, 1_u64..400).prop_map(|(mode, target, ramp, hold)| {
-            let mode = ["current", "power", "resistance", "current", "current"][mode as usize];
+        (0_usize..5, 0_u32..2_000, 0_u64..40, 1_u64..400).prop_map(|(mode, target, ramp, hold)| {
+            let mode = ["current", "power", "resistance", "current", "current"][mode];
             let target = if mode == "current" {
                 target * 1_000
             } else {
