@@ -1,0 +1,163 @@
+//! Steps, loops and the schedule.
+
+use expect_test::{Expect, expect};
+use quantity::{SinkTime, Span};
+use sequence::plan::{Action, Next, Op, Plan};
+
+use super::bench::Bench;
+use super::plans::{current, draw, head, millis, milliamperes, plan, pulses, rest, step};
+use crate::event::Ending;
+
+fn check(plan: Plan, expected: &Expect) {
+    let mut bench = Bench::connected(plan);
+    bench.run(Span::from_secs(3_600));
+    expected.assert_eq(&bench.transcript());
+}
+
+#[test]
+fn steps_follow_each_other_at_their_times_and_the_last_holds_exactly() {
+    check(
+        plan(vec![draw(500, millis(1_000)), rest(millis(500)), draw(1_000, millis(250))]),
+        &expect![[r#"
+            Readback { interval: Span(100000) }
+            step 500 mA at 0.000 ramp 0 s hold 1.05 s
+            step 0 A at 1.000 ramp 0 s hold 550 ms
+            step 1 A at 1.500 ramp 0 s hold 250 ms
+              began 0 at 0.000
+              ended 0 at 1.000 by Duration
+              began 1 at 1.000
+              ended 1 at 1.500 by Duration
+              began 2 at 1.500
+            off
+              ended 2 at 1.750 by Duration
+            Finished
+        "#]],
+    );
+}
+
+#[test]
+fn loops_nest_and_a_time_limit_cuts_the_step_that_runs() {
+    let mut outer = head(Some(2), 5);
+    outer.at_most = Some(millis(2_500));
+    check(
+        plan(vec![
+            Op::LoopBegin(outer),
+            Op::LoopBegin(head(Some(2), 3)),
+            draw(100, millis(400)),
+            Op::LoopEnd { begin: 1 },
+            rest(millis(600)),
+            Op::LoopEnd { begin: 0 },
+            draw(200, millis(300)),
+        ]),
+        &expect![[r#"
+            Readback { interval: Span(100000) }
+            step 100 mA at 0.000 ramp 0 s hold 450 ms
+            step 100 mA at 0.400 ramp 0 s hold 450 ms
+            step 0 A at 0.800 ramp 0 s hold 650 ms
+            step 100 mA at 1.400 ramp 0 s hold 450 ms
+            step 100 mA at 1.800 ramp 0 s hold 450 ms
+            step 0 A at 2.200 ramp 0 s hold 350 ms
+            step 200 mA at 2.500 ramp 0 s hold 300 ms
+              began 2 at 0.000
+              ended 2 at 0.400 by Duration
+              began 2 at 0.400
+              ended 2 at 0.800 by Duration
+              began 4 at 0.800
+              ended 4 at 1.400 by Duration
+              began 2 at 1.400
+              ended 2 at 1.800 by Duration
+              began 2 at 1.800
+              ended 2 at 2.200 by Duration
+              began 4 at 2.200
+              ended 4 at 2.500 by Loop
+              began 6 at 2.500
+            off
+              ended 6 at 2.800 by Duration
+            Finished
+        "#]],
+    );
+}
+
+#[test]
+fn a_skip_leaves_the_loops_that_it_is_not_in() {
+    let mut first = current(100, millis(300));
+    first.then = Next::SkipTo(4);
+    check(
+        plan(vec![
+            Op::LoopBegin(head(Some(5), 3)),
+            Op::Step(first),
+            draw(700, millis(300)),
+            Op::LoopEnd { begin: 0 },
+            draw(200, millis(300)),
+        ]),
+        &expect![[r#"
+            Readback { interval: Span(100000) }
+            step 100 mA at 0.000 ramp 0 s hold 350 ms
+            step 200 mA at 0.300 ramp 0 s hold 300 ms
+              began 1 at 0.000
+              ended 1 at 0.300 by Duration
+              began 4 at 0.300
+            off
+              ended 4 at 0.600 by Duration
+            Finished
+        "#]],
+    );
+}
+
+#[test]
+fn ten_thousand_pulses_begin_exactly_on_schedule() {
+    let mut bench = Bench::connected(plan(pulses(10_000)));
+    assert_eq!(bench.run(Span::from_secs(20_000)), Some(Ending::Finished));
+    let zero = bench.starts[0].1;
+    assert_eq!(bench.starts.len(), 20_000);
+    for (index, (_, start)) in (0_u64..).zip(&bench.starts) {
+        let due = index / 2 * 550 + index % 2 * 50;
+        assert_eq!(start.saturating_since(zero), millis(due));
+    }
+    // The last one is held to its end and not a microsecond longer.
+    assert!(bench.now.saturating_since(zero) >= millis(5_500_000));
+}
+
+#[test]
+fn a_ramp_is_ordered_whole_and_followed() {
+    let ramp = step(
+        Action::Current { target: milliamperes(2_000), ramp: millis(4_000) },
+        millis(5_000),
+    );
+    let mut bench = Bench::connected(plan(vec![draw(500, millis(1_000)), Op::Step(ramp)]));
+    assert_eq!(bench.run(Span::from_secs(20)), Some(Ending::Finished));
+}
+
+#[test]
+fn the_queue_stays_filled_when_edges_are_lost() {
+    let mut bench = Bench::connected(plan(pulses(200)));
+    bench.lose_edges = true;
+    assert_eq!(bench.run(Span::from_secs(200)), Some(Ending::Finished));
+    let zero = bench.starts[0].1;
+    let last = bench.starts[399].1;
+    assert_eq!(last.saturating_since(zero), millis(199 * 550 + 50));
+}
+
+#[test]
+fn a_stalled_link_moves_the_schedule_and_says_so() {
+    let mut bench = Bench::connected(plan(pulses(40)));
+    bench.run(Span::from_secs(5));
+    bench.latency = millis(6_000);
+    bench.run(Span::from_secs(1));
+    bench.latency = millis(5);
+    assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
+    assert_eq!(bench.starts.len(), 80);
+    assert!(bench.transcript().contains("Rescheduled"));
+}
+
+#[test]
+fn charge_is_shared_out_at_an_edge_by_what_was_asked_for() {
+    // 1000 mA from 50 ms after a readback on: half an interval of it belongs to the step.
+    let mut bench = Bench::connected(plan(vec![rest(millis(1_050)), draw(1_000, millis(10_000))]));
+    bench.run(millis(8_000));
+    let status = bench.sequencer.status();
+    let zero = bench.starts[1].1;
+    let span = bench.sequencer.status().sink_time.saturating_since(zero);
+    assert_eq!(status.step_charge.unwrap(), milliamperes(1_000).times(span));
+    assert!(status.sink_time > SinkTime::ZERO);
+}
