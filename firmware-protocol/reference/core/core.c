@@ -53,7 +53,6 @@ void sink_core_off(struct sink_core *core)
 {
     sink_queue_off(core);
     sink_burst_give_up(core);
-    core->unsettled = true;
 }
 
 size_t sink_core_size(void)

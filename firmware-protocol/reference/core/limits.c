@@ -6,11 +6,6 @@
 
 #define BIT(cause) ((uint8_t)(1u << ((cause) - 1)))
 
-/* Judged only while a step is in progress. */
-#define WHILE_ON                                                                                   \
-    (BIT(SINK_CAUSE_CURRENT) | BIT(SINK_CAUSE_POWER) | BIT(SINK_CAUSE_VOLTAGE_HIGH) |               \
-     BIT(SINK_CAUSE_VOLTAGE_LOW))
-
 /* The order in which causes are named when several cross at one sample: what
  * asks the operator to cut the circuit by hand comes first. */
 static const uint8_t RANK[SINK_LIMITS] = {SINK_CAUSE_EXCESS,       SINK_CAUSE_CURRENT,
@@ -58,7 +53,7 @@ static uint32_t answered_setpoint(const struct sink_core *core)
 }
 
 /* The last sample in the unit of a limit's value. */
-static int64_t measured(const struct sink_core *core, enum sink_cause cause)
+static inline int64_t measured(const struct sink_core *core, enum sink_cause cause)
 {
     switch (cause) {
     case SINK_CAUSE_CURRENT:
@@ -81,37 +76,37 @@ static int64_t measured(const struct sink_core *core, enum sink_cause cause)
     return 0;
 }
 
-static bool crosses(const struct sink_core *core, enum sink_cause cause, int64_t limit)
+static inline bool crosses(const struct sink_core *core, enum sink_cause cause, int64_t limit)
 {
     int64_t value = measured(core, cause);
 
     return cause == SINK_CAUSE_VOLTAGE_LOW ? value < limit : value > limit;
 }
 
-/* Which limits the last sample crosses, among those judged now. */
+static inline uint8_t crossed(const struct sink_core *core, enum sink_cause cause)
+{
+    return crosses(core, cause, core->limits[cause - 1].value) ? BIT(cause) : 0;
+}
+
+/* Which limits the last sample crosses, among those judged now. Written out, not
+ * looped: this is most of what a steady tick does. */
 static uint8_t crossing(const struct sink_core *core)
 {
-    uint8_t judged = 0;
     uint8_t result = 0;
-    uint8_t i;
 
     if (core->on) {
-        judged = WHILE_ON;
+        result |= crossed(core, SINK_CAUSE_CURRENT);
+        result |= crossed(core, SINK_CAUSE_POWER);
+        result |= crossed(core, SINK_CAUSE_VOLTAGE_HIGH);
+        result |= crossed(core, SINK_CAUSE_VOLTAGE_LOW);
     }
     if (core->latch == SINK_CAUSE_NONE && core->sample.sensor == SINK_SENSOR_GOOD) {
-        judged |= BIT(SINK_CAUSE_TEMPERATURE);
+        result |= crossed(core, SINK_CAUSE_TEMPERATURE);
     }
     /* A sink that does not let go must be found out whether it should be on,
      * off, or is latched already for a lesser cause. */
     if (core->latch != SINK_CAUSE_EXCESS) {
-        judged |= BIT(SINK_CAUSE_EXCESS);
-    }
-    for (i = 0; i < SINK_LIMITS; i++) {
-        enum sink_cause cause = (enum sink_cause)(i + 1);
-
-        if ((judged & BIT(cause)) != 0 && crosses(core, cause, core->limits[i].value)) {
-            result |= BIT(cause);
-        }
+        result |= crossed(core, SINK_CAUSE_EXCESS);
     }
     return result;
 }
@@ -130,7 +125,6 @@ void sink_limits_trip(struct sink_core *core, enum sink_cause cause, int64_t val
     sink_queue_off(core);
     core->latch = (uint8_t)cause;
     core->latch_limit = cause <= SINK_CAUSE_EXCESS ? core->limits[cause - 1].value : 0;
-    core->unsettled = true;
     /* Where the gate may have lost its say, only the relay can still cut. */
     if (cause == SINK_CAUSE_EXCESS || (cause == SINK_CAUSE_SENSOR && value == 3)) {
         core->drive.isolator = false;

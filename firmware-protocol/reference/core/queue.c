@@ -81,6 +81,7 @@ void sink_queue_off(struct sink_core *core)
     core->on = false;
     core->queued = 0;
     core->ramping = false;
+    core->unsettled = true;
 }
 
 static void begin(struct sink_core *core, uint64_t now_us)
@@ -106,6 +107,7 @@ static void begin(struct sink_core *core, uint64_t now_us)
     core->step_order = next.order;
     core->ramping = next.ramp_us != 0 && core->ramp_from != next.target;
     core->on = true;
+    core->unsettled = true;
     sink_event_edge(core, now_us, next.order);
 }
 

@@ -102,32 +102,46 @@ static bool falls_short(const struct sink_core *core)
     return (uint64_t)core->current_ua + tolerance < reached;
 }
 
+/* Whether the setpoint is sure to be what it was: nothing began, ended, ramps or
+ * was ordered, and no voltage has a say. */
+static bool steady(const struct sink_core *core)
+{
+    return core->still >= 2 && !core->unsettled && !core->ramping &&
+           (!core->on || core->step.mode == SINK_MODE_CURRENT);
+}
+
+static uint32_t current_at(struct sink_core *core, uint64_t now_us)
+{
+    uint32_t setpoint = sink_setpoint_at(core, now_us);
+
+    if (now_us >= core->step.start_us + core->step.ramp_us) {
+        core->ramping = false;
+    }
+    return bounded_current(core, wanted_current(core, bounded_setpoint(core, setpoint)));
+}
+
+static void put_current(struct sink_core *core, uint32_t current)
+{
+    bool at_stop = false;
+
+    core->setpoint_before_ua = core->setpoint_ua;
+    if (current == core->setpoint_ua) {
+        core->still = core->still < 2 ? (uint8_t)(core->still + 1u) : 2;
+        return;
+    }
+    core->still = 0;
+    core->setpoint_ua = current;
+    core->drive.gate = current != 0;
+    core->drive.code = current == 0 ? 0 : code_for(core, current, &at_stop);
+    core->at_stop = at_stop;
+}
+
 void sink_regulate(struct sink_core *core, uint64_t now_us)
 {
     bool short_of = falls_short(core);
-    uint32_t current = 0;
-    bool at_stop = false;
 
-    if (core->on) {
-        uint32_t setpoint = sink_setpoint_at(core, now_us);
-
-        if (core->ramping && setpoint == core->step.target &&
-            now_us >= core->step.start_us + core->step.ramp_us) {
-            core->ramping = false;
-        }
-        current = bounded_current(core, wanted_current(core, bounded_setpoint(core, setpoint)));
-    }
-    core->setpoint_before_ua = core->setpoint_ua;
-    if (current != core->setpoint_ua) {
-        core->still = 0;
-    } else if (core->still < 2) {
-        core->still++;
-    }
-    if (current != core->setpoint_ua || core->unsettled) {
-        core->setpoint_ua = current;
-        core->drive.gate = current != 0;
-        core->drive.code = current == 0 ? 0 : code_for(core, current, &at_stop);
-        core->at_stop = at_stop;
+    if (!steady(core)) {
+        put_current(core, core->on ? current_at(core, now_us) : 0);
     }
     core->saturated = core->on && (core->at_stop || short_of);
 }
