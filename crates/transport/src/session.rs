@@ -37,6 +37,7 @@
 
 mod asks;
 mod budget;
+mod clock_watch;
 mod config;
 mod greeting;
 mod heard;
@@ -59,6 +60,7 @@ pub use outbox::Urgency;
 
 use asks::ClockAsks;
 use budget::Budget;
+use clock_watch::ClockWatch;
 use config::DEADMAN_UNTOLD;
 use greeting::Greeting;
 use outbox::Outbox;
@@ -67,7 +69,7 @@ use steps::Steps;
 use timer::Timer;
 use window::Window;
 
-use crate::clock::{ClockAlignment, ClockEstimate};
+use crate::clock::ClockEstimate;
 
 /// Orders that may wait for room in the window; beyond, they are abandoned at once.
 const WAITING_MAX: usize = 4096;
@@ -158,9 +160,7 @@ pub struct Session {
     ask_clock: Timer,
     asks: ClockAsks,
     resuming: bool,
-    clock: ClockAlignment,
-    clock_told: Option<ClockEstimate>,
-    clock_rate_off: bool,
+    clock: ClockWatch,
     steps: Steps,
     pairing: Pairing,
     event_last: Option<u16>,
@@ -198,9 +198,7 @@ impl Session {
             ask_clock: Timer::IDLE,
             asks: ClockAsks::default(),
             resuming: false,
-            clock: ClockAlignment::new(config.clock),
-            clock_told: None,
-            clock_rate_off: false,
+            clock: ClockWatch::new(config.clock),
             steps: Steps::default(),
             pairing: Pairing::default(),
             event_last: None,
@@ -534,8 +532,6 @@ impl Session {
         self.asks.clear();
         self.resuming = false;
         self.clock.clear();
-        self.clock_told = None;
-        self.clock_rate_off = false;
         self.steps.clear();
         self.pairing = Pairing::default();
         self.event_last = None;

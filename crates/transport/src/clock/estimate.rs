@@ -36,32 +36,18 @@ impl ClockEstimate {
     ) -> Option<Self> {
         let (host_first, sink_first) = samples.clone().next()?;
         let (host_first, sink_first) = (i128::from(host_first), i128::from(sink_first));
-        let (mut count, mut sum_x, mut sum_y, mut sum_xx, mut sum_xy) = (0, 0, 0, 0, 0);
-        let mut last_x = 0;
+        let mut sums = Sums::default();
+        let mut length = 0;
         for (host, sink) in samples {
             // The sink's lead over the host since the first sample: small numbers, exact sums.
-            let x = i128::from(host) - host_first;
-            let y = i128::from(sink) - sink_first - x;
-            count += 1;
-            sum_x += x;
-            sum_y += y;
-            sum_xx += x * x;
-            sum_xy += x * y;
-            last_x = x;
+            length = i128::from(host) - host_first;
+            sums.add(length, i128::from(sink) - sink_first - length);
         }
-        let spread = count * sum_xx - sum_x * sum_x;
-        let (rate, rate_uncertainty) = if spread > 0 && last_x > 0 {
-            (
-                divide(
-                    (count * sum_xy - sum_x * sum_y).saturating_mul(BILLION),
-                    spread,
-                ),
-                (i128::from(round_trip) * BILLION / last_x).max(1),
-            )
-        } else {
-            (0, i128::from(rate_ppb_unknown))
+        let (rate, rate_uncertainty) = match sums.slope_billionths() {
+            Some(rate) if length > 0 => (rate, (i128::from(round_trip) * BILLION / length).max(1)),
+            _ => (0, i128::from(rate_ppb_unknown)),
         };
-        let (mean_x, mean_y) = (divide(sum_x, count), divide(sum_y, count));
+        let (mean_x, mean_y) = (divide(sums.x, sums.count), divide(sums.y, sums.count));
         Some(Self {
             host: HostTime::from_micros(i64::try_from(host_first + mean_x).ok()?),
             sink: SinkTime::from_micros(u64::try_from(sink_first + mean_x + mean_y).ok()?),
@@ -115,6 +101,36 @@ impl ClockEstimate {
             || newer.rate_uncertainty_ppb < self.rate_uncertainty_ppb / 2;
         let old = newer.host.saturating_since(self.host) >= Span::from_secs(60);
         moved || turned || sharper || old
+    }
+}
+
+/// What a straight line by least squares needs, exactly.
+#[derive(Default)]
+struct Sums {
+    count: i128,
+    x: i128,
+    y: i128,
+    squares: i128,
+    products: i128,
+}
+
+impl Sums {
+    const fn add(&mut self, x: i128, y: i128) {
+        self.count += 1;
+        self.x += x;
+        self.y += y;
+        self.squares += x * x;
+        self.products += x * y;
+    }
+
+    /// The slope in parts per billion; `None` if all points stand at the same place.
+    const fn slope_billionths(&self) -> Option<i128> {
+        let spread = self.count * self.squares - self.x * self.x;
+        if spread <= 0 {
+            return None;
+        }
+        let moment = self.count * self.products - self.x * self.y;
+        Some(divide(moment.saturating_mul(BILLION), spread))
     }
 }
 

@@ -116,7 +116,6 @@ impl Greeting {
         }
         let last = matches!(line, SinkLine::Ready { .. });
         match builder.push(line) {
-            Ok(None) => Gathered::Kept,
             Ok(Some((description, time))) => {
                 self.gathering = None;
                 self.answered = place;
@@ -127,7 +126,7 @@ impl Greeting {
             Err(DescriptionError::Protocol { found }) => Gathered::Foreign { protocol: found },
             // Only the last line shows that no more will come.
             Err(DescriptionError::OutOfOrder { .. }) if last => Gathered::Holed,
-            Err(DescriptionError::OutOfOrder { .. }) => Gathered::Kept,
+            Ok(None) | Err(DescriptionError::OutOfOrder { .. }) => Gathered::Kept,
             Err(DescriptionError::Token { .. } | DescriptionError::Session { .. }) => {
                 Gathered::Stale
             }

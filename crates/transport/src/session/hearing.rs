@@ -10,7 +10,6 @@ use super::pairing::{CountersFault, Paired, lost_between};
 use super::timer::Timer;
 use super::window::{Answered, Gap};
 use super::{Phase, REPORT_INTERVAL, Session, third};
-use crate::clock::ClockFault;
 
 /// Lines of different kinds may wait for each other in the sink, so a time may be behind the
 /// latest heard by this much without the clock having gone back.
@@ -121,22 +120,17 @@ impl Session {
     /// A description while the session stands: the answer to a repeated greeting, or a sign
     /// that the sink has begun anew. With a token of ours its last line tells which.
     fn hear_description_again(&mut self, token: Token, line: &SinkLine) {
-        let harmless = match *line {
-            SinkLine::Ready { session, time, .. } if session == self.greeting.session() => {
-                self.greeting.is_opening(token, time)
-                    || (self.greeting.awaits(token) && !self.answered_any)
-            }
-            SinkLine::Ready { .. } => false,
-            _ => {
-                self.counts.stale += 1;
-                self.greeting.is_ours(token)
-            }
+        self.counts.stale += 1;
+        let harmless = if let SinkLine::Ready { session, time, .. } = *line {
+            let repetition = self.greeting.is_opening(token, time)
+                || (self.greeting.awaits(token) && !self.answered_any);
+            self.greeting.repeated(token);
+            session == self.greeting.session() && repetition
+        } else {
+            self.greeting.is_ours(token)
         };
         if !harmless {
             self.lose(RebootEvidence::UnaskedDescription);
-        } else if matches!(line, SinkLine::Ready { .. }) {
-            self.greeting.repeated(token);
-            self.counts.stale += 1;
         }
     }
 
@@ -255,31 +249,7 @@ impl Session {
             self.heard.push_back(Heard::Resumed { sink_time: time });
         }
         self.counts.round_trip = now.saturating_since(sent);
-        let fault = self.clock.add(sent, now, time);
-        self.tell_clock(fault);
-    }
-
-    fn tell_clock(&mut self, fault: Option<ClockFault>) {
-        let rate_off = matches!(fault, Some(ClockFault::Rate { .. }));
-        // A rate out of bounds stays so for a while: told once.
-        let known = rate_off && self.clock_rate_off;
-        self.clock_rate_off = rate_off;
-        if let Some(fault) = fault.filter(|_| !known) {
-            self.heard.push_back(Heard::ClockOff {
-                by: fault.by(),
-                fault,
-            });
-        }
-        let Some(estimate) = self.clock.estimate() else {
-            return;
-        };
-        let news = self
-            .clock_told
-            .is_none_or(|told| told.materially_differs(&estimate));
-        if news {
-            self.clock_told = Some(estimate);
-            self.heard.push_back(Heard::ClockEstimate(estimate));
-        }
+        self.clock.add(sent, now, time, &mut self.heard);
     }
 
     fn hear_counters(&mut self, readback: u16, counters: Counters) {

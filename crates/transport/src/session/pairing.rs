@@ -23,8 +23,8 @@ const CHARGE_SLACK: i128 = 1_000;
 /// How many numbers lie between two that followed each other; 0 if none was lost.
 pub(super) fn lost_between(last: u16, number: u16) -> u16 {
     let ahead = (u32::from(number) + NUMBERS - u32::from(last)) % NUMBERS;
-    let lost = if ahead == 0 { NUMBERS - 1 } else { ahead - 1 };
-    u16::try_from(lost).unwrap_or(u16::MAX)
+    let between = if ahead == 0 { NUMBERS - 1 } else { ahead - 1 };
+    u16::try_from(between).unwrap_or(u16::MAX)
 }
 
 /// What came of the second line of a pair.
