@@ -4,6 +4,7 @@ use std::collections::VecDeque;
 
 use journal::{Body, Entry, Note};
 use quantity::{HostTime, Span};
+use sequence::plan::OnInterruption;
 use sequencer::event::{Ending, Event, Happening, Output};
 use sequencer::{Sequencer, Status};
 use wire::{Order, OrderId};
@@ -130,6 +131,11 @@ impl Active {
             Closing::Closed => self.ending.as_ref(),
             Closing::Open | Closing::AwaitingOff { .. } | Closing::AwaitingCounters { .. } => None,
         }
+    }
+
+    /// Whether the plan says to go on after an interruption.
+    pub(crate) fn resumes(&self) -> bool {
+        self.sequencer.plan().on_interruption == OnInterruption::Resume
     }
 
     /// How the run stands, for whoever looks on.

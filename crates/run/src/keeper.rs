@@ -6,10 +6,11 @@ use journal::{Entry, Note};
 use quantity::{HostTime, SinkTime, Span};
 use sequencer::event::{Command, Ending, Happening};
 use sequencer::{Sequencer, Status};
-use transport::session::{Heard, Mismatch, Session, SessionConfig};
+use transport::session::{Heard, Mismatch, RebootEvidence, Session, SessionConfig};
 use wire::{Description, Order, OrderId, Reading, ReasonRefused};
 
 use crate::active::{Active, Demand};
+use crate::notes::note_of;
 
 /// How often an idle sink is asked for a readback.
 const IDLE_READBACK: Span = Span::from_secs(1);
@@ -33,7 +34,12 @@ pub enum Effect {
     /// Put this entry on stable storage; report with [`Keeper::durable`].
     Append(Entry),
     /// The run is over and its record complete: seal it.
-    Closed(Ending),
+    Closed {
+        /// How it ended.
+        ending: Ending,
+        /// How it stood then.
+        status: Box<Status>,
+    },
     /// The sink on this link is not the one the bench file describes.
     NotTheSinkDescribed(Vec<Mismatch>),
     /// The answer to [`Keeper::reset`].
@@ -113,18 +119,27 @@ impl Keeper {
         self.listen(now);
     }
 
-    /// The link is gone.
-    pub fn link_lost(&mut self, now: HostTime) {
+    /// The link is gone, for the reason given.
+    ///
+    /// The session may outlive a short loss; whether the run does is for its silence interlock
+    /// to say, unless its plan says to go on after an interruption.
+    pub fn link_lost(&mut self, reason: &str, now: HostTime) {
         self.presence.description = None;
         self.session.link_lost(now);
-        self.happen(now, Happening::LinkLost);
+        self.note(now, Note::LinkLost { reason: reason.to_owned() });
+        self.interrupt(now);
         self.listen(now);
     }
 
     /// The link is back; the sink behind it may have been replaced or started anew.
     pub fn link_back(&mut self, now: HostTime) {
+        self.note(now, Note::LinkBack);
         self.session.link_back(now);
-        self.greet(now);
+        if self.active.as_ref().is_some_and(Active::resumes) {
+            self.greet(now);
+        } else {
+            self.listen(now);
+        }
     }
 
     /// Time has passed.
@@ -217,6 +232,7 @@ impl Keeper {
     fn greet(&mut self, now: HostTime) {
         self.session_number = self.session_number.checked_add(1).unwrap_or(1);
         self.presence.description = None;
+        self.note(now, Note::SessionBegun { session: self.session_number });
         self.session.restart(self.session_number, now);
         self.listen(now);
     }
@@ -250,19 +266,44 @@ impl Keeper {
                 self.happen(now, Happening::OffAcknowledged);
                 self.effects.push_back(Effect::OffAcknowledged);
             }
-            Heard::SinkRebooted => {
-                self.happen(now, Happening::SinkRebooted);
-                self.greet(now);
+            Heard::SinkRebooted { evidence } => self.rebooted(evidence, now),
+            Heard::ClockOff { by, fault } => {
+                self.note(now, Note::Text(format!("the sink's clock is off: {fault:?}")));
+                self.happen(now, Happening::ClockOff { by });
             }
-            Heard::ClockOff { by } => self.happen(now, Happening::ClockOff { by }),
-            other => self.note(now, Note::from(other)),
+            Heard::Resumed { .. }
+            | Heard::StepSeen { .. }
+            | Heard::EventsLost { .. }
+            | Heard::Withdrawn { .. }
+            | Heard::Abandoned { .. }
+            | Heard::ClockEstimate(_)
+            | Heard::Retransmitted { .. }
+            | Heard::Damaged { .. }
+            | Heard::Flood { .. }
+            | Heard::BurstSamples { .. }
+            | Heard::BurstDone { .. } => self.note_heard(&heard, now),
+        }
+    }
+
+    fn rebooted(&mut self, evidence: RebootEvidence, now: HostTime) {
+        self.presence.description = None;
+        self.note(now, Note::Text(format!("the sink has started anew: {evidence:?}")));
+        self.interrupt(now);
+        self.happen(now, Happening::SinkRebooted);
+        self.greet(now);
+    }
+
+    /// Tells a run that goes on after an interruption that there is one.
+    fn interrupt(&mut self, now: HostTime) {
+        if self.active.as_ref().is_some_and(Active::resumes) {
+            self.happen(now, Happening::LinkLost);
         }
     }
 
     fn connected(&mut self, description: Description, sink_time: SinkTime, now: HostTime) {
         self.presence.description = Some(description);
         self.presence.refused.clear();
-        self.note(now, Note::Description(description));
+        self.note(now, Note::Described(description));
         if self.active.is_some() {
             self.happen(now, Happening::Connected { time: sink_time });
         } else {
@@ -273,9 +314,9 @@ impl Keeper {
 
     /// A sink that is not the one described is never driven: a run on it cannot go on.
     fn refuse(&mut self, mismatches: Vec<Mismatch>, now: HostTime) {
-        self.session.off(now);
         self.presence.refused.clone_from(&mismatches);
-        self.happen(now, Happening::NotTheSinkDescribed);
+        self.note(now, Note::Text(format!("not the sink described: {mismatches:?}")));
+        self.off(now);
         self.effects.push_back(Effect::NotTheSinkDescribed(mismatches));
     }
 
@@ -304,6 +345,12 @@ impl Keeper {
         id
     }
 
+    fn note_heard(&mut self, heard: &Heard, now: HostTime) {
+        if let Some(note) = note_of(heard) {
+            self.note(now, note);
+        }
+    }
+
     fn happen(&mut self, now: HostTime, what: Happening) {
         if let Some(active) = &mut self.active {
             active.happen(now, what, &mut self.demands);
@@ -329,11 +376,11 @@ impl Keeper {
 
     /// Ends a run whose record is complete, and takes the sink into an idle session.
     fn close_if_complete(&mut self, now: HostTime) {
-        let Some(ending) = self.active.as_ref().and_then(Active::closed).cloned() else {
-            return;
-        };
+        let Some(active) = &self.active else { return };
+        let Some(ending) = active.closed().cloned() else { return };
+        let status = Box::new(active.status());
         self.active = None;
-        self.effects.push_back(Effect::Closed(ending));
+        self.effects.push_back(Effect::Closed { ending, status });
         self.greet(now);
     }
 }

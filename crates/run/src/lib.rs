@@ -25,5 +25,6 @@
 pub mod keeper;
 pub mod rehearse;
 mod active;
+mod notes;
 
 pub use keeper::{Effect, Keeper, KeeperConfig};

@@ -1,0 +1,68 @@
+//! What the session heard and the sequencer does not see, as notes for the record.
+
+use journal::{ClockAlignment, Note};
+use transport::clock::ClockEstimate;
+use transport::session::{Heard, Side};
+
+/// The note that keeps what was heard; `None` for what the sequencer is told instead.
+pub(crate) fn note_of(heard: &Heard) -> Option<Note> {
+    let note = match heard {
+        Heard::Resumed { sink_time } => {
+            Note::Text(format!("the session has outlived the loss; sink time {}", sink_time.micros()))
+        }
+        Heard::StepSeen { time, order } => Note::Text(format!(
+            "the edge of order {} was lost; its step was seen running at sink time {}",
+            order.0,
+            time.micros()
+        )),
+        Heard::EventsLost { count } => Note::Text(format!("{count} event lines were lost")),
+        Heard::Withdrawn { order } => {
+            Note::Text(format!("off overtook order {}: it will not begin", order.0))
+        }
+        Heard::Abandoned { order } => {
+            Note::Text(format!("order {} was left without an answer", order.0))
+        }
+        Heard::ClockEstimate(estimate) => Note::ClockAligned(alignment(estimate)),
+        Heard::Retransmitted { orders, attempt } => {
+            Note::Retransmitted { orders: *orders, attempt: *attempt }
+        }
+        Heard::Damaged { by, lines } => Note::DamagedLines {
+            seen_by: match by {
+                Side::Host => journal::Side::Host,
+                Side::Sink => journal::Side::Sink,
+            },
+            lines: *lines,
+        },
+        Heard::Flood { bytes } => {
+            Note::Text(format!("{bytes} bytes came faster than the link can carry and were ignored"))
+        }
+        Heard::BurstSamples { burst, index, len, samples } => Note::Burst {
+            capture: *burst,
+            index: *index,
+            samples: samples.iter().take(usize::from(*len)).copied().collect(),
+        },
+        Heard::BurstDone { burst } => Note::BurstDone { capture: *burst },
+        Heard::Connected { .. }
+        | Heard::DescriptionRefused { .. }
+        | Heard::Reading(_)
+        | Heard::Edge { .. }
+        | Heard::HoldExpired { .. }
+        | Heard::SinkTripped { .. }
+        | Heard::Acknowledged { .. }
+        | Heard::Refused { .. }
+        | Heard::OffAcknowledged
+        | Heard::SinkRebooted { .. }
+        | Heard::ClockOff { .. } => return None,
+    };
+    Some(note)
+}
+
+fn alignment(estimate: &ClockEstimate) -> ClockAlignment {
+    ClockAlignment {
+        sink: estimate.sink,
+        host: estimate.host,
+        rate_ppb: estimate.rate_ppb,
+        uncertainty: estimate.uncertainty,
+        rate_uncertainty_ppb: estimate.rate_uncertainty_ppb,
+    }
+}
