@@ -22,7 +22,6 @@ pub(crate) struct Queued {
     pub(crate) step: Ordered,
     /// The conditions of a step that goes on after a hold or an interruption.
     pub(crate) carried: Option<Watch>,
-    pub(crate) acknowledged: bool,
     /// When it began by the sink's own word.
     pub(crate) edge: Option<SinkTime>,
 }
@@ -122,6 +121,17 @@ impl Course {
             .back()
             .map(|queued| &queued.step)
             .or(self.running.as_ref().map(|running| &running.step))
+    }
+
+    /// The next step is due by `time`, and whether the sink has it is not known yet: until it is,
+    /// the running one may go on to the end of its hold.
+    pub(crate) fn doubt(&mut self, time: SinkTime) {
+        let next = self.queue.front().map(|queued| &queued.step);
+        if next.is_some_and(|next| !next.acknowledged && next.slot.start <= time)
+            && let Some(running) = &mut self.running
+        {
+            running.step.drawn_until = running.step.drawn_until.max(running.step.hold_end);
+        }
     }
 
     /// How many queued steps have not begun at this time.

@@ -32,6 +32,8 @@ pub(crate) struct Ordered {
     pub(crate) hold_end: SinkTime,
     /// Until when current may flow for it: its end, or later where nothing follows at once.
     pub(crate) drawn_until: SinkTime,
+    /// The sink has said that it has it.
+    pub(crate) acknowledged: bool,
     /// Its source is expected to give up.
     pub(crate) may_give_up: bool,
 }
@@ -148,7 +150,7 @@ impl Expectation {
         // What was asked for long enough must have been reached.
         let (from, to) = (seen.from.max(start.saturating_add(SETTLING)), seen.time.min(end));
         let whole = from == seen.from && to == seen.time;
-        if from >= to || seen.first || (step.may_give_up && !whole) {
+        if from >= to || seen.first || !step.acknowledged || (step.may_give_up && !whole) {
             return;
         }
         let (lagged, _) = step.bounds(to.saturating_sub(SETTLING).max(start), to, seen.voltage);

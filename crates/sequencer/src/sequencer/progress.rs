@@ -83,10 +83,12 @@ impl Sequencer {
 
     /// Begins every step that was due by `time`, in the account and in the record.
     ///
-    /// Steps begin here only with counters to share out; a pair without waits for the next.
+    /// Steps begin here only with counters to share out (a pair without waits for the next), and
+    /// only if the sink has said that it has them.
     pub(super) fn begin_due(&mut self, time: SinkTime, increment: Option<&Increment>) {
         let Some(increment) = increment else { return };
-        while self.course.queue.front().is_some_and(|next| next.step.slot.start <= time) {
+        let due = |next: &Queued| next.step.acknowledged && next.step.slot.start <= time;
+        while self.course.queue.front().is_some_and(due) {
             let edge = self.course.queue.front().map_or(time, |next| next.step.slot.start);
             let base = if edge < increment.from {
                 self.account.sum()
@@ -369,9 +371,10 @@ impl Sequencer {
             before,
             ramp_from,
             ramp,
+            acknowledged: false,
             may_give_up,
         };
-        self.course.queue.push_back(Queued { step, carried, acknowledged: false, edge: None });
+        self.course.queue.push_back(Queued { step, carried, edge: None });
     }
 
     fn want_burst(&mut self, slot: &Slot, request: sequence::plan::BurstRequest) {
@@ -439,7 +442,7 @@ impl Sequencer {
         let queued = self.course.queue.iter_mut().find(|queued| queued.step.order == order);
         let Some(queued) = queued else { return };
         queued.edge = Some(time);
-        queued.acknowledged = true;
+        queued.step.acknowledged = true;
         self.begun_through = self.begun_through.max(queued.step.slot.start);
         if self.phase == Phase::Progress {
             self.fill();
@@ -457,7 +460,7 @@ impl Sequencer {
             .course
             .queue
             .iter()
-            .filter(|queued| queued.acknowledged && queued.step.slot.start <= time)
+            .filter(|queued| queued.step.acknowledged && queued.step.slot.start <= time)
             .map(|queued| &queued.step)
             .next_back()
             .or(self.course.running.as_ref().map(|running| &running.step));

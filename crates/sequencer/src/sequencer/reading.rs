@@ -38,6 +38,7 @@ impl Sequencer {
         self.latest_at = seen.at;
         self.voltage = seen.voltage.mean;
 
+        self.course.doubt(seen.time);
         self.judge(&seen, increment.as_ref(), &mut crossings);
         if !seen.first {
             let silence = micros(self.plan().interlocks.silence);

@@ -63,7 +63,7 @@ impl Sequencer {
         }
         let queued = self.course.queue.iter_mut().find(|queued| queued.step.order == order);
         if let Some(queued) = queued {
-            queued.acknowledged = true;
+            queued.step.acknowledged = true;
         }
     }
 

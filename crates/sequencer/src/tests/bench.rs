@@ -42,6 +42,7 @@ pub(super) struct Bench {
     pub(super) latched: Option<Cause>,
     /// Added to what the sink's clock shows.
     pub(super) clock_shift: i64,
+    host_shift: i64,
     inbox: VecDeque<(SinkTime, OrderId, Order)>,
     queue: VecDeque<(OrderId, Step)>,
     active: Option<(OrderId, Step, SinkTime, Current)>,
@@ -84,6 +85,7 @@ impl Bench {
             lose_edges: false,
             latched: None,
             clock_shift: 0,
+            host_shift: 0,
             inbox: VecDeque::new(),
             queue: VecDeque::new(),
             active: None,
@@ -129,7 +131,7 @@ impl Bench {
 
     pub(super) fn host_time(&self) -> HostTime {
         let micros = i64::try_from((self.now + DELAY).micros()).unwrap();
-        HostTime::from_micros(EPOCH + micros)
+        HostTime::from_micros(EPOCH + self.host_shift + micros)
     }
 
     pub(super) fn command(&mut self, command: Command) {
@@ -140,6 +142,12 @@ impl Bench {
     pub(super) fn happen(&mut self, what: Happening) {
         let at = self.host_time();
         self.happen_at(at, what);
+    }
+
+    /// Feeds an event that the host learns of so much later; the host's clock stays ahead.
+    pub(super) fn happen_after(&mut self, later: Span, what: Happening) {
+        self.host_shift += i64::try_from(later.micros()).unwrap();
+        self.happen(what);
     }
 
     fn happen_at(&mut self, at: HostTime, what: Happening) {
@@ -188,7 +196,7 @@ impl Bench {
         let start = self.queue.front().map(|(_, step)| step.start);
         let hold = self.active.filter(|_| self.queue.is_empty()).map(|(_, step, began, _)| began + step.hold);
         let deadline = self.sequencer.deadline().map(|(at, _)| {
-            let micros = at.micros() - EPOCH - i64::try_from(DELAY.micros()).unwrap();
+            let micros = at.micros() - EPOCH - self.host_shift - i64::try_from(DELAY.micros()).unwrap();
             SinkTime::from_micros(u64::try_from(micros).unwrap())
         });
         for time in [arrival, start, hold, self.next_readback, deadline].into_iter().flatten() {
