@@ -16,3 +16,8 @@
 
 pub mod bench;
 pub mod correction;
+
+pub mod accumulate;
+pub mod montecarlo;
+pub mod regression;
+pub mod uncertainty;

@@ -132,7 +132,7 @@ fn everything_that_does_not_agree_is_told_at_once() {
         .replacen("name = \"right\"", "name = \"Left sink\"", 1);
     check_refused(
         &text,
-        expect![[r#"
+        expect![[r"
         line 8, column 8: sink[0].name: the sink's name `Left sink` cannot stand in a path or a URL; use up to 32 lower-case letters, digits and hyphens, beginning with a letter
         line 10, column 11: sink[0].deadman: 20 s is outside 100 ms to 10 s; 2 s suits most benches
         line 12, column 59: sink[0].readback.usual: 20 s is outside 20 ms to 10 s; choose an interval between them
@@ -143,7 +143,7 @@ fn everything_that_does_not_agree_is_told_at_once() {
         line 92, column 24: sink[0].interlocks.over_power.above: 16 W is above the sink's limit, 15 W; lower it to 15 W or less
         line 95, column 31: sink[0].interlocks.reversed_polarity.below: 50 mV is above zero: a voltage of the right polarity, 0 V; lower it to 0 V or less
         line 109, column 8: sink[1].name: a second sink is called `Left sink`; give each its own name
-        line 109, column 8: sink[1].name: the sink's name `Left sink` cannot stand in a path or a URL; use up to 32 lower-case letters, digits and hyphens, beginning with a letter"#]],
+        line 109, column 8: sink[1].name: the sink's name `Left sink` cannot stand in a path or a URL; use up to 32 lower-case letters, digits and hyphens, beginning with a letter"]],
     );
 }
 
@@ -160,13 +160,13 @@ fn figures_that_physics_forbids_are_refused() {
         .replacen("length = \"0.6 m\"", "length = \"0 m\"", 1);
     check_refused(
         &text,
-        expect![[r#"
+        expect![[r"
         line 24, column 14: sink[0].front_end.sense_resistor.resistance: 0 ohm is not above zero; give the resistance from the data sheet
         line 29, column 16: sink[0].front_end.sense_resistor.no_rating_at: 55 degC is not above full_rating_up_to, 70 degC; the rating falls from the one to the other
         line 48, column 11: sink[0].front_end.temperature_sensor.element: a Beta of 34.35 K; an NTC's lies between 500 and 10000
         line 78, column 9: sink[0].heat_sink.limit: 20 degC is not above the ambient of 30 degC; nothing could be drawn
         line 82, column 35: sink[0].leads.conductor.copper.length: 0 m is not above zero; give the length from the data sheet
-        line 88, column 15: sink[0].limits.temperature: 80 degC is above the heat sink's limit, 20 degC; lower it to 20 degC or less"#]],
+        line 88, column 15: sink[0].limits.temperature: 80 degC is above the heat sink's limit, 20 degC; lower it to 20 degC or less"]],
     );
 }
 
