@@ -11,6 +11,8 @@ mod bench;
 mod burst;
 mod counters;
 mod limits;
+#[cfg(unix)]
+mod posix;
 mod random;
 mod refusals;
 mod same;
