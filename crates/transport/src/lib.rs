@@ -13,6 +13,7 @@
 //! reading means, and whether an order may be sent, is decided above.
 
 pub mod clock;
+pub mod port;
 pub mod rates;
 pub mod session;
 

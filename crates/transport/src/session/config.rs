@@ -58,6 +58,18 @@ pub struct Mismatch {
     pub found: String,
 }
 
+/// `sense_resistor is 100 mohm, the bench file says 1 ohm`
+impl std::fmt::Display for Mismatch {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        let Self {
+            field,
+            expected,
+            found,
+        } = self;
+        write!(f, "{field} is {found}, the bench file says {expected}")
+    }
+}
+
 impl Mismatch {
     /// Another version of the protocol than this host's.
     pub(super) fn protocol(found: u16) -> Self {
