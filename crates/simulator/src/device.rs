@@ -15,6 +15,8 @@
 #[cfg(test)]
 mod tests;
 
+use transport::port::VirtualDevice;
+
 use quantity::{SinkTime, Span};
 use wire::{Reset, TemperatureReading};
 
@@ -415,6 +417,20 @@ impl SimulatedSink {
 
     fn breaks(&mut self, change: impl FnOnce(&mut Broken)) {
         self.plant.set_broken(change);
+    }
+}
+
+impl VirtualDevice for SimulatedSink {
+    fn now(&self) -> Span {
+        self.now()
+    }
+
+    fn advance(&mut self, until: Span, out: &mut Vec<u8>) {
+        self.advance_to_output(until, out);
+    }
+
+    fn receive(&mut self, bytes: &[u8]) {
+        self.receive(bytes);
     }
 }
 
