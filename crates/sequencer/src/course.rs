@@ -8,8 +8,8 @@
 
 use std::collections::VecDeque;
 
-use quantity::{Quantity, SinkTime, Span, Voltage};
-use sequence::plan::OpIndex;
+use quantity::{Current, Quantity, SinkTime, Span, Voltage};
+use sequence::plan::{Action, OpIndex};
 
 use crate::account::Share;
 use crate::condition::Watch;
@@ -65,6 +65,8 @@ pub(crate) struct Course {
     pub(crate) running: Option<Running>,
     pub(crate) queue: VecDeque<Queued>,
     pub(crate) loops: Vec<LoopWatch>,
+    /// Dropped steps that may begin before the sink hears of it.
+    stragglers: Vec<Ordered>,
     /// The step after the last one queued.
     ahead: Option<Slot>,
     serials: u64,
@@ -78,6 +80,31 @@ impl Course {
         self.queue.clear();
         self.ahead = program.walk(&mut cursor, start, &mut self.serials);
         self.ahead.is_some()
+    }
+
+    /// Forgets the queue from this place on, for something that begins at `start`.
+    ///
+    /// What is due before may still begin, since the order to drop it is on its way: it bounds
+    /// what may flow, and the running step surely lasts no longer than to it.
+    pub(crate) fn drop_from(&mut self, place: usize, start: SinkTime) {
+        self.stragglers.clear();
+        for queued in self.queue.drain(place..) {
+            if queued.step.slot.start < start {
+                let drawn_until = queued.step.drawn_until.max(start);
+                self.stragglers.push(Ordered { acknowledged: false, drawn_until, ..queued.step });
+            }
+        }
+        let first = self.stragglers.first().map(|step| step.slot.start);
+        let last = match self.queue.back_mut() {
+            Some(queued) => Some(&mut queued.step),
+            None => self.running.as_mut().map(|running| &mut running.step),
+        };
+        if let Some(last) = last {
+            // It surely lasts to its hold; beyond that only if the next one is queued by then.
+            let surely = start.min(last.hold_end);
+            last.slot.end = first.map_or(surely, |first| first.min(surely));
+            last.drawn_until = last.drawn_until.max(last.hold_end).max(start);
+        }
     }
 
     /// Sets out from exactly this slot.
@@ -134,6 +161,34 @@ impl Course {
         }
     }
 
+    /// What may be set just before a step that begins at `start`, at least and at most; from there
+    /// a ramp begins.
+    ///
+    /// The sink ramps from where it is in the same mode, from the target itself on a change of
+    /// mode, from zero when off (line protocol, section 3).
+    pub(crate) fn ramp_from(
+        &self,
+        start: SinkTime,
+        target: Current,
+        voltage: Voltage,
+    ) -> (Current, Current) {
+        let Some(last) = self.last_ordered().filter(|last| !last.broken_off) else {
+            return (Current::ZERO, Current::ZERO);
+        };
+        let level = |step: &Ordered| match step.action {
+            Action::Rest | Action::Current { .. } => {
+                step.setpoint(start, voltage).unwrap_or(target)
+            }
+            Action::Power { .. } | Action::Resistance { .. } => target,
+        };
+        let first = level(last);
+        let off = (last.hold_end < start).then_some(Current::ZERO);
+        // Stragglers lie before the first step of the queue only.
+        let between = if self.queue.is_empty() { &self.stragglers[..] } else { &[] };
+        let others = between.iter().map(level).chain(off);
+        others.fold((first, first), |(least, most), level| (least.min(level), most.max(level)))
+    }
+
     /// How many queued steps have not begun at this time.
     pub(crate) fn waiting(&self, now: SinkTime) -> usize {
         self.queue.len() - self.queue.partition_point(|queued| queued.step.slot.start <= now)
@@ -143,6 +198,13 @@ impl Course {
     pub(crate) fn steps(&self) -> impl Iterator<Item = &Ordered> {
         let running = self.running.iter().map(|running| &running.step);
         running.chain(self.queue.iter().map(|queued| &queued.step))
+    }
+
+    /// The same with those that have been dropped and may begin nevertheless.
+    pub(crate) fn possible_steps(&self) -> impl Iterator<Item = &Ordered> {
+        let running = self.running.iter().map(|running| &running.step);
+        let queued = self.queue.iter().map(|queued| &queued.step);
+        running.chain(&self.stragglers).chain(queued)
     }
 
     /// The charge that the steps ask for between two instants, in uA us.
@@ -208,6 +270,7 @@ impl Course {
         if let Some(step) = current {
             step.slot.end = step.slot.end.min(time);
             step.drawn_until = drawn_until;
+            step.broken_off = true;
         }
         self.ahead = None;
         let reached = time.max(slot.start);

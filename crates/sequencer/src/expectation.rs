@@ -24,14 +24,16 @@ pub(crate) struct Ordered {
     pub(crate) action: Action,
     /// The setpoint just before its start; for a regulated one, what was expected then.
     pub(crate) before: Current,
-    /// Where a ramp begins.
-    pub(crate) ramp_from: Current,
+    /// Where a ramp begins, at least and at most: which step was running is not always sure.
+    pub(crate) ramp_from: (Current, Current),
     /// Time over which the setpoint moves.
     pub(crate) ramp: Span,
     /// When the sink turns off by itself if nothing follows.
     pub(crate) hold_end: SinkTime,
     /// Until when current may flow for it: its end, or later where nothing follows at once.
     pub(crate) drawn_until: SinkTime,
+    /// It was broken off: the sink is off before the next one begins.
+    pub(crate) broken_off: bool,
     /// The sink has said that it has it.
     pub(crate) acknowledged: bool,
     /// Its source is expected to give up.
@@ -45,18 +47,20 @@ impl Ordered {
     pub(crate) fn setpoint(&self, time: SinkTime, voltage: quantity::Voltage) -> Option<Current> {
         match self.action {
             Action::Rest => Some(Current::ZERO),
-            Action::Current { target, .. } => Some(self.on_ramp(time, target)),
+            Action::Current { target, .. } => {
+                Some(self.on_ramp(self.ramp_from.1, time, target))
+            }
             Action::Power { target } => target.over(voltage).filter(|current| !current.is_negative()),
             Action::Resistance { target } => voltage.over(target).map(|current| current.max(Current::ZERO)),
         }
     }
 
-    fn on_ramp(&self, time: SinkTime, target: Current) -> Current {
+    fn on_ramp(&self, from: Current, time: SinkTime, target: Current) -> Current {
         let gone = time.saturating_since(self.slot.start);
         if gone >= self.ramp {
             return target;
         }
-        let from = i128::from(self.ramp_from.microamperes());
+        let from = i128::from(from.microamperes());
         let to = i128::from(target.microamperes());
         let ramp = i128::from(self.ramp.micros()).max(1);
         let level = from + (to - from) * i128::from(gone.micros()) / ramp;
@@ -75,8 +79,10 @@ impl Ordered {
         match self.action {
             Action::Rest => (Current::ZERO, Some(Current::ZERO)),
             Action::Current { target, .. } => {
-                let (a, b) = (self.on_ramp(from, target), self.on_ramp(to, target));
-                (a.min(b), Some(a.max(b)))
+                let (least, most) = self.ramp_from;
+                let low = self.on_ramp(least, from, target).min(self.on_ramp(least, to, target));
+                let high = self.on_ramp(most, from, target).max(self.on_ramp(most, to, target));
+                (low, Some(high))
             }
             Action::Power { .. } => (
                 self.setpoint(to, voltage.max).unwrap_or(Current::ZERO),
@@ -141,7 +147,8 @@ impl Expectation {
             return;
         }
         // Anything asked for since shortly before the interval may still flow in it.
-        let (_, highest) = step.bounds(lagging.max(start), seen.time.min(end), seen.voltage);
+        let until = seen.time.min(end.max(step.drawn_until));
+        let (_, highest) = step.bounds(lagging.max(start), until, seen.voltage);
         let highest = highest.map(|current| current.min(cap));
         self.largest = self.largest.zip(highest).map(|(a, b)| a.max(b));
         if seen.from < start.saturating_add(SETTLING) {

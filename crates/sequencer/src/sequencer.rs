@@ -252,7 +252,7 @@ impl Sequencer {
     fn on_command(&mut self, command: &Command) {
         match command {
             Command::Stop => {
-                self.push(Output::Off);
+                self.off();
                 self.end(Ending::Stopped);
             }
             Command::Hold => self.hold(),
@@ -307,7 +307,7 @@ impl Sequencer {
 
     /// Off first; then what crossed, the first in the table's order naming the trip.
     pub(crate) fn trip(&mut self, crossings: &Crossings) {
-        self.push(Output::Off);
+        self.off();
         let mut first = None;
         for crossing in crossings.iter() {
             first.get_or_insert(crossing.interlock);
@@ -337,7 +337,7 @@ impl Sequencer {
                 wire::SinkState::Off | wire::SinkState::Latched(_) => false,
             };
             if on && event.at.saturating_since(self.now) >= OFF_BY {
-                self.push(Output::Off);
+                self.off();
                 self.now = event.at;
             }
         }
@@ -356,6 +356,13 @@ impl Sequencer {
 
     pub(crate) fn push(&mut self, output: Output) {
         self.out.push_back(output);
+    }
+
+    /// Off waits for nothing, not even for what the same event has brought before it.
+    pub(crate) fn off(&mut self) {
+        let overtaken = self.out.iter().any(|output| matches!(output, Output::Order { .. }));
+        assert!(!overtaken, "an order and then off in one event: the order would come after it");
+        self.out.push_front(Output::Off);
     }
 
     pub(crate) fn find(&mut self, finding: Finding) {

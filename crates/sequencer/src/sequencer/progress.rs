@@ -10,7 +10,7 @@ use super::{OFF_BY, REACTION, Sequencer};
 use crate::account::Increment;
 use crate::condition::Watch;
 use crate::course::{LoopWatch, Queued, Running, Suspension, moved};
-use crate::event::{Ending, Finding, Interlock, Output, StepEnd};
+use crate::event::{Ending, Finding, Interlock, StepEnd};
 use crate::expectation::Ordered;
 use crate::observation::Observation;
 use crate::orders::hold;
@@ -220,12 +220,13 @@ impl Sequencer {
             return;
         }
         let dropped = !self.course.queue.is_empty();
+        self.course.drop_from(0, start);
         let goes_on = match self.program.follow(op, frames, next) {
             Some(cursor) => self.course.set_out(&self.program, cursor, start),
             None => false,
         };
         if !goes_on {
-            self.push(Output::Off);
+            self.off();
             self.tell_end(by, time);
             self.end(Ending::Finished);
             return;
@@ -234,11 +235,6 @@ impl Sequencer {
             self.order(Order::Clear { from: SinkTime::ZERO });
         }
         self.bursts.wanted.clear();
-        if let Some(running) = &mut self.course.running {
-            let step = &mut running.step;
-            step.slot.end = start.min(step.hold_end);
-            step.drawn_until = step.slot.end;
-        }
         self.tell_end(by, start);
     }
 
@@ -261,7 +257,7 @@ impl Sequencer {
         if time < end {
             return;
         }
-        self.push(Output::Off);
+        self.off();
         self.end_running(end);
         self.end(Ending::Finished);
     }
@@ -287,18 +283,19 @@ impl Sequencer {
         }
         let start = self.sink_now().saturating_add(REACTION);
         self.course.delay_ahead(start);
-        self.draw_on_until_hold();
+        self.draw_on(start);
         self.find(Finding::Rescheduled { op, by: start.saturating_since(due) });
     }
 
-    /// Nothing follows the last step at once: it lasts until its hold runs out.
-    fn draw_on_until_hold(&mut self) {
+    /// The next step begins later than the last one ends: that one lasts until its hold runs out,
+    /// or until `start` if the next is queued by then.
+    fn draw_on(&mut self, start: SinkTime) {
         let last = match self.course.queue.back_mut() {
             Some(queued) => Some(&mut queued.step),
             None => self.course.running.as_mut().map(|running| &mut running.step),
         };
         if let Some(last) = last {
-            last.drawn_until = last.drawn_until.max(last.hold_end);
+            last.drawn_until = last.drawn_until.max(last.hold_end).max(start);
         }
     }
 
@@ -307,11 +304,10 @@ impl Sequencer {
         let place = self.course.queue.iter().position(|queued| queued.step.order == order);
         let Some(place) = place else { return };
         let Some(late) = self.course.queue.get(place).cloned() else { return };
-        self.course.queue.truncate(place);
-        self.draw_on_until_hold();
         self.order(Order::Clear { from: SinkTime::ZERO });
         let slot = late.step.slot;
         let start = self.sink_now().saturating_add(REACTION);
+        self.course.drop_from(place, start);
         let by = start.saturating_since(slot.start);
         self.find(Finding::Rescheduled { op: slot.op, by });
         self.bursts.wanted.clear();
@@ -327,7 +323,7 @@ impl Sequencer {
         let cap = self.program.plan().interlocks.over_current.threshold;
         let previous = self.course.last_ordered();
         let before = previous
-            .filter(|previous| previous.drawn_until >= slot.start)
+            .filter(|previous| !previous.broken_off && previous.drawn_until >= slot.start)
             .map_or(Current::ZERO, |previous| {
                 previous.setpoint(slot.start, self.voltage).unwrap_or(cap).min(cap)
             });
@@ -337,12 +333,7 @@ impl Sequencer {
                 (Current::ZERO, Span::ZERO)
             }
         };
-        // The sink ramps from where it is in the same mode, from the target itself on a change
-        // of mode (line protocol, section 3).
-        let ramp_from = match previous.map(|previous| previous.action) {
-            Some(Action::Power { .. } | Action::Resistance { .. }) => target,
-            Some(Action::Rest | Action::Current { .. }) | None => before,
-        };
+        let ramp_from = self.course.ramp_from(slot.start, target, self.voltage);
         let planned = step.duration.saturating_sub(slot.end.saturating_since(slot.start));
         let ramp = match carried {
             // What is left of a ramp that had begun.
@@ -371,6 +362,7 @@ impl Sequencer {
             before,
             ramp_from,
             ramp,
+            broken_off: false,
             acknowledged: false,
             may_give_up,
         };
@@ -479,7 +471,7 @@ impl Sequencer {
             return;
         }
         let now = self.sink_now();
-        self.push(Output::Off);
+        self.off();
         // Whatever overtakes or follows `off` on its way must not be carried out later.
         self.order(Order::Clear { from: SinkTime::ZERO });
         self.bursts.clear();
@@ -525,12 +517,13 @@ impl Sequencer {
             let untils = self.program.head(watched.frame.head).map_or(&[][..], |head| &head.until);
             watched.watch.resume(untils, start.saturating_add(tick));
         }
-        let carried = self
-            .course
-            .running
-            .take()
-            .filter(|running| suspension.begun && running.step.slot.op == slot.op)
-            .map(|running| running.watch);
+        // The step that was broken off stays until this one begins: what it drew may still show
+        // in the next reading.
+        let carried = self.course.running.as_mut().and_then(|running| {
+            running.ended = true;
+            let same = suspension.begun && running.step.slot.op == slot.op;
+            same.then(|| running.watch.clone())
+        });
         self.course.set_out_from(slot);
         if let Some((slot, last)) = self.course.take(&self.program) {
             self.queue_step(slot, last, carried);

@@ -108,7 +108,7 @@ impl Sequencer {
         match self.phase {
             Phase::Progress | Phase::Pause(_) => {
                 let cap = self.plan().interlocks.over_current.threshold;
-                Expectation::new(self.course.steps(), seen, cap)
+                Expectation::new(self.course.possible_steps(), seen, cap)
             }
             // The first reading of a session may hold what flowed before it.
             Phase::Preparation(_) if seen.first => Expectation { largest: None, ..Expectation::OFF },

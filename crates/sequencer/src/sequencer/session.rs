@@ -6,7 +6,7 @@ use wire::{Cause, Order, OrderId};
 
 use super::{LEAD, REACTION, Sequencer};
 use crate::account::Increment;
-use crate::event::{Ending, Finding, Interlock, Output};
+use crate::event::{Ending, Finding, Interlock};
 use crate::phase::{Phase, Preparation};
 use crate::program::Cursor;
 
@@ -23,7 +23,7 @@ impl Sequencer {
             Phase::Waiting | Phase::Progress | Phase::Pause(_) | Phase::End(_) => (false, false),
         };
         if again && self.plan().on_interruption == OnInterruption::End {
-            self.push(Output::Off);
+            self.off();
             self.end(Ending::Interrupted);
             return;
         }
@@ -104,6 +104,8 @@ impl Sequencer {
             Some(suspension) => {
                 self.find(Finding::Continued);
                 self.take_up(&suspension, start);
+                // Its times may be of a clock that is no more.
+                self.course.running = None;
             }
             None => {
                 self.course.set_out(&self.program, Cursor::default(), start);
