@@ -10,7 +10,8 @@
 //! - Integer arithmetic only: the same samples give the same estimate, bit for bit.
 //! - Memory is bounded, whatever the length of the run.
 //! - The uncertainty is a bound, not a standard deviation: half the slowest round trip that was
-//!   fitted, growing with the distance from the fitted samples by the rate's own bound.
+//!   fitted, or the worst distance of a fitted sample from the line if that is more; growing
+//!   with the distance from the fitted samples by the rate's own bound.
 //!
 //! What it deliberately does not do: it reads no clock, and it does not judge. A jump or a rate
 //! out of bounds is reported; what follows is decided above.

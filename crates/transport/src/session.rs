@@ -217,13 +217,14 @@ impl Session {
             return;
         }
         let granted = self.budget.take(bytes.len(), now);
-        for byte in bytes.iter().take(granted) {
-            match self.decoder.push(*byte) {
-                None => {}
-                Some(Ok(line)) => self.hear(line, now),
-                Some(Err(_)) => self.damaged(Side::Host, 1),
+        let mut decoder = std::mem::take(&mut self.decoder);
+        for line in decoder.feed(bytes.get(..granted).unwrap_or(bytes)) {
+            match line {
+                Ok(line) => self.hear(&line, now),
+                Err(_) => self.damaged(Side::Host, 1),
             }
         }
+        self.decoder = decoder;
         let flooded = bytes.len().saturating_sub(granted) as u64;
         if flooded > 0 {
             self.decoder.clear();

@@ -5,6 +5,11 @@ use serde::{Deserialize, Serialize};
 
 const BILLION: i128 = 1_000_000_000;
 
+/// Microseconds by which a line may move, and parts per billion by which it may turn, without
+/// being worth a word: far below what any figure can see.
+const MOVED_LEAST: u128 = 50;
+const TURNED_LEAST: u64 = 500;
+
 /// A straight line through the fastest round trips: `sink = anchor + elapsed * (1 + rate)`.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
@@ -38,23 +43,40 @@ impl ClockEstimate {
         let (host_first, sink_first) = (i128::from(host_first), i128::from(sink_first));
         let mut sums = Sums::default();
         let mut length = 0;
-        for (host, sink) in samples {
+        for (host, sink) in samples.clone() {
             // The sink's lead over the host since the first sample: small numbers, exact sums.
             length = i128::from(host) - host_first;
             sums.add(length, i128::from(sink) - sink_first - length);
         }
+        // Both clocks are read in whole microseconds.
+        let reading = i128::from(round_trip) + 2;
         let (rate, rate_uncertainty) = match sums.slope_billionths() {
-            Some(rate) if length > 0 => (rate, (i128::from(round_trip) * BILLION / length).max(1)),
+            Some(rate) if length > 0 => (rate, reading * BILLION / length + 1),
             _ => (0, i128::from(rate_ppb_unknown)),
         };
         let (mean_x, mean_y) = (divide(sums.x, sums.count), divide(sums.y, sums.count));
-        Some(Self {
+        let mut estimate = Self {
             host: HostTime::from_micros(i64::try_from(host_first + mean_x).ok()?),
             sink: SinkTime::from_micros(u64::try_from(sink_first + mean_x + mean_y).ok()?),
             rate_ppb: i64::try_from(rate).ok()?,
-            uncertainty: Span::from_micros(round_trip.div_ceil(2).max(1)),
+            uncertainty: Span::from_micros(u64::try_from(reading).ok()?.div_ceil(2)),
             rate_uncertainty_ppb: u64::try_from(rate_uncertainty).ok()?,
-        })
+        };
+        // Where the clock did not run straight, the line is no better than it fits.
+        let worst = estimate.worst_residual(samples);
+        estimate.uncertainty = estimate.uncertainty.max(worst);
+        Some(estimate)
+    }
+
+    fn worst_residual(&self, samples: impl Iterator<Item = (i64, u64)>) -> Span {
+        let worst = samples
+            .map(|(host, sink)| {
+                let line = self.sink_micros_at(HostTime::from_micros(host));
+                (i128::from(sink) - line).unsigned_abs()
+            })
+            .max()
+            .unwrap_or(0);
+        Span::from_micros(u64::try_from(worst).unwrap_or(u64::MAX))
     }
 
     /// Sink time in microseconds, which the line may put before the sink's start.
@@ -90,13 +112,15 @@ impl ClockEstimate {
         self.uncertainty.saturating_add(drift)
     }
 
-    /// Whether `newer` says something that a record should know: the line moved beyond this
-    /// one's bounds, its bounds halved, or a minute has passed.
+    /// Whether `newer` says something that a record should know: the line moved or turned
+    /// beyond this one's bounds and by more than matters, its bounds halved, or a minute has
+    /// passed.
     pub fn materially_differs(&self, newer: &Self) -> bool {
         let moved = (self.sink_micros_at(newer.host) - i128::from(newer.sink.micros()))
             .unsigned_abs()
-            > u128::from(self.uncertainty_at(newer.host).micros());
-        let turned = self.rate_ppb.abs_diff(newer.rate_ppb) > self.rate_uncertainty_ppb;
+            > u128::from(self.uncertainty_at(newer.host).micros()) + MOVED_LEAST;
+        let turned = self.rate_ppb.abs_diff(newer.rate_ppb)
+            > self.rate_uncertainty_ppb.saturating_add(TURNED_LEAST);
         let sharper = newer.uncertainty.micros() < self.uncertainty.micros() / 2
             || newer.rate_uncertainty_ppb < self.rate_uncertainty_ppb / 2;
         let old = newer.host.saturating_since(self.host) >= Span::from_secs(60);

@@ -56,7 +56,7 @@ fn a_sample_alone_aligns_to_within_half_its_round_trip() {
     let mut clock = ClockAlignment::new(ClockBounds::default());
     truth.ask(&mut clock, SECOND, 300, 1_700);
     let estimate = clock.estimate().unwrap();
-    assert_eq!(estimate.uncertainty, Span::from_micros(1_000));
+    assert_eq!(estimate.uncertainty, Span::from_micros(1_001));
     assert_eq!(estimate.rate_ppb, 0);
     let host = HostTime::from_micros(SECOND + 300);
     let error = estimate
@@ -196,4 +196,58 @@ fn a_long_gap_is_no_fault() {
     };
     let mut clock = run(&truth, 60);
     assert_eq!(truth.ask(&mut clock, 100 * 86_400 * SECOND, 700, 800), None);
+}
+
+#[test]
+fn a_clock_that_does_not_run_straight_widens_the_bound() {
+    let mut clock = ClockAlignment::new(ClockBounds::default());
+    // The rate rises by 4 ppm each second, as of an RC oscillator that warms up.
+    let sink = |host: i64| {
+        let seconds = host / 1_000;
+        SinkTime::from_micros(
+            u64::try_from(SECOND + host + 2 * seconds * seconds / SECOND).unwrap(),
+        )
+    };
+    for place in 0..400 {
+        let host = place * SECOND * 2 / 3;
+        let fault = clock.add(
+            HostTime::from_micros(host),
+            HostTime::from_micros(host + 1_500),
+            sink(host + 750),
+        );
+        assert_eq!(fault, None);
+    }
+    let estimate = clock.estimate().unwrap();
+    let host = 400 * SECOND * 2 / 3;
+    let at = HostTime::from_micros(host);
+    let error = estimate
+        .sink_at(at)
+        .unwrap()
+        .micros()
+        .abs_diff(sink(host).micros());
+    assert!(error > 5_000, "{error} us is no test");
+    assert!(
+        error <= estimate.uncertainty_at(at).micros() * 11 / 10,
+        "{error} us off: {estimate:?}"
+    );
+}
+
+#[test]
+fn a_steady_clock_makes_few_words() {
+    let truth = Truth {
+        offset: -SECOND,
+        ppm: 40,
+    };
+    let mut clock = ClockAlignment::new(ClockBounds::default());
+    let mut told: Option<ClockEstimate> = None;
+    let mut words = 0;
+    for place in 0..1_800 {
+        truth.ask(&mut clock, place * 2 * SECOND, 0, 0);
+        let estimate = clock.estimate().unwrap();
+        if told.is_none_or(|told| told.materially_differs(&estimate)) {
+            told = Some(estimate);
+            words += 1;
+        }
+    }
+    assert!((60..80).contains(&words), "{words} in an hour");
 }

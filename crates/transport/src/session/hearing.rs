@@ -16,13 +16,13 @@ use super::{Phase, REPORT_INTERVAL, Session, third};
 const TIME_BACK_TOLERANCE: Span = Span::from_secs(1);
 
 impl Session {
-    pub(super) fn hear(&mut self, line: SinkLine, now: HostTime) {
-        match line {
+    pub(super) fn hear(&mut self, line: &SinkLine, now: HostTime) {
+        match *line {
             SinkLine::About { token, .. }
             | SinkLine::Front { token, .. }
             | SinkLine::Drive { token, .. }
             | SinkLine::Sense { token, .. }
-            | SinkLine::Ready { token, .. } => self.hear_description(token, &line, now),
+            | SinkLine::Ready { token, .. } => self.hear_description(token, line, now),
             SinkLine::OffDone { token } => self.hear_off_done(token, now),
             SinkLine::Ok { .. }
             | SinkLine::No { .. }
@@ -44,8 +44,8 @@ impl Session {
         }
     }
 
-    fn hear_in_session(&mut self, line: SinkLine, now: HostTime) {
-        match line {
+    fn hear_in_session(&mut self, line: &SinkLine, now: HostTime) {
+        match *line {
             SinkLine::Ok { number } => self.hear_ok(number, now),
             SinkLine::No { number, reason } => self.hear_no(number, reason, now),
             SinkLine::NoGap { expected, .. } => self.hear_gap(expected, now),

@@ -103,8 +103,9 @@ impl Pairing {
         };
         let moved =
             i128::from(counters.charge.microcoulombs()) - i128::from(last.charge.microcoulombs());
-        let most = i128::from(full_scale.microamperes()) * i128::from(passed.micros()) / 500_000;
-        moved.abs() <= most + CHARGE_SLACK
+        // Current times time in millionths of a microcoulomb, so that nothing is divided.
+        let most = 2 * i128::from(full_scale.microamperes()) * i128::from(passed.micros());
+        moved.abs() * 1_000_000 <= most + CHARGE_SLACK * 1_000_000
     }
 
     /// Takes an `r` line.

@@ -7,6 +7,7 @@ mod off;
 mod orders;
 mod peer;
 mod reboot;
+mod speed;
 
 use super::*;
 use peer::Peer;
