@@ -107,6 +107,16 @@ impl Course {
         }
     }
 
+    /// Another step runs: what was dropped cannot begin any more.
+    pub(crate) fn forget_stragglers(&mut self) {
+        self.stragglers.clear();
+    }
+
+    /// Whether a dropped step's own hold may have run out at this time.
+    pub(crate) fn straggler_expired(&self, time: SinkTime) -> bool {
+        self.stragglers.iter().any(|step| step.hold_end <= time)
+    }
+
     /// Sets out from exactly this slot.
     pub(crate) fn set_out_from(&mut self, slot: Slot) {
         self.queue.clear();
@@ -170,23 +180,20 @@ impl Course {
         &self,
         start: SinkTime,
         target: Current,
-        voltage: Voltage,
     ) -> (Current, Current) {
         let Some(last) = self.last_ordered().filter(|last| !last.broken_off) else {
             return (Current::ZERO, Current::ZERO);
         };
         let level = |step: &Ordered| match step.action {
-            Action::Rest | Action::Current { .. } => {
-                step.setpoint(start, voltage).unwrap_or(target)
-            }
-            Action::Power { .. } | Action::Resistance { .. } => target,
+            Action::Rest | Action::Current { .. } => step.levels(start).unwrap_or((target, target)),
+            Action::Power { .. } | Action::Resistance { .. } => (target, target),
         };
         let first = level(last);
-        let off = (last.hold_end < start).then_some(Current::ZERO);
+        let off = (last.hold_end < start).then_some((Current::ZERO, Current::ZERO));
         // Stragglers lie before the first step of the queue only.
         let between = if self.queue.is_empty() { &self.stragglers[..] } else { &[] };
         let others = between.iter().map(level).chain(off);
-        others.fold((first, first), |(least, most), level| (least.min(level), most.max(level)))
+        others.fold(first, |a, b| (a.0.min(b.0), a.1.max(b.1)))
     }
 
     /// How many queued steps have not begun at this time.

@@ -67,6 +67,18 @@ impl Ordered {
         Current::from_microamperes(i64::try_from(level).unwrap_or(target.microamperes()))
     }
 
+    /// Least and largest setpoint at an instant; `None` for a regulated step.
+    pub(crate) fn levels(&self, time: SinkTime) -> Option<(Current, Current)> {
+        match self.action {
+            Action::Rest => Some((Current::ZERO, Current::ZERO)),
+            Action::Current { target, .. } => {
+                let (least, most) = self.ramp_from;
+                Some((self.on_ramp(least, time, target), self.on_ramp(most, time, target)))
+            }
+            Action::Power { .. } | Action::Resistance { .. } => None,
+        }
+    }
+
     /// Least and largest setpoint between two instants of the step.
     ///
     /// For a regulated step `voltage` bounds them; the largest is `None` if nothing does.
@@ -79,10 +91,9 @@ impl Ordered {
         match self.action {
             Action::Rest => (Current::ZERO, Some(Current::ZERO)),
             Action::Current { target, .. } => {
-                let (least, most) = self.ramp_from;
-                let low = self.on_ramp(least, from, target).min(self.on_ramp(least, to, target));
-                let high = self.on_ramp(most, from, target).max(self.on_ramp(most, to, target));
-                (low, Some(high))
+                let flat = (target, target);
+                let (a, b) = (self.levels(from).unwrap_or(flat), self.levels(to).unwrap_or(flat));
+                (a.0.min(b.0), Some(a.1.max(b.1)))
             }
             Action::Power { .. } => (
                 self.setpoint(to, voltage.max).unwrap_or(Current::ZERO),

@@ -97,6 +97,7 @@ impl Sequencer {
                 increment.at_edge(edge, share)
             };
             let Some(next) = self.course.queue.pop_front() else { return };
+            self.course.forget_stragglers();
             self.end_running(edge);
             let valid_from = edge.saturating_add(self.plan().tick);
             self.enter_loops(&next.step.slot, valid_from, base);
@@ -333,7 +334,8 @@ impl Sequencer {
                 (Current::ZERO, Span::ZERO)
             }
         };
-        let ramp_from = self.course.ramp_from(slot.start, target, self.voltage);
+        let ramp_from = self.course.ramp_from(slot.start, target);
+        let before = before.max(ramp_from.1);
         let planned = step.duration.saturating_sub(slot.end.saturating_since(slot.start));
         let ramp = match carried {
             // What is left of a ramp that had begun.
@@ -457,7 +459,8 @@ impl Sequencer {
             .next_back()
             .or(self.course.running.as_ref().map(|running| &running.step));
         let slack = Span::from_micros(self.plan().tick.micros().saturating_mul(2));
-        let early = begun.is_none_or(|step| time.saturating_add(slack) < step.hold_end);
+        let early = begun.is_none_or(|step| time.saturating_add(slack) < step.hold_end)
+            && !self.course.straggler_expired(time.saturating_add(slack));
         if early {
             let due = begun.map_or(SinkTime::ZERO, |step| step.hold_end);
             let early_by = due.saturating_since(time);
