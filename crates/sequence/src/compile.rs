@@ -205,4 +205,8 @@ fn plan(
 }
 
 #[cfg(test)]
+#[expect(
+    clippy::needless_raw_string_hashes,
+    reason = "expect-test writes its texts with hashes"
+)]
 mod tests;

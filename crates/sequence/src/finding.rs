@@ -193,7 +193,7 @@ impl fmt::Display for Finding {
         let gutter = number.len();
         writeln!(
             f,
-            "{:gutter$} at line {}, column {} ({pointer})",
+            "{:gutter$}  at line {}, column {} ({pointer})",
             "", place.line, place.column
         )?;
         writeln!(f, "{number}: {}", place.excerpt)?;
@@ -227,4 +227,8 @@ impl fmt::Display for Findings {
 }
 
 #[cfg(test)]
+#[expect(
+    clippy::needless_raw_string_hashes,
+    reason = "expect-test writes its texts with hashes"
+)]
 mod tests;

@@ -245,4 +245,8 @@ impl<'a> Source<'a> {
 }
 
 #[cfg(test)]
+#[expect(
+    clippy::needless_raw_string_hashes,
+    reason = "expect-test writes its texts with hashes"
+)]
 mod tests;

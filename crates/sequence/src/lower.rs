@@ -85,6 +85,27 @@ struct Common<'a> {
     label: Option<u32>,
 }
 
+impl Common<'_> {
+    /// An instruction that simply lasts.
+    fn plain(&self, action: Action, duration: Span) -> PlanStep {
+        let step = self.step;
+        PlanStep {
+            action,
+            duration,
+            until: Vec::new(),
+            then: Next::GoOn,
+            readback: step.readback,
+            may_give_up: step.may_give_up,
+            burst: None,
+            label: self.label,
+            pointer: step.pointer.clone(),
+        }
+    }
+}
+
+/// The first elapsed time among conditions, and what follows it.
+type Elapsed = Option<(Span, Next)>;
+
 impl Writer<'_> {
     fn here(&self) -> Option<OpIndex> {
         OpIndex::try_from(self.ops.len()).ok()
@@ -149,7 +170,7 @@ impl Writer<'_> {
     fn conditional(&self, common: &Common<'_>, action: Action, duration: Span) -> Option<PlanStep> {
         let step = common.step;
         let (until, elapsed) = self.until(&step.until)?;
-        let mut plain = self.plain(common, action, duration);
+        let mut plain = common.plain(action, duration);
         plain.until = until;
         plain.then = self.next(&step.then)?;
         plain.burst = step
@@ -162,26 +183,10 @@ impl Writer<'_> {
         Some(plain)
     }
 
-    /// An instruction that simply lasts.
-    fn plain(&self, common: &Common<'_>, action: Action, duration: Span) -> PlanStep {
-        let step = common.step;
-        PlanStep {
-            action,
-            duration,
-            until: Vec::new(),
-            then: Next::GoOn,
-            readback: step.readback,
-            may_give_up: step.may_give_up,
-            burst: None,
-            label: common.label,
-            pointer: step.pointer.clone(),
-        }
-    }
-
     /// The conditions, and the first elapsed time among them.
-    fn until(&self, until: &[UntilDraft]) -> Option<(Vec<Until>, Option<(Span, Next)>)> {
+    fn until(&self, until: &[UntilDraft]) -> Option<(Vec<Until>, Elapsed)> {
         let mut conditions = Vec::new();
-        let mut elapsed: Option<(Span, Next)> = None;
+        let mut elapsed: Elapsed = None;
         for draft in until {
             let then = self.next(&draft.then)?;
             match draft.condition? {
@@ -214,7 +219,7 @@ impl Writer<'_> {
         if self.level == Some(from) {
             return Span::ZERO;
         }
-        let edge = self.plain(common, constant(from), self.tick);
+        let edge = common.plain(constant(from), self.tick);
         self.ops.push(Op::Step(edge));
         self.tick
     }
@@ -283,7 +288,7 @@ impl Writer<'_> {
     fn segment(&mut self, common: &Common<'_>, segment: Segment) -> Option<()> {
         match segment {
             Segment::Hold { current, span } => {
-                let step = self.plain(common, constant(current), span);
+                let step = common.plain(constant(current), span);
                 self.ops.push(Op::Step(step));
                 self.level = Some(current);
             }
@@ -293,7 +298,7 @@ impl Writer<'_> {
                     target: to,
                     ramp: duration,
                 };
-                let step = self.plain(common, action, duration);
+                let step = common.plain(action, duration);
                 self.ops.push(Op::Step(step));
                 self.level = Some(to);
             }

@@ -12,12 +12,14 @@
 //! - every interlock that can be judged from the host has a threshold.
 
 mod estimate;
+mod forecast;
 mod validate;
 
 use quantity::{Charge, Current, Energy, Power, Resistance, Span, Temperature, Voltage};
 use serde::{Deserialize, Serialize};
 use sink::correction::Correction;
 
+pub use forecast::{Band, Forecast, Outline, OutlinePoint};
 pub use validate::PlanError;
 
 /// A place in [`Plan::ops`].

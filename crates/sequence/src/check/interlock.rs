@@ -408,7 +408,8 @@ pub(super) fn not_at_once(scene: &Scene<'_>, findings: &mut Findings) {
     let merged = scene.merged;
     if let Some(trip) = merged.over_current.map(|armed| armed.threshold) {
         each_current(scene, &mut |step, current, why| {
-            if current >= trip {
+            // Beyond the sink itself is another rule's finding, and one is enough.
+            if current >= trip && current <= scene.facts.current_max {
                 let message = format!("{why}, at which `over_current` at {trip} trips");
                 let hint = format!(
                     "draw less than {trip}, or raise `over_current` as far as the bench lets you"
@@ -422,7 +423,7 @@ pub(super) fn not_at_once(scene: &Scene<'_>, findings: &mut Findings) {
     }
     if let Some(trip) = merged.over_power.map(|armed| armed.threshold) {
         each_power(scene, &mut |step, power, why| {
-            if power >= trip {
+            if power >= trip && power <= scene.facts.power_max {
                 let message = format!("{why}, at which `over_power` at {trip} trips");
                 let hint = format!(
                     "stay below {trip}, or raise `over_power` as far as the bench lets you"

@@ -20,7 +20,7 @@ fn each_until<'a>(scene: &'a Scene<'_>, visit: &mut dyn FnMut(&'a StepDraft, &'a
 
 fn behind(
     until: &UntilDraft,
-    (key, interlock): (&str, &str),
+    (key, interlock, side): (&str, &str, &str),
     value: impl fmt::Display,
     trip: impl fmt::Display,
     findings: &mut Findings,
@@ -30,7 +30,7 @@ fn behind(
             Rule::UntilBehindInterlock,
             format!("{}/{key}", until.pointer),
             format!("the interlock `{interlock}` at {trip} trips before {value} is reached"),
-            format!("move one of the two so that the condition comes first by more than the noise of a readback ({interlock} is at {trip})"),
+            format!("write {side} {trip}, or move the interlock"),
         )
         .numbers(value, trip),
     );
@@ -48,7 +48,7 @@ pub(super) fn before_interlock(scene: &Scene<'_>, findings: &mut Findings) {
                 if let Some(trip) = trip.filter(|&trip| trip >= value) {
                     behind(
                         until,
-                        ("voltage_below", "undervoltage"),
+                        ("voltage_below", "undervoltage", "more than"),
                         value,
                         trip,
                         findings,
@@ -60,7 +60,7 @@ pub(super) fn before_interlock(scene: &Scene<'_>, findings: &mut Findings) {
                 if let Some(trip) = trip.filter(|&trip| trip <= value) {
                     behind(
                         until,
-                        ("voltage_above", "over_voltage"),
+                        ("voltage_above", "over_voltage", "less than"),
                         value,
                         trip,
                         findings,
@@ -72,7 +72,7 @@ pub(super) fn before_interlock(scene: &Scene<'_>, findings: &mut Findings) {
                 if let Some(trip) = trip.filter(|&trip| trip <= value) {
                     behind(
                         until,
-                        ("current_above", "over_current"),
+                        ("current_above", "over_current", "less than"),
                         value,
                         trip,
                         findings,
@@ -84,7 +84,7 @@ pub(super) fn before_interlock(scene: &Scene<'_>, findings: &mut Findings) {
                 if let Some(trip) = trip.filter(|&trip| trip <= value) {
                     behind(
                         until,
-                        ("temperature_above", "over_temperature"),
+                        ("temperature_above", "over_temperature", "less than"),
                         value,
                         trip,
                         findings,
@@ -93,12 +93,24 @@ pub(super) fn before_interlock(scene: &Scene<'_>, findings: &mut Findings) {
             }
             Condition::Charge(value) => {
                 if let Some(trip) = merged.charge.filter(|&trip| trip <= value) {
-                    behind(until, ("charge", "charge"), value, trip, findings);
+                    behind(
+                        until,
+                        ("charge", "charge", "less than"),
+                        value,
+                        trip,
+                        findings,
+                    );
                 }
             }
             Condition::Energy(value) => {
                 if let Some(trip) = merged.energy.filter(|&trip| trip <= value) {
-                    behind(until, ("energy", "energy"), value, trip, findings);
+                    behind(
+                        until,
+                        ("energy", "energy", "less than"),
+                        value,
+                        trip,
+                        findings,
+                    );
                 }
             }
             Condition::CurrentBelow(_)

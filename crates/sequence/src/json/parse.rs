@@ -129,7 +129,7 @@ impl Parser<'_> {
             Some('{') => self.object(depth)?,
             Some('[') => self.list(depth)?,
             Some('"') => self.string()?.map_or(Value::Damaged, Value::Text),
-            Some('\'') => self.single_quoted()?,
+            Some('\'') => Value::Text(self.single_quoted()?),
             Some(c) if c.is_ascii_digit() || matches!(c, '-' | '+' | '.') => self.number(),
             Some(c) if c.is_alphabetic() => self.word(),
             Some(_) | None => return self.stuck("a value", "write a text in double quotes"),
@@ -152,15 +152,12 @@ impl Parser<'_> {
         }
         loop {
             let member = self.member(depth)?;
-            if let Some(first) = members.iter().find(|other| other.key == member.key) {
+            if members.iter().any(|other| other.key == member.key) {
                 self.problems.push(Problem {
                     rule: Rule::JsonDuplicateKey,
                     extent: member.key_extent,
                     message: format!("the key `{}` stands twice in one object", member.key),
-                    hint: format!(
-                        "keep one; the first is at byte {} of the text",
-                        first.key_extent.start
-                    ),
+                    hint: "keep one of the two".to_owned(),
                 });
             } else {
                 members.push(member);
@@ -224,10 +221,7 @@ impl Parser<'_> {
         let start = self.at;
         let key = match self.peek() {
             Some('"') => self.string()?.unwrap_or_default(),
-            Some('\'') => match self.single_quoted()? {
-                Value::Text(key) => key,
-                _ => String::new(),
-            },
+            Some('\'') => self.single_quoted()?,
             Some(c) if c.is_alphabetic() || c == '_' => {
                 let word = self.bare_word();
                 self.problem(
@@ -302,7 +296,7 @@ impl Parser<'_> {
         Value::Damaged
     }
 
-    fn single_quoted(&mut self) -> Result<Value, Stuck> {
+    fn single_quoted(&mut self) -> Result<String, Stuck> {
         let start = self.at;
         let inside = self.text.get(start + 1..).unwrap_or("");
         let Some(length) = inside.find(['\'', '\n']) else {
@@ -317,7 +311,7 @@ impl Parser<'_> {
             "a text in single quotes",
             "write it in double quotes",
         );
-        Ok(Value::Text(text))
+        Ok(text)
     }
 
     /// A string; `None` when its inside is damaged but its end was found.
@@ -340,18 +334,19 @@ impl Parser<'_> {
             self.at += character.len_utf8();
             match character {
                 '"' => return Ok(whole.then_some(text)),
-                '\\' => match self.escape() {
-                    Some(character) => text.push(character),
-                    None => {
-                        whole = false;
-                        self.problem(
-                            here,
-                            self.at.max(here + 1),
-                            "an escape that JSON does not have",
-                            "write \\\\ for a backslash, \\\" for a quote, \\n for a line end",
-                        );
+                '\\' => {
+                    if let Some(character) = self.escape() {
+                        text.push(character);
+                        continue;
                     }
-                },
+                    whole = false;
+                    self.problem(
+                        here,
+                        self.at.max(here + 1),
+                        "an escape that JSON does not have",
+                        "write \\\\ for a backslash, \\\" for a quote, \\n for a line end",
+                    );
+                }
                 '\n' => {
                     // Almost always a forgotten quote: the next line is read as JSON again.
                     self.at = here;
