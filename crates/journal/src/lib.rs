@@ -22,9 +22,11 @@
 mod checked;
 mod checksum;
 mod chunk;
+mod columns;
 mod compact;
 mod entry;
 mod error;
+mod export;
 mod layout;
 mod line;
 mod manifest;
@@ -33,19 +35,25 @@ mod recovery;
 mod seal;
 mod segment;
 mod storage;
+mod thin;
 mod thread;
+mod verify;
 mod writer;
 
 pub use chunk::{Chunk, Chunks, Readings};
+pub use columns::{COLUMNS, Cell, Column, Row};
 pub use entry::{Body, ClockAlignment, Entry, Note, Side};
 pub use error::{Damage, Failure, JournalError};
+pub use export::{Progress, export_csv};
 pub use line::LineFault;
 pub use manifest::{ClockKind, Ended, Manifest, SequenceText};
 pub use record::{Entries, Record};
 pub use recovery::{Recovery, SetAside};
 pub use seal::{Seal, SealedFile, SealedSegment, seal};
 pub use storage::{Disk, Storage, StoredFile};
+pub use thin::{Bucket, Extremes, thin};
 pub use thread::{JournalNews, NotTaken, Timing, WriterThread};
+pub use verify::{Finding, FindingKind, Place, VerifyReport, verify};
 pub use writer::{Options, Writer};
 
 /// The version of the record's format this crate writes and reads.

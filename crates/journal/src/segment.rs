@@ -7,7 +7,8 @@
 //! This module reads and writes bytes of one segment; it moves no files about but for
 //! [`compress`].
 
-use std::io::{self, Read};
+use std::fs::File;
+use std::io::{self, BufRead, BufReader, Read};
 use std::path::Path;
 
 use quantity::HostTime;
@@ -21,6 +22,9 @@ use crate::{Damage, Entry, FORMAT, JournalError, LineFault, compact, line};
 const COMPRESSION_LEVEL: i32 = 3;
 /// What a damaged compressed segment may claim to hold before it is not believed.
 const PLAIN_BYTES_MAX: u64 = 1 << 30;
+
+/// No first line is longer.
+const HEADER_BYTES_MAX: u64 = 1 << 16;
 
 /// A segment's first line.
 #[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
@@ -125,9 +129,10 @@ impl<'a> Reader<'a> {
             number: 1,
             offset: 0,
         });
-        let header = match first.whole {
-            true => Header::decode(first.bytes),
-            false => Err(LineFault::Unfinished),
+        let header = if first.whole {
+            Header::decode(first.bytes)
+        } else {
+            Err(LineFault::Unfinished)
         }
         .and_then(|header| check_header(header, expected))
         .map_err(|fault| first.damage(file, fault))?;
@@ -212,6 +217,16 @@ impl<'a> Reader<'a> {
                 found,
             })
         }
+    }
+
+    /// Takes a number for read, whatever had to come: for a check that reads past damage.
+    pub(crate) fn go_on_after(&mut self, number: u64) {
+        self.next_number = number.saturating_add(1);
+    }
+
+    /// The line that comes next and its first byte's place.
+    pub(crate) fn place(&self) -> (u64, u64) {
+        (self.lines.number + 1, self.lines.offset)
     }
 
     pub(crate) fn file(&self) -> &'a str {
@@ -409,6 +424,32 @@ pub(crate) fn load(
     }
     let (path, error) = missing.unwrap_or((journal.to_path_buf(), io::ErrorKind::NotFound.into()));
     Err(JournalError::io("reading", &path, error))
+}
+
+/// Reads only a segment's first line; `None` if it does not hold.
+pub(crate) fn peek(journal: &Path, segment: u32) -> Result<Option<Header>, JournalError> {
+    for stored in [Stored::Plain, Stored::Compressed] {
+        let path = journal.join(stored.name(segment));
+        let file = match File::open(&path) {
+            Ok(file) => file,
+            Err(error) if error.kind() == io::ErrorKind::NotFound => continue,
+            Err(error) => return Err(JournalError::io("reading", &path, error)),
+        };
+        let mut first = Vec::new();
+        let read = match stored {
+            Stored::Plain => BufReader::new(file)
+                .take(HEADER_BYTES_MAX)
+                .read_until(b'\n', &mut first),
+            Stored::Compressed => zstd::stream::read::Decoder::new(file).and_then(|plain| {
+                BufReader::new(plain)
+                    .take(HEADER_BYTES_MAX)
+                    .read_until(b'\n', &mut first)
+            }),
+        };
+        let line = read.ok().and_then(|_| first.strip_suffix(b"\n"));
+        return Ok(line.and_then(|line| Header::decode(line).ok()));
+    }
+    Ok(None)
 }
 
 /// The plain bytes, or what could be had of them and why not more.

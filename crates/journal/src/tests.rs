@@ -1,6 +1,6 @@
 //! Tests of the whole record, and what they share: an invented run of an invented bench.
 
 mod crash;
-mod fixture;
+pub(crate) mod fixture;
 mod reading;
 mod writing;

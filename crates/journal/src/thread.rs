@@ -252,7 +252,7 @@ impl Loop {
         while let Some(job) = next {
             match job {
                 Job::Entries { entries, urgent } => {
-                    self.append(entries);
+                    self.append(&entries);
                     urgent_waits |= urgent;
                 }
                 Job::Manifest(change) => {
@@ -269,9 +269,9 @@ impl Loop {
         true
     }
 
-    fn append(&mut self, entries: Vec<Entry>) {
+    fn append(&mut self, entries: &[Entry]) {
         let count = entries.len() as u64;
-        for entry in &entries {
+        for entry in entries {
             if self.writer.failure().is_some() {
                 break;
             }

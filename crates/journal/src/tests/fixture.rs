@@ -183,7 +183,9 @@ pub(crate) fn entry(number: u64) -> Entry {
         },
         3 => Body::Event(Happening::Acknowledged { order: OrderId(1) }),
         4 => Body::Finding(Finding::StepBegan { op: 1, time }),
-        _ if number % 50 == 0 => Body::Note(Note::Text(format!("note {number}, \"quoted\"\n"))),
+        _ if number.is_multiple_of(50) => {
+            Body::Note(Note::Text(format!("note {number}, \"quoted\"\n")))
+        }
         _ => Body::Event(Happening::Reading(reading(number))),
     };
     Entry { number, at, body }

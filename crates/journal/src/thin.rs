@@ -1,0 +1,209 @@
+//! A long record in a few points, extremes kept.
+//!
+//! What a plot wants: a stretch of time cut into equal buckets, each with the least, the mean
+//! and the largest of every quantity over all readbacks in it, so that a 40 ms dip in twelve
+//! hours still shows. Segments outside the stretch are not read; those inside stream by.
+
+use std::ops::Range;
+
+use quantity::{Current, HostTime, SinkTime, Temperature, Voltage};
+use wire::TemperatureReading;
+
+use crate::{JournalError, Record, layout, segment};
+
+/// All readbacks of a stretch of time in one.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Bucket {
+    /// Host time of the first readback in it.
+    pub first_at: HostTime,
+    /// Host time of the last readback in it.
+    pub last_at: HostTime,
+    /// Sink time of the first readback in it.
+    pub first_time: SinkTime,
+    /// Sink time of the last readback in it.
+    pub last_time: SinkTime,
+    /// How many readbacks.
+    pub count: u64,
+    /// Current, true.
+    pub current: Extremes<Current>,
+    /// Voltage, true.
+    pub voltage: Extremes<Voltage>,
+    /// Heat sink temperature; `None` where its sensor gave none.
+    pub temperature: Option<Extremes<Temperature>>,
+}
+
+/// Least, mean and largest.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Extremes<T> {
+    /// Least: the least minimum of the readbacks.
+    pub min: T,
+    /// Mean of the readbacks' means.
+    pub mean: T,
+    /// Largest: the largest maximum of the readbacks.
+    pub max: T,
+}
+
+/// Thins the readbacks that arrived in a stretch of host time (its end not in it) to at most so
+/// many buckets; empty ones are left out. True values, by the record's own correction.
+///
+/// # Errors
+/// What is wrong with the record. A torn end of an unsealed record is no error.
+pub fn thin(
+    record: &Record,
+    stretch: Range<HostTime>,
+    buckets_max: u32,
+) -> Result<Vec<Bucket>, JournalError> {
+    let Some(length) = stretch.end.checked_since(stretch.start) else {
+        return Ok(Vec::new());
+    };
+    if length.micros() == 0 || buckets_max == 0 {
+        return Ok(Vec::new());
+    }
+    let width = length.micros().div_ceil(u64::from(buckets_max));
+    let correction = record.manifest().plan.correction;
+    let mut buckets = Vec::new();
+    let mut filling: Option<(u64, Filling)> = None;
+    for chunk in record.chunks_of(touched(record, &stretch)?)? {
+        let readings = chunk?.readings;
+        for (index, &at) in readings.at.iter().enumerate() {
+            if !stretch.contains(&at) {
+                continue;
+            }
+            let Some(reading) = readings.get(index) else {
+                break;
+            };
+            let place = at.saturating_since(stretch.start).micros() / width;
+            let values = &reading.values;
+            let point = Point {
+                at,
+                time: reading.time,
+                current: [values.current_min, values.current, values.current_max]
+                    .map(|nominal| correction.current_from_readback(nominal).microamperes()),
+                voltage: [values.voltage_min, values.voltage, values.voltage_max]
+                    .map(|nominal| correction.voltage_from_readback(nominal).microvolts()),
+                temperature: match values.temperature {
+                    TemperatureReading::Value(value) => Some(value.millidegrees_celsius()),
+                    TemperatureReading::Open | TemperatureReading::Short => None,
+                },
+            };
+            match &mut filling {
+                Some((open, bucket)) if *open == place => bucket.take(&point),
+                _ => {
+                    let full = filling.replace((place, Filling::new(&point)));
+                    buckets.extend(full.map(|(_, full)| full.bucket()));
+                }
+            }
+        }
+    }
+    buckets.extend(filling.map(|(_, last)| last.bucket()));
+    Ok(buckets)
+}
+
+/// The segments that can hold something of the stretch, from the times in their first lines.
+fn touched(record: &Record, stretch: &Range<HostTime>) -> Result<Range<usize>, JournalError> {
+    let journal = layout::journal(record.folder());
+    let mut range = 0..0;
+    for (index, &number) in record.segments().iter().enumerate() {
+        // A first line that cannot be read ends nothing: the reader will say what is wrong.
+        let begins = segment::peek(&journal, number)?.map_or(stretch.start, |header| header.at);
+        if begins <= stretch.start {
+            range.start = index;
+        }
+        if begins < stretch.end {
+            range.end = index + 1;
+        }
+    }
+    Ok(range)
+}
+
+/// One readback, true: least, mean and largest, in micro-units (thousandths for temperature).
+struct Point {
+    at: HostTime,
+    time: SinkTime,
+    current: [i64; 3],
+    voltage: [i64; 3],
+    temperature: Option<i64>,
+}
+
+/// A bucket that is being filled.
+struct Filling {
+    first: (HostTime, SinkTime),
+    last: (HostTime, SinkTime),
+    current: Sum,
+    voltage: Sum,
+    temperature: Option<Sum>,
+}
+
+impl Filling {
+    fn new(point: &Point) -> Self {
+        Self {
+            first: (point.at, point.time),
+            last: (point.at, point.time),
+            current: Sum::new(point.current),
+            voltage: Sum::new(point.voltage),
+            temperature: point.temperature.map(|value| Sum::new([value; 3])),
+        }
+    }
+
+    fn take(&mut self, point: &Point) {
+        self.last = (point.at, point.time);
+        self.current.add(point.current);
+        self.voltage.add(point.voltage);
+        match (&mut self.temperature, point.temperature) {
+            (Some(sum), Some(value)) => sum.add([value; 3]),
+            (None, Some(value)) => self.temperature = Some(Sum::new([value; 3])),
+            (_, None) => {}
+        }
+    }
+
+    fn bucket(&self) -> Bucket {
+        Bucket {
+            first_at: self.first.0,
+            last_at: self.last.0,
+            first_time: self.first.1,
+            last_time: self.last.1,
+            count: self.current.count,
+            current: self.current.extremes(Current::from_microamperes),
+            voltage: self.voltage.extremes(Voltage::from_microvolts),
+            temperature: self
+                .temperature
+                .as_ref()
+                .map(|sum| sum.extremes(Temperature::from_millidegrees_celsius)),
+        }
+    }
+}
+
+/// Extremes and an exact sum.
+struct Sum {
+    min: i64,
+    max: i64,
+    total: i128,
+    count: u64,
+}
+
+impl Sum {
+    fn new([min, mean, max]: [i64; 3]) -> Self {
+        Self {
+            min,
+            max,
+            total: i128::from(mean),
+            count: 1,
+        }
+    }
+
+    fn add(&mut self, [min, mean, max]: [i64; 3]) {
+        self.min = self.min.min(min);
+        self.max = self.max.max(max);
+        self.total += i128::from(mean);
+        self.count += 1;
+    }
+
+    fn extremes<T>(&self, unit: fn(i64) -> T) -> Extremes<T> {
+        let mean = self.total.div_euclid(i128::from(self.count));
+        Extremes {
+            min: unit(self.min),
+            mean: unit(i64::try_from(mean).unwrap_or(self.max)),
+            max: unit(self.max),
+        }
+    }
+}
