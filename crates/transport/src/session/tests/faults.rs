@@ -301,8 +301,58 @@ fn faults() -> impl Strategy<Value = Faults> {
     })
 }
 
+/// What became of a readback pair on the way.
+fn heard_readings(world: &mut World) -> Vec<wire::Reading> {
+    let mut readings = Vec::new();
+    while let Some(heard) = world.session.poll_heard() {
+        if let Heard::Reading(reading) = heard {
+            readings.push(reading);
+        }
+    }
+    readings
+}
+
 proptest! {
     #![proptest_config(ProptestConfig::with_cases(96))]
+
+    #[test]
+    fn over_any_faulty_link_a_reading_is_true_or_counted_as_lost(
+        seed: u64,
+        faults in faults(),
+        pairs in 1_u16..400,
+    ) {
+        let mut world = World::new(seed, faults);
+        // 15 s before the turn of the low 32 bits of the sink's time.
+        world.peer = Peer::new(at(-4_280_000));
+        world.faults = Faults { drop: 0, repeat: 0, corrupt: 0, delay_ms: 1 };
+        world.session.tick(world.now);
+        world.pass(Span::from_secs(1));
+        world.faults = faults;
+        let mut sent = BTreeMap::new();
+        let mut readings = Vec::new();
+        for _ in 0..pairs {
+            world.now += Span::from_millis(100);
+            if sent.is_empty() {
+                world.peer.readbacks = 65_400;
+            }
+            world.peer.say_pair(world.now, 0, 0);
+            sent.insert(world.peer.readbacks, world.peer.time(world.now));
+            let bytes = world.peer.take();
+            world.back.send(&bytes, world.now, world.faults, &mut world.chance);
+            while let Some(line) = world.back.take(world.now) {
+                world.session.receive(&line, world.now);
+            }
+            readings.append(&mut heard_readings(&mut world));
+        }
+        for reading in &readings {
+            prop_assert_eq!(sent.get(&reading.readback), Some(&reading.time));
+        }
+        for pair in readings.windows(2) {
+            prop_assert!(pair[0].time < pair[1].time);
+            let apart = (pair[1].time.micros() - pair[0].time.micros()) / 100_000;
+            prop_assert_eq!(u64::from(pair[1].lost), apart - 1);
+        }
+    }
 
     #[test]
     fn over_any_faulty_link_each_order_has_one_outcome_and_none_runs_twice(
