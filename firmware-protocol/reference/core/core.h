@@ -238,9 +238,9 @@ struct sink_core {
 
 /* ---- Functions. ---- */
 
-/* Makes the core ready: off, isolator open, no session. Time is taken to be 0
- * at power-up. Returns false, and a core that stays off and silent for ever
- * must not be used further, if the configuration is outside the ranges above. */
+/* Makes the core ready: off, isolator open, no session. Time is 0 at power-up.
+ * Returns false if the configuration is outside the ranges above; the core must
+ * then not be used, and the port stay off. */
 bool sink_core_init(struct sink_core *core, const struct sink_core_config *config,
                     enum sink_reset reset);
 
