@@ -17,6 +17,13 @@
 pub mod bench;
 pub mod correction;
 
+pub mod circuit;
+pub mod converter;
+pub mod envelope;
+pub mod leads;
+pub mod sensor;
+pub mod thermal;
+
 pub mod accumulate;
 pub mod montecarlo;
 pub mod regression;
