@@ -56,7 +56,7 @@ pub enum Inbox<C> {
 #[derive(Debug, Clone, PartialEq, Eq, Error)]
 pub enum LinkError {
     /// There is nothing under this name.
-    #[error("no port {name}; plug the sink in, or correct `port` in the bench file")]
+    #[error("no port {name}; plug the sink in, or correct its `path` in the bench file")]
     Absent {
         /// The name as given.
         name: String,

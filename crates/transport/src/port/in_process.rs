@@ -79,6 +79,14 @@ impl<C, D: VirtualDevice> VirtualLink<C, D> {
         (link, commands)
     }
 
+    /// The same link with a virtual time that begins no earlier than `earliest`: a record that
+    /// is taken up again must not go back in time.
+    #[must_use]
+    pub fn not_before(mut self, earliest: HostTime) -> Self {
+        self.start = self.start.max(earliest);
+        self
+    }
+
     /// The device, for those who look at the truth behind it.
     pub const fn device(&self) -> &D {
         &self.device

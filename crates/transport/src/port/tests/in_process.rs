@@ -92,3 +92,17 @@ fn what_is_sent_is_answered_at_the_same_instant() {
     assert_eq!(wait_bytes(&mut link, 6), b"hello\n");
     assert_eq!(Link::<()>::now(&link), begun);
 }
+
+#[test]
+fn virtual_time_begins_no_earlier_than_asked() {
+    let (link, _commands) = link(Pace::Unbounded);
+    let begun = Link::<()>::now(&link);
+    let later = begun + Span::from_secs(86_400);
+    let link = link.not_before(later);
+    assert_eq!(Link::<()>::now(&link), later);
+    let mut link = link.not_before(begun);
+    assert_eq!(Link::<()>::now(&link), later);
+    wait_open(&mut link);
+    assert_eq!(wait_bytes(&mut link, 5), b"tick\n");
+    assert_eq!(Link::<()>::now(&link), later + Span::from_millis(100));
+}

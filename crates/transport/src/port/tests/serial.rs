@@ -117,7 +117,7 @@ fn a_port_that_is_not_there_is_named_with_its_mend() {
     assert_eq!(
         wait_lost(&mut link).to_string(),
         "no port /dev/serial/by-id/usb-nobody-made-this-one; plug the sink in, or correct \
-         `port` in the bench file"
+         its `path` in the bench file"
     );
 }
 
