@@ -30,3 +30,23 @@ fn a_port_that_carries_nothing_has_no_readback() {
     assert_eq!(fastest_readback(0), None);
     assert_eq!(fastest_readback(bytes_per_second(9)), None);
 }
+
+#[test]
+fn the_table_for_users_says_what_is_computed() {
+    let guide = include_str!("../../../../docs/wiring-and-ports.md");
+    let rows = guide.lines().filter_map(|line| {
+        let (port, rest) = line.strip_prefix("| ")?.split_once(" baud")?;
+        let cells = rest.split('|').map(str::trim).collect::<Vec<_>>();
+        let baud = port.replace(' ', "").parse::<u32>().ok()?;
+        Some((baud, cells[1].replace(' ', ""), cells[2].to_owned()))
+    });
+    let mut seen = 0;
+    for (baud, carried, interval) in rows {
+        let bytes = bytes_per_second(baud);
+        assert_eq!(carried, bytes.to_string(), "{baud} baud");
+        let fastest = fastest_readback(bytes).unwrap();
+        assert_eq!(interval.parse::<Span>(), Ok(fastest), "{baud} baud");
+        seen += 1;
+    }
+    assert_eq!(seen, 7);
+}

@@ -12,7 +12,7 @@ const ASKS_MAX: usize = 8;
 const BRISK: u8 = 8;
 const BRISK_PAUSE: Span = Span::from_millis(100);
 
-/// Afterwards the clock is asked this often, or as often as the deadman wants to hear.
+/// Afterwards the clock is asked this often, beside the asks that keep the deadman quiet.
 const STEADY_PAUSE: Span = Span::from_secs(2);
 
 /// Asks that have not been answered.
@@ -34,7 +34,7 @@ impl ClockAsks {
             self.sent += 1;
             BRISK_PAUSE.min(keep_alive)
         } else {
-            STEADY_PAUSE.max(keep_alive)
+            STEADY_PAUSE
         }
     }
 
