@@ -111,12 +111,15 @@ pub fn compile_with(
     }
 }
 
-/// The names of the files that a sequence refers to, for the caller to read; none if the text
-/// cannot be read.
+/// The names of the files that a sequence refers to, for the caller to read beside it; none if
+/// the text cannot be read. Never a path: a name with one is left to the check to refuse.
 pub fn files_wanted(text: &str) -> Vec<String> {
     fn gather(node: &Node, wanted: &mut Vec<String>) {
         let name = node.get("profile").and_then(|profile| profile.get("file"));
-        if let Some(name) = name.and_then(Node::text) {
+        if let Some(name) = name
+            .and_then(Node::text)
+            .filter(|name| draft::is_plain(name))
+        {
             wanted.push(name.to_owned());
         }
         let inner = node.get("repeat").unwrap_or(node).get("steps");

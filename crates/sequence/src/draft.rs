@@ -11,7 +11,7 @@ use quantity::{
     Charge, Current, CurrentSpec, Energy, Power, Resistance, Span, Temperature, Voltage,
 };
 
-pub(crate) use read::read;
+pub(crate) use read::{is_plain, read};
 
 use crate::plan::{DutKind, OnInterruption};
 use crate::profile::Segment;

@@ -43,3 +43,6 @@ pub type Files = BTreeMap<String, String>;
 pub fn schema() -> serde_json::Value {
     shape::schema(&format::SEQUENCE)
 }
+
+#[cfg(test)]
+mod tests;

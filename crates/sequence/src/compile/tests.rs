@@ -369,7 +369,8 @@ fn the_plan_has_the_bench_s_interlocks_tightened_by_the_sequence_s() {
                 100000,
             ),
         }
-    "#]].assert_debug_eq(&compiled.plan.interlocks);
+    "#]]
+    .assert_debug_eq(&compiled.plan.interlocks);
 }
 
 #[test]
@@ -393,7 +394,8 @@ fn a_sequence_made_for_one_sink_is_refused_by_the_other_with_the_reasons() {
             InterlockCannotAct,
             CurrentAboveSink,
         ]
-    "#]].assert_debug_eq(&findings.rules());
+    "#]]
+    .assert_debug_eq(&findings.rules());
 }
 
 #[test]

@@ -171,6 +171,12 @@ fn condition(node: &Node) -> Option<ConditionDraft> {
     Some(ConditionDraft::Watch(watch))
 }
 
+/// Whether a file's name has no path in it: a sequence may come from elsewhere, and must not
+/// choose what is read on this host.
+pub(crate) fn is_plain(name: &str) -> bool {
+    !name.starts_with('.') && !name.contains(['/', '\\', ':', '\0'])
+}
+
 struct Reader<'a> {
     rated_capacity: Option<Charge>,
     files: &'a Files,
@@ -403,6 +409,12 @@ impl Reader<'_> {
         } else {
             let place = format!("{pointer}/file");
             let name = node.get("file")?.text()?;
+            if !is_plain(name) {
+                let message = format!("`{name}` is no plain file name");
+                let hint = "give the file beside the sequence, and write its name without a path";
+                self.find(Rule::ProfileSource, &place, message, hint);
+                return None;
+            }
             let Some(text) = self.files.get(name) else {
                 let given: Vec<&str> = self.files.keys().map(String::as_str).collect();
                 let hint = if given.is_empty() {

@@ -263,17 +263,46 @@ impl<'a> Walk<'a> {
     }
 
     fn repeat(&mut self, head: &LoopHead, body: usize, foot: usize) -> Way {
-        let (time, drawn) = (self.time, self.drawn);
+        let began = Round {
+            time: self.time,
+            drawn: self.drawn,
+        };
+        let way = self.rounds(head, began, body, foot);
+        let Some(at_most) = head.at_most.map(|span| u128::from(span.micros())) else {
+            return way;
+        };
+        let lasted = self.time - began.time;
+        if lasted <= at_most {
+            return way;
+        }
+        // The time was over in the middle of a round: its part of the charge stands for it.
+        let part = |drawn: i128| {
+            let drawn = drawn.unsigned_abs().saturating_mul(at_most) / lasted.max(1);
+            i128::try_from(drawn).unwrap_or(i128::MAX)
+        };
+        self.drawn = began.drawn + part(self.drawn - began.drawn);
+        self.time = began.time + at_most;
+        let end = span(self.time);
+        self.outline.points.retain(|point| point.time <= end);
+        self.outline.bands.retain(|band| band.from < end);
+        if let Some(band) = self.outline.bands.last_mut() {
+            band.to = band.to.min(end);
+        }
+        Way::On
+    }
+
+    /// All rounds of a repeat, the last one whole.
+    fn rounds(&mut self, head: &LoopHead, began: Round, body: usize, foot: usize) -> Way {
         let first_point = self.outline.points.len();
         let way = self.block(body, foot);
         if way != Way::On {
             return way;
         }
         let round = Round {
-            time: self.time - time,
-            drawn: self.drawn - drawn,
+            time: self.time - began.time,
+            drawn: self.drawn - began.drawn,
         };
-        let (mut rounds, bound) = self.rounds_left(head, round, drawn, body, foot);
+        let (mut rounds, bound) = self.rounds_left(head, round, began.drawn, body, foot);
         let each = (self.outline.points.len() - first_point).max(1);
         while rounds > 0 && self.outline.points.len() + each <= self.points_max {
             let way = self.block(body, foot);
@@ -301,7 +330,8 @@ impl<'a> Walk<'a> {
     ) -> (u128, Bound) {
         let by_times = head.times.map(|times| u128::from(times.saturating_sub(1)));
         let by_time = head.at_most.map(|at_most| {
-            u128::from(at_most.micros()).saturating_sub(round.time) / round.time.max(1)
+            let left = u128::from(at_most.micros()).saturating_sub(round.time);
+            left.div_ceil(round.time.max(1))
         });
         let spent = by_times
             .into_iter()
