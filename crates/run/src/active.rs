@@ -5,8 +5,9 @@ use std::collections::VecDeque;
 use journal::{Body, Entry, Note};
 use quantity::{HostTime, Span};
 use sequence::plan::OnInterruption;
+use sequencer::Sequencer;
 use sequencer::event::{Ending, Event, Happening, Output};
-use sequencer::{Sequencer, Status};
+use sequencer::status::Status;
 use wire::{Order, OrderId};
 
 /// How long after its ending a run waits for the sink to say that it is off.
@@ -65,12 +66,7 @@ impl Active {
     }
 
     /// Records a happening, lets the sequencer judge it, and records what it answers.
-    pub(crate) fn happen(
-        &mut self,
-        at: HostTime,
-        what: Happening,
-        demands: &mut VecDeque<Demand>,
-    ) {
+    pub(crate) fn happen(&mut self, at: HostTime, what: Happening, demands: &mut VecDeque<Demand>) {
         if matches!(self.closing, Closing::Closed) {
             return;
         }

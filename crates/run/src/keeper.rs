@@ -4,8 +4,9 @@ use std::collections::VecDeque;
 
 use journal::{Entry, Note};
 use quantity::{HostTime, SinkTime, Span};
+use sequencer::Sequencer;
 use sequencer::event::{Command, Ending, Happening};
-use sequencer::{Sequencer, Status};
+use sequencer::status::Status;
 use transport::session::{Heard, Mismatch, RebootEvidence, Session, SessionConfig};
 use wire::{Description, Order, OrderId, Reading, ReasonRefused};
 
@@ -126,7 +127,12 @@ impl Keeper {
     pub fn link_lost(&mut self, reason: &str, now: HostTime) {
         self.presence.description = None;
         self.session.link_lost(now);
-        self.note(now, Note::LinkLost { reason: reason.to_owned() });
+        self.note(
+            now,
+            Note::LinkLost {
+                reason: reason.to_owned(),
+            },
+        );
         self.interrupt(now);
         self.listen(now);
     }
@@ -232,7 +238,12 @@ impl Keeper {
     fn greet(&mut self, now: HostTime) {
         self.session_number = self.session_number.checked_add(1).unwrap_or(1);
         self.presence.description = None;
-        self.note(now, Note::SessionBegun { session: self.session_number });
+        self.note(
+            now,
+            Note::SessionBegun {
+                session: self.session_number,
+            },
+        );
         self.session.restart(self.session_number, now);
         self.listen(now);
     }
@@ -247,7 +258,10 @@ impl Keeper {
 
     fn hear(&mut self, heard: Heard, now: HostTime) {
         match heard {
-            Heard::Connected { description, sink_time } => {
+            Heard::Connected {
+                description,
+                sink_time,
+            } => {
                 self.connected(description, sink_time, now);
             }
             Heard::DescriptionRefused { mismatches } => self.refuse(mismatches, now),
@@ -268,7 +282,10 @@ impl Keeper {
             }
             Heard::SinkRebooted { evidence } => self.rebooted(evidence, now),
             Heard::ClockOff { by, fault } => {
-                self.note(now, Note::Text(format!("the sink's clock is off: {fault:?}")));
+                self.note(
+                    now,
+                    Note::Text(format!("the sink's clock is off: {fault:?}")),
+                );
                 self.happen(now, Happening::ClockOff { by });
             }
             Heard::Resumed { .. }
@@ -287,7 +304,10 @@ impl Keeper {
 
     fn rebooted(&mut self, evidence: RebootEvidence, now: HostTime) {
         self.presence.description = None;
-        self.note(now, Note::Text(format!("the sink has started anew: {evidence:?}")));
+        self.note(
+            now,
+            Note::Text(format!("the sink has started anew: {evidence:?}")),
+        );
         self.interrupt(now);
         self.happen(now, Happening::SinkRebooted);
         self.greet(now);
@@ -307,17 +327,31 @@ impl Keeper {
         if self.active.is_some() {
             self.happen(now, Happening::Connected { time: sink_time });
         } else {
-            self.idle_order(Order::Deadman { interval: IDLE_DEADMAN }, now);
-            self.idle_order(Order::Readback { interval: IDLE_READBACK }, now);
+            self.idle_order(
+                Order::Deadman {
+                    interval: IDLE_DEADMAN,
+                },
+                now,
+            );
+            self.idle_order(
+                Order::Readback {
+                    interval: IDLE_READBACK,
+                },
+                now,
+            );
         }
     }
 
     /// A sink that is not the one described is never driven: a run on it cannot go on.
     fn refuse(&mut self, mismatches: Vec<Mismatch>, now: HostTime) {
         self.presence.refused.clone_from(&mismatches);
-        self.note(now, Note::Text(format!("not the sink described: {mismatches:?}")));
+        self.note(
+            now,
+            Note::Text(format!("not the sink described: {mismatches:?}")),
+        );
         self.off(now);
-        self.effects.push_back(Effect::NotTheSinkDescribed(mismatches));
+        self.effects
+            .push_back(Effect::NotTheSinkDescribed(mismatches));
     }
 
     fn acknowledged(&mut self, order: OrderId, now: HostTime) {
@@ -377,7 +411,9 @@ impl Keeper {
     /// Ends a run whose record is complete, and takes the sink into an idle session.
     fn close_if_complete(&mut self, now: HostTime) {
         let Some(active) = &self.active else { return };
-        let Some(ending) = active.closed().cloned() else { return };
+        let Some(ending) = active.closed().cloned() else {
+            return;
+        };
         let status = Box::new(active.status());
         self.active = None;
         self.effects.push_back(Effect::Closed { ending, status });

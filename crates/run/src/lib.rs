@@ -22,9 +22,10 @@
 //!
 //! What it deliberately does not do: open files or ports, read a clock, decide an interlock.
 
-pub mod keeper;
-pub mod rehearse;
 mod active;
+mod expect;
+pub mod keeper;
 mod notes;
+pub mod rehearse;
 
 pub use keeper::{Effect, Keeper, KeeperConfig};

@@ -7,9 +7,10 @@ use transport::session::{Heard, Side};
 /// The note that keeps what was heard; `None` for what the sequencer is told instead.
 pub(crate) fn note_of(heard: &Heard) -> Option<Note> {
     let note = match heard {
-        Heard::Resumed { sink_time } => {
-            Note::Text(format!("the session has outlived the loss; sink time {}", sink_time.micros()))
-        }
+        Heard::Resumed { sink_time } => Note::Text(format!(
+            "the session has outlived the loss; sink time {}",
+            sink_time.micros()
+        )),
         Heard::StepSeen { time, order } => Note::Text(format!(
             "the edge of order {} was lost; its step was seen running at sink time {}",
             order.0,
@@ -23,9 +24,10 @@ pub(crate) fn note_of(heard: &Heard) -> Option<Note> {
             Note::Text(format!("order {} was left without an answer", order.0))
         }
         Heard::ClockEstimate(estimate) => Note::ClockAligned(alignment(estimate)),
-        Heard::Retransmitted { orders, attempt } => {
-            Note::Retransmitted { orders: *orders, attempt: *attempt }
-        }
+        Heard::Retransmitted { orders, attempt } => Note::Retransmitted {
+            orders: *orders,
+            attempt: *attempt,
+        },
         Heard::Damaged { by, lines } => Note::DamagedLines {
             seen_by: match by {
                 Side::Host => journal::Side::Host,
@@ -33,10 +35,15 @@ pub(crate) fn note_of(heard: &Heard) -> Option<Note> {
             },
             lines: *lines,
         },
-        Heard::Flood { bytes } => {
-            Note::Text(format!("{bytes} bytes came faster than the link can carry and were ignored"))
-        }
-        Heard::BurstSamples { burst, index, len, samples } => Note::Burst {
+        Heard::Flood { bytes } => Note::Text(format!(
+            "{bytes} bytes came faster than the link can carry and were ignored"
+        )),
+        Heard::BurstSamples {
+            burst,
+            index,
+            len,
+            samples,
+        } => Note::Burst {
             capture: *burst,
             index: *index,
             samples: samples.iter().take(usize::from(*len)).copied().collect(),

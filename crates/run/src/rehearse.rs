@@ -8,7 +8,8 @@
 use journal::Entry;
 use quantity::{HostTime, Span};
 use sequencer::event::{Command, Ending};
-use sequencer::{PlanError, Sequencer, Status};
+use sequencer::status::Status;
+use sequencer::{PlanError, Sequencer};
 use simulator::device::SimulatedSink;
 
 use crate::keeper::{Effect, Keeper, KeeperConfig};
@@ -157,7 +158,9 @@ impl InVirtualTime<'_> {
                 Effect::Reset(_) | Effect::OffAcknowledged => {}
             }
         }
-        panic!("more than {EFFECTS_AT_ONCE_MAX} effects at one instant: a broken invariant of ours");
+        panic!(
+            "more than {EFFECTS_AT_ONCE_MAX} effects at one instant: a broken invariant of ours"
+        );
     }
 
     /// Moves time on to whatever comes next: bytes from the sink or a deadline of the keeper.
