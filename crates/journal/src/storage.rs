@@ -222,3 +222,6 @@ pub(crate) fn unfinished(path: &Path) -> PathBuf {
     name.push(crate::layout::UNFINISHED);
     PathBuf::from(name)
 }
+
+#[cfg(test)]
+pub(crate) mod faulty;

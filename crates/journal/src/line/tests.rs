@@ -74,9 +74,13 @@ fn a_readback_that_columns_cannot_hold_is_an_object() {
 
 #[test]
 fn events_orders_findings_and_the_end_are_objects() {
-    check(1, entry(1).body, expect![[r#"
+    check(
+        1,
+        entry(1).body,
+        expect![[r#"
         {"n":1,"at":1796155200250000,"event":{"connected":{"time":5100000}},"crc":"c5e59e1c"}
-    "#]]);
+    "#]],
+    );
     check(
         2,
         Body::Order {
@@ -87,12 +91,20 @@ fn events_orders_findings_and_the_end_are_objects() {
             {"n":2,"at":1796155200250000,"order":{"id":1,"order":{"step":{"mode":{"current":640000},"start":6000000,"ramp":0,"hold":18000000000}}},"crc":"c5cac8da"}
         "#]],
     );
-    check(3, Body::Off, expect![[r#"
+    check(
+        3,
+        Body::Off,
+        expect![[r#"
         {"n":3,"at":1796155200250000,"off":true,"crc":"1c7bea81"}
-    "#]]);
-    check(4, Body::Event(Happening::LinkLost), expect![[r#"
+    "#]],
+    );
+    check(
+        4,
+        Body::Event(Happening::LinkLost),
+        expect![[r#"
         {"n":4,"at":1796155200250000,"event":"link_lost","crc":"7b77224a"}
-    "#]]);
+    "#]],
+    );
     check(
         5,
         Body::Finding(Finding::Crossed(Crossing {
@@ -165,9 +177,13 @@ fn notes_are_objects() {
             {"n":5,"at":1796155200250000,"note":{"link_lost":{"reason":"the port is gone"}},"crc":"db2e3a4e"}
         "#]],
     );
-    check(6, Body::Note(Note::LinkBack), expect![[r#"
+    check(
+        6,
+        Body::Note(Note::LinkBack),
+        expect![[r#"
         {"n":6,"at":1796155200250000,"note":"link_back","crc":"1270b3b5"}
-    "#]]);
+    "#]],
+    );
     check(
         7,
         Body::Note(Note::Resumed {

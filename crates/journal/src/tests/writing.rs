@@ -240,3 +240,10 @@ fn the_thread_tells_a_failure_once_and_takes_nothing_after_it() {
     assert!(thread.close().failure().is_some());
     assert_eq!(heard.try_iter().count(), 0);
 }
+
+#[test]
+fn the_throughput_example_s_manifest_is_one() {
+    let text = include_str!("../../examples/throughput/manifest.json");
+    let example: crate::Manifest = serde_json::from_str(text).expect("a manifest");
+    assert_eq!(example, manifest());
+}

@@ -98,6 +98,10 @@ impl Inspection {
                 self.only_the_end = false;
                 continue;
             };
+            // One damaged byte of a compressed file damages many lines: the first says enough.
+            if loaded.unreadable.is_some() {
+                return self.unreadable(loaded, damage.offset, damage.line);
+            }
             self.only_the_end = true;
             let kind = match damage.fault {
                 // Read on from the number that stands here, or every line after would differ.
@@ -110,10 +114,6 @@ impl Inspection {
                     FindingKind::Line
                 }
             };
-            // What the damaged compressed file yields of a last line is told below.
-            if loaded.unreadable.is_some() && damage.fault == LineFault::Unfinished {
-                continue;
-            }
             if self.findings.len() < FINDINGS_MAX {
                 self.findings.push(Finding::of_damage(kind, &damage));
             } else {
