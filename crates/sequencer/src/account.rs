@@ -103,7 +103,11 @@ impl Increment {
 
     /// Nothing added since `from`.
     pub(crate) fn nothing(from: SinkTime, sum: Counted) -> Self {
-        Self { from, before: sum, added: Counted::default() }
+        Self {
+            from,
+            before: sum,
+            added: Counted::default(),
+        }
     }
 
     /// The nominal charge that was added.
@@ -135,7 +139,11 @@ impl Account {
             time,
             voltage_time: observation.voltage_nominal.base_units() * i128::from(time.micros()),
         };
-        let increment = Increment { from: before.time, before: self.sum, added };
+        let increment = Increment {
+            from: before.time,
+            before: self.sum,
+            added,
+        };
         self.sum = self.sum.plus(added);
         Some(increment)
     }

@@ -56,9 +56,19 @@ impl Alignment {
                     beyond = beyond.or(later);
                 }
                 self.previous = Some(*block);
-                self.block = Some(Block { began: at, least: offset, at });
+                self.block = Some(Block {
+                    began: at,
+                    least: offset,
+                    at,
+                });
             }
-            None => self.block = Some(Block { began: at, least: offset, at }),
+            None => {
+                self.block = Some(Block {
+                    began: at,
+                    least: offset,
+                    at,
+                });
+            }
         }
         beyond
     }

@@ -34,7 +34,11 @@ struct State {
 impl Watch {
     /// Begins to watch; `valid_from` is the first instant that surely belongs to the step.
     pub(crate) fn new(untils: &[Until], valid_from: SinkTime, base: Counted) -> Self {
-        let mut watch = Self { valid_from, base, states: Vec::new() };
+        let mut watch = Self {
+            valid_from,
+            base,
+            states: Vec::new(),
+        };
         watch.clear(untils);
         watch
     }
@@ -117,7 +121,8 @@ impl State {
             return verdict.touched;
         }
         self.held_for = if verdict.wholly {
-            self.held_for.saturating_add(evidence.observation.interval())
+            self.held_for
+                .saturating_add(evidence.observation.interval())
         } else {
             Span::ZERO
         };
@@ -166,7 +171,10 @@ impl State {
     /// A value at an instant: the interval is wholly across if its beginning was, too.
     fn instant(&mut self, across: bool) -> Verdict {
         let before = std::mem::replace(&mut self.across, across);
-        Verdict { touched: across, wholly: across && before }
+        Verdict {
+            touched: across,
+            wholly: across && before,
+        }
     }
 
     fn settled(&mut self, evidence: &Evidence<'_>, value: Option<i64>, change: i64) -> Verdict {

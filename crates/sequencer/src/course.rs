@@ -76,7 +76,12 @@ impl Course {
     /// Sets out from a place in the program; what was queued is forgotten.
     ///
     /// Returns whether there is a step to go to.
-    pub(crate) fn set_out(&mut self, program: &Program, mut cursor: Cursor, start: SinkTime) -> bool {
+    pub(crate) fn set_out(
+        &mut self,
+        program: &Program,
+        mut cursor: Cursor,
+        start: SinkTime,
+    ) -> bool {
         self.queue.clear();
         self.ahead = program.walk(&mut cursor, start, &mut self.serials);
         self.ahead.is_some()
@@ -91,7 +96,11 @@ impl Course {
         for queued in self.queue.drain(place..) {
             if queued.step.slot.start < start {
                 let drawn_until = queued.step.drawn_until.max(start);
-                self.stragglers.push(Ordered { acknowledged: false, drawn_until, ..queued.step });
+                self.stragglers.push(Ordered {
+                    acknowledged: false,
+                    drawn_until,
+                    ..queued.step
+                });
             }
         }
         let first = self.stragglers.first().map(|step| step.slot.start);
@@ -128,8 +137,8 @@ impl Course {
         let slot = self.ahead.take()?;
         if let Some(step) = program.step(slot.op) {
             let after = program.follow(slot.op, &slot.frames, step.then);
-            self.ahead = after
-                .and_then(|mut cursor| program.walk(&mut cursor, slot.end, &mut self.serials));
+            self.ahead =
+                after.and_then(|mut cursor| program.walk(&mut cursor, slot.end, &mut self.serials));
         }
         let last = self.ahead.is_none();
         Some((slot, last))
@@ -176,11 +185,7 @@ impl Course {
     ///
     /// The sink ramps from where it is in the same mode, from the target itself on a change of
     /// mode, from zero when off (line protocol, section 3).
-    pub(crate) fn ramp_from(
-        &self,
-        start: SinkTime,
-        target: Current,
-    ) -> (Current, Current) {
+    pub(crate) fn ramp_from(&self, start: SinkTime, target: Current) -> (Current, Current) {
         let Some(last) = self.last_ordered().filter(|last| !last.broken_off) else {
             return (Current::ZERO, Current::ZERO);
         };
@@ -191,14 +196,21 @@ impl Course {
         let first = level(last);
         let off = (last.hold_end < start).then_some((Current::ZERO, Current::ZERO));
         // Stragglers lie before the first step of the queue only.
-        let between = if self.queue.is_empty() { &self.stragglers[..] } else { &[] };
+        let between = if self.queue.is_empty() {
+            &self.stragglers[..]
+        } else {
+            &[]
+        };
         let others = between.iter().map(level).chain(off);
         others.fold(first, |a, b| (a.0.min(b.0), a.1.max(b.1)))
     }
 
     /// How many queued steps have not begun at this time.
     pub(crate) fn waiting(&self, now: SinkTime) -> usize {
-        self.queue.len() - self.queue.partition_point(|queued| queued.step.slot.start <= now)
+        self.queue.len()
+            - self
+                .queue
+                .partition_point(|queued| queued.step.slot.start <= now)
     }
 
     /// The steps that run or are queued, in their order.
@@ -224,7 +236,9 @@ impl Course {
             let knee = step.slot.start.saturating_add(step.ramp);
             let (start, end) = (from.max(step.slot.start), to.min(step.slot.end));
             for (a, b) in [(start, end.min(knee)), (start.max(knee), end)] {
-                let Some(span) = b.checked_since(a) else { continue };
+                let Some(span) = b.checked_since(a) else {
+                    continue;
+                };
                 let level = |time| step.setpoint(time, voltage).map_or(0, Quantity::base_units);
                 total += (level(a) + level(b)) * i128::from(span.micros()) / 2;
             }
@@ -242,7 +256,10 @@ impl Course {
     ) -> Share {
         let whole = self.asked(from, to, voltage);
         if whole > 0 {
-            return Share { part: self.asked(from, edge, voltage), whole };
+            return Share {
+                part: self.asked(from, edge, voltage),
+                whole,
+            };
         }
         Share {
             part: i128::from(edge.saturating_since(from).micros()),
@@ -259,7 +276,9 @@ impl Course {
         time: SinkTime,
         drawn_until: SinkTime,
     ) -> Option<Suspension> {
-        let begun = self.queue.partition_point(|queued| queued.step.slot.start <= time);
+        let begun = self
+            .queue
+            .partition_point(|queued| queued.step.slot.start <= time);
         let next = self.queue.get(begun).map(|queued| queued.step.slot.clone());
         self.queue.truncate(begun);
         let decided = begun == 0 && self.running.as_ref().is_some_and(|running| running.ended);
@@ -291,7 +310,9 @@ impl Course {
                 .frames
                 .iter()
                 .map(|frame| {
-                    let left = frame.deadline.map(|deadline| deadline.saturating_since(reached));
+                    let left = frame
+                        .deadline
+                        .map(|deadline| deadline.saturating_since(reached));
                     (*frame, left)
                 })
                 .collect(),

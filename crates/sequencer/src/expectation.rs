@@ -47,11 +47,13 @@ impl Ordered {
     pub(crate) fn setpoint(&self, time: SinkTime, voltage: quantity::Voltage) -> Option<Current> {
         match self.action {
             Action::Rest => Some(Current::ZERO),
-            Action::Current { target, .. } => {
-                Some(self.on_ramp(self.ramp_from.1, time, target))
-            }
-            Action::Power { target } => target.over(voltage).filter(|current| !current.is_negative()),
-            Action::Resistance { target } => voltage.over(target).map(|current| current.max(Current::ZERO)),
+            Action::Current { target, .. } => Some(self.on_ramp(self.ramp_from.1, time, target)),
+            Action::Power { target } => target
+                .over(voltage)
+                .filter(|current| !current.is_negative()),
+            Action::Resistance { target } => voltage
+                .over(target)
+                .map(|current| current.max(Current::ZERO)),
         }
     }
 
@@ -73,7 +75,10 @@ impl Ordered {
             Action::Rest => Some((Current::ZERO, Current::ZERO)),
             Action::Current { target, .. } => {
                 let (least, most) = self.ramp_from;
-                Some((self.on_ramp(least, time, target), self.on_ramp(most, time, target)))
+                Some((
+                    self.on_ramp(least, time, target),
+                    self.on_ramp(most, time, target),
+                ))
             }
             Action::Power { .. } | Action::Resistance { .. } => None,
         }
@@ -92,7 +97,10 @@ impl Ordered {
             Action::Rest => (Current::ZERO, Some(Current::ZERO)),
             Action::Current { target, .. } => {
                 let flat = (target, target);
-                let (a, b) = (self.levels(from).unwrap_or(flat), self.levels(to).unwrap_or(flat));
+                let (a, b) = (
+                    self.levels(from).unwrap_or(flat),
+                    self.levels(to).unwrap_or(flat),
+                );
                 (a.0.min(b.0), Some(a.1.max(b.1)))
             }
             Action::Power { .. } => (
@@ -130,8 +138,12 @@ pub(crate) struct Expectation {
 
 impl Expectation {
     /// Nothing is drawn: held, waiting, or before the first step.
-    pub(crate) const OFF: Self =
-        Self { least: None, reached: None, largest: Some(Current::ZERO), drawing: false };
+    pub(crate) const OFF: Self = Self {
+        least: None,
+        reached: None,
+        largest: Some(Current::ZERO),
+        drawing: false,
+    };
 
     /// Works out what the steps, in their order, ask for in the observation's interval.
     ///
@@ -141,7 +153,10 @@ impl Expectation {
         seen: &Observation,
         cap: Current,
     ) -> Self {
-        let mut expectation = Self { largest: Some(Current::ZERO), ..Self::default() };
+        let mut expectation = Self {
+            largest: Some(Current::ZERO),
+            ..Self::default()
+        };
         for step in steps {
             if step.slot.start >= seen.time {
                 break;
@@ -163,10 +178,15 @@ impl Expectation {
         let highest = highest.map(|current| current.min(cap));
         self.largest = self.largest.zip(highest).map(|(a, b)| a.max(b));
         if seen.from < start.saturating_add(SETTLING) {
-            self.largest = self.largest.map(|largest| largest.max(step.before.min(cap)));
+            self.largest = self
+                .largest
+                .map(|largest| largest.max(step.before.min(cap)));
         }
         // What was asked for long enough must have been reached.
-        let (from, to) = (seen.from.max(start.saturating_add(SETTLING)), seen.time.min(end));
+        let (from, to) = (
+            seen.from.max(start.saturating_add(SETTLING)),
+            seen.time.min(end),
+        );
         let whole = from == seen.from && to == seen.time;
         if from >= to || seen.first || !step.acknowledged || (step.may_give_up && !whole) {
             return;
@@ -175,7 +195,8 @@ impl Expectation {
         let reached = lagged.min(cap);
         self.reached = Some(self.reached.map_or(reached, |other| other.max(reached)));
         if whole {
-            let (least, _) = step.bounds(from.saturating_sub(SETTLING).max(start), to, seen.voltage);
+            let (least, _) =
+                step.bounds(from.saturating_sub(SETTLING).max(start), to, seen.voltage);
             self.least = Some(least.min(cap));
             self.drawing = !step.rests();
         }

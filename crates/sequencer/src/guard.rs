@@ -121,7 +121,12 @@ impl Guard {
                 limit.threshold.millidegrees_celsius(),
                 limit.persistence,
             );
-            self.weigh(stand.with_sink_copy(true), seen.interval(), at_once, crossings);
+            self.weigh(
+                stand.with_sink_copy(true),
+                seen.interval(),
+                at_once,
+                crossings,
+            );
         }
         let (voltage, current) = (seen.voltage, seen.current);
         let power = (
@@ -129,20 +134,47 @@ impl Guard {
             voltage.min.times(current.min).microwatts(),
         );
         let limit = armed.over_power;
-        let stand =
-            above(Interlock::OverPower, power, limit.threshold.microwatts(), limit.persistence);
-        self.weigh(stand.with_sink_copy(on), seen.interval(), at_once, crossings);
+        let stand = above(
+            Interlock::OverPower,
+            power,
+            limit.threshold.microwatts(),
+            limit.persistence,
+        );
+        self.weigh(
+            stand.with_sink_copy(on),
+            seen.interval(),
+            at_once,
+            crossings,
+        );
 
         let lows = (voltage.min.microvolts(), voltage.max.microvolts());
         let limit = armed.undervoltage;
-        let stand =
-            below(Interlock::Undervoltage, lows, limit.threshold.microvolts(), limit.persistence);
-        self.weigh(stand.with_sink_copy(on), seen.interval(), at_once, crossings);
+        let stand = below(
+            Interlock::Undervoltage,
+            lows,
+            limit.threshold.microvolts(),
+            limit.persistence,
+        );
+        self.weigh(
+            stand.with_sink_copy(on),
+            seen.interval(),
+            at_once,
+            crossings,
+        );
         let limit = armed.over_voltage;
         let highs = (lows.1, lows.0);
-        let stand =
-            above(Interlock::OverVoltage, highs, limit.threshold.microvolts(), limit.persistence);
-        self.weigh(stand.with_sink_copy(on), seen.interval(), at_once, crossings);
+        let stand = above(
+            Interlock::OverVoltage,
+            highs,
+            limit.threshold.microvolts(),
+            limit.persistence,
+        );
+        self.weigh(
+            stand.with_sink_copy(on),
+            seen.interval(),
+            at_once,
+            crossings,
+        );
         let limit = armed.reversed_polarity;
         let stand = below(
             Interlock::ReversedPolarity,
@@ -160,7 +192,12 @@ impl Guard {
             limit.threshold.microamperes(),
             limit.persistence,
         );
-        self.weigh(stand.with_sink_copy(on), seen.interval(), at_once, crossings);
+        self.weigh(
+            stand.with_sink_copy(on),
+            seen.interval(),
+            at_once,
+            crossings,
+        );
         self.judge_sensor(armed.sensor_fault, seen, counted, at_once, crossings);
     }
 
@@ -206,7 +243,9 @@ impl Guard {
         expected: &Expectation,
         crossings: &mut Crossings,
     ) {
-        let Some(largest) = expected.largest else { return };
+        let Some(largest) = expected.largest else {
+            return;
+        };
         let excess = |current: Current| current.saturating_sub(largest).microamperes();
         let stand = above(
             Interlock::NotReleasing,
@@ -214,7 +253,12 @@ impl Guard {
             limit.threshold.microamperes(),
             limit.persistence,
         );
-        self.weigh(stand.with_sink_copy(seen.on()), seen.interval(), false, crossings);
+        self.weigh(
+            stand.with_sink_copy(seen.on()),
+            seen.interval(),
+            false,
+            crossings,
+        );
     }
 
     /// Whether the readback falls short of what was asked for, for the interlock's persistence.
@@ -234,7 +278,12 @@ impl Guard {
         let value = by_least.max(by_largest)?;
         let threshold = limit.threshold.microamperes();
         let saturated = expected.drawing && seen.state == SinkState::Saturated;
-        let mut stand = above(Interlock::NotFollowing, (value, value), threshold, limit.persistence);
+        let mut stand = above(
+            Interlock::NotFollowing,
+            (value, value),
+            threshold,
+            limit.persistence,
+        );
         if saturated && !stand.touched {
             stand.touched = true;
             stand.permille = stand.permille.max(1000);
@@ -263,14 +312,10 @@ impl Guard {
         self.weigh(stand, Span::ZERO, false, crossings);
     }
 
-    fn weigh(
-        &mut self,
-        stand: Stand,
-        interval: Span,
-        at_once: bool,
-        crossings: &mut Crossings,
-    ) {
-        let Some(post) = self.posts.get_mut(stand.interlock.index()) else { return };
+    fn weigh(&mut self, stand: Stand, interval: Span, at_once: bool, crossings: &mut Crossings) {
+        let Some(post) = self.posts.get_mut(stand.interlock.index()) else {
+            return;
+        };
         let worst = post.margin.map_or((stand.permille, stand.value), |margin| {
             if stand.permille > margin.worst_permille {
                 (stand.permille, stand.value)
@@ -288,7 +333,11 @@ impl Guard {
         });
         let known_by_sink =
             stand.sink_copy && stand.persistence > Span::ZERO && stand.persistence < interval;
-        let counts = if known_by_sink && !at_once { stand.wholly } else { stand.touched };
+        let counts = if known_by_sink && !at_once {
+            stand.wholly
+        } else {
+            stand.touched
+        };
         if !counts {
             post.crossed_for = Span::ZERO;
             return;
@@ -336,7 +385,11 @@ fn below(interlock: Interlock, values: (i64, i64), threshold: i64, persistence: 
     let touched = value < threshold;
     // Above zero the threshold over the value; at or below zero, how far below zero it is.
     let permille = if threshold > 0 {
-        if value <= 0 { ratio(2, 1, touched) } else { ratio(threshold, value, touched) }
+        if value <= 0 {
+            ratio(2, 1, touched)
+        } else {
+            ratio(threshold, value, touched)
+        }
     } else {
         ratio(value.saturating_neg(), threshold.saturating_neg(), touched)
     };
@@ -359,7 +412,9 @@ fn ratio(part: i64, whole: i64, crossed: bool) -> u32 {
         return least;
     }
     let ratio = i128::from(part) * 1000 / i128::from(whole);
-    u32::try_from(ratio.clamp(0, 2000)).unwrap_or(2000).max(least)
+    u32::try_from(ratio.clamp(0, 2000))
+        .unwrap_or(2000)
+        .max(least)
 }
 
 /// A counter that stands still while the means say that charge has flowed.
@@ -383,11 +438,26 @@ pub(crate) fn interlock_of(cause: Cause, plan: &Plan) -> (Interlock, i64) {
             Interlock::OverTemperature,
             armed.over_temperature.threshold.millidegrees_celsius(),
         ),
-        Cause::Power => (Interlock::OverPower, armed.over_power.threshold.microwatts()),
-        Cause::VoltageLow => (Interlock::Undervoltage, armed.undervoltage.threshold.microvolts()),
-        Cause::VoltageHigh => (Interlock::OverVoltage, armed.over_voltage.threshold.microvolts()),
-        Cause::Current => (Interlock::OverCurrent, armed.over_current.threshold.microamperes()),
-        Cause::Excess => (Interlock::NotReleasing, armed.not_releasing.threshold.microamperes()),
+        Cause::Power => (
+            Interlock::OverPower,
+            armed.over_power.threshold.microwatts(),
+        ),
+        Cause::VoltageLow => (
+            Interlock::Undervoltage,
+            armed.undervoltage.threshold.microvolts(),
+        ),
+        Cause::VoltageHigh => (
+            Interlock::OverVoltage,
+            armed.over_voltage.threshold.microvolts(),
+        ),
+        Cause::Current => (
+            Interlock::OverCurrent,
+            armed.over_current.threshold.microamperes(),
+        ),
+        Cause::Excess => (
+            Interlock::NotReleasing,
+            armed.not_releasing.threshold.microamperes(),
+        ),
         Cause::Sensor => (Interlock::SensorFault, 0),
         Cause::Deadman => (Interlock::Silence, micros(plan.deadman)),
         Cause::Watchdog => (Interlock::Clock, 0),

@@ -52,13 +52,29 @@ impl Observation {
         let first = previous.is_none();
         let current = Spread {
             mean: values.current,
-            min: if first { values.current } else { values.current_min },
-            max: if first { values.current } else { values.current_max },
+            min: if first {
+                values.current
+            } else {
+                values.current_min
+            },
+            max: if first {
+                values.current
+            } else {
+                values.current_max
+            },
         };
         let voltage = Spread {
             mean: values.voltage,
-            min: if first { values.voltage } else { values.voltage_min },
-            max: if first { values.voltage } else { values.voltage_max },
+            min: if first {
+                values.voltage
+            } else {
+                values.voltage_min
+            },
+            max: if first {
+                values.voltage
+            } else {
+                values.voltage_max
+            },
         };
         Self {
             at,
@@ -116,6 +132,6 @@ fn at_a_stop(plan: &Plan, current: Spread<Current>, voltage: Spread<Voltage>) ->
         || voltage.max.microvolts() >= stop(plan.ranges.voltage.microvolts())
 }
 
-fn out_of_order<T: PartialOrd>(spread: Spread<T>) -> bool {
+fn out_of_order<T: PartialOrd + Copy>(spread: Spread<T>) -> bool {
     spread.min > spread.mean || spread.mean > spread.max
 }

@@ -45,17 +45,33 @@ impl Limits {
         let armed = &plan.interlocks;
         let limit = |limit, persistence| Order::Limit { limit, persistence };
         [
-            limit(LimitKind::Current(self.current), armed.over_current.persistence),
+            limit(
+                LimitKind::Current(self.current),
+                armed.over_current.persistence,
+            ),
             limit(LimitKind::Power(self.power), armed.over_power.persistence),
-            limit(LimitKind::VoltageHigh(self.voltage_high), armed.over_voltage.persistence),
-            limit(LimitKind::VoltageLow(self.voltage_low), armed.undervoltage.persistence),
+            limit(
+                LimitKind::VoltageHigh(self.voltage_high),
+                armed.over_voltage.persistence,
+            ),
+            limit(
+                LimitKind::VoltageLow(self.voltage_low),
+                armed.undervoltage.persistence,
+            ),
             limit(
                 LimitKind::Temperature(armed.over_temperature.threshold),
                 armed.over_temperature.persistence,
             ),
-            limit(LimitKind::Excess(self.excess), armed.not_releasing.persistence),
-            Order::Deadman { interval: plan.deadman },
-            Order::Readback { interval: plan.readback },
+            limit(
+                LimitKind::Excess(self.excess),
+                armed.not_releasing.persistence,
+            ),
+            Order::Deadman {
+                interval: plan.deadman,
+            },
+            Order::Readback {
+                interval: plan.readback,
+            },
         ]
     }
 
@@ -73,9 +89,13 @@ impl Limits {
                 Mode::Current(correction.to_nominal_setpoint(target).min(self.current))
             }
             Action::Power { target } => {
-                let nominal = target.over(voltage).filter(|_| voltage > Voltage::ZERO).map(|true_current| {
-                    nominal_voltage(plan, voltage).times(correction.to_nominal_setpoint(true_current))
-                });
+                let nominal = target
+                    .over(voltage)
+                    .filter(|_| voltage > Voltage::ZERO)
+                    .map(|true_current| {
+                        nominal_voltage(plan, voltage)
+                            .times(correction.to_nominal_setpoint(true_current))
+                    });
                 Mode::Power(nominal.unwrap_or(target).min(self.power).max(Power::ZERO))
             }
             Action::Resistance { target } => {
@@ -93,7 +113,8 @@ impl Limits {
 
 /// The nominal readback of a true voltage.
 fn nominal_voltage(plan: &Plan, voltage: Voltage) -> Voltage {
-    plan.correction.voltage_limit_to_nominal(voltage, Bound::Upper)
+    plan.correction
+        .voltage_limit_to_nominal(voltage, Bound::Upper)
 }
 
 /// The sink compares its nominal readback with its nominal setpoint. Where the two lines of the
@@ -122,7 +143,11 @@ fn excess(plan: &Plan) -> Current {
 /// last one; a little more for one that is followed, so that the sink's own timer never ends it
 /// at the very tick at which the next begins.
 pub(crate) fn hold(duration: Span, last: bool) -> Span {
-    if last { duration } else { duration.saturating_add(HOLD_MARGIN) }
+    if last {
+        duration
+    } else {
+        duration.saturating_add(HOLD_MARGIN)
+    }
 }
 
 /// Longest time by which a step outlasts its duration if the host dies before it has queued the

@@ -55,35 +55,33 @@ impl Phase {
     pub(crate) fn is_under_way(&self) -> bool {
         match self {
             Self::Progress | Self::Pause(_) => true,
-            Self::Waiting | Self::Preparation(_) | Self::Interruption { .. } | Self::End(_) => false,
+            Self::Waiting | Self::Preparation(_) | Self::Interruption { .. } | Self::End(_) => {
+                false
+            }
         }
     }
 
     /// Whether the run may go from here to there.
     pub(crate) fn may_become(&self, next: &Self) -> bool {
-        match (self, next) {
-            // An end is final; anything else may end.
-            (Self::End(_), _) => false,
-            (_, Self::End(_)) => true,
-            (
-                Self::Waiting | Self::Interruption { .. } | Self::Preparation(_),
-                Self::Preparation(_),
-            )
-            | (Self::Preparation(_), Self::Progress)
-            | (Self::Progress, Self::Pause(_))
-            | (Self::Pause(_), Self::Progress | Self::Pause(_))
-            | (Self::Preparation(_), Self::Waiting)
-            | (Self::Progress | Self::Pause(_) | Self::Preparation(_), Self::Interruption { .. }) => {
-                true
+        match self {
+            Self::End(_) => false,
+            Self::Waiting | Self::Interruption { .. } => {
+                matches!(next, Self::End(_) | Self::Preparation(_))
             }
-            (
-                Self::Waiting
-                | Self::Preparation(_)
-                | Self::Progress
-                | Self::Pause(_)
-                | Self::Interruption { .. },
-                _,
-            ) => false,
+            Self::Preparation(_) => matches!(
+                next,
+                Self::End(_) | Self::Preparation(_) | Self::Progress | Self::Interruption { .. }
+            ),
+            Self::Progress => {
+                matches!(
+                    next,
+                    Self::End(_) | Self::Pause(_) | Self::Interruption { .. }
+                )
+            }
+            Self::Pause(_) => matches!(
+                next,
+                Self::End(_) | Self::Pause(_) | Self::Progress | Self::Interruption { .. }
+            ),
         }
     }
 }

@@ -76,7 +76,9 @@ pub enum PlanError {
         op: OpIndex,
     },
     /// A target that draws less than nothing.
-    #[error("instruction {op}: the target is below zero (or a resistance of zero): a sink only draws")]
+    #[error(
+        "instruction {op}: the target is below zero (or a resistance of zero): a sink only draws"
+    )]
     NotDrawing {
         /// Where.
         op: OpIndex,
@@ -172,7 +174,11 @@ impl Program {
         }
         let round_at_most = rounds(&plan);
         let skips_back = skips_back(&plan);
-        Ok(Self { plan, round_at_most, skips_back })
+        Ok(Self {
+            plan,
+            round_at_most,
+            skips_back,
+        })
     }
 
     pub(crate) fn plan(&self) -> &Plan {
@@ -253,7 +259,10 @@ impl Program {
     ///
     /// `frames` are the loops around `op`. Returns false if the run has finished.
     pub(crate) fn follow(&self, op: OpIndex, frames: &[Frame], next: Next) -> Option<Cursor> {
-        let mut cursor = Cursor { at: op, frames: frames.to_vec() };
+        let mut cursor = Cursor {
+            at: op,
+            frames: frames.to_vec(),
+        };
         match next {
             Next::GoOn => {
                 cursor.at = match self.op(op) {
@@ -284,7 +293,12 @@ impl Program {
 
     /// The longest time from the beginning of the step at the cursor to the end of the program,
     /// if all conditions wait as long as they may; `None` if nothing bounds it.
-    pub(crate) fn at_most_from(&self, op: OpIndex, frames: &[Frame], now: SinkTime) -> Option<Span> {
+    pub(crate) fn at_most_from(
+        &self,
+        op: OpIndex,
+        frames: &[Frame],
+        now: SinkTime,
+    ) -> Option<Span> {
         if self.skips_back {
             return None;
         }
@@ -296,12 +310,19 @@ impl Program {
             let rest = self.stretch(from, head.end);
             let left = head.times.map(|times| times.saturating_sub(frame.round));
             let rounds = left
-                .zip(self.round_at_most.get(usize::try_from(frame.head).ok()?).copied().flatten())
+                .zip(
+                    self.round_at_most
+                        .get(usize::try_from(frame.head).ok()?)
+                        .copied()
+                        .flatten(),
+                )
                 .and_then(|(left, round)| times(round, left));
             let counted = rest
                 .zip(rounds)
                 .map(|(rest, rounds)| total.saturating_add(rest).saturating_add(rounds));
-            let timed = frame.deadline.map(|deadline| deadline.saturating_since(now));
+            let timed = frame
+                .deadline
+                .map(|deadline| deadline.saturating_since(now));
             total = least(counted, timed)?;
             from = head.end + 1;
         }
@@ -349,9 +370,19 @@ pub(crate) struct Slot {
 impl Slot {
     fn new(cursor: &Cursor, step: &PlanStep, start: SinkTime) -> Self {
         let own = start.saturating_add(step.duration);
-        let limit = cursor.frames.iter().filter_map(|frame| frame.deadline).min();
+        let limit = cursor
+            .frames
+            .iter()
+            .filter_map(|frame| frame.deadline)
+            .min();
         let end = limit.map_or(own, |limit| limit.min(own));
-        Self { op: cursor.at, start, end, cut: end < own, frames: cursor.frames.clone() }
+        Self {
+            op: cursor.at,
+            start,
+            end,
+            cut: end < own,
+            frames: cursor.frames.clone(),
+        }
     }
 }
 
@@ -381,7 +412,9 @@ fn check_times(plan: &Plan) -> Result<(), PlanError> {
     }
     check_readback(plan, plan.readback)?;
     if plan.deadman < DEADMAN.0 || plan.deadman > DEADMAN.1 {
-        return Err(PlanError::Deadman { interval: plan.deadman });
+        return Err(PlanError::Deadman {
+            interval: plan.deadman,
+        });
     }
     Ok(())
 }
@@ -389,7 +422,9 @@ fn check_times(plan: &Plan) -> Result<(), PlanError> {
 fn check_readback(plan: &Plan, interval: Span) -> Result<(), PlanError> {
     let silence = plan.interlocks.silence;
     if interval == Span::ZERO {
-        return Err(PlanError::ZeroTime { what: "readback interval" });
+        return Err(PlanError::ZeroTime {
+            what: "readback interval",
+        });
     }
     if interval >= silence {
         return Err(PlanError::SlowReadback { interval, silence });
@@ -418,7 +453,11 @@ fn check_loops(plan: &Plan) -> Result<Vec<Vec<OpIndex>>, PlanError> {
                 if head.times.is_none() && head.until.is_empty() && head.at_most.is_none() {
                     return Err(PlanError::EndlessLoop { op });
                 }
-                open.push(Open { head, at: op, steps: false });
+                open.push(Open {
+                    head,
+                    at: op,
+                    steps: false,
+                });
             }
             Op::LoopEnd { begin } => {
                 let innermost = open.pop().ok_or(PlanError::LoopMismatch { op })?;
@@ -439,7 +478,11 @@ fn check_loops(plan: &Plan) -> Result<Vec<Vec<OpIndex>>, PlanError> {
 
 fn check_step(plan: &Plan, limits: &Limits, op: OpIndex, step: &PlanStep) -> Result<(), PlanError> {
     if step.duration < plan.tick {
-        return Err(PlanError::TooShort { op, duration: step.duration, tick: plan.tick });
+        return Err(PlanError::TooShort {
+            op,
+            duration: step.duration,
+            tick: plan.tick,
+        });
     }
     if let Some(interval) = step.readback {
         check_readback(plan, interval)?;
@@ -453,9 +496,10 @@ fn check_step(plan: &Plan, limits: &Limits, op: OpIndex, step: &PlanStep) -> Res
                 && plan.correction.to_nominal_setpoint(target) <= limits.current;
             (!target.is_negative(), allowed)
         }
-        Action::Power { target } => {
-            (!target.is_negative(), target <= plan.interlocks.over_power.threshold)
-        }
+        Action::Power { target } => (
+            !target.is_negative(),
+            target <= plan.interlocks.over_power.threshold,
+        ),
         // The sink bounds a resistance by its current limit (line protocol, section 6).
         Action::Resistance { target } => (target.microohms() > 0, true),
     };
@@ -470,20 +514,20 @@ fn check_step(plan: &Plan, limits: &Limits, op: OpIndex, step: &PlanStep) -> Res
 
 fn check_label(plan: &Plan, op: OpIndex, label: Option<u32>) -> Result<(), PlanError> {
     match label {
-        Some(label) if usize::try_from(label).is_ok_and(|index| index < plan.labels.len()) => Ok(()),
+        Some(label) if usize::try_from(label).is_ok_and(|index| index < plan.labels.len()) => {
+            Ok(())
+        }
         Some(label) => Err(PlanError::UnknownLabel { op, label }),
         None => Ok(()),
     }
 }
 
-fn check_skips(
-    op: OpIndex,
-    nexts: &[Next],
-    enclosing: &[Vec<OpIndex>],
-) -> Result<(), PlanError> {
+fn check_skips(op: OpIndex, nexts: &[Next], enclosing: &[Vec<OpIndex>]) -> Result<(), PlanError> {
     let around = |place: OpIndex| usize::try_from(place).ok().and_then(|at| enclosing.get(at));
     for next in nexts {
-        let Next::SkipTo(target) = *next else { continue };
+        let Next::SkipTo(target) = *next else {
+            continue;
+        };
         let reachable = around(target)
             .zip(around(op))
             .is_some_and(|(there, here)| there.iter().all(|head| here.contains(head)));
@@ -498,7 +542,12 @@ fn check_skips(
 fn rounds(plan: &Plan) -> Vec<Option<Span>> {
     let mut rounds = vec![None; plan.ops.len()];
     // From the back: an inner loop's head comes after its outer one's.
-    for (op, place) in (0..).zip(&plan.ops).collect::<Vec<(OpIndex, &Op)>>().into_iter().rev() {
+    for (op, place) in (0..)
+        .zip(&plan.ops)
+        .collect::<Vec<(OpIndex, &Op)>>()
+        .into_iter()
+        .rev()
+    {
         if let Op::LoopBegin(head) = place {
             let round = stretch(plan, &rounds, op + 1, head.end);
             if let Some(cell) = usize::try_from(op).ok().and_then(|at| rounds.get_mut(at)) {

@@ -85,7 +85,11 @@ pub fn replay(
         match recorded {
             Recorded::Event(event) => {
                 if let Some(expected) = due.pop_front() {
-                    let difference = FirstDifference { entry, expected: Some(expected), found: None };
+                    let difference = FirstDifference {
+                        entry,
+                        expected: Some(expected),
+                        found: None,
+                    };
                     return Err(Box::new(difference).into());
                 }
                 sequencer.handle(&event);
@@ -95,7 +99,11 @@ pub fn replay(
             Recorded::Output(found) => {
                 let expected = due.pop_front();
                 if expected.as_ref() != Some(&found) {
-                    let difference = FirstDifference { entry, expected, found: Some(found) };
+                    let difference = FirstDifference {
+                        entry,
+                        expected,
+                        found: Some(found),
+                    };
                     return Err(Box::new(difference).into());
                 }
                 summary.outputs += 1;

@@ -128,7 +128,10 @@ impl Sequencer {
 
     /// Takes one event in. Drain [`Self::poll_output`] before the next.
     pub fn handle(&mut self, event: &Event) {
-        debug_assert!(self.out.is_empty(), "outputs must be drained before the next event");
+        debug_assert!(
+            self.out.is_empty(),
+            "outputs must be drained before the next event"
+        );
         if let Phase::End(_) = self.phase {
             self.handle_after_the_end(event);
             return;
@@ -165,9 +168,10 @@ impl Sequencer {
     /// When the sequencer next wants a [`Happening::TimePassed`], at the latest, and why.
     pub fn deadline(&self) -> Option<(HostTime, DeadlineReason)> {
         let setup = match &self.phase {
-            Phase::Preparation(preparation) => {
-                Some((preparation.since.saturating_add(SETUP), DeadlineReason::Setup))
-            }
+            Phase::Preparation(preparation) => Some((
+                preparation.since.saturating_add(SETUP),
+                DeadlineReason::Setup,
+            )),
             Phase::Waiting
             | Phase::Progress
             | Phase::Pause(_)
@@ -175,7 +179,10 @@ impl Sequencer {
             | Phase::End(_) => None,
         };
         let silence = self.silent_since().map(|since| {
-            (since.saturating_add(self.plan().interlocks.silence), DeadlineReason::Silence)
+            (
+                since.saturating_add(self.plan().interlocks.silence),
+                DeadlineReason::Silence,
+            )
         });
         let time = self
             .plan()
@@ -186,7 +193,10 @@ impl Sequencer {
                 let left = limit.saturating_sub(self.elapsed);
                 (self.now.saturating_add(left), DeadlineReason::Time)
             });
-        [silence, time, setup].into_iter().flatten().min_by_key(|(at, _)| *at)
+        [silence, time, setup]
+            .into_iter()
+            .flatten()
+            .min_by_key(|(at, _)| *at)
     }
 
     /// From when on silence counts; `None` where nothing is to be heard.
@@ -227,13 +237,21 @@ impl Sequencer {
         if let Some(since) = self.silent_since() {
             let silent = at.saturating_since(since);
             if silent >= armed.silence {
-                crossings.add(crossing(Interlock::Silence, micros(silent), micros(armed.silence)));
+                crossings.add(crossing(
+                    Interlock::Silence,
+                    micros(silent),
+                    micros(armed.silence),
+                ));
             }
         }
         if self.phase.is_under_way() {
             self.elapsed = self.elapsed.saturating_add(passed);
             if let Some(limit) = armed.time.filter(|limit| self.elapsed >= *limit) {
-                crossings.add(crossing(Interlock::Time, micros(self.elapsed), micros(limit)));
+                crossings.add(crossing(
+                    Interlock::Time,
+                    micros(self.elapsed),
+                    micros(limit),
+                ));
             }
         }
         if let Phase::Preparation(preparation) = &self.phase {
@@ -280,9 +298,9 @@ impl Sequencer {
             Cause::Current => correction
                 .current_from_readback(quantity::Current::from_microamperes(value))
                 .microamperes(),
-            Cause::VoltageHigh | Cause::VoltageLow => {
-                correction.voltage_from_readback(Voltage::from_microvolts(value)).microvolts()
-            }
+            Cause::VoltageHigh | Cause::VoltageLow => correction
+                .voltage_from_readback(Voltage::from_microvolts(value))
+                .microvolts(),
             Cause::Power
             | Cause::Temperature
             | Cause::Excess
@@ -295,7 +313,12 @@ impl Sequencer {
     pub(crate) fn trip_by_sink(&mut self, cause: Cause, value: i64) {
         let (interlock, threshold) = interlock_of(cause, self.plan());
         let mut crossings = Crossings::default();
-        crossings.add(Crossing { interlock, value, threshold, by_sink: true });
+        crossings.add(Crossing {
+            interlock,
+            value,
+            threshold,
+            by_sink: true,
+        });
         self.trip(&crossings);
     }
 
@@ -321,7 +344,11 @@ impl Sequencer {
         if let Some(running) = self.course.running.take_if(|running| !running.ended) {
             let time = self.latest.max(running.since);
             let op = running.step.slot.op;
-            self.push(Output::Finding(Finding::StepEnded { op, time, by: StepEnd::Run }));
+            self.push(Output::Finding(Finding::StepEnded {
+                op,
+                time,
+                by: StepEnd::Run,
+            }));
         }
         self.course = Course::default();
         self.suspension = None;
@@ -360,8 +387,14 @@ impl Sequencer {
 
     /// Off waits for nothing, not even for what the same event has brought before it.
     pub(crate) fn off(&mut self) {
-        let overtaken = self.out.iter().any(|output| matches!(output, Output::Order { .. }));
-        assert!(!overtaken, "an order and then off in one event: the order would come after it");
+        let overtaken = self
+            .out
+            .iter()
+            .any(|output| matches!(output, Output::Order { .. }));
+        assert!(
+            !overtaken,
+            "an order and then off in one event: the order would come after it"
+        );
         self.out.push_front(Output::Off);
     }
 
@@ -379,7 +412,10 @@ impl Sequencer {
 
     /// The sink's time now, at least, from what has been heard of it.
     pub(crate) fn sink_now(&self) -> SinkTime {
-        self.alignment.sink_time(self.now).unwrap_or(self.latest).max(self.latest)
+        self.alignment
+            .sink_time(self.now)
+            .unwrap_or(self.latest)
+            .max(self.latest)
     }
 
     /// Steps that may wait in the sink's queue.
@@ -410,5 +446,10 @@ impl Sequencer {
 }
 
 pub(crate) fn crossing(interlock: Interlock, value: i64, threshold: i64) -> Crossing {
-    Crossing { interlock, value, threshold, by_sink: false }
+    Crossing {
+        interlock,
+        value,
+        threshold,
+        by_sink: false,
+    }
 }

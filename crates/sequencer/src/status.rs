@@ -87,7 +87,11 @@ impl Sequencer {
     pub fn status(&self) -> Status {
         let correction = &self.plan().correction;
         let sum = self.account.sum();
-        let running = self.course.running.as_ref().filter(|_| self.phase == Phase::Progress);
+        let running = self
+            .course
+            .running
+            .as_ref()
+            .filter(|_| self.phase == Phase::Progress);
         Status {
             standing: self.standing(),
             action: running.map(|running| running.step.action),
@@ -98,8 +102,7 @@ impl Sequencer {
             sink_time: self.latest,
             charge: sum.charge(correction),
             energy: sum.energy(correction),
-            step_charge: running
-                .map(|running| sum.since(running.watch.base()).charge(correction)),
+            step_charge: running.map(|running| sum.since(running.watch.base()).charge(correction)),
             elapsed: self.elapsed,
             left_at_most: self.left_at_most(),
             loops: self.loop_counts(),
@@ -120,7 +123,11 @@ impl Sequencer {
                 Some(running) => {
                     let op = running.step.slot.op;
                     let label = self.program.step(op).and_then(|step| step.label);
-                    Standing::Running { op, label: self.label(label), since: running.since }
+                    Standing::Running {
+                        op,
+                        label: self.label(label),
+                        since: running.since,
+                    }
                 }
                 None => Standing::Starting,
             },
@@ -131,7 +138,10 @@ impl Sequencer {
     }
 
     fn label(&self, index: Option<u32>) -> Option<String> {
-        self.plan().labels.get(usize::try_from(index?).ok()?).cloned()
+        self.plan()
+            .labels
+            .get(usize::try_from(index?).ok()?)
+            .cloned()
     }
 
     fn loop_counts(&self) -> Vec<LoopCount> {
@@ -150,7 +160,9 @@ impl Sequencer {
     fn left_at_most(&self) -> Option<Span> {
         if let Some(suspension) = &self.suspension {
             let slot = suspension.slot(self.latest, self.plan().tick);
-            let whole = self.program.at_most_from(slot.op, &slot.frames, self.latest)?;
+            let whole = self
+                .program
+                .at_most_from(slot.op, &slot.frames, self.latest)?;
             let duration = self.program.step(slot.op)?.duration;
             return Some(whole.saturating_sub(duration.saturating_sub(suspension.left)));
         }
@@ -161,7 +173,9 @@ impl Sequencer {
             Phase::Progress | Phase::Pause(_) | Phase::Interruption { .. } => {
                 let step = self.course.steps().next()?;
                 let slot = &step.slot;
-                let whole = self.program.at_most_from(slot.op, &slot.frames, slot.start)?;
+                let whole = self
+                    .program
+                    .at_most_from(slot.op, &slot.frames, slot.start)?;
                 let done = self.latest.saturating_since(slot.start);
                 let early = slot.start.saturating_since(self.latest);
                 Some(whole.saturating_sub(done).saturating_add(early))

@@ -89,14 +89,22 @@ impl Sequencer {
         let Some(increment) = increment else { return };
         let due = |next: &Queued| next.step.acknowledged && next.step.slot.start <= time;
         while self.course.queue.front().is_some_and(due) {
-            let edge = self.course.queue.front().map_or(time, |next| next.step.slot.start);
+            let edge = self
+                .course
+                .queue
+                .front()
+                .map_or(time, |next| next.step.slot.start);
             let base = if edge < increment.from {
                 self.account.sum()
             } else {
-                let share = self.course.share(increment.from, edge, self.latest, self.voltage);
+                let share = self
+                    .course
+                    .share(increment.from, edge, self.latest, self.voltage);
                 increment.at_edge(edge, share)
             };
-            let Some(next) = self.course.queue.pop_front() else { return };
+            let Some(next) = self.course.queue.pop_front() else {
+                return;
+            };
             self.course.forget_stragglers();
             self.end_running(edge);
             let valid_from = edge.saturating_add(self.plan().tick);
@@ -104,48 +112,67 @@ impl Sequencer {
             let op = next.step.slot.op;
             let since = next.edge.unwrap_or(edge);
             let untils = self.program.step(op).map_or(&[][..], |step| &step.until);
-            let watch = match next.carried {
-                Some(mut watch) => {
-                    watch.resume(untils, valid_from);
-                    watch
-                }
-                None => {
-                    let watch = Watch::new(untils, valid_from, base);
-                    self.find(Finding::StepBegan { op, time: since });
-                    watch
-                }
+            let watch = if let Some(mut watch) = next.carried {
+                watch.resume(untils, valid_from);
+                watch
+            } else {
+                let watch = Watch::new(untils, valid_from, base);
+                self.find(Finding::StepBegan { op, time: since });
+                watch
             };
             if next.step.may_give_up {
                 self.guard.forgive_following();
             }
-            self.course.running = Some(Running { step: next.step, watch, ended: false, since });
+            self.course.running = Some(Running {
+                step: next.step,
+                watch,
+                ended: false,
+                since,
+            });
         }
     }
 
     fn end_running(&mut self, edge: SinkTime) {
-        let Some(running) = self.course.running.take() else { return };
+        let Some(running) = self.course.running.take() else {
+            return;
+        };
         if running.ended {
             return;
         }
-        let by = if running.step.slot.cut { StepEnd::Loop } else { StepEnd::Duration };
+        let by = if running.step.slot.cut {
+            StepEnd::Loop
+        } else {
+            StepEnd::Duration
+        };
         let time = edge.min(running.step.slot.end);
-        self.find(Finding::StepEnded { op: running.step.slot.op, time, by });
+        self.find(Finding::StepEnded {
+            op: running.step.slot.op,
+            time,
+            by,
+        });
     }
 
     /// Leaves the loops that the step is not in, and begins those that are new.
     fn enter_loops(&mut self, slot: &Slot, valid_from: SinkTime, base: crate::account::Counted) {
         let loops = &mut self.course.loops;
         loops.retain(|watched| {
-            slot.frames.iter().any(|frame| frame.serial == watched.frame.serial)
+            slot.frames
+                .iter()
+                .any(|frame| frame.serial == watched.frame.serial)
         });
         for (depth, frame) in slot.frames.iter().enumerate() {
-            match loops.get_mut(depth) {
-                Some(watched) => watched.frame = *frame,
-                None => {
-                    let untils = self.program.head(frame.head).map_or(&[][..], |head| &head.until);
-                    let watch = Watch::new(untils, valid_from, base);
-                    loops.push(LoopWatch { frame: *frame, watch });
-                }
+            if let Some(watched) = loops.get_mut(depth) {
+                watched.frame = *frame;
+            } else {
+                let untils = self
+                    .program
+                    .head(frame.head)
+                    .map_or(&[][..], |head| &head.until);
+                let watch = Watch::new(untils, valid_from, base);
+                loops.push(LoopWatch {
+                    frame: *frame,
+                    watch,
+                });
             }
         }
     }
@@ -156,7 +183,9 @@ impl Sequencer {
         let sum = self.account.sum();
         let mut met: Option<(usize, Next)> = None;
         for (depth, watched) in self.course.loops.iter_mut().enumerate() {
-            let Some(head) = self.program.head(watched.frame.head) else { continue };
+            let Some(head) = self.program.head(watched.frame.head) else {
+                continue;
+            };
             let found = watched.watch.met(&head.until, seen, sum, &plan.correction);
             if met.is_none() {
                 met = found.map(|(_, until)| (depth, until.then));
@@ -165,8 +194,12 @@ impl Sequencer {
         if let Some((depth, next)) = met {
             return self.leave_loop(depth, next, seen.time);
         }
-        let Some(running) = &mut self.course.running else { return false };
-        let Some(step) = self.program.step(running.step.slot.op) else { return false };
+        let Some(running) = &mut self.course.running else {
+            return false;
+        };
+        let Some(step) = self.program.step(running.step.slot.op) else {
+            return false;
+        };
         let found = running.watch.met(&step.until, seen, sum, &plan.correction);
         // A reading that ends after the step speaks of what follows, too.
         if running.ended || seen.time > running.step.slot.end {
@@ -184,19 +217,35 @@ impl Sequencer {
     }
 
     fn leave_loop(&mut self, depth: usize, next: Next, time: SinkTime) -> bool {
-        let Some(watched) = self.course.loops.get(depth) else { return false };
+        let Some(watched) = self.course.loops.get(depth) else {
+            return false;
+        };
         let head = watched.frame.head;
         // A step outside the loop may be on its way already.
         let serial = watched.frame.serial;
-        let decided = self.course.running.as_ref().is_some_and(|running| running.ended);
+        let decided = self
+            .course
+            .running
+            .as_ref()
+            .is_some_and(|running| running.ended);
         let leaving = self.course.queue.front().is_some_and(|queued| {
-            !queued.step.slot.frames.iter().any(|frame| frame.serial == serial)
+            !queued
+                .step
+                .slot
+                .frames
+                .iter()
+                .any(|frame| frame.serial == serial)
         });
         if decided && leaving {
             return false;
         }
-        let outside: Vec<_> =
-            self.course.loops.iter().take(depth).map(|watched| watched.frame).collect();
+        let outside: Vec<_> = self
+            .course
+            .loops
+            .iter()
+            .take(depth)
+            .map(|watched| watched.frame)
+            .collect();
         self.divert(head, &outside, next, StepEnd::Loop, time, false);
         true
     }
@@ -215,7 +264,11 @@ impl Sequencer {
         as_planned: bool,
     ) {
         let start = self.sink_now().max(time).saturating_add(REACTION);
-        let end = self.course.running.as_ref().map(|running| running.step.slot.end);
+        let end = self
+            .course
+            .running
+            .as_ref()
+            .map(|running| running.step.slot.end);
         if as_planned && end.is_some_and(|end| end <= start) && !self.course.queue.is_empty() {
             self.tell_end(by, end.unwrap_or(start));
             return;
@@ -233,7 +286,9 @@ impl Sequencer {
             return;
         }
         if dropped {
-            self.order(Order::Clear { from: SinkTime::ZERO });
+            self.order(Order::Clear {
+                from: SinkTime::ZERO,
+            });
         }
         self.bursts.wanted.clear();
         self.tell_end(by, start);
@@ -253,7 +308,9 @@ impl Sequencer {
         if !self.course.queue.is_empty() || !self.course.is_over() {
             return;
         }
-        let Some(running) = &self.course.running else { return };
+        let Some(running) = &self.course.running else {
+            return;
+        };
         let end = running.step.slot.end;
         if time < end {
             return;
@@ -268,7 +325,9 @@ impl Sequencer {
         let capacity = self.capacity();
         while self.course.waiting(self.begun_through) < capacity {
             self.catch_up();
-            let Some((slot, last)) = self.course.take(&self.program) else { break };
+            let Some((slot, last)) = self.course.take(&self.program) else {
+                break;
+            };
             self.queue_step(slot, last, None);
         }
         self.order_burst();
@@ -276,7 +335,9 @@ impl Sequencer {
 
     /// If the next step's time is past or too near to be met, the rest of the schedule moves.
     fn catch_up(&mut self) {
-        let Some(ahead) = self.course.ahead() else { return };
+        let Some(ahead) = self.course.ahead() else {
+            return;
+        };
         let (op, due) = (ahead.op, ahead.start);
         let nearest = self.sink_now().saturating_add(self.plan().tick);
         if due >= nearest {
@@ -285,7 +346,10 @@ impl Sequencer {
         let start = self.sink_now().saturating_add(REACTION);
         self.course.delay_ahead(start);
         self.draw_on(start);
-        self.find(Finding::Rescheduled { op, by: start.saturating_since(due) });
+        self.find(Finding::Rescheduled {
+            op,
+            by: start.saturating_since(due),
+        });
     }
 
     /// The next step begins later than the last one ends: that one lasts until its hold runs out,
@@ -293,7 +357,11 @@ impl Sequencer {
     fn draw_on(&mut self, start: SinkTime) {
         let last = match self.course.queue.back_mut() {
             Some(queued) => Some(&mut queued.step),
-            None => self.course.running.as_mut().map(|running| &mut running.step),
+            None => self
+                .course
+                .running
+                .as_mut()
+                .map(|running| &mut running.step),
         };
         if let Some(last) = last {
             last.drawn_until = last.drawn_until.max(last.hold_end).max(start);
@@ -302,10 +370,18 @@ impl Sequencer {
 
     /// A step was refused because its time had passed: the rest of the schedule moves.
     pub(super) fn reschedule_refused(&mut self, order: OrderId) {
-        let place = self.course.queue.iter().position(|queued| queued.step.order == order);
+        let place = self
+            .course
+            .queue
+            .iter()
+            .position(|queued| queued.step.order == order);
         let Some(place) = place else { return };
-        let Some(late) = self.course.queue.get(place).cloned() else { return };
-        self.order(Order::Clear { from: SinkTime::ZERO });
+        let Some(late) = self.course.queue.get(place).cloned() else {
+            return;
+        };
+        self.order(Order::Clear {
+            from: SinkTime::ZERO,
+        });
         let slot = late.step.slot;
         let start = self.sink_now().saturating_add(REACTION);
         self.course.drop_from(place, start);
@@ -320,13 +396,18 @@ impl Sequencer {
     }
 
     fn queue_step(&mut self, slot: Slot, last: bool, carried: Option<Watch>) {
-        let Some(step) = self.program.step(slot.op) else { return };
+        let Some(step) = self.program.step(slot.op) else {
+            return;
+        };
         let cap = self.program.plan().interlocks.over_current.threshold;
         let previous = self.course.last_ordered();
         let before = previous
             .filter(|previous| !previous.broken_off && previous.drawn_until >= slot.start)
             .map_or(Current::ZERO, |previous| {
-                previous.setpoint(slot.start, self.voltage).unwrap_or(cap).min(cap)
+                previous
+                    .setpoint(slot.start, self.voltage)
+                    .unwrap_or(cap)
+                    .min(cap)
             });
         let (target, whole_ramp) = match step.action {
             Action::Current { target, ramp } => (target, ramp),
@@ -336,7 +417,9 @@ impl Sequencer {
         };
         let ramp_from = self.course.ramp_from(slot.start, target);
         let before = before.max(ramp_from.1);
-        let planned = step.duration.saturating_sub(slot.end.saturating_since(slot.start));
+        let planned = step
+            .duration
+            .saturating_sub(slot.end.saturating_since(slot.start));
         let ramp = match carried {
             // What is left of a ramp that had begun.
             Some(_) => whole_ramp.saturating_sub(planned),
@@ -345,7 +428,9 @@ impl Sequencer {
         let duration = slot.end.saturating_since(slot.start);
         let held = hold(duration, last);
         let order = Order::Step(wire::Step {
-            mode: self.limits.mode(self.program.plan(), step.action, self.voltage),
+            mode: self
+                .limits
+                .mode(self.program.plan(), step.action, self.voltage),
             start: slot.start,
             ramp,
             hold: held,
@@ -368,7 +453,11 @@ impl Sequencer {
             acknowledged: false,
             may_give_up,
         };
-        self.course.queue.push_back(Queued { step, carried, edge: None });
+        self.course.queue.push_back(Queued {
+            step,
+            carried,
+            edge: None,
+        });
     }
 
     fn want_burst(&mut self, slot: &Slot, request: sequence::plan::BurstRequest) {
@@ -433,7 +522,11 @@ impl Sequencer {
 
     /// A step began, by the sink's own word: there is room in its queue.
     pub(super) fn on_edge(&mut self, time: SinkTime, order: OrderId) {
-        let queued = self.course.queue.iter_mut().find(|queued| queued.step.order == order);
+        let queued = self
+            .course
+            .queue
+            .iter_mut()
+            .find(|queued| queued.step.order == order);
         let Some(queued) = queued else { return };
         queued.edge = Some(time);
         queued.step.acknowledged = true;
@@ -476,7 +569,9 @@ impl Sequencer {
         let now = self.sink_now();
         self.off();
         // Whatever overtakes or follows `off` on its way must not be carried out later.
-        self.order(Order::Clear { from: SinkTime::ZERO });
+        self.order(Order::Clear {
+            from: SinkTime::ZERO,
+        });
         self.bursts.clear();
         self.suspension = self.course.break_off(now, now.saturating_add(OFF_BY));
         self.enter(Phase::Pause(Pause::default()));
@@ -485,7 +580,10 @@ impl Sequencer {
 
     pub(super) fn ask_to_go_on(&mut self) {
         if let Phase::Pause(pause) = self.phase {
-            self.enter(Phase::Pause(Pause { go_on: true, ..pause }));
+            self.enter(Phase::Pause(Pause {
+                go_on: true,
+                ..pause
+            }));
             self.go_on_if_possible();
         }
     }
@@ -499,11 +597,15 @@ impl Sequencer {
 
     /// Goes on once the sink has said that it is off and all that had begun is accounted for.
     pub(super) fn go_on_if_possible(&mut self) {
-        let Phase::Pause(pause) = self.phase else { return };
+        let Phase::Pause(pause) = self.phase else {
+            return;
+        };
         if !pause.off || !pause.go_on || !self.course.queue.is_empty() {
             return;
         }
-        let Some(suspension) = self.suspension.take() else { return };
+        let Some(suspension) = self.suspension.take() else {
+            return;
+        };
         let start = self.sink_now().max(self.latest).saturating_add(super::LEAD);
         self.enter(Phase::Progress);
         self.find(Finding::Continued);
@@ -517,7 +619,10 @@ impl Sequencer {
         let slot = suspension.slot(start, tick);
         self.begun_through = self.latest;
         for watched in &mut self.course.loops {
-            let untils = self.program.head(watched.frame.head).map_or(&[][..], |head| &head.until);
+            let untils = self
+                .program
+                .head(watched.frame.head)
+                .map_or(&[][..], |head| &head.until);
             watched.watch.resume(untils, start.saturating_add(tick));
         }
         // The step that was broken off stays until this one begins: what it drew may still show

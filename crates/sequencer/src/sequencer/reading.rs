@@ -42,7 +42,8 @@ impl Sequencer {
         self.judge(&seen, increment.as_ref(), &mut crossings);
         if !seen.first {
             let silence = micros(self.plan().interlocks.silence);
-            self.guard.judge_total(Interlock::Silence, micros(silent), silence, &mut crossings);
+            self.guard
+                .judge_total(Interlock::Silence, micros(silent), silence, &mut crossings);
         }
         let gave_up = self.judge_following(&seen, &mut crossings);
         let latched = match seen.state {
@@ -88,20 +89,27 @@ impl Sequencer {
         let counted = increment
             .filter(|increment| increment.from == seen.from)
             .map(Increment::charge);
-        self.guard.judge_levels(plan, seen, counted, starting, crossings);
+        self.guard
+            .judge_levels(plan, seen, counted, starting, crossings);
         let sum = self.account.sum();
         let delivered = (sum.charge(&plan.correction), sum.energy(&plan.correction));
         judge_delivered(&mut self.guard, plan, delivered, crossings);
         if let Some(limit) = plan.interlocks.time {
             let (elapsed, limit) = (micros(self.elapsed), micros(limit));
-            self.guard.judge_total(Interlock::Time, elapsed, limit, crossings);
+            self.guard
+                .judge_total(Interlock::Time, elapsed, limit, crossings);
         }
         let bound = plan.interlocks.clock;
-        let drift = self.alignment.take(seen.time, seen.at, bound).map_or(0, micros);
-        self.guard.judge_total(Interlock::Clock, drift, micros(bound), crossings);
+        let drift = self
+            .alignment
+            .take(seen.time, seen.at, bound)
+            .map_or(0, micros);
+        self.guard
+            .judge_total(Interlock::Clock, drift, micros(bound), crossings);
         let expected = self.expectation(seen);
         let limit = self.program.plan().interlocks.not_releasing;
-        self.guard.judge_releasing(limit, seen, &expected, crossings);
+        self.guard
+            .judge_releasing(limit, seen, &expected, crossings);
     }
 
     fn expectation(&self, seen: &Observation) -> Expectation {
@@ -111,7 +119,10 @@ impl Sequencer {
                 Expectation::new(self.course.possible_steps(), seen, cap)
             }
             // The first reading of a session may hold what flowed before it.
-            Phase::Preparation(_) if seen.first => Expectation { largest: None, ..Expectation::OFF },
+            Phase::Preparation(_) if seen.first => Expectation {
+                largest: None,
+                ..Expectation::OFF
+            },
             Phase::Preparation(_) | Phase::Waiting | Phase::Interruption { .. } | Phase::End(_) => {
                 Expectation::OFF
             }
@@ -152,6 +163,11 @@ impl Sequencer {
             },
             Cause::Excess | Cause::Sensor | Cause::Deadman | Cause::Watchdog => 0,
         };
-        Crossing { interlock, value, threshold, by_sink: true }
+        Crossing {
+            interlock,
+            value,
+            threshold,
+            by_sink: true,
+        }
     }
 }

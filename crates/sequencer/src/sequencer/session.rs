@@ -61,7 +61,11 @@ impl Sequencer {
             }
             return;
         }
-        let queued = self.course.queue.iter_mut().find(|queued| queued.step.order == order);
+        let queued = self
+            .course
+            .queue
+            .iter_mut()
+            .find(|queued| queued.step.order == order);
         if let Some(queued) = queued {
             queued.step.acknowledged = true;
         }
@@ -122,7 +126,10 @@ impl Sequencer {
         if preparation.again && cause == Cause::Deadman {
             if preparation.awaited.is_none() && preparation.reset.is_none() {
                 let reset = Some(self.order(Order::Reset));
-                self.enter(Phase::Preparation(Preparation { reset, ..preparation }));
+                self.enter(Phase::Preparation(Preparation {
+                    reset,
+                    ..preparation
+                }));
             }
             return;
         }
@@ -157,7 +164,8 @@ impl Sequencer {
                 .min(preparation.connected)
                 .max(last);
             let counted = increment.map(Increment::charge);
-            self.off_by_charge(last, counted).map_or(latest, |off| off.clamp(last, latest))
+            self.off_by_charge(last, counted)
+                .map_or(latest, |off| off.clamp(last, latest))
         };
         self.suspension = self.course.break_off(off, off);
         let nothing = Increment::nothing(last, self.account.sum());

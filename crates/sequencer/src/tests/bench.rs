@@ -189,17 +189,24 @@ impl Bench {
         self.ended.clone()
     }
 
-    /// Goes on to the next thing that happens, at most to `stop`.
-    fn turn(&mut self, stop: SinkTime) {
-        let mut next = stop;
+    /// Goes on to the next thing that happens, at most to `at_most`.
+    fn turn(&mut self, at_most: SinkTime) {
+        let mut next = at_most;
         let arrival = self.inbox.front().map(|(at, ..)| *at);
         let start = self.queue.front().map(|(_, step)| step.start);
-        let hold = self.active.filter(|_| self.queue.is_empty()).map(|(_, step, began, _)| began + step.hold);
+        let hold = self
+            .active
+            .filter(|_| self.queue.is_empty())
+            .map(|(_, step, began, _)| began + step.hold);
         let deadline = self.sequencer.deadline().map(|(at, _)| {
-            let micros = at.micros() - EPOCH - self.host_shift - i64::try_from(DELAY.micros()).unwrap();
+            let micros =
+                at.micros() - EPOCH - self.host_shift - i64::try_from(DELAY.micros()).unwrap();
             SinkTime::from_micros(u64::try_from(micros).unwrap())
         });
-        for time in [arrival, start, hold, self.next_readback, deadline].into_iter().flatten() {
+        for time in [arrival, start, hold, self.next_readback, deadline]
+            .into_iter()
+            .flatten()
+        {
             next = next.min(time.max(self.now));
         }
         self.flow(next);
@@ -212,7 +219,10 @@ impl Bench {
             self.active = Some((id, step, next, from));
             self.starts.push((id, next));
             if !self.lose_edges {
-                self.happen(Happening::Edge { time: next, order: id });
+                self.happen(Happening::Edge {
+                    time: next,
+                    order: id,
+                });
             }
         } else if hold.is_some_and(|at| at <= next) {
             self.active = None;
@@ -227,7 +237,10 @@ impl Bench {
     fn carry_out(&mut self, id: OrderId, order: Order) {
         let mut refused = None;
         match order {
-            Order::Limit { .. } | Order::Deadman { .. } | Order::Isolator { .. } | Order::Burst { .. } => {}
+            Order::Limit { .. }
+            | Order::Deadman { .. }
+            | Order::Isolator { .. }
+            | Order::Burst { .. } => {}
             Order::Readback { interval } => {
                 self.interval = interval;
                 self.next_readback = Some(self.now + interval);
@@ -240,7 +253,11 @@ impl Bench {
                 } else if self.queue.len() >= usize::from(self.sequencer.plan().queue) {
                     refused = Some(ReasonRefused::Full);
                 } else {
-                    assert!(self.queue.back().is_none_or(|(_, last)| last.start <= step.start));
+                    assert!(
+                        self.queue
+                            .back()
+                            .is_none_or(|(_, last)| last.start <= step.start)
+                    );
                     self.queue.push_back((id, step));
                 }
             }
@@ -254,7 +271,9 @@ impl Bench {
     }
 
     fn setpoint(&self) -> Current {
-        let Some((_, step, began, from)) = self.active else { return Current::ZERO };
+        let Some((_, step, began, from)) = self.active else {
+            return Current::ZERO;
+        };
         match step.mode {
             Mode::Current(target) => {
                 let gone = i128::from(self.now.saturating_since(began).micros());
@@ -262,7 +281,10 @@ impl Bench {
                 if gone >= ramp {
                     return target;
                 }
-                let (a, b) = (i128::from(from.microamperes()), i128::from(target.microamperes()));
+                let (a, b) = (
+                    i128::from(from.microamperes()),
+                    i128::from(target.microamperes()),
+                );
                 Current::from_microamperes(i64::try_from(a + (b - a) * gone / ramp).unwrap())
             }
             Mode::Power(power) => power.over(self.emf).unwrap(),
@@ -277,16 +299,17 @@ impl Bench {
     fn terminal(&self, drawn: Current) -> Voltage {
         let coulombs = i64::try_from(self.charge / 1_000_000_000_000).unwrap();
         let drop = drawn.microamperes() * self.resistance_milliohm / 1000;
-        Voltage::from_microvolts(
-            self.emf.microvolts() - coulombs * self.droop_per_coulomb - drop,
-        )
+        Voltage::from_microvolts(self.emf.microvolts() - coulombs * self.droop_per_coulomb - drop)
     }
 
     /// Lets current flow up to `next`.
     fn flow(&mut self, next: SinkTime) {
         let span = i128::from(next.saturating_since(self.now).micros());
         let before = self.drawn();
-        let (low, high) = (before, { self.now = next; self.drawn() });
+        let (low, high) = (before, {
+            self.now = next;
+            self.drawn()
+        });
         if span == 0 {
             return;
         }
@@ -313,9 +336,16 @@ impl Bench {
         self.next_readback = Some(self.now + self.interval);
         let window = std::mem::replace(
             &mut self.window,
-            Window { began: self.now, ..Window::default() },
+            Window {
+                began: self.now,
+                ..Window::default()
+            },
         );
-        self.number = if self.number == u16::MAX { 1 } else { self.number + 1 };
+        self.number = if self.number == u16::MAX {
+            1
+        } else {
+            self.number + 1
+        };
         if self.lose_readings {
             self.lost += 1;
             return;
@@ -324,12 +354,15 @@ impl Bench {
         let idle = self.terminal(self.drawn()).microvolts();
         let (current_min, current_max) = window.currents.unwrap_or((0, 0));
         let (voltage_min, voltage_max) = window.voltages.unwrap_or((idle, idle));
-        let mean = |sum: i128, low: i64, high: i64| i64::try_from(sum / span).unwrap().clamp(low, high);
+        let mean =
+            |sum: i128, low: i64, high: i64| i64::try_from(sum / span).unwrap().clamp(low, high);
         let saturated = self.setpoint() > self.limit;
         let state = match (self.latched, self.active) {
             (Some(cause), _) => SinkState::Latched(cause),
             (None, Some(_)) if saturated => SinkState::Saturated,
-            (None, Some((_, step, ..))) if step.mode != Mode::Current(Current::ZERO) => SinkState::On,
+            (None, Some((_, step, ..))) if step.mode != Mode::Current(Current::ZERO) => {
+                SinkState::On
+            }
             (None, _) => SinkState::Off,
         };
         let time = SinkTime::from_micros(self.now.micros().strict_add_signed(self.clock_shift));
@@ -365,15 +398,27 @@ impl Bench {
     /// What came out, one line each, without the setup; times since the first step.
     pub(super) fn transcript(&self) -> String {
         let mut text = String::new();
-        let zero = self.starts.first().map_or(SinkTime::ZERO, |(_, time)| *time);
+        let zero = self
+            .starts
+            .first()
+            .map_or(SinkTime::ZERO, |(_, time)| *time);
         let since = |time: SinkTime| {
             let micros = i128::from(time.micros()) - i128::from(zero.micros());
-            format!("{}.{:03}", micros / 1_000_000, (micros % 1_000_000).abs() / 1000)
+            format!(
+                "{}.{:03}",
+                micros / 1_000_000,
+                (micros % 1_000_000).abs() / 1000
+            )
         };
         for recorded in &self.record {
-            let Recorded::Output(output) = recorded else { continue };
+            let Recorded::Output(output) = recorded else {
+                continue;
+            };
             match output {
-                Output::Order { order: Order::Step(step), .. } => {
+                Output::Order {
+                    order: Order::Step(step),
+                    ..
+                } => {
                     let mode = match step.mode {
                         Mode::Current(current) => current.to_string(),
                         Mode::Power(power) => power.to_string(),
@@ -387,7 +432,10 @@ impl Bench {
                         step.hold
                     )
                 }
-                Output::Order { order: Order::Limit { .. } | Order::Deadman { .. }, .. } => Ok(()),
+                Output::Order {
+                    order: Order::Limit { .. } | Order::Deadman { .. },
+                    ..
+                } => Ok(()),
                 Output::Order { order, .. } => writeln!(text, "{order:?}"),
                 Output::Off => writeln!(text, "off"),
                 Output::Finding(Finding::StepBegan { op, time }) => {
@@ -402,7 +450,11 @@ impl Bench {
                     crossing.interlock,
                     crossing.value,
                     crossing.threshold,
-                    if crossing.by_sink { ", by the sink" } else { "" }
+                    if crossing.by_sink {
+                        ", by the sink"
+                    } else {
+                        ""
+                    }
                 ),
                 Output::Finding(finding) => writeln!(text, "  {finding:?}"),
                 Output::Ended(ending) => writeln!(text, "{ending:?}"),
@@ -410,6 +462,18 @@ impl Bench {
             .unwrap();
         }
         text
+    }
+
+    /// The latest reading that came.
+    pub(super) fn latest_reading(&self) -> Reading {
+        let reading = |recorded: &Recorded| match recorded {
+            Recorded::Event(Event {
+                what: Happening::Reading(reading),
+                ..
+            }) => Some(*reading),
+            Recorded::Event(_) | Recorded::Output(_) => None,
+        };
+        self.record.iter().rev().find_map(reading).unwrap()
     }
 
     /// The reason of the next deadline.

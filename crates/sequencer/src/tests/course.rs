@@ -1,12 +1,16 @@
 //! Steps, loops and the schedule.
 
+use std::time::{Duration, Instant};
+
 use expect_test::{Expect, expect};
 use quantity::{SinkTime, Span};
-use sequence::plan::{Action, Next, Op, Plan};
+use sequence::plan::{Action, Condition, Next, Op, Plan};
 
 use super::bench::Bench;
-use super::plans::{current, draw, head, millis, milliamperes, plan, pulses, rest, step};
-use crate::event::Ending;
+use super::plans::{
+    current, draw, head, milliamperes, millis, millivolts, plan, pulses, rest, step, until,
+};
+use crate::event::{Ending, Event, Happening};
 
 fn check(plan: Plan, expected: &Expect) {
     let mut bench = Bench::connected(plan);
@@ -17,7 +21,11 @@ fn check(plan: Plan, expected: &Expect) {
 #[test]
 fn steps_follow_each_other_at_their_times_and_the_last_holds_exactly() {
     check(
-        plan(vec![draw(500, millis(1_000)), rest(millis(500)), draw(1_000, millis(250))]),
+        plan(vec![
+            draw(500, millis(1_000)),
+            rest(millis(500)),
+            draw(1_000, millis(250)),
+        ]),
         &expect![[r#"
             Readback { interval: Span(100000) }
             step 500 mA at 0.000 ramp 0 s hold 1.05 s
@@ -121,7 +129,10 @@ fn ten_thousand_pulses_begin_exactly_on_schedule() {
 #[test]
 fn a_ramp_is_ordered_whole_and_followed() {
     let ramp = step(
-        Action::Current { target: milliamperes(2_000), ramp: millis(4_000) },
+        Action::Current {
+            target: milliamperes(2_000),
+            ramp: millis(4_000),
+        },
         millis(5_000),
     );
     let mut bench = Bench::connected(plan(vec![draw(500, millis(1_000)), Op::Step(ramp)]));
@@ -160,4 +171,57 @@ fn charge_is_shared_out_at_an_edge_by_what_was_asked_for() {
     let span = bench.sequencer.status().sink_time.saturating_since(zero);
     assert_eq!(status.step_charge.unwrap(), milliamperes(1_000).times(span));
     assert!(status.sink_time > SinkTime::ZERO);
+}
+
+/// Reports what a reading costs; the bound is wide, for a busy machine.
+#[test]
+#[expect(
+    clippy::disallowed_methods,
+    reason = "measures what the code costs, not what it does"
+)]
+fn a_night_of_readings_takes_no_time() {
+    let mut long = current(1, Span::from_secs(43_300));
+    long.until = vec![
+        until(
+            Condition::VoltageBelow(millivolts(2_700)),
+            millis(500),
+            Next::End,
+        ),
+        until(
+            Condition::VoltageSettled {
+                change: millivolts(-1),
+                window: Span::from_secs(60),
+            },
+            Span::ZERO,
+            Next::End,
+        ),
+    ];
+    let mut bench = Bench::connected(plan(vec![Op::Step(long)]));
+    bench.run(Span::from_secs(3));
+    let mut sequencer = bench.sequencer.clone();
+    let mut reading = bench.latest_reading();
+    let mut at = bench.host_time();
+    let mut events = Vec::new();
+    for _ in 0..432_000 {
+        at += millis(100);
+        reading.time += millis(100);
+        let counters = reading.counters.as_mut().unwrap();
+        counters.time = reading.time;
+        counters.charge += quantity::Charge::from_microcoulombs(100);
+        counters.energy += quantity::Energy::from_microjoules(370);
+        events.push(Event {
+            at,
+            what: Happening::Reading(reading),
+        });
+    }
+    let began = Instant::now();
+    for event in &events {
+        sequencer.handle(event);
+        assert_eq!(sequencer.poll_output(), None);
+        assert!(sequencer.deadline().is_some());
+    }
+    let took = began.elapsed();
+    assert_eq!(sequencer.ending(), None);
+    println!("432 000 readings in {took:?}, {:?} each", took / 432_000);
+    assert!(took < Duration::from_secs(20), "{took:?}");
 }

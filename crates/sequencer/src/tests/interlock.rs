@@ -5,10 +5,10 @@ use quantity::{Charge, Energy, Span, Temperature};
 use wire::{Cause, OrderId, ReasonRefused, TemperatureReading};
 
 use super::bench::Bench;
-use super::plans::{armed, draw, millis, milliamperes, millivolts, plan, pulses, rest};
+use super::plans::{armed, draw, milliamperes, millis, millivolts, plan, pulses, rest};
+use crate::DeadlineReason;
 use crate::event::{Ending, Finding, Happening, Interlock, Output};
 use crate::replay::Recorded;
-use crate::DeadlineReason;
 
 fn running() -> Bench {
     let mut bench = Bench::connected(plan(vec![draw(1_000, Span::from_secs(1_000))]));
@@ -20,7 +20,10 @@ fn running() -> Bench {
 /// Runs on and says by what it tripped and how long after; off must be the trip's first output.
 fn trips(bench: &mut Bench, interlock: Interlock) -> Span {
     let before = bench.now;
-    assert_eq!(bench.run(Span::from_secs(20)), Some(Ending::Tripped(interlock)));
+    assert_eq!(
+        bench.run(Span::from_secs(20)),
+        Some(Ending::Tripped(interlock))
+    );
     let outputs: Vec<&Output> = bench
         .record
         .iter()
@@ -29,13 +32,19 @@ fn trips(bench: &mut Bench, interlock: Interlock) -> Span {
             Recorded::Event(_) => None,
         })
         .collect();
-    let off = outputs.iter().position(|output| **output == Output::Off).unwrap();
+    let off = outputs
+        .iter()
+        .position(|output| **output == Output::Off)
+        .unwrap();
     let crossed = outputs
         .iter()
         .position(|output| matches!(output, Output::Finding(Finding::Crossed(_))))
         .unwrap();
     assert_eq!(crossed, off + 1);
-    assert_eq!(outputs.last(), Some(&&Output::Ended(Ending::Tripped(interlock))));
+    assert_eq!(
+        outputs.last(),
+        Some(&&Output::Ended(Ending::Tripped(interlock)))
+    );
     bench.now.saturating_since(before)
 }
 
@@ -90,7 +99,11 @@ fn overvoltage_reversed_leads_and_overpower_trip() {
     let mut bench = running();
     bench.emf = millivolts(-300);
     trips(&mut bench, Interlock::ReversedPolarity);
-    assert!(bench.transcript().contains("crossed ReversedPolarity -350000 against -200000"));
+    assert!(
+        bench
+            .transcript()
+            .contains("crossed ReversedPolarity -350000 against -200000")
+    );
     let mut plan = plan(vec![draw(2_900, Span::from_secs(1_000))]);
     plan.interlocks.over_power.threshold = quantity::Power::from_milliwatts(9_000);
     let mut bench = Bench::connected(plan);
@@ -113,7 +126,8 @@ fn all_that_cross_at_once_are_recorded_and_the_first_in_the_table_names_the_trip
           crossed NotFollowing 500000 against 50000
           ended 0 at 2.600 by Run
         Tripped(Undervoltage)
-    "#]].assert_eq(bench.transcript().split_once("off\n").unwrap().1);
+    "#]]
+    .assert_eq(bench.transcript().split_once("off\n").unwrap().1);
 }
 
 #[test]
@@ -125,7 +139,10 @@ fn a_current_above_what_was_asked_for_trips_as_not_releasing() {
 
 #[test]
 fn a_current_in_a_rest_trips_as_not_releasing() {
-    let mut bench = Bench::connected(plan(vec![draw(500, millis(500)), rest(Span::from_secs(100))]));
+    let mut bench = Bench::connected(plan(vec![
+        draw(500, millis(500)),
+        rest(Span::from_secs(100)),
+    ]));
     bench.run(Span::from_secs(3));
     bench.leak = milliamperes(80);
     assert!(trips(&mut bench, Interlock::NotReleasing) <= millis(300));
@@ -146,7 +163,10 @@ fn pulses_shorter_than_a_readback_that_are_not_reached_trip_as_not_following() {
     bench.limit = milliamperes(200);
     // A pulse in every sixth interval: the persistence must be that of single intervals.
     bench.run(Span::from_secs(20));
-    assert_eq!(bench.ended, None, "a short persistence is needed for short pulses");
+    assert_eq!(
+        bench.ended, None,
+        "a short persistence is needed for short pulses"
+    );
     let mut plan = plan(pulses(1_000));
     plan.interlocks.not_following = armed(milliamperes(50), Span::ZERO);
     let mut bench = Bench::connected(plan);
@@ -157,11 +177,18 @@ fn pulses_shorter_than_a_readback_that_are_not_reached_trip_as_not_following() {
 
 #[test]
 fn a_faulty_temperature_sensor_trips() {
-    for (fault, value) in [(TemperatureReading::Open, 1), (TemperatureReading::Short, 2)] {
+    for (fault, value) in [
+        (TemperatureReading::Open, 1),
+        (TemperatureReading::Short, 2),
+    ] {
         let mut bench = running();
         bench.temperature = fault;
         trips(&mut bench, Interlock::SensorFault);
-        assert!(bench.transcript().contains(&format!("crossed SensorFault {value} against 0")));
+        assert!(
+            bench
+                .transcript()
+                .contains(&format!("crossed SensorFault {value} against 0"))
+        );
     }
 }
 
@@ -254,7 +281,11 @@ fn a_clock_out_of_bounds_by_the_transports_word_trips() {
     let mut bench = running();
     bench.happen(Happening::ClockOff { by: millis(700) });
     trips(&mut bench, Interlock::Clock);
-    assert!(bench.transcript().contains("crossed Clock 700000 against 500000"));
+    assert!(
+        bench
+            .transcript()
+            .contains("crossed Clock 700000 against 500000")
+    );
 }
 
 #[test]
@@ -271,7 +302,11 @@ fn what_the_sink_trips_by_is_named_as_the_interlock() {
         (Cause::Watchdog, Interlock::Clock),
     ] {
         let mut bench = running();
-        bench.happen(Happening::SinkTripped { time: bench.now, cause, value: 1 });
+        bench.happen(Happening::SinkTripped {
+            time: bench.now,
+            cause,
+            value: 1,
+        });
         trips(&mut bench, interlock);
         assert!(bench.transcript().contains("by the sink"));
         // The event was lost; the readings say it.
@@ -303,7 +338,10 @@ fn a_device_that_is_wrong_before_the_start_is_not_loaded() {
 #[test]
 fn a_refused_order_trips() {
     let mut bench = running();
-    bench.happen(Happening::Refused { order: OrderId(9), reason: ReasonRefused::Limit });
+    bench.happen(Happening::Refused {
+        order: OrderId(9),
+        reason: ReasonRefused::Limit,
+    });
     trips(&mut bench, Interlock::Refusal);
 }
 
@@ -322,10 +360,19 @@ fn margins_tell_how_near_each_interlock_came() {
     bench.temperature = celsius(40);
     bench.run(Span::from_secs(1));
     let margins: Vec<_> = bench.sequencer.margins().collect();
-    let heat = margins.iter().find(|m| m.interlock == Interlock::OverTemperature).unwrap();
+    let heat = margins
+        .iter()
+        .find(|m| m.interlock == Interlock::OverTemperature)
+        .unwrap();
     assert_eq!((heat.permille, heat.worst_permille), (500, 750));
-    assert_eq!((heat.value, heat.worst_value, heat.threshold), (40_000, 60_000, 80_000));
-    let low = margins.iter().find(|m| m.interlock == Interlock::Undervoltage).unwrap();
+    assert_eq!(
+        (heat.value, heat.worst_value, heat.threshold),
+        (40_000, 60_000, 80_000)
+    );
+    let low = margins
+        .iter()
+        .find(|m| m.interlock == Interlock::Undervoltage)
+        .unwrap();
     assert_eq!(low.permille, 684);
     // Every armed interlock but those that no value comes near: record and refusal.
     assert_eq!(margins.len(), 14);
@@ -335,23 +382,12 @@ fn margins_tell_how_near_each_interlock_came() {
 fn after_the_end_only_off_is_said_and_said_again_if_the_sink_goes_on() {
     let mut bench = running();
     bench.happen(Happening::RecordFailed);
-    let mut reading = bench
-        .record
-        .iter()
-        .rev()
-        .find_map(|recorded| match recorded {
-            Recorded::Event(event) => match &event.what {
-                Happening::Reading(reading) => Some(*reading),
-                _ => None,
-            },
-            Recorded::Output(_) => None,
-        })
-        .unwrap();
+    let mut reading = bench.latest_reading();
     let offs = bench.offs.len();
-    reading.time = reading.time + Span::from_secs(1);
+    reading.time += Span::from_secs(1);
     bench.happen(Happening::Reading(reading));
     assert_eq!(bench.offs.len(), offs);
-    bench.now = bench.now + Span::from_secs(1);
+    bench.now += Span::from_secs(1);
     bench.happen(Happening::Reading(reading));
     assert_eq!(bench.offs.len(), offs + 1);
 }

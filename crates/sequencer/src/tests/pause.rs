@@ -6,18 +6,21 @@ use sequence::plan::{Condition, Next, OnInterruption, Op, Plan};
 use wire::Cause;
 
 use super::bench::Bench;
-use super::plans::{current, draw, head, millis, milliamperes, plan, rest, until};
+use super::plans::{current, draw, head, milliamperes, millis, plan, rest, until};
+use crate::Sequencer;
 use crate::event::{Command, Ending, Event, Happening, Interlock};
 use crate::replay::{Recorded, ReplayError, replay};
 use crate::status::Standing;
-use crate::Sequencer;
 
 fn check(bench: &Bench, expected: &Expect) {
     expected.assert_eq(&bench.transcript());
 }
 
 fn two_steps() -> Plan {
-    plan(vec![draw(1_000, Span::from_secs(10)), draw(500, Span::from_secs(2))])
+    plan(vec![
+        draw(1_000, Span::from_secs(10)),
+        draw(500, Span::from_secs(2)),
+    ])
 }
 
 #[test]
@@ -26,7 +29,9 @@ fn a_stop_turns_off_and_is_no_trip() {
     bench.run(Span::from_secs(3));
     bench.command(Command::Stop);
     assert_eq!(bench.ended, Some(Ending::Stopped));
-    check(&bench, &expect![[r#"
+    check(
+        &bench,
+        &expect![[r#"
         Readback { interval: Span(100000) }
         step 1 A at 0.000 ramp 0 s hold 10.05 s
         step 500 mA at 10.000 ramp 0 s hold 2 s
@@ -34,7 +39,8 @@ fn a_stop_turns_off_and_is_no_trip() {
         off
           ended 0 at 2.500 by Run
         Stopped
-    "#]]);
+    "#]],
+    );
 }
 
 #[test]
@@ -47,7 +53,9 @@ fn a_held_step_goes_on_with_what_is_left_of_it() {
     assert_eq!(bench.ended, None);
     bench.command(Command::Continue);
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
-    check(&bench, &expect![[r#"
+    check(
+        &bench,
+        &expect![[r#"
         Readback { interval: Span(100000) }
         step 1 A at 0.000 ramp 0 s hold 10.05 s
         step 500 mA at 10.000 ramp 0 s hold 2 s
@@ -63,11 +71,15 @@ fn a_held_step_goes_on_with_what_is_left_of_it() {
         off
           ended 1 at 72.300 by Duration
         Finished
-    "#]]);
+    "#]],
+    );
     // Ten seconds at 1 A and two at 0.5 A, less what the link's delay cut off at the hold.
     let charge = bench.sequencer.status().charge;
     let wanted = Charge::from_millicoulombs(11_000);
-    assert!((wanted - charge).abs() <= Charge::from_millicoulombs(10), "{charge}");
+    assert!(
+        (wanted - charge).abs() <= Charge::from_millicoulombs(10),
+        "{charge}"
+    );
 }
 
 #[test]
@@ -89,7 +101,10 @@ fn a_held_loop_keeps_its_time_and_its_count() {
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
     let charge = bench.sequencer.status().charge;
     let wanted = Charge::from_millicoulombs(5_000);
-    assert!((wanted - charge).abs() <= Charge::from_millicoulombs(10), "{charge}");
+    assert!(
+        (wanted - charge).abs() <= Charge::from_millicoulombs(10),
+        "{charge}"
+    );
 }
 
 #[test]
@@ -104,7 +119,10 @@ fn the_charge_of_a_held_step_goes_on_being_counted() {
     bench.command(Command::Continue);
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
     let charge = bench.sequencer.status().charge;
-    assert!(charge >= limit && charge <= limit + Charge::from_millicoulombs(100), "{charge}");
+    assert!(
+        charge >= limit && charge <= limit + Charge::from_millicoulombs(100),
+        "{charge}"
+    );
 }
 
 #[test]
@@ -128,7 +146,10 @@ fn a_current_that_flows_while_held_trips() {
     bench.run(Span::from_secs(3));
     bench.command(Command::Hold);
     bench.leak = milliamperes(900);
-    assert_eq!(bench.run(Span::from_secs(5)), Some(Ending::Tripped(Interlock::NotReleasing)));
+    assert_eq!(
+        bench.run(Span::from_secs(5)),
+        Some(Ending::Tripped(Interlock::NotReleasing))
+    );
 }
 
 fn resumable(mut plan: Plan) -> Plan {
@@ -151,7 +172,10 @@ fn a_lost_link_that_does_not_come_back_is_silence() {
     bench.run(Span::from_secs(3));
     bench.happen(Happening::LinkLost);
     bench.lose_readings = true;
-    assert_eq!(bench.run(Span::from_secs(5)), Some(Ending::Tripped(Interlock::Silence)));
+    assert_eq!(
+        bench.run(Span::from_secs(5)),
+        Some(Ending::Tripped(Interlock::Silence))
+    );
 }
 
 #[test]
@@ -167,7 +191,10 @@ fn a_run_is_taken_up_where_the_counters_stand() {
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
     let charge = bench.sequencer.status().charge;
     let wanted = Charge::from_millicoulombs(11_000);
-    assert!((wanted - charge).abs() <= Charge::from_millicoulombs(1), "{charge}");
+    assert!(
+        (wanted - charge).abs() <= Charge::from_millicoulombs(1),
+        "{charge}"
+    );
     assert!(bench.transcript().contains("Continued"));
 }
 
@@ -185,14 +212,21 @@ fn a_crashed_host_resumes_from_its_record_on_a_sink_that_its_deadman_turned_off(
         }
     }
     bench.sequencer = fresh;
-    bench.now = bench.now + Span::from_secs(3_600);
+    bench.now += Span::from_secs(3_600);
     bench.latched = Some(Cause::Deadman);
     bench.happen(Happening::LinkLost);
     bench.connect();
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
-    assert!(bench.transcript().contains("Reset"), "{}", bench.transcript());
+    assert!(
+        bench.transcript().contains("Reset"),
+        "{}",
+        bench.transcript()
+    );
     let status = bench.sequencer.status();
-    assert!(status.elapsed < Span::from_secs(30), "the host's absence is no running time");
+    assert!(
+        status.elapsed < Span::from_secs(30),
+        "the host's absence is no running time"
+    );
 }
 
 #[test]
@@ -209,7 +243,10 @@ fn a_run_is_taken_up_after_the_sink_has_lost_its_supply_too() {
     let charge = bench.sequencer.status().charge;
     assert!(before > Charge::from_millicoulombs(3_000));
     let wanted = Charge::from_millicoulombs(11_000);
-    assert!((wanted - charge).abs() <= Charge::from_millicoulombs(100), "{charge}");
+    assert!(
+        (wanted - charge).abs() <= Charge::from_millicoulombs(100),
+        "{charge}"
+    );
 }
 
 #[test]
@@ -220,7 +257,10 @@ fn a_cell_that_has_become_too_low_meanwhile_is_not_loaded_again() {
     let starts = bench.starts.len();
     bench.emf = super::plans::millivolts(2_300);
     bench.connect();
-    assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Tripped(Interlock::Undervoltage)));
+    assert_eq!(
+        bench.run(Span::from_secs(60)),
+        Some(Ending::Tripped(Interlock::Undervoltage))
+    );
     assert_eq!(bench.starts.len(), starts);
 }
 
@@ -247,20 +287,30 @@ fn a_record_replays_to_the_same_outputs_and_the_first_difference_is_named() {
     let summary = replay(plan.clone(), bench.record.clone()).unwrap();
     assert_eq!(summary.ending, Some(Ending::Finished));
     assert_eq!(summary.unrecorded, 0);
-    assert_eq!(summary.events + summary.outputs, u64::try_from(bench.record.len()).unwrap());
+    assert_eq!(
+        summary.events + summary.outputs,
+        u64::try_from(bench.record.len()).unwrap()
+    );
     // A record that a text has been through is still the same.
     let text = serde_json::to_string(&bench.record).unwrap();
     let read: Vec<Recorded> = serde_json::from_str(&text).unwrap();
     assert_eq!(read, bench.record);
     // Leave one output out.
-    let place = bench.record.iter().position(|r| matches!(r, Recorded::Output(_))).unwrap();
+    let place = bench
+        .record
+        .iter()
+        .position(|r| matches!(r, Recorded::Output(_)))
+        .unwrap();
     let mut altered = bench.record.clone();
     altered.remove(place + 3);
     let ReplayError::Difference(difference) = replay(plan, altered).unwrap_err() else {
         panic!("the plan is sound");
     };
     assert_eq!(difference.entry, u64::try_from(place + 3 + 1).unwrap());
-    assert!(difference.to_string().contains("the sequencer gives Order"), "{difference}");
+    assert!(
+        difference.to_string().contains("the sequencer gives Order"),
+        "{difference}"
+    );
 }
 
 #[test]
@@ -271,7 +321,10 @@ fn time_passing_early_and_often_changes_nothing() {
     for recorded in &bench.record {
         match recorded {
             Recorded::Event(event) => {
-                let passed = Event { at: event.at, what: Happening::TimePassed };
+                let passed = Event {
+                    at: event.at,
+                    what: Happening::TimePassed,
+                };
                 other.handle(&passed);
                 assert_eq!(other.poll_output(), None);
                 other.handle(event);

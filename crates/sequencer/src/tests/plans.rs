@@ -20,7 +20,10 @@ pub(super) fn millis(value: u64) -> Span {
 }
 
 pub(super) fn armed<T>(threshold: T, persistence: Span) -> Armed<T> {
-    Armed { threshold, persistence }
+    Armed {
+        threshold,
+        persistence,
+    }
 }
 
 /// A plan with these instructions, for an invented cell and the invented sink `left`.
@@ -59,7 +62,10 @@ pub(super) fn plan(ops: Vec<Op>) -> Plan {
         deadman: millis(2_000),
         readback: millis(100),
         on_interruption: OnInterruption::End,
-        ranges: Ranges { current: milliamperes(3_300), voltage: millivolts(20_000) },
+        ranges: Ranges {
+            current: milliamperes(3_300),
+            voltage: millivolts(20_000),
+        },
         tick: millis(1),
         queue: 16,
         correction: Correction::IDENTITY,
@@ -81,7 +87,13 @@ pub(super) fn step(action: Action, duration: Span) -> PlanStep {
 }
 
 pub(super) fn current(target: i64, duration: Span) -> PlanStep {
-    step(Action::Current { target: milliamperes(target), ramp: Span::ZERO }, duration)
+    step(
+        Action::Current {
+            target: milliamperes(target),
+            ramp: Span::ZERO,
+        },
+        duration,
+    )
 }
 
 pub(super) fn draw(target: i64, duration: Span) -> Op {
@@ -93,11 +105,22 @@ pub(super) fn rest(duration: Span) -> Op {
 }
 
 pub(super) fn until(condition: Condition, persistence: Span, then: Next) -> Until {
-    Until { condition, persistence, then }
+    Until {
+        condition,
+        persistence,
+        then,
+    }
 }
 
 pub(super) fn head(times: Option<u64>, end: u32) -> LoopHead {
-    LoopHead { times, until: Vec::new(), at_most: None, end, label: None, pointer: String::new() }
+    LoopHead {
+        times,
+        until: Vec::new(),
+        at_most: None,
+        end,
+        label: None,
+        pointer: String::new(),
+    }
 }
 
 /// Two pulses of a logger, repeated.

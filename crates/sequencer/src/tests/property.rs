@@ -13,18 +13,38 @@ use crate::replay::{Recorded, replay};
 /// A piece of a program: a step, or a loop of pieces.
 #[derive(Debug, Clone)]
 enum Piece {
-    Step { target: i64, millis: u64, ramp: bool, condition: u8 },
-    Loop { times: u64, at_most: Option<u64>, condition: u8, body: Vec<Piece> },
+    Step {
+        target: i64,
+        millis: u64,
+        ramp: bool,
+        condition: u8,
+    },
+    Loop {
+        times: u64,
+        at_most: Option<u64>,
+        condition: u8,
+        body: Vec<Piece>,
+    },
 }
 
 fn pieces() -> impl Strategy<Value = Vec<Piece>> {
     let leaf = (0_i64..2_900, 1_u64..1_500, any::<bool>(), 0_u8..8).prop_map(
-        |(target, millis, ramp, condition)| Piece::Step { target, millis, ramp, condition },
+        |(target, millis, ramp, condition)| Piece::Step {
+            target,
+            millis,
+            ramp,
+            condition,
+        },
     );
     let piece = leaf.prop_recursive(3, 24, 4, |inner| {
         let body = prop::collection::vec(inner, 1..4);
         (1_u64..5, prop::option::of(1_u64..3_000), 0_u8..8, body).prop_map(
-            |(times, at_most, condition, body)| Piece::Loop { times, at_most, condition, body },
+            |(times, at_most, condition, body)| Piece::Loop {
+                times,
+                at_most,
+                condition,
+                body,
+            },
         )
     });
     prop::collection::vec(piece, 1..5)
@@ -47,7 +67,12 @@ fn write(pieces: &[Piece], conditions: bool, ops: &mut Vec<Op>) {
     };
     for piece in pieces {
         match piece {
-            Piece::Step { target, millis, ramp, condition } => {
+            Piece::Step {
+                target,
+                millis,
+                ramp,
+                condition,
+            } => {
                 let duration = Span::from_millis(*millis);
                 let ramp = if *ramp { duration } else { Span::ZERO };
                 let target = milliamperes(*target);
@@ -55,7 +80,12 @@ fn write(pieces: &[Piece], conditions: bool, ops: &mut Vec<Op>) {
                 step.until.extend(untils(*condition));
                 ops.push(Op::Step(step));
             }
-            Piece::Loop { times, at_most, condition, body } => {
+            Piece::Loop {
+                times,
+                at_most,
+                condition,
+                body,
+            } => {
                 let begin = u32::try_from(ops.len()).unwrap();
                 ops.push(Op::LoopBegin(LoopHead {
                     at_most: at_most.map(Span::from_millis),
@@ -87,7 +117,12 @@ fn duration(pieces: &[Piece]) -> u64 {
         .iter()
         .map(|piece| match piece {
             Piece::Step { millis, .. } => *millis,
-            Piece::Loop { times, at_most, body, .. } => {
+            Piece::Loop {
+                times,
+                at_most,
+                body,
+                ..
+            } => {
                 let whole = times * duration(body);
                 at_most.map_or(whole, |at_most| whole.min(at_most))
             }
@@ -145,7 +180,11 @@ fn disturb(bench: &mut Bench, disturbance: Disturbance) {
         Disturbance::Leak(leak) => bench.leak = milliamperes(leak),
         Disturbance::Trip => {
             let time = bench.now;
-            bench.happen(Happening::SinkTripped { time, cause: Cause::Power, value: 1 });
+            bench.happen(Happening::SinkTripped {
+                time,
+                cause: Cause::Power,
+                value: 1,
+            });
         }
         Disturbance::Reconnect => {
             bench.happen(Happening::LinkLost);
@@ -206,7 +245,7 @@ proptest! {
         prop_assert_eq!(ending, Some(Ending::Finished));
         let last = bench.record.iter().rev().find_map(|recorded| match recorded {
             Recorded::Output(Output::Order { order: Order::Step(step), .. }) => Some(*step),
-            _ => None,
+            Recorded::Output(_) | Recorded::Event(_) => None,
         }).unwrap();
         let zero = bench.starts[0].1;
         let took = (last.start + last.hold).saturating_since(zero);

@@ -6,7 +6,7 @@ use sink::correction::{Correction, Line};
 use wire::{LimitKind, Mode, Order};
 
 use super::plans::{
-    armed, current, draw, head, millis, milliamperes, millivolts, plan, rest, step,
+    armed, current, draw, head, milliamperes, millis, millivolts, plan, rest, step,
 };
 use crate::event::Output;
 use crate::orders::Limits;
@@ -37,11 +37,23 @@ fn loops_that_do_not_match_never_end_or_never_breathe_are_refused() {
         Op::LoopEnd { begin: 1 },
     ];
     assert_eq!(of(crossed), PlanError::LoopMismatch { op: 3 });
-    let empty = vec![Op::LoopBegin(head(Some(2), 1)), Op::LoopEnd { begin: 0 }, body()];
+    let empty = vec![
+        Op::LoopBegin(head(Some(2), 1)),
+        Op::LoopEnd { begin: 0 },
+        body(),
+    ];
     assert_eq!(of(empty), PlanError::EmptyLoop { op: 0 });
-    let endless = vec![Op::LoopBegin(head(None, 2)), body(), Op::LoopEnd { begin: 0 }];
+    let endless = vec![
+        Op::LoopBegin(head(None, 2)),
+        body(),
+        Op::LoopEnd { begin: 0 },
+    ];
     assert_eq!(of(endless), PlanError::EndlessLoop { op: 0 });
-    let idle = vec![Op::LoopBegin(head(Some(0), 2)), body(), Op::LoopEnd { begin: 0 }];
+    let idle = vec![
+        Op::LoopBegin(head(Some(0), 2)),
+        body(),
+        Op::LoopEnd { begin: 0 },
+    ];
     assert_eq!(of(idle), PlanError::IdleLoop { op: 0 });
 }
 
@@ -49,14 +61,30 @@ fn loops_that_do_not_match_never_end_or_never_breathe_are_refused() {
 fn steps_that_no_sink_can_time_or_hold_are_refused() {
     let short = of(vec![draw(1, Span::from_micros(999))]);
     assert!(matches!(short, PlanError::TooShort { op: 0, .. }));
-    assert!(short.to_string().contains("fold it into its neighbour"), "{short}");
-    assert_eq!(of(vec![draw(3_001, millis(10))]), PlanError::AboveLimit { op: 0 });
-    let power = Action::Power { target: Power::from_milliwatts(15_001) };
-    assert_eq!(of(vec![Op::Step(step(power, millis(10)))]), PlanError::AboveLimit { op: 0 });
-    let short_circuit = Action::Resistance { target: Resistance::ZERO };
+    assert!(
+        short.to_string().contains("fold it into its neighbour"),
+        "{short}"
+    );
+    assert_eq!(
+        of(vec![draw(3_001, millis(10))]),
+        PlanError::AboveLimit { op: 0 }
+    );
+    let power = Action::Power {
+        target: Power::from_milliwatts(15_001),
+    };
+    assert_eq!(
+        of(vec![Op::Step(step(power, millis(10)))]),
+        PlanError::AboveLimit { op: 0 }
+    );
+    let short_circuit = Action::Resistance {
+        target: Resistance::ZERO,
+    };
     let refused = of(vec![Op::Step(step(short_circuit, millis(10)))]);
     assert_eq!(refused, PlanError::NotDrawing { op: 0 });
-    assert_eq!(of(vec![draw(-1, millis(10))]), PlanError::NotDrawing { op: 0 });
+    assert_eq!(
+        of(vec![draw(-1, millis(10))]),
+        PlanError::NotDrawing { op: 0 }
+    );
 }
 
 #[test]
@@ -79,7 +107,10 @@ fn skips_into_loops_and_to_nowhere_are_refused() {
     ];
     assert_eq!(of(into), PlanError::BadSkip { op: 0, target: 2 });
     skipping.then = Next::SkipTo(9);
-    assert_eq!(of(vec![Op::Step(skipping)]), PlanError::BadSkip { op: 0, target: 9 });
+    assert_eq!(
+        of(vec![Op::Step(skipping)]),
+        PlanError::BadSkip { op: 0, target: 9 }
+    );
 }
 
 #[test]
@@ -90,7 +121,10 @@ fn intervals_that_would_trip_or_that_no_sink_takes_are_refused() {
     assert!(matches!(refusal(slow), PlanError::SlowReadback { .. }));
     let mut slow_step = current(1, millis(10));
     slow_step.readback = Some(millis(5_000));
-    assert!(matches!(of(vec![Op::Step(slow_step)]), PlanError::SlowReadback { .. }));
+    assert!(matches!(
+        of(vec![Op::Step(slow_step)]),
+        PlanError::SlowReadback { .. }
+    ));
     let mut deadman = sound();
     deadman.deadman = millis(50);
     assert!(matches!(refusal(deadman), PlanError::Deadman { .. }));
@@ -99,7 +133,10 @@ fn intervals_that_would_trip_or_that_no_sink_takes_are_refused() {
     assert!(matches!(refusal(queue), PlanError::ShortQueue { queue: 2 }));
     let mut label = current(1, millis(10));
     label.label = Some(7);
-    assert_eq!(of(vec![Op::Step(label)]), PlanError::UnknownLabel { op: 0, label: 7 });
+    assert_eq!(
+        of(vec![Op::Step(label)]),
+        PlanError::UnknownLabel { op: 0, label: 7 }
+    );
 }
 
 #[test]
@@ -121,16 +158,28 @@ fn all_six_limits_come_before_anything_else_and_on_the_safe_side() {
         .collect();
     let limits: Vec<LimitKind> = orders
         .iter()
-        .filter_map(|order| match order {
-            Order::Limit { limit, .. } => Some(*limit),
-            _ => None,
+        .filter_map(|order| {
+            if let Order::Limit { limit, .. } = order {
+                Some(*limit)
+            } else {
+                None
+            }
         })
         .collect();
     assert_eq!(limits.len(), 6);
     // (3 A - 2 mA) / 1.01 rounded down; (4.4 V + 3 mV) / 0.995 down; (2.5 V + 3 mV) / 0.995 up.
-    assert_eq!(limits[0], LimitKind::Current(Current::from_microamperes(2_968_316)));
-    assert_eq!(limits[2], LimitKind::VoltageHigh(quantity::Voltage::from_microvolts(4_425_125)));
-    assert_eq!(limits[3], LimitKind::VoltageLow(quantity::Voltage::from_microvolts(2_515_578)));
+    assert_eq!(
+        limits[0],
+        LimitKind::Current(Current::from_microamperes(2_968_316))
+    );
+    assert_eq!(
+        limits[2],
+        LimitKind::VoltageHigh(quantity::Voltage::from_microvolts(4_425_125))
+    );
+    assert_eq!(
+        limits[3],
+        LimitKind::VoltageLow(quantity::Voltage::from_microvolts(2_515_578))
+    );
     assert!(matches!(orders[6], Order::Deadman { .. }));
     assert!(matches!(orders[7], Order::Readback { .. }));
     assert_eq!(orders.len(), 8, "no step before a reading");
@@ -154,7 +203,9 @@ fn a_power_is_converted_so_that_the_true_power_is_the_one_asked_for() {
     assert_eq!(nominal.microwatts() / 100, 3_961_180_i64 / 100);
     let target = Resistance::from_milliohms(4_000);
     let mode = limits.mode(&plan, Action::Resistance { target }, millivolts(4_000));
-    let Mode::Resistance(nominal) = mode else { panic!("a resistance stays one") };
+    let Mode::Resistance(nominal) = mode else {
+        panic!("a resistance stays one")
+    };
     assert_eq!(nominal.microohms() / 100, 4_121_213 / 100);
 }
 
@@ -164,7 +215,11 @@ fn a_sink_that_follows_never_exceeds_its_own_excess_limit() {
     plan.interlocks.not_releasing = armed(milliamperes(40), Span::ZERO);
     plan.correction.current_read = Line::new(0, -20_000_000).unwrap();
     let setup = Limits::new(&plan).setup(&plan);
-    let Order::Limit { limit: LimitKind::Excess(excess), .. } = setup[5] else {
+    let Order::Limit {
+        limit: LimitKind::Excess(excess),
+        ..
+    } = setup[5]
+    else {
         panic!("the sixth limit is the excess")
     };
     // At 3 A the readback shows 61 mA more than was set, though nothing is wrong.

@@ -7,16 +7,23 @@ use wire::TemperatureReading;
 
 use super::bench::Bench;
 use super::plans::{
-    current, draw, head, millis, milliamperes, millivolts, plan, rest, step, until,
+    current, draw, head, milliamperes, millis, millivolts, plan, rest, step, until,
 };
 use crate::event::Ending;
 
 /// A discharge that ends below 3 V, then a rest.
 fn discharge(persistence: Span, then: Next) -> Plan {
     let mut discharge = current(1_000, Span::from_secs(3_600));
-    discharge.until =
-        vec![until(Condition::VoltageBelow(millivolts(3_000)), persistence, then)];
-    plan(vec![Op::Step(discharge), rest(millis(1_000)), draw(100, millis(1_000))])
+    discharge.until = vec![until(
+        Condition::VoltageBelow(millivolts(3_000)),
+        persistence,
+        then,
+    )];
+    plan(vec![
+        Op::Step(discharge),
+        rest(millis(1_000)),
+        draw(100, millis(1_000)),
+    ])
 }
 
 fn falling(plan: Plan) -> Bench {
@@ -32,7 +39,9 @@ fn check(mut bench: Bench, expected: &Expect) {
 
 #[test]
 fn a_cut_off_without_persistence_is_met_by_the_extreme() {
-    check(falling(discharge(Span::ZERO, Next::GoOn)), &expect![[r#"
+    check(
+        falling(discharge(Span::ZERO, Next::GoOn)),
+        &expect![[r#"
         Readback { interval: Span(100000) }
         step 1 A at 0.000 ramp 0 s hold 3600.05 s
         step 0 A at 3600.000 ramp 0 s hold 1.05 s
@@ -48,12 +57,15 @@ fn a_cut_off_without_persistence_is_met_by_the_extreme() {
         off
           ended 2 at 68.200 by Duration
         Finished
-    "#]]);
+    "#]],
+    );
 }
 
 #[test]
 fn a_cut_off_with_persistence_waits_for_whole_intervals() {
-    check(falling(discharge(millis(500), Next::SkipTo(2))), &expect![[r#"
+    check(
+        falling(discharge(millis(500), Next::SkipTo(2))),
+        &expect![[r#"
         Readback { interval: Span(100000) }
         step 1 A at 0.000 ramp 0 s hold 3600.05 s
         step 0 A at 3600.000 ramp 0 s hold 1.05 s
@@ -66,12 +78,15 @@ fn a_cut_off_with_persistence_waits_for_whole_intervals() {
         off
           ended 2 at 67.600 by Duration
         Finished
-    "#]]);
+    "#]],
+    );
 }
 
 #[test]
 fn a_condition_that_ends_the_run_turns_off_first() {
-    check(falling(discharge(Span::ZERO, Next::End)), &expect![[r#"
+    check(
+        falling(discharge(Span::ZERO, Next::End)),
+        &expect![[r#"
         Readback { interval: Span(100000) }
         step 1 A at 0.000 ramp 0 s hold 3600.05 s
         step 0 A at 3600.000 ramp 0 s hold 1.05 s
@@ -80,7 +95,8 @@ fn a_condition_that_ends_the_run_turns_off_first() {
         off
           ended 0 at 66.000 by Until(0)
         Finished
-    "#]]);
+    "#]],
+    );
 }
 
 #[test]
@@ -100,12 +116,23 @@ fn a_dip_between_two_readbacks_does_not_meet_a_persistence() {
 fn an_interval_that_straddles_the_beginning_does_not_count() {
     // The voltage is low before the step begins and not in it.
     let mut second = current(100, Span::from_secs(2));
-    second.until =
-        vec![until(Condition::VoltageBelow(millivolts(3_600)), Span::ZERO, Next::GoOn)];
-    let ops = vec![draw(2_500, millis(1_050)), Op::Step(second), rest(millis(200))];
+    second.until = vec![until(
+        Condition::VoltageBelow(millivolts(3_600)),
+        Span::ZERO,
+        Next::GoOn,
+    )];
+    let ops = vec![
+        draw(2_500, millis(1_050)),
+        Op::Step(second),
+        rest(millis(200)),
+    ];
     let mut bench = Bench::connected(plan(ops));
     bench.run(Span::from_secs(30));
-    assert!(bench.transcript().contains("ended 1 at 3.050 by Duration"), "{}", bench.transcript());
+    assert!(
+        bench.transcript().contains("ended 1 at 3.050 by Duration"),
+        "{}",
+        bench.transcript()
+    );
 }
 
 #[test]
@@ -113,20 +140,30 @@ fn charge_counts_from_the_steps_own_beginning() {
     let mut second = current(1_000, Span::from_secs(100));
     let limit = Charge::from_millicoulombs(5_000);
     second.until = vec![until(Condition::Charge(limit), Span::ZERO, Next::GoOn)];
-    let ops = vec![draw(2_000, millis(3_030)), Op::Step(second), rest(millis(500))];
+    let ops = vec![
+        draw(2_000, millis(3_030)),
+        Op::Step(second),
+        rest(millis(500)),
+    ];
     let mut bench = Bench::connected(plan(ops));
     bench.run(Span::from_secs(30));
     // Five seconds from 3.030, seen at the next readback, plus the reaction.
     let text = bench.transcript();
-    assert!(text.contains("ended 1 at 8.2") || text.contains("ended 1 at 8.3"), "{text}");
+    assert!(
+        text.contains("ended 1 at 8.2") || text.contains("ended 1 at 8.3"),
+        "{text}"
+    );
 }
 
 #[test]
 fn a_loop_ends_at_any_place_in_its_body() {
     let mut loop_head = head(None, 3);
     loop_head.at_most = Some(Span::from_secs(1_000));
-    loop_head.until =
-        vec![until(Condition::VoltageBelow(millivolts(3_400)), Span::ZERO, Next::GoOn)];
+    loop_head.until = vec![until(
+        Condition::VoltageBelow(millivolts(3_400)),
+        Span::ZERO,
+        Next::GoOn,
+    )];
     let ops = vec![
         Op::LoopBegin(loop_head),
         draw(2_000, millis(2_000)),
@@ -134,7 +171,9 @@ fn a_loop_ends_at_any_place_in_its_body() {
         Op::LoopEnd { begin: 0 },
         draw(50, millis(500)),
     ];
-    check(falling(plan(ops)), &expect![[r#"
+    check(
+        falling(plan(ops)),
+        &expect![[r#"
         Readback { interval: Span(100000) }
         step 2 A at 0.000 ramp 0 s hold 2.05 s
         step 0 A at 2.000 ramp 0 s hold 1.05 s
@@ -189,18 +228,22 @@ fn a_loop_ends_at_any_place_in_its_body() {
         off
           ended 4 at 16.200 by Duration
         Finished
-    "#]]);
+    "#]],
+    );
 }
 
 #[test]
 fn a_settled_voltage_ends_a_rest_only_after_a_whole_window() {
     let mut relax = step(Action::Rest, Span::from_secs(600));
-    let settled = Condition::VoltageSettled { change: millivolts(2), window: Span::from_secs(10) };
+    let settled = Condition::VoltageSettled {
+        change: millivolts(2),
+        window: Span::from_secs(10),
+    };
     relax.until = vec![until(settled, Span::ZERO, Next::GoOn)];
     let mut bench = Bench::connected(plan(vec![Op::Step(relax), draw(10, millis(300))]));
     for _ in 0..100 {
         // Recovers by 1 mV in every 200 ms for 20 s.
-        bench.emf = bench.emf + Voltage::from_millivolts(1);
+        bench.emf += Voltage::from_millivolts(1);
         bench.run(millis(200));
     }
     assert!(!bench.transcript().contains("ended 0"));
@@ -213,7 +256,11 @@ fn a_settled_voltage_ends_a_rest_only_after_a_whole_window() {
 fn a_temperature_ends_a_soak() {
     let mut soak = current(500, Span::from_secs(600));
     let limit = Temperature::from_whole_degrees_celsius(40);
-    soak.until = vec![until(Condition::TemperatureAbove(limit), millis(300), Next::End)];
+    soak.until = vec![until(
+        Condition::TemperatureAbove(limit),
+        millis(300),
+        Next::End,
+    )];
     let mut bench = Bench::connected(plan(vec![Op::Step(soak)]));
     bench.run(Span::from_secs(2));
     bench.temperature = TemperatureReading::Value(Temperature::from_whole_degrees_celsius(41));
@@ -227,23 +274,41 @@ fn a_source_that_may_give_up_ends_its_step_and_does_not_trip() {
     let mut bench = Bench::connected(plan(vec![Op::Step(knee), draw(100, millis(1_000))]));
     bench.limit = milliamperes(1_500);
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
-    assert!(bench.transcript().contains("GaveUp"), "{}", bench.transcript());
+    assert!(
+        bench.transcript().contains("GaveUp"),
+        "{}",
+        bench.transcript()
+    );
 }
 
 #[test]
 fn a_regulated_step_is_followed_and_ended_by_its_current() {
-    let power = step(Action::Power { target: Power::from_milliwatts(3_700) }, millis(2_000));
+    let power = step(
+        Action::Power {
+            target: Power::from_milliwatts(3_700),
+        },
+        millis(2_000),
+    );
     let mut resistance = step(
-        Action::Resistance { target: Resistance::from_milliohms(3_700) },
+        Action::Resistance {
+            target: Resistance::from_milliohms(3_700),
+        },
         Span::from_secs(100),
     );
-    resistance.until =
-        vec![until(Condition::CurrentBelow(milliamperes(900)), millis(200), Next::GoOn)];
+    resistance.until = vec![until(
+        Condition::CurrentBelow(milliamperes(900)),
+        millis(200),
+        Next::GoOn,
+    )];
     let ops = vec![Op::Step(power), Op::Step(resistance), rest(millis(300))];
     let mut bench = Bench::connected(plan(ops));
     bench.resistance_milliohm = 0;
     bench.run(Span::from_secs(4));
     bench.emf = millivolts(3_000);
     assert_eq!(bench.run(Span::from_secs(30)), Some(Ending::Finished));
-    assert!(bench.transcript().contains("ended 1 at 4.0"), "{}", bench.transcript());
+    assert!(
+        bench.transcript().contains("ended 1 at 4.0"),
+        "{}",
+        bench.transcript()
+    );
 }
