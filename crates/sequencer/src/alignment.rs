@@ -6,7 +6,10 @@
 //! the transport's; here it is enough to notice a clock that jumps, and to aim a start safely
 //! into the future.
 //!
-//! Limits: a rate error below [`RATE_PPM`] passes (a cheap oscillator is allowed its error, the
+//! A change is judged against the least of a whole block, never against single readings: one that
+//! was late says nothing about the clock.
+//!
+//! Limits: nothing is judged during the first block; a rate error below [`RATE_PPM`] passes (a cheap oscillator is allowed its error, the
 //! transport measures it); a backward jump is noticed at the end of its block, since until then
 //! it looks like a slow link.
 
@@ -39,7 +42,7 @@ impl Alignment {
     pub(crate) fn take(&mut self, time: SinkTime, at: HostTime, bound: Span) -> Option<Span> {
         let offset = i128::from(at.micros()) - i128::from(time.micros());
         let mut beyond = None;
-        if let Some(reference) = self.previous.or(self.block) {
+        if let Some(reference) = self.previous {
             // Earlier than the delay allows: the sink's clock has leapt forward.
             beyond = drift(reference, at, reference.least - offset, bound);
         }

@@ -411,7 +411,12 @@ fn ratio(part: i64, whole: i64, crossed: bool) -> u32 {
     if whole <= 0 {
         return least;
     }
-    let ratio = i128::from(part) * 1000 / i128::from(whole);
+    // What does not fit times a thousand is far above any threshold's double, or divides well
+    // enough without: nothing is decided by it.
+    let ratio = match part.checked_mul(1000) {
+        Some(scaled) => scaled / whole,
+        None => (part / whole).saturating_mul(1000),
+    };
     u32::try_from(ratio.clamp(0, 2000))
         .unwrap_or(2000)
         .max(least)

@@ -39,13 +39,14 @@ impl Sequencer {
         self.voltage = seen.voltage.mean;
 
         self.course.doubt(seen.time);
-        self.judge(&seen, increment.as_ref(), &mut crossings);
+        let expected = self.expectation(&seen);
+        self.judge(&seen, increment.as_ref(), &expected, &mut crossings);
         if !seen.first {
             let silence = micros(self.plan().interlocks.silence);
             self.guard
                 .judge_total(Interlock::Silence, micros(silent), silence, &mut crossings);
         }
-        let gave_up = self.judge_following(&seen, &mut crossings);
+        let gave_up = self.judge_following(&seen, &expected, &mut crossings);
         let latched = match seen.state {
             SinkState::Latched(cause) => Some(cause),
             SinkState::Off | SinkState::On | SinkState::Saturated => None,
@@ -82,6 +83,7 @@ impl Sequencer {
         &mut self,
         seen: &Observation,
         increment: Option<&Increment>,
+        expected: &Expectation,
         crossings: &mut Crossings,
     ) {
         let plan = self.program.plan();
@@ -106,10 +108,8 @@ impl Sequencer {
             .map_or(0, micros);
         self.guard
             .judge_total(Interlock::Clock, drift, micros(bound), crossings);
-        let expected = self.expectation(seen);
-        let limit = self.program.plan().interlocks.not_releasing;
-        self.guard
-            .judge_releasing(limit, seen, &expected, crossings);
+        let limit = plan.interlocks.not_releasing;
+        self.guard.judge_releasing(limit, seen, expected, crossings);
     }
 
     fn expectation(&self, seen: &Observation) -> Expectation {
@@ -131,13 +131,17 @@ impl Sequencer {
 
     /// Whether the running step's source has given up as it may; anything else that does not
     /// follow crosses.
-    fn judge_following(&mut self, seen: &Observation, crossings: &mut Crossings) -> bool {
+    fn judge_following(
+        &mut self,
+        seen: &Observation,
+        expected: &Expectation,
+        crossings: &mut Crossings,
+    ) -> bool {
         if self.phase != Phase::Progress {
             return false;
         }
-        let expected = self.expectation(seen);
         let limit = self.plan().interlocks.not_following;
-        let Some(found) = self.guard.judge_following(limit, seen, &expected) else {
+        let Some(found) = self.guard.judge_following(limit, seen, expected) else {
             return false;
         };
         let may = self.course.running.as_ref().is_some_and(|running| {

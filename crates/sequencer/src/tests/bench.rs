@@ -42,7 +42,8 @@ pub(super) struct Bench {
     pub(super) latched: Option<Cause>,
     /// Added to what the sink's clock shows.
     pub(super) clock_shift: i64,
-    host_shift: i64,
+    /// Added to what the host's clock shows.
+    pub(super) host_shift: i64,
     inbox: VecDeque<(SinkTime, OrderId, Order)>,
     queue: VecDeque<(OrderId, Step)>,
     active: Option<(OrderId, Step, SinkTime, Current)>,

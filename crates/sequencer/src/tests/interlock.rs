@@ -251,6 +251,7 @@ fn a_record_that_cannot_be_written_trips() {
 fn a_clock_that_goes_back_or_leaps_trips() {
     for shift in [-5_000_000, -300_000, 900_000] {
         let mut bench = running();
+        bench.run(Span::from_secs(6));
         bench.clock_shift = shift;
         trips(&mut bench, Interlock::Clock);
     }
@@ -274,6 +275,71 @@ fn a_clock_with_a_rate_error_of_one_percent_does_not_trip() {
         bench.run(Span::from_secs(1));
     }
     assert_eq!(bench.ended, None);
+}
+
+#[test]
+fn a_reading_that_is_late_is_no_clock_that_leaps() {
+    let mut bench = running();
+    for _ in 0..20 {
+        // Late by 800 ms, and the next one in time.
+        bench.host_shift += 800_000;
+        bench.run(millis(100));
+        bench.host_shift -= 800_000;
+        bench.run(millis(2_000));
+    }
+    assert_eq!(bench.ended, None);
+}
+
+/// The host's share of the worst times in `docs/interlocks.md`: from the crossing to the order
+/// off, for every place of the crossing within a readback interval.
+#[test]
+fn off_is_ordered_within_the_documented_number_of_readback_intervals() {
+    type Fault = fn(&mut Bench);
+    let cases: [(Interlock, u64, Fault); 6] = [
+        // Persistence 500 ms, no part of an interval to be lost at either end.
+        (Interlock::OverTemperature, 500, |bench| {
+            bench.temperature = celsius(81)
+        }),
+        (Interlock::SensorFault, 500, |bench| {
+            bench.temperature = TemperatureReading::Open
+        }),
+        (Interlock::NotFollowing, 500, |bench| {
+            bench.limit = milliamperes(800)
+        }),
+        (Interlock::NotReleasing, 100, |bench| {
+            bench.leak = milliamperes(100)
+        }),
+        (Interlock::Undervoltage, 50, |bench| {
+            bench.emf = millivolts(2_400)
+        }),
+        (Interlock::OverVoltage, 50, |bench| {
+            bench.emf = millivolts(4_800)
+        }),
+    ];
+    for readback in [20, 100, 250] {
+        for (interlock, persistence, fault) in cases {
+            let mut worst = 0;
+            for phase in 0..10 {
+                let mut plan = plan(vec![draw(1_000, Span::from_secs(1_000))]);
+                plan.readback = millis(readback);
+                let mut bench = Bench::connected(plan);
+                bench.run(Span::from_secs(3) + millis(phase * readback / 10));
+                assert_eq!(bench.ended, None);
+                let crossed = bench.now;
+                fault(&mut bench);
+                assert_eq!(
+                    bench.run(Span::from_secs(5)),
+                    Some(Ending::Tripped(interlock))
+                );
+                worst = worst.max(bench.now.saturating_since(crossed).micros() / 1000);
+            }
+            let intervals = persistence.div_ceil(readback) + 1;
+            assert!(
+                worst <= intervals * readback,
+                "{interlock:?} every {readback} ms: {worst} ms"
+            );
+        }
+    }
 }
 
 #[test]
