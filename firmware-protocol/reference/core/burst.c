@@ -110,6 +110,11 @@ static uint16_t place(const struct sink_core *core, uint16_t index)
     return (uint16_t)((core->burst.head + size - back) % size);
 }
 
+static void put_nominal(struct sink_text *text, uint16_t code, uint32_t full_scale, uint8_t bits)
+{
+    sink_text_unsigned(text, sink_nominal(code, full_scale, bits));
+}
+
 void sink_burst_send(struct sink_core *core)
 {
     struct sink_burst *burst = &core->burst;
@@ -134,10 +139,8 @@ void sink_burst_send(struct sink_core *core)
             if (text.length + PAIR_BYTES + TAIL_BYTES > SINK_LINE_BYTES) {
                 break;
             }
-            sink_text_unsigned(
-                &text, sink_nominal(burst->current[at], config->sense_current_ua, config->sense_bits));
-            sink_text_unsigned(
-                &text, sink_nominal(burst->voltage[at], config->sense_voltage_uv, config->sense_bits));
+            put_nominal(&text, burst->current[at], config->sense_current_ua, config->sense_bits);
+            put_nominal(&text, burst->voltage[at], config->sense_voltage_uv, config->sense_bits);
             burst->next++;
         }
     }

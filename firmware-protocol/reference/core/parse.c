@@ -8,7 +8,8 @@
 
 #define FIELDS_MAX 8u
 
-/* The ranges of the protocol's fields (section 8). They are what keeps every product in the core within 64 bits. */
+/* The ranges of the protocol's fields (section 8). They are what keeps every
+ * product in the core within 64 bits. */
 #define VALUE_MOST 999999999
 #define VOLTAGE_LEAST (-99999999)
 #define RESISTANCE_MOST 2147483647u
