@@ -276,9 +276,10 @@ impl Course {
         time: SinkTime,
         drawn_until: SinkTime,
     ) -> Option<Suspension> {
-        let begun = self
-            .queue
-            .partition_point(|queued| queued.step.slot.start <= time);
+        // What the sink has not acknowledged it may never have got: it counts as not begun.
+        let has_begun =
+            |queued: &&Queued| queued.step.acknowledged && queued.step.slot.start <= time;
+        let begun = self.queue.iter().take_while(has_begun).count();
         let next = self.queue.get(begun).map(|queued| queued.step.slot.clone());
         self.queue.truncate(begun);
         let decided = begun == 0 && self.running.as_ref().is_some_and(|running| running.ended);

@@ -87,7 +87,8 @@ pub enum Happening {
 pub enum Command {
     /// End the run: stopped.
     Stop,
-    /// Off for now; time and charge go on being accounted.
+    /// Off for now; time and charge go on being accounted. Before the first step and while the
+    /// link is gone: nothing begins until `Continue`.
     Hold,
     /// Go on after a hold.
     Continue,

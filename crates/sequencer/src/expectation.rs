@@ -114,6 +114,15 @@ impl Ordered {
         }
     }
 
+    /// It is long over: nothing of it can show in a reading any more.
+    pub(crate) fn forget_times(&mut self) {
+        self.slot.start = SinkTime::ZERO;
+        self.slot.end = SinkTime::ZERO;
+        self.hold_end = SinkTime::ZERO;
+        self.drawn_until = SinkTime::ZERO;
+        self.broken_off = true;
+    }
+
     fn rests(&self) -> bool {
         match self.action {
             Action::Rest => true,

@@ -70,7 +70,11 @@ impl Phase {
             }
             Self::Preparation(_) => matches!(
                 next,
-                Self::End(_) | Self::Preparation(_) | Self::Progress | Self::Interruption { .. }
+                Self::End(_)
+                    | Self::Preparation(_)
+                    | Self::Progress
+                    | Self::Pause(_)
+                    | Self::Interruption { .. }
             ),
             Self::Progress => {
                 matches!(

@@ -69,6 +69,8 @@ pub struct Sequencer {
     /// Readback interval last ordered.
     pub(crate) readback: Span,
     pub(crate) bursts: progress::Bursts,
+    /// A person or a script wants the run held: it is, or will be instead of beginning.
+    pub(crate) held: bool,
     /// The sink has started anew while the link was gone.
     pub(crate) rebooted: bool,
     /// Host time of the latest event, and the time under way until then.
@@ -103,6 +105,7 @@ impl Sequencer {
             voltage: Voltage::ZERO,
             begun_through: SinkTime::ZERO,
             bursts: progress::Bursts::default(),
+            held: false,
             rebooted: false,
             now: HostTime::MIN,
             elapsed: Span::ZERO,

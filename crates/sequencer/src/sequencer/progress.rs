@@ -15,7 +15,7 @@ use crate::expectation::Ordered;
 use crate::observation::Observation;
 use crate::orders::hold;
 use crate::phase::{Pause, Phase};
-use crate::program::Slot;
+use crate::program::{Cursor, Slot};
 
 /// Time that the samples of a capture take on their way, for each sample: an 80-byte line of four
 /// at 115 200 baud is 7 ms, and other lines share the port.
@@ -563,7 +563,9 @@ impl Sequencer {
 
     /// Off for now.
     pub(super) fn hold(&mut self) {
+        self.held = true;
         if self.phase != Phase::Progress {
+            // Nothing runs; and nothing will begin until the run is continued.
             return;
         }
         let now = self.sink_now();
@@ -579,6 +581,7 @@ impl Sequencer {
     }
 
     pub(super) fn ask_to_go_on(&mut self) {
+        self.held = false;
         if let Phase::Pause(pause) = self.phase {
             self.enter(Phase::Pause(Pause {
                 go_on: true,
@@ -603,13 +606,20 @@ impl Sequencer {
         if !pause.off || !pause.go_on || !self.course.queue.is_empty() {
             return;
         }
-        let Some(suspension) = self.suspension.take() else {
-            return;
-        };
-        let start = self.sink_now().max(self.latest).saturating_add(super::LEAD);
-        self.enter(Phase::Progress);
         self.find(Finding::Continued);
-        self.take_up(&suspension, start);
+        self.set_going();
+    }
+
+    /// Begins, or goes on where the run was broken off.
+    pub(super) fn set_going(&mut self) {
+        let start = self.sink_now().max(self.latest).saturating_add(super::LEAD);
+        self.begun_through = self.latest;
+        self.enter(Phase::Progress);
+        if let Some(suspension) = self.suspension.take() {
+            self.take_up(&suspension, start);
+        } else {
+            self.course.set_out(&self.program, Cursor::default(), start);
+        }
         self.fill();
     }
 
@@ -617,7 +627,6 @@ impl Sequencer {
     pub(super) fn take_up(&mut self, suspension: &Suspension, start: SinkTime) {
         let tick = self.plan().tick;
         let slot = suspension.slot(start, tick);
-        self.begun_through = self.latest;
         for watched in &mut self.course.loops {
             let untils = self
                 .program

@@ -4,11 +4,10 @@ use quantity::{Charge, SinkTime};
 use sequence::plan::OnInterruption;
 use wire::{Cause, Order, OrderId};
 
-use super::{LEAD, REACTION, Sequencer};
+use super::{REACTION, Sequencer};
 use crate::account::Increment;
 use crate::event::{Ending, Finding, Interlock};
-use crate::phase::{Phase, Preparation};
-use crate::program::Cursor;
+use crate::phase::{Pause, Phase, Preparation};
 
 impl Sequencer {
     pub(super) fn on_connected(&mut self, time: SinkTime) {
@@ -101,21 +100,23 @@ impl Sequencer {
         if preparation.awaited.is_some() || preparation.reset.is_some() {
             return;
         }
-        let start = self.sink_now().max(self.latest).saturating_add(LEAD);
-        self.begun_through = self.latest;
-        self.enter(Phase::Progress);
-        match self.suspension.take() {
-            Some(suspension) => {
-                self.find(Finding::Continued);
-                self.take_up(&suspension, start);
-                // Its times may be of a clock that is no more.
-                self.course.running = None;
-            }
-            None => {
-                self.course.set_out(&self.program, Cursor::default(), start);
-            }
+        if let Some(running) = &mut self.course.running {
+            // Its times may be of a clock that is no more, and it draws nothing now.
+            running.step.forget_times();
         }
-        self.fill();
+        if self.held {
+            let pause = Pause {
+                off: true,
+                go_on: false,
+            };
+            self.enter(Phase::Pause(pause));
+            self.find(Finding::Held);
+            return;
+        }
+        if self.suspension.is_some() {
+            self.find(Finding::Continued);
+        }
+        self.set_going();
     }
 
     /// The sink is latched before the run begins.

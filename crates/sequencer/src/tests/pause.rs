@@ -126,6 +126,29 @@ fn the_charge_of_a_held_step_goes_on_being_counted() {
 }
 
 #[test]
+fn a_run_that_is_held_stays_held_over_a_lost_link_and_begins_held() {
+    let mut bench = Bench::connected(resumable(two_steps()));
+    bench.command(Command::Hold);
+    bench.run(Span::from_secs(3));
+    assert_eq!(bench.sequencer.status().standing, Standing::Held);
+    assert!(bench.starts.is_empty());
+    bench.command(Command::Continue);
+    bench.run(Span::from_secs(3));
+    bench.command(Command::Hold);
+    bench.run(Span::from_secs(1));
+    let starts = bench.starts.len();
+    bench.happen(Happening::LinkLost);
+    bench.reboot();
+    bench.happen(Happening::SinkRebooted);
+    bench.connect();
+    bench.run(Span::from_secs(10));
+    assert_eq!(bench.sequencer.status().standing, Standing::Held);
+    assert_eq!(bench.starts.len(), starts);
+    bench.command(Command::Continue);
+    assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
+}
+
+#[test]
 fn a_hold_before_the_first_step_and_a_hold_twice_change_nothing_else() {
     let mut bench = Bench::connected(two_steps());
     bench.command(Command::Hold);
