@@ -297,22 +297,22 @@ fn off_is_ordered_within_the_documented_number_of_readback_intervals() {
     type Fault = fn(&mut Bench);
     let cases: [(Interlock, u64, Fault); 6] = [
         (Interlock::OverTemperature, 500, |bench| {
-            bench.temperature = celsius(81)
+            bench.temperature = celsius(81);
         }),
         (Interlock::SensorFault, 500, |bench| {
-            bench.temperature = TemperatureReading::Open
+            bench.temperature = TemperatureReading::Open;
         }),
         (Interlock::NotFollowing, 500, |bench| {
-            bench.limit = milliamperes(800)
+            bench.limit = milliamperes(800);
         }),
         (Interlock::NotReleasing, 100, |bench| {
-            bench.leak = milliamperes(100)
+            bench.leak = milliamperes(100);
         }),
         (Interlock::Undervoltage, 50, |bench| {
-            bench.emf = millivolts(2_400)
+            bench.emf = millivolts(2_400);
         }),
         (Interlock::OverVoltage, 50, |bench| {
-            bench.emf = millivolts(4_800)
+            bench.emf = millivolts(4_800);
         }),
     ];
     for readback in [20, 100, 250] {
