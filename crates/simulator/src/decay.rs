@@ -21,13 +21,13 @@ pub(crate) struct Decay {
 impl Decay {
     /// A decay that is over at once.
     pub(crate) fn new() -> Self {
-        let mut powers = Box::new([0.0; ENTRIES]);
-        powers[0] = 1.0;
-        Self {
+        let mut decay = Self {
             time_constant_s: 0.0,
             tick_s: 1.0,
-            powers,
-        }
+            powers: Box::new([0.0; ENTRIES]),
+        };
+        decay.fill(0.0);
+        decay
     }
 
     /// Makes the table one for this time constant and tick, unless it is already.
@@ -39,7 +39,13 @@ impl Decay {
         }
         self.time_constant_s = time_constant_s;
         self.tick_s = tick_s;
-        self.powers[1] = after(tick_s, time_constant_s);
+        self.fill(after(tick_s, time_constant_s));
+    }
+
+    fn fill(&mut self, first: f64) {
+        for (slot, power) in self.powers.iter_mut().zip([1.0, first]) {
+            *slot = power;
+        }
         let mut filled = 1;
         while filled < ENTRIES - 1 {
             let (done, open) = self.powers.split_at_mut(filled + 1);

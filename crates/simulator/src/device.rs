@@ -469,8 +469,8 @@ fn check(parts: &SinkParts) -> Result<(), DeviceError> {
         ("voltage_gain", errors.voltage_gain),
     ];
     for (name, value) in gains {
-        if !(value.abs() < 1.0) {
-            return refuse(name, value, "give a relative error between -1 and 1");
+        if !(-0.99..=0.99).contains(&value) {
+            return refuse(name, value, "give a relative error between -0.99 and 0.99");
         }
     }
     let finite = [

@@ -119,17 +119,17 @@ impl Path {
     /// The triode region's current: `I = k (o d - d^2 / 2)` with `o = O - I R_s` and
     /// `d = E - I R`, a quadratic in I.
     fn triode_a(&self, open_v: f64, around: f64) -> f64 {
-        let k = self.mosfet.transconductance_a_per_v2;
-        let (o, r_s) = (self.overdrive_v(), self.sense_ohm);
-        let a = k * around * (r_s - 0.5 * around);
-        let b = -(k * (o * around + open_v * (r_s - around)) + 1.0);
-        let c = k * open_v * (o - 0.5 * open_v);
+        let factor = self.mosfet.transconductance_a_per_v2;
+        let (overdrive, sense) = (self.overdrive_v(), self.sense_ohm);
+        let a = factor * around * (sense - 0.5 * around);
+        let b = -(factor * (overdrive * around + open_v * (sense - around)) + 1.0);
+        let c = factor * open_v * (overdrive - 0.5 * open_v);
         let discriminant = (b * b - 4.0 * a * c).max(0.0).sqrt();
         // Both roots without cancellation; the one in the triode region is wanted.
         let q = -0.5 * (b + discriminant.copysign(b));
         let fits = |current: f64| {
             let drop = open_v - current * around;
-            current >= 0.0 && drop >= -1e-12 && drop <= o - current * r_s + 1e-9
+            current >= 0.0 && drop >= -1e-12 && drop <= overdrive - current * sense + 1e-9
         };
         [c / q, q / a]
             .into_iter()

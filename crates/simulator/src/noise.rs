@@ -19,56 +19,63 @@ pub struct Noise {
 
 const LAYERS: usize = 256;
 /// Where the lowest layer's tail begins, for 256 layers (Marsaglia and Tsang).
-const TAIL: f64 = 3.654_152_885_361_008_8;
+const TAIL: f64 = 3.654_152_885_361_009;
 /// The area of each layer, for 256 layers (Marsaglia and Tsang).
 const AREA: f64 = 0.004_928_673_233_99;
 
-/// Right edges of the layers and the density there, from the lowest layer up.
-#[derive(Debug, Clone)]
-struct Layers {
-    edge: [f64; LAYERS + 1],
-    density: [f64; LAYERS + 1],
+/// A number in 53 bits as a share of one.
+const PER_UNIT: f64 = 1.0 / 9_007_199_254_740_992.0;
+/// A number in 52 bits and a sign as a share of one.
+const PER_SIGNED_UNIT: f64 = 2.0 * PER_UNIT;
+
+/// One layer: places `|j| < inside` of 52 bits and a sign lie wholly under the density at
+/// `j * per_place`; beyond them the two heights decide.
+#[derive(Debug, Clone, Copy, Default)]
+struct Layer {
+    inside: i64,
+    per_place: f64,
+    low: f64,
+    high: f64,
 }
+
+/// The layers, from the lowest up.
+#[derive(Debug, Clone)]
+struct Layers([Layer; LAYERS]);
 
 fn density(x: f64) -> f64 {
     (-0.5 * x * x).exp()
 }
 
 impl Layers {
+    #[expect(
+        clippy::cast_possible_truncation,
+        reason = "a share of one in 52 bits, from a ratio that is below one"
+    )]
     fn new() -> Self {
-        let mut edge = [0.0; LAYERS + 1];
-        let mut at = TAIL;
-        // The lowest layer's base, as wide as a box of its height would have to be.
-        edge[0] = AREA / density(TAIL);
-        for slot in edge.iter_mut().take(LAYERS).skip(1) {
-            *slot = at;
-            let above = AREA / at + density(at);
-            at = if above < 1.0 {
+        let mut layers = [Layer::default(); LAYERS];
+        // The lowest layer is as wide as a box of its height and area would have to be.
+        let mut edge = AREA / density(TAIL);
+        let mut inner = TAIL;
+        for layer in &mut layers {
+            *layer = Layer {
+                inside: (inner / edge / PER_SIGNED_UNIT) as i64,
+                per_place: edge * PER_SIGNED_UNIT,
+                low: density(edge),
+                high: density(inner),
+            };
+            edge = inner;
+            let above = AREA / edge + density(edge);
+            inner = if above < 1.0 {
                 (-2.0 * above.ln()).sqrt()
             } else {
                 0.0
             };
         }
-        let mut heights = [0.0; LAYERS + 1];
-        for (height, x) in heights.iter_mut().zip(edge) {
-            *height = density(x);
-        }
-        Self {
-            edge,
-            density: heights,
-        }
+        Self(layers)
     }
 
-    /// A layer's right edge and the next one's, then the density at both.
-    fn layer(&self, index: u8) -> (f64, f64, f64, f64) {
-        let at = usize::from(index);
-        let of = |table: &[f64; LAYERS + 1], slot: usize| table.get(slot).copied().unwrap_or(0.0);
-        (
-            of(&self.edge, at),
-            of(&self.edge, at + 1),
-            of(&self.density, at),
-            of(&self.density, at + 1),
-        )
+    fn layer(&self, index: u8) -> Layer {
+        self.0.get(usize::from(index)).copied().unwrap_or_default()
     }
 }
 
@@ -110,7 +117,7 @@ impl Noise {
 
     /// A number from 0 up to, not including, 1.
     pub fn uniform(&mut self) -> f64 {
-        to_unit(self.bits() >> 11)
+        to_float((self.bits() >> 11).cast_signed()) * PER_UNIT
     }
 
     /// A deviate of the standard normal distribution.
@@ -118,18 +125,18 @@ impl Noise {
     pub fn normal(&mut self) -> f64 {
         loop {
             let bits = self.bits();
-            // The low byte picks the layer, the high 53 bits the place in it, both signs.
+            // The low byte picks the layer, the high 53 bits the place in it, sign first.
             let [index, ..] = bits.to_le_bytes();
-            let across = 2.0 * to_unit(bits >> 11) - 1.0;
-            let (edge, inner, low, high) = self.layers.layer(index);
-            let x = across * edge;
-            if x.abs() < inner {
+            let place = bits.cast_signed() >> 11;
+            let layer = self.layers.layer(index);
+            let x = to_float(place) * layer.per_place;
+            if place.abs() < layer.inside {
                 return x;
             }
             if index == 0 {
                 return self.tail(x);
             }
-            if low + self.uniform() * (high - low) < density(x) {
+            if layer.low + self.uniform() * (layer.high - layer.low) < density(x) {
                 return x;
             }
         }
@@ -151,8 +158,8 @@ impl Noise {
     clippy::cast_precision_loss,
     reason = "53 bits fit the significand exactly"
 )]
-fn to_unit(bits53: u64) -> f64 {
-    bits53 as f64 * (1.0 / 9_007_199_254_740_992.0)
+fn to_float(bits53: i64) -> f64 {
+    bits53 as f64
 }
 
 #[cfg(test)]

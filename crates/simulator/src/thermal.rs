@@ -129,10 +129,11 @@ impl Thermal {
         }
         let heat_sink = self.ambient_degc + power_w * self.path.to_ambient_k_per_w;
         let mosfet = heat_sink + power_w * self.path.to_heat_sink_k_per_w;
-        let (x, y) = (self.mosfet_degc - mosfet, self.heat_sink_degc - heat_sink);
-        let [[a, b], [c, d]] = self.decay;
-        self.mosfet_degc = mosfet + a * x + b * y;
-        self.heat_sink_degc = heat_sink + c * x + d * y;
+        let away = (self.mosfet_degc - mosfet, self.heat_sink_degc - heat_sink);
+        let [of_mosfet, of_heat_sink] = self.decay;
+        let left = |row: [f64; 2]| row[0] * away.0 + row[1] * away.1;
+        self.mosfet_degc = mosfet + left(of_mosfet);
+        self.heat_sink_degc = heat_sink + left(of_heat_sink);
     }
 
     /// Junction temperature of the MOSFET, degrees Celsius.

@@ -295,9 +295,7 @@ impl Model {
         self.temperature_effect.check()?;
         not_negative("heat.capacity_j_per_k", self.heat.capacity_j_per_k)?;
         not_negative("heat.to_ambient_k_per_w", self.heat.to_ambient_k_per_w)?;
-        self.specimens
-            .values()
-            .try_for_each(|spread| spread.check())
+        self.specimens.values().try_for_each(Spread::check)
     }
 
     fn check_charges(&self) -> Result<(), ModelError> {
@@ -366,7 +364,7 @@ impl TemperatureEffect {
     fn check(&self) -> Result<(), ModelError> {
         let activations = self.pair_activation_k.iter();
         for activation in activations.chain([&self.series_activation_k]) {
-            if !(activation.abs() <= 20_000.0) {
+            if !(-20_000.0..=20_000.0).contains(activation) {
                 return Err(ModelError::Value {
                     name: "temperature_effect",
                     value: *activation,

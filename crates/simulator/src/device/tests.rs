@@ -147,29 +147,31 @@ impl Host {
     }
 
     pub(super) fn readbacks(&self) -> Vec<Readback> {
-        let values = |line| match line {
-            SinkLine::Readback { values, .. } => Some(values),
-            _ => None,
-        };
-        self.heard().into_iter().filter_map(values).collect()
+        let mut readbacks = Vec::new();
+        for line in self.heard() {
+            if let SinkLine::Readback { values, .. } = line {
+                readbacks.push(values);
+            }
+        }
+        readbacks
     }
 
     pub(super) fn counters(&self) -> wire::Counters {
-        let counters = |line| match line {
-            SinkLine::Counters { counters, .. } => Some(counters),
-            _ => None,
-        };
-        self.heard()
-            .into_iter()
-            .filter_map(counters)
-            .last()
-            .unwrap()
+        let mut last = None;
+        for line in self.heard() {
+            if let SinkLine::Counters { counters, .. } = line {
+                last = Some(counters);
+            }
+        }
+        last.unwrap()
     }
 
     pub(super) fn trip(&self) -> Option<(wire::Cause, i64)> {
-        self.heard().into_iter().find_map(|line| match line {
-            SinkLine::Trip { cause, value, .. } => Some((cause, value)),
-            _ => None,
-        })
+        for line in self.heard() {
+            if let SinkLine::Trip { cause, value, .. } = line {
+                return Some((cause, value));
+            }
+        }
+        None
     }
 }

@@ -32,10 +32,6 @@ fn hold(host: &mut Host, current: f64) -> (f64, f64) {
     (last.current.amperes(), last.voltage.volts())
 }
 
-fn some<T>(value: T) -> Option<Text<T>> {
-    Some(Text(value))
-}
-
 #[test]
 fn a_supply_drops_by_its_output_resistance() {
     let mut host = on_supply(&spec());
@@ -70,7 +66,7 @@ fn an_undershoot_recovers_with_its_time_constant() {
 #[test]
 fn a_current_limit_holds_the_current_and_collapses_the_voltage() {
     let mut host = on_supply(&SupplySpec {
-        current_limit: some(Current::from_amperes(1.2).unwrap()),
+        current_limit: Some(Text(Current::from_amperes(1.2).unwrap())),
         ..spec()
     });
     let (current, voltage) = hold(&mut host, 1.1);
@@ -89,8 +85,8 @@ fn a_current_limit_holds_the_current_and_collapses_the_voltage() {
 #[test]
 fn a_folding_limit_returns_only_well_below_its_knee() {
     let mut host = on_supply(&SupplySpec {
-        current_limit: some(Current::from_amperes(1.2).unwrap()),
-        fold_back_to: some(Current::from_amperes(0.4).unwrap()),
+        current_limit: Some(Text(Current::from_amperes(1.2).unwrap())),
+        fold_back_to: Some(Text(Current::from_amperes(0.4).unwrap())),
         ..spec()
     });
     let (folded, _) = hold(&mut host, 1.5);
@@ -123,7 +119,7 @@ fn ripple_shows_in_the_extremes_and_not_in_the_mean() {
 #[test]
 fn a_supply_that_folds_back_without_a_limit_is_refused() {
     let refused = Supply::new(&SupplySpec {
-        fold_back_to: some(Current::from_amperes(0.4).unwrap()),
+        fold_back_to: Some(Text(Current::from_amperes(0.4).unwrap())),
         ..spec()
     });
     assert_eq!(
