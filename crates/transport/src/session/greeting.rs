@@ -34,13 +34,9 @@ pub(super) struct Greeting {
     /// Token of the first greeting sent, and how far the latest is from it, counted from 1.
     first: Token,
     sent: u16,
-    /// The latest greeting answered, counted likewise.
-    answered: u16,
     pub(super) repeat: Timer,
     pause: Span,
     gathering: Option<(Token, DescriptionBuilder)>,
-    /// Token and time of the answer that opened the session.
-    opened: Option<(Token, SinkTime)>,
 }
 
 impl Greeting {
@@ -49,11 +45,9 @@ impl Greeting {
             session,
             first: 0,
             sent: 0,
-            answered: 0,
             repeat: Timer::AT_ONCE,
             pause: PAUSE_FIRST,
             gathering: None,
-            opened: None,
         }
     }
 
@@ -79,35 +73,23 @@ impl Greeting {
         self.repeat = Timer::AT_ONCE;
     }
 
-    /// How far a token lies behind the first greeting's, counted from 1; `None` if it is none
-    /// of ours.
-    fn place_of(&self, token: Token) -> Option<u16> {
-        let place = token.wrapping_sub(self.first).wrapping_add(1);
-        (place >= 1 && place <= self.sent).then_some(place)
-    }
-
-    /// Whether a description with this token answers a greeting of ours that has had no whole
-    /// answer yet.
-    pub(super) fn awaits(&self, token: Token) -> bool {
-        self.place_of(token)
-            .is_some_and(|place| place > self.answered)
-    }
-
-    /// Whether this is the very answer that opened the session, come twice.
-    pub(super) fn is_opening(&self, token: Token, time: SinkTime) -> bool {
-        self.opened == Some((token, time))
+    /// The token of the latest greeting.
+    #[cfg(test)]
+    pub(super) fn last_token(&self) -> Token {
+        self.first.wrapping_add(self.sent).wrapping_sub(1)
     }
 
     /// Whether the token is of a greeting of this session.
     pub(super) fn is_ours(&self, token: Token) -> bool {
-        self.place_of(token).is_some()
+        let place = token.wrapping_sub(self.first).wrapping_add(1);
+        place >= 1 && place <= self.sent
     }
 
     /// Takes a line of the description while the session has not begun.
     pub(super) fn gather(&mut self, token: Token, line: &SinkLine) -> Gathered {
-        let Some(place) = self.place_of(token) else {
+        if !self.is_ours(token) {
             return Gathered::Stale;
-        };
+        }
         let session = self.session;
         let fresh = (token, DescriptionBuilder::new(token, session));
         let (under, builder) = self.gathering.get_or_insert(fresh.clone());
@@ -118,9 +100,7 @@ impl Greeting {
         match builder.push(line) {
             Ok(Some((description, time))) => {
                 self.gathering = None;
-                self.answered = place;
                 self.repeat.stop();
-                self.opened = Some((token, time));
                 Gathered::Whole(description, time)
             }
             Err(DescriptionError::Protocol { found }) => Gathered::Foreign { protocol: found },
@@ -130,13 +110,6 @@ impl Greeting {
             Err(DescriptionError::Token { .. } | DescriptionError::Session { .. }) => {
                 Gathered::Stale
             }
-        }
-    }
-
-    /// Notes that a repeated greeting has been answered after the session began.
-    pub(super) fn repeated(&mut self, token: Token) {
-        if let Some(place) = self.place_of(token) {
-            self.answered = self.answered.max(place);
         }
     }
 

@@ -117,17 +117,16 @@ impl Session {
         }
     }
 
-    /// A description while the session stands: the answer to a repeated greeting, or a sign
-    /// that the sink has begun anew. With a token of ours its last line tells which.
+    /// A description while the session stands: the answer to a greeting that was repeated, or a
+    /// sign that the sink has begun anew. Since lines keep their order, an answer to a greeting
+    /// of ours comes before that to any order; with a token of ours, the last line tells.
     fn hear_description_again(&mut self, token: Token, line: &SinkLine) {
         self.counts.stale += 1;
-        let harmless = if let SinkLine::Ready { session, time, .. } = *line {
-            let repetition = self.greeting.is_opening(token, time)
-                || (self.greeting.awaits(token) && !self.answered_any);
-            self.greeting.repeated(token);
-            session == self.greeting.session() && repetition
+        let ours = self.greeting.is_ours(token);
+        let harmless = if let SinkLine::Ready { session, .. } = *line {
+            ours && session == self.greeting.session() && !self.answered_any
         } else {
-            self.greeting.is_ours(token)
+            ours
         };
         if !harmless {
             self.lose(RebootEvidence::UnaskedDescription);

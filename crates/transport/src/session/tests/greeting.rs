@@ -148,3 +148,36 @@ fn a_repeated_greeting_answered_twice_does_not_end_the_session() {
     assert!(bench.session.description().is_some());
     assert!(bench.session.counts().stale > 0);
 }
+
+#[test]
+fn a_greeting_that_arrives_twice_does_not_end_the_session() {
+    let mut bench = Bench::new();
+    bench.session.tick(bench.now);
+    bench.swallow();
+    let token = bench.session.token;
+    for pause in [0, 7] {
+        bench.now += Span::from_millis(pause);
+        for line in bench.peer.description(token, 7, bench.now) {
+            bench.peer.say(line);
+        }
+    }
+    let bytes = bench.peer.take();
+    bench.session.receive(&bytes, bench.now);
+    assert!(bench.session.description().is_some());
+}
+
+#[test]
+fn a_greeting_answered_anew_after_an_order_shows_a_new_beginning() {
+    let mut bench = Bench::open();
+    bench.order(1, limit(500));
+    bench.heard.clear();
+    let token = bench.session.greeting.last_token();
+    for line in bench.peer.description(token, 7, bench.now) {
+        bench.peer.say(line);
+    }
+    bench.settle();
+    assert_eq!(
+        rebooted(&bench.heard),
+        Some(RebootEvidence::UnaskedDescription)
+    );
+}
