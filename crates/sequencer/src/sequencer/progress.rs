@@ -500,20 +500,30 @@ impl Sequencer {
     }
 
     /// Orders the readback interval of the step that runs, early enough for a faster one.
+    ///
+    /// How far it looks ahead is the running step's own interval, not the one ordered last: else
+    /// a faster one would be ordered and taken back in turns.
     fn keep_readback(&mut self) {
-        let horizon = self
-            .latest
-            .saturating_add(self.readback)
-            .saturating_add(REACTION);
         let default = self.plan().readback;
-        let wanted = self
-            .course
-            .steps()
-            .take_while(|step| step.slot.start <= horizon)
-            .filter(|step| step.slot.end > self.begun_through)
-            .filter_map(|step| self.program.step(step.slot.op))
-            .map(|step| step.readback.unwrap_or(default))
-            .min();
+        let interval_of = |step: &Ordered| {
+            let step = self.program.step(step.slot.op);
+            step.and_then(|step| step.readback).unwrap_or(default)
+        };
+        let mut running = default;
+        let mut wanted = None;
+        for step in self.course.steps() {
+            if step.slot.start <= self.begun_through {
+                running = interval_of(step);
+                wanted = Some(running);
+                continue;
+            }
+            let horizon = self.latest.saturating_add(running).saturating_add(REACTION);
+            if step.slot.start > horizon {
+                break;
+            }
+            let interval = interval_of(step).min(running);
+            wanted = Some(wanted.map_or(interval, |wanted| interval.min(wanted)));
+        }
         if let Some(interval) = wanted.filter(|interval| *interval != self.readback) {
             self.readback = interval;
             self.order(Order::Readback { interval });

@@ -58,6 +58,8 @@ pub(super) struct Bench {
     pub(super) ended: Option<Ending>,
     pub(super) starts: Vec<(OrderId, SinkTime)>,
     pub(super) offs: Vec<SinkTime>,
+    /// Readback intervals, with the times at which they reached the sink.
+    pub(super) readbacks: Vec<(SinkTime, Span)>,
 }
 
 #[derive(Default, Clone, Copy)]
@@ -101,6 +103,7 @@ impl Bench {
             ended: None,
             starts: Vec::new(),
             offs: Vec::new(),
+            readbacks: Vec::new(),
         }
     }
 
@@ -246,6 +249,7 @@ impl Bench {
             | Order::Isolator { .. }
             | Order::Burst { .. } => {}
             Order::Readback { interval } => {
+                self.readbacks.push((self.now, interval));
                 self.interval = interval;
                 self.next_readback = Some(self.now + interval);
             }

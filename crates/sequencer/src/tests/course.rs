@@ -4,13 +4,14 @@ use std::time::{Duration, Instant};
 
 use expect_test::{Expect, expect};
 use quantity::{SinkTime, Span};
-use sequence::plan::{Action, Condition, Next, Op, Plan};
+use sequence::plan::{Action, BurstRequest, Condition, Next, Op, Plan};
 
 use super::bench::Bench;
 use super::plans::{
     current, draw, head, milliamperes, millis, millivolts, plan, pulses, rest, step, until,
 };
 use crate::event::{Ending, Event, Happening};
+use crate::status::Standing;
 
 fn check(plan: Plan, expected: &Expect) {
     let mut bench = Bench::connected(plan);
@@ -224,4 +225,112 @@ fn a_night_of_readings_takes_no_time() {
     assert_eq!(sequencer.ending(), None);
     println!("432 000 readings in {took:?}, {:?} each", took / 432_000);
     assert!(took < Duration::from_secs(20), "{took:?}");
+}
+
+#[test]
+fn a_faster_readback_is_ordered_before_its_step_begins_and_a_slower_one_after() {
+    let mut slow = current(10, millis(5_000));
+    slow.readback = Some(millis(1_000));
+    let mut fast = current(500, millis(2_000));
+    fast.readback = Some(millis(20));
+    let ops = vec![
+        Op::Step(slow.clone()),
+        Op::Step(fast),
+        Op::Step(slow),
+        rest(millis(10)),
+    ];
+    let mut bench = Bench::connected(plan(ops));
+    assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
+    let zero = bench.starts[0].1;
+    let ordered: Vec<(u64, u64)> = bench
+        .readbacks
+        .iter()
+        .filter(|(at, _)| *at >= zero)
+        .map(|(at, interval)| {
+            let after = at.saturating_since(zero).micros() / 1000;
+            (after, interval.micros() / 1000)
+        })
+        .collect();
+    // Slow with the first step, fast before 5.000, slow after 7.000, the plan's own for the rest.
+    assert_eq!(
+        ordered
+            .iter()
+            .map(|(_, interval)| *interval)
+            .collect::<Vec<_>>(),
+        [1_000, 20, 1_000, 100]
+    );
+    assert!(ordered[1].0 < 5_000, "{ordered:?}");
+    assert!(ordered[2].0 >= 7_000, "{ordered:?}");
+}
+
+#[test]
+fn captures_are_armed_one_at_a_time_and_a_missed_one_is_told() {
+    let mut pulse = current(420, millis(50));
+    pulse.burst = Some(BurstRequest {
+        before: millis(5),
+        after: millis(45),
+    });
+    // Fifty samples take a fifth of a second on their way: every pulse can be captured.
+    let unhurried = vec![
+        Op::LoopBegin(head(Some(6), 3)),
+        Op::Step(pulse.clone()),
+        draw(4, millis(950)),
+        Op::LoopEnd { begin: 0 },
+    ];
+    let mut bench = Bench::connected(plan(unhurried));
+    assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
+    let text = bench.transcript();
+    assert_eq!(text.matches("Burst {").count(), 6, "{text}");
+    assert_eq!(text.matches("before: 5, after: 45").count(), 6);
+    // Every 100 ms there is no time to send one before the next.
+    let hurried = vec![
+        Op::LoopBegin(head(Some(40), 3)),
+        Op::Step(pulse),
+        draw(4, millis(50)),
+        Op::LoopEnd { begin: 0 },
+    ];
+    let mut bench = Bench::connected(plan(hurried));
+    assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
+    let text = bench.transcript();
+    let (armed, missed) = (
+        text.matches("Burst {").count(),
+        text.matches("BurstMissed").count(),
+    );
+    assert_eq!(armed + missed, 40, "{text}");
+    assert!(armed >= 10 && missed >= 10, "{armed} and {missed}");
+}
+
+#[test]
+fn a_status_tells_where_the_run_stands_and_how_long_it_takes_at_most() {
+    let mut labelled = head(Some(4), 3);
+    labelled.label = Some(1);
+    let ops = vec![
+        Op::LoopBegin(labelled),
+        draw(1_000, millis(2_000)),
+        rest(millis(1_000)),
+        Op::LoopEnd { begin: 0 },
+        draw(100, millis(500)),
+    ];
+    let mut bench = Bench::new(plan(ops));
+    assert_eq!(bench.sequencer.status().standing, Standing::Waiting);
+    let whole = Some(millis(12_500));
+    assert_eq!(bench.sequencer.status().left_at_most, whole);
+    bench.connect();
+    assert_eq!(bench.sequencer.status().standing, Standing::Connecting);
+    bench.run(millis(250));
+    assert_eq!(bench.sequencer.status().standing, Standing::Starting);
+    bench.run(millis(4_260));
+    let status = bench.sequencer.status();
+    assert!(matches!(status.standing, Standing::Running { op: 1, .. }));
+    assert_eq!(status.setpoint, Some(milliamperes(1_000)));
+    assert_eq!(status.loops.len(), 1);
+    assert_eq!((status.loops[0].round, status.loops[0].times), (2, Some(4)));
+    assert_eq!(status.loops[0].label.as_deref(), Some("pulse"));
+    let gone = status.sink_time.saturating_since(bench.starts[0].1);
+    assert_eq!(status.left_at_most, whole.map(|whole| whole - gone));
+    bench.run(Span::from_secs(60));
+    let status = bench.sequencer.status();
+    assert_eq!(status.standing, Standing::Ended(Ending::Finished));
+    assert_eq!(status.charge, milliamperes(1_000).times(millis(8_050)));
+    assert_eq!(status.left_at_most, Some(Span::ZERO));
 }
