@@ -7,7 +7,7 @@ use quantity::{HostTime, SinkTime, Span};
 use sequencer::Sequencer;
 use sequencer::event::{Command, Ending, Happening};
 use sequencer::status::Status;
-use transport::session::{Heard, Mismatch, RebootEvidence, Session, SessionConfig};
+use transport::session::{Heard, Mismatch, RebootEvidence, Session, SessionConfig, Urgency};
 use wire::{Description, Order, OrderId, Reading, ReasonRefused};
 
 use crate::active::{Active, Demand};
@@ -207,9 +207,10 @@ impl Keeper {
         self.effects.pop_front()
     }
 
-    /// Moves the bytes to be sent into `bytes`, `off` before all else.
-    pub fn take_transmit(&mut self, bytes: &mut Vec<u8>) {
-        self.session.take_transmit(bytes);
+    /// Moves the bytes to be sent into `bytes`, `off` before all else; says whether they are to
+    /// overtake what a link may still hold.
+    pub fn take_transmit(&mut self, bytes: &mut Vec<u8>) -> Urgency {
+        self.session.take_transmit(bytes)
     }
 
     /// When [`Keeper::tick`] must be called at the latest.
