@@ -15,6 +15,7 @@
 //! judges no run; interlocks are decided by the sequencer and by the sink.
 
 pub mod bench;
+pub mod calibration;
 pub mod correction;
 
 pub mod circuit;

@@ -1,0 +1,406 @@
+//! Calibration: from points against a reference meter to a certificate.
+//!
+//! Three straight lines are fitted (current set, current read, voltage read) by
+//! weighted least squares, and an F-test says whether the residuals demand more
+//! than a line. They rarely do; where they do, the correction stays a line, the
+//! certificate says so, and the largest departure from it widens the
+//! uncertainty: a correction that the sink's limits and the wire can carry is
+//! worth more than a curve nobody can invert in an interlock.
+//!
+//! Invariants:
+//! - A certificate holds every input it was computed from. Reading one computes
+//!   it again and refuses it if the corrections do not follow from its points.
+//! - No point is dropped. One that lies far off is named.
+//!
+//! What it deliberately does not do: it reads no clock (dates are inputs) and
+//! drives no sink.
+
+mod channel;
+mod meter;
+mod verify;
+
+use quantity::{Current, Temperature, TemperatureCoefficient, Text, Textual, Voltage};
+use serde::{Deserialize, Serialize};
+
+use crate::correction::{Correction, LineError};
+use crate::regression::RegressionError;
+
+pub use channel::{Channel, ChannelSummary, SecondOrder};
+pub use meter::ReferenceMeter;
+pub use verify::{Verification, VerificationPoint, verify};
+
+/// Fewest points of a channel: below it the residuals say nothing.
+pub const POINTS_MIN: usize = 5;
+/// The version of the certificate's form.
+pub const FORM: u32 = 1;
+
+/// Everything that was measured and stated for a calibration.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Measurements {
+    /// The certificate's identity, such as `weir-left-2026-12`.
+    pub identity: String,
+    /// The sink's name on its bench.
+    pub sink: String,
+    /// The serial number its firmware states.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub serial_number: Option<u32>,
+    /// Who did it.
+    pub operator: String,
+    /// When it was done, in seconds since 1970-01-01T00:00:00Z.
+    pub issued_unix_s: i64,
+    /// Until when it holds, likewise.
+    pub valid_until_unix_s: i64,
+    /// Ambient temperature at the time.
+    #[serde(with = "quantity::text")]
+    pub ambient: Temperature,
+    /// By how many kelvins the sense resistor may be warmer or cooler in use
+    /// than at the calibration.
+    pub temperature_spread_k: f64,
+    /// The sense resistor's temperature coefficient.
+    #[serde(with = "quantity::text")]
+    pub temperature_coefficient: TemperatureCoefficient,
+    /// The step of the converter that sets.
+    #[serde(with = "quantity::text")]
+    pub set_step: Current,
+    /// The step of the current readback.
+    #[serde(with = "quantity::text")]
+    pub current_step: Current,
+    /// The step of the voltage readback.
+    #[serde(with = "quantity::text")]
+    pub voltage_step: Voltage,
+    /// The meter that measured the current.
+    pub current_meter: ReferenceMeter<Current>,
+    /// The meter that measured the voltage.
+    pub voltage_meter: ReferenceMeter<Voltage>,
+    /// The current points.
+    pub current_points: Vec<CurrentPoint>,
+    /// The voltage points.
+    pub voltage_points: Vec<VoltagePoint>,
+}
+
+/// One setpoint, what the meter read and what the sink read.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct CurrentPoint {
+    /// The nominal setpoint.
+    #[serde(with = "quantity::text")]
+    pub setpoint: Current,
+    /// The reference meter's readings.
+    pub reference: Vec<Text<Current>>,
+    /// The sink's nominal readbacks.
+    pub readback: Vec<Text<Current>>,
+}
+
+/// One voltage, what the meter read and what the sink read.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct VoltagePoint {
+    /// The reference meter's readings.
+    pub reference: Vec<Text<Voltage>>,
+    /// The sink's nominal readbacks.
+    pub readback: Vec<Text<Voltage>>,
+}
+
+/// A calibration certificate.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Certificate {
+    /// The version of this form.
+    pub form: u32,
+    /// What it was computed from.
+    pub measurements: Measurements,
+    /// What it corrects.
+    pub correction: Correction,
+    /// The line of the current that is set, micro-units.
+    pub current_set: ChannelSummary,
+    /// The line of the current readback, micro-units.
+    pub current_read: ChannelSummary,
+    /// The line of the voltage readback, micro-units.
+    pub voltage_read: ChannelSummary,
+}
+
+/// The fitted channels of a certificate, for budgets at any reading.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Channels {
+    /// The current that is set.
+    pub current_set: Channel,
+    /// The current readback.
+    pub current_read: Channel,
+    /// The voltage readback.
+    pub voltage_read: Channel,
+}
+
+/// A calibration that gives no certificate.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+pub enum CalibrationError {
+    /// Fewer points than a line and its residuals need.
+    #[error("{channel}: {points} points; take at least {POINTS_MIN}, spread over the range")]
+    TooFewPoints {
+        /// Which line.
+        channel: &'static str,
+        /// Points given.
+        points: usize,
+    },
+    /// A point without a reading.
+    #[error("{channel}: point {index} has no reading; measure it or leave it out")]
+    NoReading {
+        /// Which line.
+        channel: &'static str,
+        /// Which point, from 1.
+        index: usize,
+    },
+    /// A point above the meter's range.
+    #[error(
+        "{channel}: point {index} reads {reading}, above the meter's range of {range}; use a higher range"
+    )]
+    BeyondRange {
+        /// Which line.
+        channel: &'static str,
+        /// Which point, from 1.
+        index: usize,
+        /// What the meter read.
+        reading: String,
+        /// Its range.
+        range: String,
+    },
+    /// A stated figure that cannot be.
+    #[error("{what} is not a finite number of zero or more; correct it")]
+    Stated {
+        /// Which figure.
+        what: &'static str,
+    },
+    /// A step or resolution of zero.
+    #[error(
+        "{channel}: the converter's step and the meter's resolution are not above zero; state them"
+    )]
+    NoResolution {
+        /// Which line.
+        channel: &'static str,
+    },
+    /// A validity that ends before it begins.
+    #[error("the certificate would end before it begins; correct its dates")]
+    Dates,
+    /// A line that cannot be fitted.
+    #[error("{channel}: {cause}")]
+    Fit {
+        /// Which line.
+        channel: &'static str,
+        /// Why.
+        cause: RegressionError,
+    },
+    /// A line that no working sink has.
+    #[error("{channel}: {cause}")]
+    Line {
+        /// Which line.
+        channel: &'static str,
+        /// Why.
+        cause: LineError,
+    },
+}
+
+/// A certificate file that cannot be used.
+#[derive(Debug, thiserror::Error)]
+pub enum CertificateError {
+    /// No certificate in JSON.
+    #[error("no certificate: {0}; calibrate the sink or restore the file")]
+    Json(#[from] serde_json::Error),
+    /// A form of another version.
+    #[error(
+        "the certificate has form {found}, but form {FORM} is known; use the version that wrote it"
+    )]
+    Form {
+        /// The form found.
+        found: u32,
+    },
+    /// Its own measurements give no certificate.
+    #[error("the certificate cannot be computed again: {0}")]
+    Measurements(#[from] CalibrationError),
+    /// Its corrections are not those that follow from its measurements.
+    #[error(
+        "the certificate's corrections do not follow from its points: the file was altered; \
+         restore it or calibrate again"
+    )]
+    Altered,
+}
+
+/// Whether a certificate holds at a time.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Validity {
+    /// It was issued later.
+    NotYet,
+    /// It holds.
+    Valid,
+    /// It has ended.
+    Expired,
+}
+
+/// Computes a certificate.
+///
+/// # Errors
+/// [`CalibrationError`] with the point or figure that prevents it.
+pub fn calibrate(measurements: Measurements) -> Result<Certificate, CalibrationError> {
+    if measurements.valid_until_unix_s <= measurements.issued_unix_s {
+        return Err(CalibrationError::Dates);
+    }
+    let channels = Channels::of(&measurements)?;
+    Ok(Certificate {
+        form: FORM,
+        correction: Correction {
+            current_set: channels.current_set.line()?,
+            current_read: channels.current_read.line()?,
+            voltage_read: channels.voltage_read.line()?,
+        },
+        current_set: channels.current_set.summary(),
+        current_read: channels.current_read.summary(),
+        voltage_read: channels.voltage_read.summary(),
+        measurements,
+    })
+}
+
+impl Channels {
+    /// Fits the three lines.
+    ///
+    /// # Errors
+    /// As [`calibrate`].
+    pub fn of(measurements: &Measurements) -> Result<Self, CalibrationError> {
+        let spread = measurements.temperature_spread_k;
+        if !(spread.is_finite() && spread >= 0.0) {
+            return Err(CalibrationError::Stated {
+                what: "temperature_spread_k",
+            });
+        }
+        let drift = spread
+            * measurements
+                .temperature_coefficient
+                .fraction_per_kelvin()
+                .abs();
+        let setpoints: Vec<[Text<Current>; 1]> = measurements
+            .current_points
+            .iter()
+            .map(|point| [Text(point.setpoint)])
+            .collect();
+        let set = setpoints
+            .iter()
+            .zip(&measurements.current_points)
+            .map(|(setpoint, point)| (setpoint.as_slice(), point.reference.as_slice()));
+        let read = measurements
+            .current_points
+            .iter()
+            .map(|point| (point.readback.as_slice(), point.reference.as_slice()));
+        let voltage = measurements
+            .voltage_points
+            .iter()
+            .map(|point| (point.readback.as_slice(), point.reference.as_slice()));
+        let current_meter = &measurements.current_meter;
+        Ok(Self {
+            current_set: Channel::fit(
+                "current set",
+                &set.collect::<Vec<_>>(),
+                current_meter,
+                measurements.set_step,
+                drift,
+            )?,
+            current_read: Channel::fit(
+                "current read",
+                &read.collect::<Vec<_>>(),
+                current_meter,
+                measurements.current_step,
+                drift,
+            )?,
+            // The voltage does not pass through the sense resistor.
+            voltage_read: Channel::fit(
+                "voltage read",
+                &voltage.collect::<Vec<_>>(),
+                &measurements.voltage_meter,
+                measurements.voltage_step,
+                0.0,
+            )?,
+        })
+    }
+}
+
+impl Certificate {
+    /// Reads a certificate and computes it again from its own points.
+    ///
+    /// # Errors
+    /// [`CertificateError`] for what is no certificate, or one whose
+    /// corrections do not follow from its points.
+    pub fn from_json(text: &str) -> Result<Self, CertificateError> {
+        let certificate: Self = serde_json::from_str(text)?;
+        if certificate.form != FORM {
+            return Err(CertificateError::Form {
+                found: certificate.form,
+            });
+        }
+        let again = calibrate(certificate.measurements.clone())?;
+        if !same_but_for_rounding(&again.correction, &certificate.correction) {
+            return Err(CertificateError::Altered);
+        }
+        // The summaries are printed and not decided on, and their last digit
+        // may differ between machines: they are computed anew. The correction
+        // is the file's own, so that a replay elsewhere gives the same orders.
+        Ok(Self {
+            correction: certificate.correction,
+            ..again
+        })
+    }
+
+    /// The certificate as it is written to its file.
+    ///
+    /// # Errors
+    /// Those of the serialiser: none for a certificate of [`calibrate`].
+    pub fn to_json(&self) -> Result<String, serde_json::Error> {
+        serde_json::to_string_pretty(self)
+    }
+
+    /// The fitted channels, for budgets.
+    ///
+    /// # Errors
+    /// As [`calibrate`]; none for a certificate that came from it.
+    pub fn channels(&self) -> Result<Channels, CalibrationError> {
+        Channels::of(&self.measurements)
+    }
+
+    /// Whether it holds at a time.
+    pub const fn validity(&self, at_unix_s: i64) -> Validity {
+        if at_unix_s < self.measurements.issued_unix_s {
+            Validity::NotYet
+        } else if at_unix_s > self.measurements.valid_until_unix_s {
+            Validity::Expired
+        } else {
+            Validity::Valid
+        }
+    }
+
+    /// Whether it holds for the whole of a run.
+    pub fn covers(&self, from_unix_s: i64, to_unix_s: i64) -> bool {
+        self.validity(from_unix_s) == Validity::Valid && self.validity(to_unix_s) == Validity::Valid
+    }
+}
+
+/// Whether two corrections differ by no more than the rounding of a float's
+/// last digit on another machine could make: one unit.
+fn same_but_for_rounding(one: &Correction, other: &Correction) -> bool {
+    let pairs = [
+        (one.current_set, other.current_set),
+        (one.current_read, other.current_read),
+        (one.voltage_read, other.voltage_read),
+    ];
+    pairs.iter().all(|(one, other)| {
+        one.offset().abs_diff(other.offset()) <= 1 && one.gain_ppb().abs_diff(other.gain_ppb()) <= 1
+    })
+}
+
+/// A quantity counted in micro-units (µA, µV) as a float.
+#[expect(
+    clippy::cast_precision_loss,
+    reason = "readings are below 2^53 micro-units"
+)]
+fn micro<T: Textual + quantity::Quantity>(value: T) -> f64 {
+    value.base_units() as f64
+}
+
+#[cfg(test)]
+mod tests;

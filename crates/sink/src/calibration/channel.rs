@@ -1,0 +1,338 @@
+//! One line of a certificate: its fit, its test for straightness, its budget.
+//!
+//! Values are in micro-units (µA or µV) throughout.
+
+use quantity::{Quantity, Text, Textual};
+use serde::{Deserialize, Serialize};
+
+use super::{CalibrationError, POINTS_MIN, ReferenceMeter, micro};
+use crate::accumulate::{Moments, count};
+use crate::correction::Line;
+use crate::regression::{Fit, Form, Point, Weights, f_test, fit};
+use crate::uncertainty::{Budget, Contribution, DegreesOfFreedom, Evaluation, of_resolution};
+
+/// The F-test's level below which a line is not straight enough.
+const STRAIGHTNESS_LEVEL: f64 = 0.01;
+/// A residual of more than this many standard uncertainties is named.
+const OUTLIER_BEYOND: f64 = 3.5;
+/// Where a departure from the line is looked for: this many places.
+const PLACES: u16 = 64;
+
+/// One fitted line with all that its uncertainty needs.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Channel {
+    name: &'static str,
+    fit: Fit,
+    /// The points' own standard uncertainties.
+    point_uncertainties: Vec<f64>,
+    range: (f64, f64),
+    second_order: SecondOrder,
+    /// Stated accuracy of the meter: constant part and part of the reading.
+    meter: (f64, f64),
+    step: f64,
+    /// Relative change with the sense resistor's temperature, half-width.
+    drift: f64,
+}
+
+/// Whether a second-order term is demanded by the residuals: the extra
+/// sum-of-squares F-test against the straight line, at a level of 1 %.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct SecondOrder {
+    /// The F ratio.
+    pub ratio: f64,
+    /// How likely it is if the line is straight.
+    pub probability: f64,
+    /// Whether the level is fallen below.
+    pub demanded: bool,
+    /// Largest departure of the second-order curve from the line over the
+    /// range, micro-units; widens the uncertainty if demanded.
+    pub departure_micro: f64,
+}
+
+/// What a certificate shows of a line; micro-units.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct ChannelSummary {
+    /// True value at nominal zero.
+    pub offset_micro: f64,
+    /// Its standard uncertainty from the fit.
+    pub offset_uncertainty_micro: f64,
+    /// Slope of true against nominal values.
+    pub slope: f64,
+    /// Its standard uncertainty from the fit.
+    pub slope_uncertainty: f64,
+    /// Correlation coefficient of offset and slope.
+    pub correlation: f64,
+    /// Degrees of freedom of the fit.
+    pub degrees_of_freedom: DegreesOfFreedom,
+    /// Observed minus fitted, in the points' order.
+    pub residuals_micro: Vec<f64>,
+    /// Points (from 1) whose residual is larger than their own uncertainty
+    /// lets expect; none is dropped.
+    pub outliers: Vec<usize>,
+    /// Smallest and largest nominal value of the points: the line is not
+    /// vouched for beyond.
+    pub range_micro: [f64; 2],
+    /// The test for straightness.
+    pub second_order: SecondOrder,
+}
+
+/// Nominal readings and reference readings of one point.
+type Readings<'a, T> = (&'a [Text<T>], &'a [Text<T>]);
+
+impl Channel {
+    pub(super) fn fit<T: Textual + Quantity + Ord>(
+        name: &'static str,
+        readings: &[Readings<'_, T>],
+        meter: &ReferenceMeter<T>,
+        step: T,
+        drift: f64,
+    ) -> Result<Self, CalibrationError> {
+        if readings.len() < POINTS_MIN {
+            return Err(CalibrationError::TooFewPoints {
+                channel: name,
+                points: readings.len(),
+            });
+        }
+        if !meter.is_sound() {
+            return Err(CalibrationError::Stated {
+                what: "the reference meter's accuracy",
+            });
+        }
+        let step = micro(step);
+        if step <= 0.0 || meter.resolution.base_units() <= 0 {
+            return Err(CalibrationError::NoResolution { channel: name });
+        }
+        let resolution = of_resolution(step).hypot(meter.resolution_uncertainty());
+        let repeatability = Repeatability {
+            resolution,
+            nominal: pooled_deviation(readings.iter().map(|(nominal, _)| *nominal)),
+            reference: pooled_deviation(readings.iter().map(|(_, reference)| *reference)),
+        };
+        let points = readings
+            .iter()
+            .enumerate()
+            .map(|(index, readings)| point(name, index + 1, *readings, meter, &repeatability))
+            .collect::<Result<Vec<Point>, _>>()?;
+        let failed = |cause| CalibrationError::Fit {
+            channel: name,
+            cause,
+        };
+        let line = fit(&points, Form::Polynomial(1), Weights::Known).map_err(failed)?;
+        let range = points
+            .iter()
+            .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), point| {
+                (low.min(point.x), high.max(point.x))
+            });
+        let second_order = second_order(&points, &line, range);
+        Ok(Self {
+            name,
+            fit: line,
+            point_uncertainties: points.iter().map(|point| point.u).collect(),
+            range,
+            second_order,
+            meter: (
+                meter.accuracy(0.0),
+                meter.accuracy(1e6) - meter.accuracy(0.0),
+            ),
+            step,
+            drift,
+        })
+    }
+
+    /// The line as the correction holds it.
+    pub(super) fn line(&self) -> Result<Line, CalibrationError> {
+        let (coefficients, _) = self.fit.coefficients_about(0.0);
+        let [offset, slope] = coefficients[..] else {
+            return Err(CalibrationError::TooFewPoints {
+                channel: self.name,
+                points: 0,
+            });
+        };
+        Line::new(rounded(offset), rounded((slope - 1.0) * 1e9)).map_err(|cause| {
+            CalibrationError::Line {
+                channel: self.name,
+                cause,
+            }
+        })
+    }
+
+    /// What a certificate shows.
+    pub fn summary(&self) -> ChannelSummary {
+        let (coefficients, covariance) = self.fit.coefficients_about(0.0);
+        let at = |row: usize, column: usize| covariance.get((row, column)).copied().unwrap_or(0.0);
+        let (u_offset, u_slope) = (at(0, 0).max(0.0).sqrt(), at(1, 1).max(0.0).sqrt());
+        let residuals = self.fit.residuals().to_vec();
+        let outliers = residuals
+            .iter()
+            .zip(&self.point_uncertainties)
+            .enumerate()
+            .filter(|(_, (residual, u))| residual.abs() > OUTLIER_BEYOND * **u)
+            .map(|(index, _)| index + 1)
+            .collect();
+        ChannelSummary {
+            offset_micro: coefficients.first().copied().unwrap_or(0.0),
+            offset_uncertainty_micro: u_offset,
+            slope: coefficients.get(1).copied().unwrap_or(1.0),
+            slope_uncertainty: u_slope,
+            correlation: at(0, 1) / (u_offset * u_slope),
+            degrees_of_freedom: self.fit.degrees_of_freedom(),
+            residuals_micro: residuals,
+            outliers,
+            range_micro: [self.range.0, self.range.1],
+            second_order: self.second_order,
+        }
+    }
+
+    /// The uncertainty budget of a true value got from one nominal value, in
+    /// micro-units.
+    pub fn budget(&self, nominal_micro: f64) -> Budget {
+        let predicted = self.fit.predict(nominal_micro);
+        let (constant, per_million) = self.meter;
+        let infinite = DegreesOfFreedom::INFINITE;
+        let stated = |name: &str, u: f64| Contribution::new(name, Evaluation::TypeB, u, infinite);
+        let mut lines = vec![
+            Contribution::new(
+                "fit (offset and slope, correlated)",
+                Evaluation::TypeA,
+                predicted.standard_uncertainty,
+                predicted.degrees_of_freedom,
+            ),
+            stated(
+                "reference meter",
+                constant + per_million * predicted.value.abs() / 1e6,
+            ),
+            stated("converter's resolution", of_resolution(self.step)),
+        ];
+        if self.drift > 0.0 {
+            lines.push(stated(
+                "sense resistor's temperature",
+                self.drift * predicted.value.abs() / 3_f64.sqrt(),
+            ));
+        }
+        if self.second_order.demanded {
+            lines.push(stated(
+                "departure from a straight line",
+                self.second_order.departure_micro / 3_f64.sqrt(),
+            ));
+        }
+        Budget::new(lines)
+    }
+
+    /// Whether a nominal value lies within the calibrated range.
+    pub fn vouches_for(&self, nominal_micro: f64) -> bool {
+        (self.range.0..=self.range.1).contains(&nominal_micro)
+    }
+}
+
+/// A point of the fit: nominal mean, reference mean, and the standard
+/// uncertainty of what differs from point to point.
+fn point<T: Textual + Quantity + Ord>(
+    channel: &'static str,
+    index: usize,
+    (nominal, reference): Readings<'_, T>,
+    meter: &ReferenceMeter<T>,
+    repeatability: &Repeatability,
+) -> Result<Point, CalibrationError> {
+    if let Some(beyond) = reference
+        .iter()
+        .find(|reading| reading.0.base_units().abs() > meter.range.base_units())
+    {
+        return Err(CalibrationError::BeyondRange {
+            channel,
+            index,
+            reading: beyond.to_string(),
+            range: meter.range.to_string(),
+        });
+    }
+    let (x, y) = (moments(nominal), moments(reference));
+    let (Some(x_mean), Some(y_mean)) = (x.mean(), y.mean()) else {
+        return Err(CalibrationError::NoReading { channel, index });
+    };
+    let of_mean = |deviation: f64, moments: &Moments| deviation / count(moments.number()).sqrt();
+    Ok(Point {
+        x: x_mean,
+        y: y_mean,
+        u: repeatability
+            .resolution
+            .hypot(of_mean(repeatability.nominal, &x))
+            .hypot(of_mean(repeatability.reference, &y)),
+    })
+}
+
+/// What differs from point to point, micro-units.
+struct Repeatability {
+    /// Standard uncertainty of both resolutions together.
+    resolution: f64,
+    /// Standard deviation of one nominal reading.
+    nominal: f64,
+    /// Standard deviation of one reference reading.
+    reference: f64,
+}
+
+/// The standard deviation of one reading, pooled over the points (JCGM 100
+/// 4.2.4); 0 if no point has two readings.
+///
+/// Pooled, because weights from the few readings of each point would be so
+/// uncertain themselves that the fit's intervals covered too little.
+fn pooled_deviation<'a, T: Textual + Quantity + 'a>(
+    points: impl Iterator<Item = &'a [Text<T>]>,
+) -> f64 {
+    let (squares, freedom) = points
+        .map(moments)
+        .fold((0.0, 0.0), |(squares, freedom), point| {
+            match point.standard_deviation() {
+                Some(deviation) => {
+                    let own = count(point.number() - 1);
+                    (squares + deviation * deviation * own, freedom + own)
+                }
+                None => (squares, freedom),
+            }
+        });
+    if freedom > 0.0 {
+        f64::sqrt(squares / freedom)
+    } else {
+        0.0
+    }
+}
+
+fn moments<T: Textual + Quantity>(readings: &[Text<T>]) -> Moments {
+    readings.iter().map(|reading| micro(reading.0)).collect()
+}
+
+fn second_order(points: &[Point], line: &Fit, (low, high): (f64, f64)) -> SecondOrder {
+    let straight = SecondOrder {
+        ratio: 0.0,
+        probability: 1.0,
+        demanded: false,
+        departure_micro: 0.0,
+    };
+    // Points at only two abscissas cannot show a bend.
+    let Ok(curve) = fit(points, Form::Polynomial(2), Weights::Known) else {
+        return straight;
+    };
+    let Some(test) = f_test(line, &curve) else {
+        return straight;
+    };
+    let departure = (0..=PLACES)
+        .map(|place| low + (high - low) * f64::from(place) / f64::from(PLACES))
+        .map(|x| (curve.value(x) - line.value(x)).abs())
+        .fold(0.0, f64::max);
+    SecondOrder {
+        ratio: test.ratio,
+        probability: test.probability,
+        demanded: test.probability < STRAIGHTNESS_LEVEL,
+        departure_micro: departure,
+    }
+}
+
+/// To the nearest whole number; a float cast holds at the ends, and a gain
+/// there is refused by the line.
+#[expect(
+    clippy::cast_possible_truncation,
+    reason = "the cast saturates, and the line refuses what is out of bounds"
+)]
+const fn rounded(value: f64) -> i64 {
+    value.round() as i64
+}

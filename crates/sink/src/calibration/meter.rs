@@ -1,0 +1,58 @@
+//! The reference meter and its stated accuracy.
+
+use quantity::{Quantity, Ratio, Textual};
+use serde::{Deserialize, Serialize};
+
+use super::micro;
+use crate::uncertainty::{Stated, of_resolution};
+
+/// A reference meter on one range, as its own certificate or data sheet states
+/// it.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, bound = "T: Textual")]
+pub struct ReferenceMeter<T> {
+    /// Maker, model and serial number.
+    pub identity: String,
+    /// The range used.
+    #[serde(with = "quantity::text")]
+    pub range: T,
+    /// Accuracy: this share of the reading...
+    pub of_reading: quantity::Text<Ratio>,
+    /// ...plus this share of the range.
+    pub of_range: quantity::Text<Ratio>,
+    /// What the stated accuracy means.
+    pub stated: Stated,
+    /// Its resolution on this range.
+    #[serde(with = "quantity::text")]
+    pub resolution: T,
+}
+
+impl<T: Textual + Quantity> ReferenceMeter<T> {
+    /// The standard uncertainty of its stated accuracy at a reading, in
+    /// micro-units. Common to all readings of one meter, so it belongs beside a
+    /// fit and not into its weights.
+    pub fn accuracy(&self, reading_micro: f64) -> f64 {
+        let bound = self.of_reading.0.fraction() * reading_micro.abs()
+            + self.of_range.0.fraction() * micro(self.range).abs();
+        self.stated.standard_uncertainty(bound)
+    }
+
+    /// The standard uncertainty of its resolution, in micro-units.
+    pub fn resolution_uncertainty(&self) -> f64 {
+        of_resolution(micro(self.resolution))
+    }
+
+    /// Whether the stated figures make sense.
+    pub(super) fn is_sound(&self) -> bool {
+        let factor = match self.stated {
+            Stated::Normal { coverage_factor } => {
+                coverage_factor.is_finite() && coverage_factor > 0.0
+            }
+            Stated::Rectangular | Stated::Triangular | Stated::ArcSine => true,
+        };
+        factor
+            && self.of_reading.0.parts_per_million() >= 0
+            && self.of_range.0.parts_per_million() >= 0
+            && self.range.base_units() > 0
+    }
+}
