@@ -1,0 +1,153 @@
+//! From a request to a run: compile, create the record, hand over to the worker.
+//!
+//! All of it works on the disk or on megabytes of text, so none of it runs on a thread that
+//! answers others.
+
+use std::sync::Arc;
+
+use journal::{ClockKind, Disk, FORMAT, Manifest, Options, Storage as _, Writer};
+use sequence::{Compiled, compile_with};
+use sequencer::Sequencer;
+use tokio::sync::oneshot;
+use uuid::Uuid;
+
+use crate::app::App;
+use crate::records::folder_name;
+use crate::sinks::SinkHandle;
+use crate::view::{Code, Problem, RunView, SequenceRequest, StateWord, rfc3339};
+use crate::worker::{Answer, Ask, Begin};
+
+/// Compiles a sequence for a sink as it is now.
+///
+/// # Errors
+/// [`Code::SequenceRefused`] with every finding.
+pub(crate) fn check(
+    app: &App,
+    sink: &SinkHandle,
+    request: &SequenceRequest,
+) -> Result<Compiled, Problem> {
+    let options = sequence::Options {
+        dut_label: request.dut.clone(),
+        correction: sink.correction,
+        disk_free_bytes: free_bytes(app),
+        ..sequence::Options::default()
+    };
+    compile_with(&request.sequence.0, &sink.facts(), &request.files, &options).map_err(|refused| {
+        let (errors, warnings) = refused.0.count();
+        let detail = format!(
+            "the sequence is refused for sink `{}`: {errors} errors, {warnings} warnings",
+            sink.name()
+        );
+        Problem::new(Code::SequenceRefused, detail).with_findings(refused.0.list)
+    })
+}
+
+/// Free space for records; `None` where the platform cannot say.
+fn free_bytes(app: &App) -> Option<u64> {
+    Disk.free_bytes(app.records.folder()).ok().flatten()
+}
+
+/// Whether a run could begin on a sink; why not, otherwise.
+pub(crate) fn is_ready(sink: &SinkHandle) -> Result<(), Problem> {
+    let view = sink.view();
+    let name = sink.name();
+    if view.description.is_none() && view.run.is_none() {
+        let reason = view
+            .link
+            .reason
+            .map_or_else(String::new, |why| format!(": {why}"));
+        let detail = format!("no session stands with sink `{name}`{reason}; connect it first");
+        return Err(Problem::new(Code::SinkNotConnected, detail));
+    }
+    let reading = view
+        .reading
+        .filter(|reading| reading.state == StateWord::Latched);
+    if let (Some(reading), None) = (reading, &view.run) {
+        let cause = reading.latched_by.map_or_else(String::new, |cause| {
+            format!(" ({})", crate::metrics::word(&cause))
+        });
+        let detail = format!(
+            "sink `{name}` has latched{cause}; see to the cause, then POST /v1/sinks/{name}/reset"
+        );
+        return Err(Problem::new(Code::SinkLatched, detail));
+    }
+    Ok(())
+}
+
+/// Starts a run under an id: the way to its first view, or why it cannot be.
+///
+/// # Errors
+/// What the check refuses, a busy sink, a record that cannot be created.
+pub(crate) fn start(
+    app: &App,
+    sink: &SinkHandle,
+    request: &SequenceRequest,
+    id: Uuid,
+) -> Result<oneshot::Receiver<Result<RunView, String>>, Problem> {
+    let name = sink.name();
+    let Some(reservation) = sink.reserve() else {
+        let detail = format!("a run is in progress on sink `{name}`; stop it, or wait for its end");
+        return Err(Problem::new(Code::SinkBusy, detail));
+    };
+    let compiled = check(app, sink, request)?;
+    let plan = Arc::new(compiled.plan);
+    let sequencer = Sequencer::new(Arc::clone(&plan)).map_err(|error| {
+        Problem::new(
+            Code::SequenceRefused,
+            format!("the plan cannot be run: {error}"),
+        )
+    })?;
+    let folder = folder_name(app.clock.now(), name, &plan.dut.label, id);
+    let manifest = manifest(app, sink, request, &plan, id);
+    let path = app.records.path(&folder);
+    let writer = Writer::create(&path, manifest, Options::default()).map_err(|error| {
+        let detail = format!("the record of the run cannot be written: {error}");
+        Problem::new(Code::RecordNotBegun, detail)
+    })?;
+    let (answer, answered): (Answer<Result<RunView, String>>, _) = oneshot::channel();
+    let begin = Begin {
+        id,
+        folder,
+        plan,
+        sequencer,
+        writer,
+        resumed: None,
+        reservation,
+        answer: Some(answer),
+    };
+    sink.give(Ask::Begin(Box::new(begin)))?;
+    Ok(answered)
+}
+
+fn manifest(
+    app: &App,
+    sink: &SinkHandle,
+    request: &SequenceRequest,
+    plan: &sequence::plan::Plan,
+    id: Uuid,
+) -> Manifest {
+    let clock = if sink.entry.link.is_simulated() {
+        ClockKind::TimeLapse
+    } else {
+        ClockKind::Real
+    };
+    Manifest {
+        format: FORMAT,
+        record: id.to_string(),
+        created: rfc3339(sink.now()),
+        host: app.host.clone(),
+        software: app.software.clone(),
+        sink: sink.name().to_owned(),
+        clock,
+        bench: serde_json::to_value(&sink.entry).unwrap_or_default(),
+        sequence: journal::SequenceText {
+            text: request.sequence.0.clone(),
+            files: request.files.clone(),
+        },
+        plan: plan.clone(),
+        certificate: sink.certificate.clone(),
+        description: sink.snapshot.borrow().description,
+        resumed: Vec::new(),
+        ended: None,
+    }
+}
