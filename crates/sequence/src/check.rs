@@ -2,11 +2,12 @@
 //!
 //! Rules on the draft judge step by step and run even when other parts could not be read, so
 //! that one answer has all findings. Rules on the plan need the whole of it and run only when
-//! nothing has refused the sequence yet. A further rule (the envelope at the worst source
-//! voltage, a certificate valid for the whole run) is a function and a line in a table.
+//! nothing has refused the sequence yet. A further rule (a certificate valid for the whole
+//! run) is a function and a line in a table.
 
 mod burst;
 mod dut;
+mod envelope;
 mod flow;
 mod interlock;
 mod port;
@@ -68,6 +69,7 @@ const DRAFT_RULES: &[DraftRule] = &[
     target::within_sink,
     target::within_dut,
     target::power_within_sink,
+    envelope::holds,
     target::above_floor,
     target::fine_enough,
     burst::fits,
@@ -93,6 +95,7 @@ const PLAN_RULES: &[PlanRule] = &[
     record::fits_disk,
     record::charge_within_rated,
     record::limits_within_reach,
+    record::limits_leave_room,
 ];
 
 /// Every finding of the rules on the draft.

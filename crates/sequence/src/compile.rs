@@ -19,8 +19,6 @@ use crate::shape::{Shape, judge};
 const TEXT_BYTES_MAX: usize = 8_000_000;
 /// Most instructions of a plan.
 const OPS_MAX: usize = 200_000;
-/// Most findings in one answer; a wrong profile could have a hundred thousand.
-const FINDINGS_MAX: usize = 200;
 
 /// What the caller knows beside the sequence and the sink.
 #[derive(Debug, Clone, PartialEq, Eq)]
@@ -101,7 +99,6 @@ pub fn compile_with(
         .as_ref()
         .and_then(|root| plan(root, facts, files, options, &mut findings));
     findings.settle(&source, root.as_ref());
-    findings.list.truncate(FINDINGS_MAX);
     match plan {
         Some(plan) if !findings.refuse() => Ok(Compiled {
             plan,

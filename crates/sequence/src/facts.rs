@@ -7,11 +7,13 @@
 use quantity::{Charge, Current, Energy, Power, Quantity, Span, Temperature, Voltage};
 use sink::bench::{Codes, InterlockDefaults, Link, SinkEntry};
 use sink::correction::Correction;
+use sink::envelope::Envelope;
+use sink::leads::LeadsError;
 
 use crate::plan::{Armed, Interlocks, Ranges};
 
 /// What the compiler and the rules know of a sink.
-#[derive(Debug, Clone, PartialEq, Eq)]
+#[derive(Debug, Clone, PartialEq)]
 pub struct Facts {
     /// Its name on the bench.
     pub name: String,
@@ -49,6 +51,8 @@ pub struct Facts {
     pub deadman: Span,
     /// The bench's interlocks for it.
     pub interlocks: Thresholds,
+    /// What it can do at each source voltage, or why that cannot be worked out.
+    pub envelope: Result<Envelope, LeadsError>,
     /// Nominal from true values and back.
     pub correction: Correction,
 }
@@ -101,6 +105,7 @@ impl Facts {
             },
             deadman: entry.deadman,
             interlocks: Thresholds::of(&entry.interlocks),
+            envelope: Envelope::of(entry),
             correction,
         }
     }

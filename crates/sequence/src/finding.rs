@@ -127,12 +127,19 @@ impl Finding {
     }
 }
 
+/// Most errors, and most warnings, in one answer: a profile of a hundred thousand bare numbers
+/// would otherwise be as many findings.
+const MOST: usize = 200;
+
 /// All that a check found, in the order of the text.
 #[derive(Debug, Clone, PartialEq, Eq, Default, Serialize, Deserialize, schemars::JsonSchema)]
 #[serde(transparent)]
 pub struct Findings {
     /// The findings.
     pub list: Vec<Finding>,
+    /// How many errors and warnings did not fit.
+    #[serde(skip)]
+    omitted: (usize, usize),
 }
 
 impl Findings {
@@ -157,6 +164,32 @@ impl Findings {
     }
 
     pub(crate) fn push(&mut self, finding: Finding) {
+        let (errors, warnings) = self.count();
+        if finding.is_error() && errors >= MOST {
+            self.omitted.0 += 1;
+        } else if !finding.is_error() && warnings >= MOST {
+            self.omitted.1 += 1;
+        } else {
+            self.list.push(finding);
+        }
+    }
+
+    /// Says how many findings did not fit, as a finding of its own.
+    fn tell_omitted(&mut self) {
+        let (errors, warnings) = std::mem::take(&mut self.omitted);
+        if errors + warnings == 0 {
+            return;
+        }
+        let mut finding = Finding::new(
+            Rule::TooLarge,
+            "",
+            format!("{errors} more errors and {warnings} more warnings are not shown"),
+            "mend the ones that are shown first",
+        );
+        // Errors that do not fit were preceded by errors that do; warnings alone refuse nothing.
+        if errors == 0 {
+            finding.severity = Severity::Warning;
+        }
         self.list.push(finding);
     }
 
@@ -167,10 +200,11 @@ impl Findings {
                 finding.locate(source, root);
             }
         }
+        self.tell_omitted();
         self.list.sort_by_key(|finding| {
             let place = finding.place.as_ref();
             (
-                place.map_or((0, 0), |place| (place.line, place.column)),
+                place.map_or((u32::MAX, 0), |place| (place.line, place.column)),
                 finding.rule,
             )
         });

@@ -4,7 +4,7 @@
 //! turns labels into places. Judges nothing: a draft that cannot be lowered was refused before,
 //! and `None` here is a broken invariant of the check.
 
-use std::collections::BTreeSet;
+use std::collections::{BTreeMap, BTreeSet};
 
 use quantity::{Current, Span};
 
@@ -26,10 +26,15 @@ pub(crate) fn lower(
 ) -> Option<Plan> {
     let mut labels = Vec::new();
     draft.each_step(&mut |step| labels.extend(step.label.clone()));
+    let mut indices = BTreeMap::new();
+    for (index, label) in labels.iter().enumerate() {
+        indices.insert(label.clone(), u32::try_from(index).ok()?);
+    }
     let mut writer = Writer {
         tick: facts.tick,
         places: vec![0; labels.len()],
         labels,
+        indices,
         targets: draft.skip_targets(),
         ops: Vec::new(),
         // Before its first step a sink is off.
@@ -70,6 +75,7 @@ pub(crate) fn lower(
 struct Writer<'a> {
     tick: Span,
     labels: Vec<String>,
+    indices: BTreeMap<String, u32>,
     /// The labels that some skip goes to.
     targets: BTreeSet<&'a str>,
     /// Where each label's first instruction is.
@@ -112,8 +118,7 @@ impl Writer<'_> {
     }
 
     fn label_index(&self, label: &str) -> Option<u32> {
-        let index = self.labels.iter().position(|known| known == label)?;
-        u32::try_from(index).ok()
+        self.indices.get(label).copied()
     }
 
     fn steps(&mut self, steps: &[StepDraft]) -> Option<()> {

@@ -145,6 +145,8 @@ rules! {
         "No step draws more current than the maker of the DUT allows, at any of its voltages."
     PowerAboveSink "power-above-sink" Error
         "No step puts more power into the sink than it may take, at the DUT's largest voltage."
+    AboveEnvelope "above-envelope" Error
+        "Every step lies within the sink's envelope at the DUT's least and largest voltage, for as long as it lasts."
     CurrentBelowFloor "current-below-floor" Error
         "A current is zero or at least the sink's floor."
     CoarseStep "coarse-step" Warning
@@ -187,6 +189,8 @@ rules! {
         "What is drawn for a fixed time is not more than the rated capacity."
     LimitOutOfReach "limit-out-of-reach" Warning
         "A limit on the time of the run is within what the run can take."
+    LimitBeforeEnd "limit-before-end" Warning
+        "The interlocks on charge, energy and time leave room for what the run will probably take."
     DiskSpace "disk-space" Error
         "The record of the longest possible run fits the disk."
     RecordLarge "record-large" Warning

@@ -2,11 +2,12 @@
 
 use std::fmt;
 
-use quantity::{Quantity, Span, Voltage};
+use quantity::{Power, Quantity, Span, Voltage};
 
 use super::Scene;
+use super::flow::currents;
 use super::target::{action_key, each_current, each_power, most_of_all};
-use crate::draft::{InterlocksDraft, Written};
+use crate::draft::{InterlocksDraft, StepDraft, Written};
 use crate::facts::Thresholds;
 use crate::finding::{Finding, Findings};
 use crate::plan::Armed;
@@ -404,11 +405,16 @@ fn following_can_act(scene: &Scene<'_>, findings: &mut Findings) {
     }
 }
 
+/// What is beyond the sink itself is another rule's finding, and one is enough.
+fn beyond_sink(scene: &Scene<'_>, step: &StepDraft, power: Power) -> bool {
+    let current = currents(step).into_iter().max();
+    power > scene.facts.power_max || current > Some(scene.facts.current_max)
+}
+
 pub(super) fn not_at_once(scene: &Scene<'_>, findings: &mut Findings) {
     let merged = scene.merged;
     if let Some(trip) = merged.over_current.map(|armed| armed.threshold) {
         each_current(scene, &mut |step, current, why| {
-            // Beyond the sink itself is another rule's finding, and one is enough.
             if current >= trip && current <= scene.facts.current_max {
                 let message = format!("{why}, at which `over_current` at {trip} trips");
                 let hint = format!(
@@ -423,7 +429,7 @@ pub(super) fn not_at_once(scene: &Scene<'_>, findings: &mut Findings) {
     }
     if let Some(trip) = merged.over_power.map(|armed| armed.threshold) {
         each_power(scene, &mut |step, power, why| {
-            if power >= trip && power <= scene.facts.power_max {
+            if power >= trip && !beyond_sink(scene, step, power) {
                 let message = format!("{why}, at which `over_power` at {trip} trips");
                 let hint = format!(
                     "stay below {trip}, or raise `over_power` as far as the bench lets you"

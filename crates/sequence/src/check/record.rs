@@ -1,5 +1,7 @@
 //! Rules on the whole run: its record fits the disk, its charge the cell, its limits the run.
 
+use std::fmt;
+
 use quantity::Current;
 
 use super::PlanScene;
@@ -97,4 +99,33 @@ pub(super) fn limits_within_reach(scene: &PlanScene<'_>, findings: &mut Findings
             .numbers(limit, longest),
         );
     }
+}
+
+pub(super) fn limits_leave_room(scene: &PlanScene<'_>, findings: &mut Findings) {
+    fn room<T: Ord + fmt::Display>(
+        key: &str,
+        expected: T,
+        limit: Option<T>,
+        findings: &mut Findings,
+    ) {
+        let Some(limit) = limit.filter(|limit| *limit < expected) else {
+            return;
+        };
+        findings.push(
+            Finding::new(
+                Rule::LimitBeforeEnd,
+                format!("/interlocks/{key}"),
+                format!(
+                    "the run will probably take {expected}, but the interlock `{key}` trips at \
+                     {limit}"
+                ),
+                "shorten the sequence, or raise the interlock as far as the bench lets you",
+            )
+            .numbers(expected, limit),
+        );
+    }
+    let (forecast, interlocks) = (scene.plan.forecast(), &scene.plan.interlocks);
+    room("charge", forecast.charge, interlocks.charge, findings);
+    room("energy", forecast.energy, interlocks.energy, findings);
+    room("time", forecast.duration, interlocks.time, findings);
 }

@@ -34,7 +34,7 @@ pub(super) fn action_key(step: &StepDraft) -> String {
 }
 
 /// The least voltage at which the sink goes on drawing.
-fn least_voltage(scene: &Scene<'_>) -> Option<Voltage> {
+pub(super) fn least_voltage(scene: &Scene<'_>) -> Option<Voltage> {
     let least = scene.draft.dut.voltage_min?;
     let trip = scene.merged.undervoltage.map(|armed| armed.threshold);
     Some(trip.map_or(least, |trip| trip.max(least)))

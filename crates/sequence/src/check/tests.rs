@@ -1,8 +1,9 @@
 //! Every rule has a sequence that breaks it and one that just does not.
 
-use quantity::{Current, Power, Span, Voltage};
+use quantity::{Current, Power, Resistance, Span, Voltage};
 use serde_json::{Value, json};
 use sink::bench::Bench;
+use sink::envelope::{Duration, Envelope};
 
 use crate::compile::{Options, compile_with};
 use crate::facts::Facts;
@@ -97,6 +98,25 @@ fn short_steps(bed: &mut Bed, micros: u64) {
         { "draw": "100 mA", "for": format!("{micros} us") },
         { "rest": format!("{micros} us") },
     ] } }]));
+}
+
+/// A sink whose heat sink can get rid of 2.5 W, and one step of ten hours.
+fn small_heat_sink(bed: &mut Bed, above: i64) {
+    let bench = Bench::from_toml(include_str!("../../../sink/src/bench/weir.toml")).unwrap();
+    let mut entry = bench.sink("left").unwrap().clone();
+    entry.heat_sink.to_ambient = "20 K/W".parse().unwrap();
+    let envelope = Envelope::of(&entry).unwrap();
+    let ten_hours = Duration::Pulse(Span::from_secs(36_000));
+    let voltage = Voltage::from_millivolts(4_200);
+    let most = envelope
+        .ceiling(voltage, Resistance::ZERO, ten_hours)
+        .current;
+    let current = most + Current::from_microamperes(above);
+    bed.facts.envelope = Ok(envelope);
+    // Without a rated capacity nothing is said about the charge of ten hours.
+    remove(&mut bed.sequence["dut"], "rated_capacity");
+    bed.interlock("undervoltage", json!({ "below": "2.5 V" }));
+    bed.steps(json!([{ "draw": current.to_string(), "for": "10 h" }]));
 }
 
 fn text_of_bytes(text: &str, bytes: usize) -> String {
@@ -398,6 +418,11 @@ const DEVICE: &[Case] = &[
         },
     ),
     case(
+        Rule::AboveEnvelope,
+        |bed| small_heat_sink(bed, 1),
+        |bed| small_heat_sink(bed, 0),
+    ),
+    case(
         // (200 uV + 50 uV) / 0.1 ohm.
         Rule::CurrentBelowFloor,
         |bed| bed.step(json!({ "draw": "2.499 mA", "for": "1 s" })),
@@ -618,6 +643,17 @@ const RUN: &[Case] = &[
         Rule::LimitOutOfReach,
         |bed| bed.interlock("time", json!("431 min")),
         |bed| bed.interlock("time", json!("430 min")),
+    ),
+    case(
+        // A cell of 3.2 Ah at 0,2 It: 5 h, with 11 min of rest.
+        Rule::LimitBeforeEnd,
+        |bed| bed.interlock("time", json!("310 min")),
+        |bed| bed.interlock("time", json!("311 min")),
+    ),
+    case(
+        Rule::LimitBeforeEnd,
+        |bed| bed.interlock("charge", json!("3.1999 Ah")),
+        |bed| bed.interlock("charge", json!("3.2 Ah")),
     ),
     case(
         // 431 min of five readbacks a second, 400 bytes each: 51.72 MB.

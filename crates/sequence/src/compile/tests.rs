@@ -101,7 +101,7 @@ fn program(plan: &crate::plan::Plan) -> String {
                     Action::Power { target } => target.to_string(),
                     Action::Resistance { target } => target.to_string(),
                 };
-                write!(out, "{at:2} {indent}{action} for {}", step.duration).unwrap();
+                write!(out, "{at} {indent}{action} for {}", step.duration).unwrap();
                 if step.then != Next::GoOn {
                     write!(out, ", then {:?}", step.then).unwrap();
                 }
@@ -120,12 +120,12 @@ fn program(plan: &crate::plan::Plan) -> String {
             Op::LoopBegin(head) => {
                 let times = head.times.map(|times| format!(" {times} times"));
                 let at_most = head.at_most.map(|span| format!(" at most {span}"));
-                write!(out, "{at:2} {indent}repeat to {}", head.end).unwrap();
+                write!(out, "{at} {indent}repeat to {}", head.end).unwrap();
                 write!(out, "{}", times.unwrap_or_default()).unwrap();
                 writeln!(out, "{}", at_most.unwrap_or_default()).unwrap();
                 depth += 1;
             }
-            Op::LoopEnd { begin } => writeln!(out, "{at:2} {indent}end of {begin}").unwrap(),
+            Op::LoopEnd { begin } => writeln!(out, "{at} {indent}end of {begin}").unwrap(),
         }
     }
     out

@@ -9,6 +9,11 @@ use crate::rule::Rule;
 /// Deepest nesting; a repeat inside a repeat takes four levels.
 const DEPTH_MAX: usize = 64;
 
+/// Most keys of one object; no object of the format has a fiftieth of that.
+const MEMBERS_MAX: usize = 1_000;
+/// After so many problems the text is something else than a sequence.
+const PROBLEMS_MAX: usize = 100;
+
 /// Something that RFC 8259 forbids.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub(crate) struct Problem {
@@ -120,6 +125,15 @@ impl Parser<'_> {
     fn value(&mut self, depth: usize) -> Result<Node, Stuck> {
         self.skip_space();
         let start = self.at;
+        if self.problems.len() >= PROBLEMS_MAX {
+            self.problem(
+                start,
+                start,
+                "too many mistakes to go on",
+                "mend those before this place first",
+            );
+            return Err(Stuck);
+        }
         if depth > DEPTH_MAX {
             let message = format!("nested deeper than {DEPTH_MAX} levels");
             self.problem(start, start + 1, &message, "nest fewer repeats");
@@ -152,6 +166,12 @@ impl Parser<'_> {
         }
         loop {
             let member = self.member(depth)?;
+            if members.len() == MEMBERS_MAX {
+                let Extent { start, end } = member.key_extent;
+                let message = format!("more than {MEMBERS_MAX} keys in one object");
+                self.problem(start, end, &message, "check the brackets up to here");
+                return Err(Stuck);
+            }
             if members.iter().any(|other| other.key == member.key) {
                 self.problems.push(Problem {
                     rule: Rule::JsonDuplicateKey,

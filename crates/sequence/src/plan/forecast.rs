@@ -209,10 +209,13 @@ impl<'a> Walk<'a> {
                 }
             }
         }
-        let from = match self.outline.points.last() {
-            Some(point) if ramp > 0 => point.current,
-            Some(_) | None => target,
-        };
+        // Before its first step a sink is off.
+        let before = self
+            .outline
+            .points
+            .last()
+            .map_or(Current::ZERO, |point| point.current);
+        let from = if ramp > 0 { before } else { target };
         self.draw(from, target, lasts);
         way
     }
@@ -303,8 +306,12 @@ impl<'a> Walk<'a> {
             drawn: self.drawn - began.drawn,
         };
         let (mut rounds, bound) = self.rounds_left(head, round, began.drawn, body, foot);
-        let each = (self.outline.points.len() - first_point).max(1);
-        while rounds > 0 && self.outline.points.len() + each <= self.points_max {
+        let each = self.outline.points.len().saturating_sub(first_point).max(1);
+        let room = self.points_max.saturating_sub(self.outline.points.len()) / each;
+        for _ in 0..room {
+            if rounds == 0 {
+                break;
+            }
             let way = self.block(body, foot);
             if way != Way::On {
                 return way;

@@ -241,3 +241,6 @@ impl Interlocks {
         Ok(())
     }
 }
+
+#[cfg(test)]
+mod tests;

@@ -43,10 +43,13 @@ fn blocks(document: &str) -> Vec<(&str, String)> {
 fn whole(example: &str) -> String {
     let value: Value = serde_json::from_str(example).unwrap();
     let mut base: Value = serde_json::from_str(include_str!("../check/tests/base.json")).unwrap();
-    match value {
-        Value::Object(parts) if parts.contains_key("sequence") => return example.to_owned(),
-        Value::Object(parts) => base.as_object_mut().unwrap().extend(parts),
-        steps => base["steps"] = steps,
+    if value.get("sequence").is_some() {
+        return example.to_owned();
+    }
+    if let Value::Object(parts) = value {
+        base.as_object_mut().unwrap().extend(parts);
+    } else {
+        base["steps"] = value;
     }
     serde_json::to_string_pretty(&base).unwrap()
 }
