@@ -28,7 +28,10 @@ impl KeeperConfig {
             queue_at_least: None,
             readback: Some(entry.readback.fastest),
             burst_at_least: None,
-            abilities: Abilities { isolator: entry.isolator, ..Abilities::default() },
+            abilities: Abilities {
+                isolator: entry.isolator,
+                ..Abilities::default()
+            },
             drive_bits: Some(stated.drive_bits),
             drive_full_scale: Some(stated.drive_full_scale),
             drive_spans_full_scale: Some(stated.drive_spans_full_scale),
@@ -41,6 +44,8 @@ impl KeeperConfig {
             Link::Serial { baud, .. } => baud / BITS_PER_BYTE,
             Link::Tcp { .. } | Link::Simulated { .. } => UNPACED_BYTES_PER_SECOND,
         };
-        Ok(Self { session: SessionConfig::for_link(bytes_per_second, expected) })
+        Ok(Self {
+            session: SessionConfig::for_link(bytes_per_second, expected),
+        })
     }
 }

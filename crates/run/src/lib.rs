@@ -26,6 +26,7 @@ mod active;
 mod expect;
 pub mod keeper;
 mod notes;
+pub mod recording;
 pub mod rehearse;
 
 pub use keeper::{Effect, Keeper, KeeperConfig};

@@ -1,0 +1,78 @@
+//! Charge and energy of a stretch: from the sink's counters, in true values.
+
+use quantity::{Span, Voltage};
+use sink::correction::Correction;
+
+use crate::time_base::TimeBase;
+use crate::walk::{Delivered, Mark};
+
+/// Seconds in an hour.
+const HOUR_S: f64 = 3600.0;
+
+/// What was delivered between two marks, in true values and true time.
+#[derive(Debug, Clone, Copy, Default, PartialEq)]
+pub(crate) struct Amount {
+    /// Ampere hours.
+    pub(crate) charge_ah: f64,
+    /// Watt hours.
+    pub(crate) energy_wh: f64,
+    /// Seconds.
+    pub(crate) seconds: f64,
+}
+
+impl Amount {
+    /// From the counters at two instants, by the correction and the time base.
+    pub(crate) fn between(
+        begin: Mark,
+        end: Mark,
+        correction: &Correction,
+        time_base: TimeBase,
+    ) -> Self {
+        let span = end.time.saturating_since(begin.time);
+        let charge = end.charge.saturating_sub(begin.charge);
+        let energy = end.energy.saturating_sub(begin.energy);
+        let mean_voltage = mean_voltage(begin, end, span);
+        let true_charge = correction.charge_from_counter(charge, span);
+        let true_energy = correction.energy_from_counter(energy, charge, mean_voltage, span);
+        Self {
+            charge_ah: true_charge.coulombs() / HOUR_S * time_base.factor,
+            energy_wh: true_energy.joules() / HOUR_S * time_base.factor,
+            seconds: span.seconds() * time_base.factor,
+        }
+    }
+
+    /// What a stretch delivered, so far if it is still going on; `None` where the record does not
+    /// reach it.
+    pub(crate) fn of(
+        delivered: &Delivered,
+        correction: &Correction,
+        time_base: TimeBase,
+    ) -> Option<Self> {
+        Some(Self::between(
+            delivered.begin?,
+            delivered.end.or(delivered.latest)?,
+            correction,
+            time_base,
+        ))
+    }
+
+    /// The sum of both.
+    pub(crate) fn plus(self, other: Self) -> Self {
+        Self {
+            charge_ah: self.charge_ah + other.charge_ah,
+            energy_wh: self.energy_wh + other.energy_wh,
+            seconds: self.seconds + other.seconds,
+        }
+    }
+}
+
+/// The nominal mean voltage weighted by time, which only an offset of the current needs; where a
+/// current flowed, the mean weighted by charge stands in for it.
+fn mean_voltage(begin: Mark, end: Mark, span: Span) -> Voltage {
+    let charge = end.charge.saturating_sub(begin.charge).coulombs();
+    let energy = end.energy.saturating_sub(begin.energy).joules();
+    if span == Span::ZERO || charge.abs() < f64::MIN_POSITIVE {
+        return Voltage::ZERO;
+    }
+    Voltage::from_volts(energy / charge).unwrap_or(Voltage::ZERO)
+}

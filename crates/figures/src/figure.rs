@@ -1,0 +1,187 @@
+//! What a figure is.
+
+use serde::{Deserialize, Serialize};
+use sink::uncertainty::{Budget, Combined, Expanded};
+
+/// The probability that an expanded uncertainty covers.
+const PROBABILITY: f64 = 0.95;
+
+/// All figures of one record.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Figures {
+    /// The record they were worked out from.
+    pub record: String,
+    /// The program that did it.
+    pub software: String,
+    /// Whether a valid certificate stands behind them.
+    pub standing: Standing,
+    /// The figures.
+    pub figures: Vec<Figure>,
+    /// Figures one might expect and the data cannot support, each with the reason.
+    pub missing: Vec<Missing>,
+    /// What a reader must know before trusting them.
+    pub warnings: Vec<String>,
+}
+
+/// What stands behind a figure.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Standing {
+    /// A valid certificate of the sink.
+    Calibrated,
+    /// Nothing but the front end's nominal values and stated tolerances.
+    NominalUncalibrated,
+}
+
+/// What a figure is of.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Name {
+    /// From the first step that draws to its last.
+    Duration,
+    /// Charge delivered to the cut-off.
+    Capacity,
+    /// Energy delivered to the cut-off.
+    Energy,
+    /// Energy over charge.
+    MeanVoltage,
+    /// Charge delivered, cut-off or not.
+    DeliveredCharge,
+    /// Energy delivered, cut-off or not.
+    DeliveredEnergy,
+    /// Charge delivered, by trapezoid from the readbacks.
+    ChargeByTrapezoid,
+    /// D.c. internal resistance from two currents.
+    DcResistance,
+    /// Hottest heat sink.
+    PeakTemperature,
+}
+
+/// A figure's unit.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+pub enum Unit {
+    /// Ampere hours.
+    #[serde(rename = "Ah")]
+    AmpereHour,
+    /// Watt hours.
+    #[serde(rename = "Wh")]
+    WattHour,
+    /// Volts.
+    #[serde(rename = "V")]
+    Volt,
+    /// Ohms.
+    #[serde(rename = "ohm")]
+    Ohm,
+    /// Seconds.
+    #[serde(rename = "s")]
+    Second,
+    /// Degrees Celsius.
+    #[serde(rename = "degC")]
+    DegreeCelsius,
+}
+
+impl Unit {
+    /// The unit as it is written behind a number.
+    pub const fn symbol(self) -> &'static str {
+        match self {
+            Self::AmpereHour => "Ah",
+            Self::WattHour => "Wh",
+            Self::Volt => "V",
+            Self::Ohm => "ohm",
+            Self::Second => "s",
+            Self::DegreeCelsius => "degC",
+        }
+    }
+}
+
+/// One figure.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Figure {
+    /// What it is of.
+    pub name: Name,
+    /// The label of the steps it is of; `None`: the whole run.
+    pub label: Option<String>,
+    /// The value, in `unit`.
+    pub value: f64,
+    /// Its unit.
+    pub unit: Unit,
+    /// Combined standard uncertainty and its degrees of freedom; `None` where none is claimed.
+    pub uncertainty: Option<Combined>,
+    /// Expanded uncertainty at 95 %, where a coverage factor can be stated.
+    pub expanded: Option<Expanded>,
+    /// The largest contribution to it.
+    pub dominated_by: Option<String>,
+    /// All contributions.
+    pub budget: Budget,
+    /// How it was worked out.
+    pub method: Method,
+    /// The readbacks it came from.
+    pub rows: Rows,
+}
+
+/// How a figure was worked out, and who says so.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Method {
+    /// In a sentence.
+    pub how: String,
+    /// The published source, or `common practice, no source`.
+    pub source: String,
+}
+
+/// The entries of the journal that a figure came from, first and last.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Rows {
+    /// First entry.
+    pub first: u64,
+    /// Last entry.
+    pub last: u64,
+}
+
+/// A figure that the data cannot support.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Missing {
+    /// What it would be of.
+    pub name: Name,
+    /// The label it would be of.
+    pub label: Option<String>,
+    /// Why there is no number.
+    pub reason: String,
+}
+
+impl Figure {
+    /// A figure with its budget combined; without contributions no uncertainty is claimed.
+    pub(crate) fn new(
+        name: Name,
+        label: Option<String>,
+        (value, unit): (f64, Unit),
+        budget: Budget,
+        (how, source): (&str, &str),
+        rows: Rows,
+    ) -> Self {
+        let combined = if budget.contributions.is_empty() {
+            None
+        } else {
+            budget.combined().ok()
+        };
+        Self {
+            name,
+            label,
+            value,
+            unit,
+            uncertainty: combined,
+            expanded: combined.and_then(|combined| combined.expanded(PROBABILITY)),
+            dominated_by: budget.dominant().map(|line| line.name.clone()),
+            budget,
+            method: Method {
+                how: how.to_owned(),
+                source: source.to_owned(),
+            },
+            rows,
+        }
+    }
+}

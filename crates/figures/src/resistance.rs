@@ -1,0 +1,86 @@
+//! D.c. internal resistance from two currents, `(U1 - U2) / (I2 - I1)`.
+//!
+//! Two constant currents, the second larger and right after the first, each with a voltage at
+//! its end. IEC 61960-3 has 0,2 It for 10 s and then 1,0 It for 1 s; other currents and times
+//! give a resistance as well, which the label of the second step then names.
+
+use sequence::plan::{Action, Plan};
+
+use crate::contribution::{FrontEnd, of_resistance};
+use crate::figure::{Figure, Name, Rows, Unit};
+use crate::stage::Stage;
+use crate::walk::{Delivered, Sample};
+
+/// The smallest rise of current, in steps of the converter, that a resistance is worked out for.
+const LEAST_RISE: f64 = 2.0;
+
+const HOW: &str = "(U1 - U2) / (I2 - I1), each the mean of the last readback wholly within its \
+                   step, the second step right after the first and at a larger current";
+const SOURCE: &str = "IEC 61960-3, d.c. internal resistance by two currents (from memory)";
+
+/// Every pair of steps that gives a resistance.
+pub(crate) fn resistances(
+    plan: &Plan,
+    stages: &[Stage<'_>],
+    delivered: &[Delivered],
+    front_end: &FrontEnd,
+) -> Vec<Figure> {
+    let steps = stages.iter().zip(delivered);
+    let pairs = steps.clone().zip(steps.skip(1));
+    pairs
+        .filter_map(|((first, before), (second, after))| {
+            let (one, other) = (constant(first)?, constant(second)?);
+            if one <= 0.0 || other <= one || first.end != second.begin {
+                return None;
+            }
+            let label = second.label.or(first.label).map(str::to_owned);
+            figure(plan, label, before.last?, after.last?, front_end)
+        })
+        .collect()
+}
+
+/// The current of a step that holds one from its first instant, ampere.
+fn constant(stage: &Stage<'_>) -> Option<f64> {
+    match stage.step.action {
+        Action::Current { target, ramp } if ramp.micros() == 0 => Some(target.amperes()),
+        Action::Current { .. }
+        | Action::Rest
+        | Action::Power { .. }
+        | Action::Resistance { .. } => None,
+    }
+}
+
+fn figure(
+    plan: &Plan,
+    label: Option<String>,
+    low: Sample,
+    high: Sample,
+    front_end: &FrontEnd,
+) -> Option<Figure> {
+    let current = |sample: &Sample| {
+        plan.correction
+            .current_from_readback(sample.current)
+            .amperes()
+    };
+    let voltage = |sample: &Sample| {
+        plan.correction
+            .voltage_from_readback(sample.voltage)
+            .volts()
+    };
+    let rise = current(&high) - current(&low);
+    if rise <= LEAST_RISE * front_end.current_step() {
+        return None;
+    }
+    let resistance = (voltage(&low) - voltage(&high)) / rise;
+    Some(Figure::new(
+        Name::DcResistance,
+        label,
+        (resistance, Unit::Ohm),
+        of_resistance(front_end, resistance, rise),
+        (HOW, SOURCE),
+        Rows {
+            first: low.row,
+            last: high.row,
+        },
+    ))
+}

@@ -1,0 +1,271 @@
+//! One walk over the readbacks: what each stage delivered, without keeping the readbacks.
+//!
+//! The counters are cumulative and exact; a stage's share is the difference of two of them, at
+//! its beginning and at its end. An edge rarely falls on a readback: the counter at the edge is
+//! carried forward from the readback before with the mean current of the interval before, and
+//! held between the two counters around it.
+
+use std::ops::Range;
+
+use journal::Chunk;
+use quantity::{Charge, Current, Energy, SinkTime, Temperature, Voltage};
+use sink::accumulate::Sum;
+use wire::{Counters, TemperatureReading};
+
+/// The counters at an instant, nominal.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(crate) struct Mark {
+    pub(crate) time: SinkTime,
+    pub(crate) charge: Charge,
+    pub(crate) energy: Energy,
+}
+
+impl From<Counters> for Mark {
+    fn from(counters: Counters) -> Self {
+        Self {
+            time: counters.time,
+            charge: counters.charge,
+            energy: counters.energy,
+        }
+    }
+}
+
+/// A readback as figures want it, nominal.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Sample {
+    /// The entry's number.
+    pub(crate) row: u64,
+    /// Beginning of the interval it speaks for.
+    pub(crate) from: SinkTime,
+    /// End of the interval.
+    pub(crate) time: SinkTime,
+    pub(crate) current: Current,
+    pub(crate) voltage: Voltage,
+}
+
+/// What a stretch of sink time delivered.
+#[derive(Debug, Clone, Default)]
+pub(crate) struct Delivered {
+    /// Counters at its beginning and end; `None` where the record does not reach.
+    pub(crate) begin: Option<Mark>,
+    pub(crate) end: Option<Mark>,
+    /// The latest counters within it: what a stretch that is still going on has delivered.
+    pub(crate) latest: Option<Mark>,
+    /// First and last row of the readbacks in it.
+    pub(crate) rows: Option<(u64, u64)>,
+    /// The last readback that lies wholly in it.
+    pub(crate) last: Option<Sample>,
+    /// The last two readbacks around the first time the voltage watched fell below.
+    pub(crate) crossing: Option<(Sample, Sample)>,
+    /// Hottest heat sink.
+    pub(crate) hottest: Option<Temperature>,
+    /// Trapezoid of the mean currents, ampere seconds.
+    pub(crate) trapezoid: Sum,
+    /// Sum of half the squared jumps of current times their intervals: the trapezoid's doubt.
+    pub(crate) trapezoid_doubt: Sum,
+}
+
+/// A stretch of sink time to look at, and a voltage to watch in it.
+#[derive(Debug, Clone)]
+pub(crate) struct Stretch {
+    pub(crate) time: Range<SinkTime>,
+    pub(crate) below: Option<Voltage>,
+}
+
+/// The walk: give it the chunks in order, then take what the stretches delivered.
+pub(crate) struct Walk {
+    stretches: Vec<Stretch>,
+    delivered: Vec<Delivered>,
+    /// Stretches before this one have ended.
+    first_open: usize,
+    previous: Option<Previous>,
+}
+
+#[derive(Clone, Copy)]
+struct Previous {
+    mark: Option<Mark>,
+    /// The mean current of the interval before, microamperes.
+    current: Current,
+    voltage: Voltage,
+    time: SinkTime,
+    sample: Sample,
+}
+
+impl Walk {
+    /// Stretches in the order of their beginnings.
+    pub(crate) fn new(stretches: Vec<Stretch>) -> Self {
+        let delivered = vec![Delivered::default(); stretches.len()];
+        Self {
+            stretches,
+            delivered,
+            first_open: 0,
+            previous: None,
+        }
+    }
+
+    /// What the stretches delivered, in their order.
+    pub(crate) fn finish(self) -> Vec<Delivered> {
+        self.delivered
+    }
+
+    /// Takes the next chunk.
+    pub(crate) fn take(&mut self, chunk: &Chunk) {
+        for index in 0..chunk.readings.len() {
+            let (Some(reading), Some(row)) =
+                (chunk.readings.get(index), chunk.readings.number.get(index))
+            else {
+                return;
+            };
+            // A sink that started anew counts from zero: what was before is another walk.
+            if self
+                .previous
+                .is_some_and(|previous| reading.time < previous.time)
+            {
+                self.previous = None;
+            }
+            let sample = Sample {
+                row: *row,
+                from: self.previous.map_or(reading.time, |previous| previous.time),
+                time: reading.time,
+                current: reading.values.current,
+                voltage: reading.values.voltage,
+            };
+            let mark = reading.counters.map(Mark::from);
+            self.sample(&sample, mark, reading.values.temperature);
+            self.previous = Some(Previous {
+                mark: mark.or_else(|| self.previous.and_then(|previous| previous.mark)),
+                current: sample.current,
+                voltage: sample.voltage,
+                time: sample.time,
+                sample,
+            });
+        }
+    }
+
+    fn sample(&mut self, sample: &Sample, mark: Option<Mark>, temperature: TemperatureReading) {
+        let previous = self.previous;
+        let stretches = self
+            .stretches
+            .iter()
+            .zip(&mut self.delivered)
+            .skip(self.first_open);
+        let mut ended = 0;
+        for (stretch, delivered) in stretches {
+            if stretch.time.start > sample.time {
+                break;
+            }
+            if let Some(mark) = mark {
+                delivered.reach(stretch, previous, mark);
+            }
+            if sample.time > stretch.time.start && sample.from < stretch.time.end {
+                delivered.cover(stretch, previous, sample, temperature);
+            }
+            if stretch.time.end <= sample.time && delivered.end.is_some() {
+                ended += 1;
+            } else {
+                ended = 0;
+            }
+        }
+        // Only a run of ended stretches at the front may be left behind.
+        self.first_open += self.ended_at_front(sample.time).min(ended);
+    }
+
+    fn ended_at_front(&self, time: SinkTime) -> usize {
+        self.stretches
+            .iter()
+            .zip(&self.delivered)
+            .skip(self.first_open)
+            .take_while(|(stretch, delivered)| stretch.time.end <= time && delivered.end.is_some())
+            .count()
+    }
+}
+
+impl Delivered {
+    /// Sets the counters at the stretch's ends as soon as the walk has passed them.
+    fn reach(&mut self, stretch: &Stretch, previous: Option<Previous>, mark: Mark) {
+        if self.begin.is_none() && mark.time >= stretch.time.start {
+            self.begin = Some(mark_at(stretch.time.start, previous, mark));
+        }
+        if mark.time < stretch.time.end {
+            self.latest = Some(mark);
+        }
+        if self.end.is_none() && mark.time >= stretch.time.end {
+            self.end = Some(mark_at(stretch.time.end, previous, mark));
+        }
+    }
+
+    /// Takes in a readback whose interval lies in the stretch, at least in part.
+    fn cover(
+        &mut self,
+        stretch: &Stretch,
+        previous: Option<Previous>,
+        sample: &Sample,
+        temperature: TemperatureReading,
+    ) {
+        let first = self.rows.map_or(sample.row, |(first, _)| first);
+        self.rows = Some((first, sample.row));
+        if let TemperatureReading::Value(value) = temperature {
+            self.hottest = Some(self.hottest.map_or(value, |hottest| hottest.max(value)));
+        }
+        let wholly = sample.from >= stretch.time.start && sample.time <= stretch.time.end;
+        if wholly && sample.from < sample.time {
+            self.last = Some(*sample);
+        }
+        let Some(previous) = previous else { return };
+        self.add_trapezoid(stretch, previous, sample);
+        if let Some(below) = stretch.below
+            && wholly
+            && self.crossing.is_none()
+            && sample.voltage < below
+            && previous.voltage >= below
+        {
+            self.crossing = Some((previous.sample, *sample));
+        }
+    }
+
+    /// The mean current of each readback is taken to hold at the end of its interval, and to
+    /// change in a straight line between two ends. Half the jump of current times the interval
+    /// is what that may be wrong by.
+    fn add_trapezoid(&mut self, stretch: &Stretch, previous: Previous, sample: &Sample) {
+        let from = sample.from.max(stretch.time.start);
+        let until = sample.time.min(stretch.time.end);
+        let seconds = until.saturating_since(from).seconds();
+        let (before, now) = (previous.current.amperes(), sample.current.amperes());
+        self.trapezoid.add(0.5 * (before + now) * seconds);
+        self.trapezoid_doubt
+            .add((0.5 * (now - before) * seconds).powi(2));
+    }
+}
+
+/// The counters at an instant between the readback before and the one after it.
+fn mark_at(instant: SinkTime, previous: Option<Previous>, after: Mark) -> Mark {
+    let Some(previous) = previous else {
+        return after;
+    };
+    let Some(before) = previous.mark else {
+        return after;
+    };
+    if instant >= after.time || instant <= before.time {
+        return if instant <= before.time {
+            before
+        } else {
+            after
+        };
+    }
+    let span = instant.saturating_since(before.time);
+    let carried = previous.current.times(span);
+    let power = previous.voltage.times(previous.current);
+    let charge = before.charge.saturating_add(carried);
+    let energy = before.energy.saturating_add(power.times(span));
+    Mark {
+        time: instant,
+        charge: charge.clamp(
+            before.charge.min(after.charge),
+            before.charge.max(after.charge),
+        ),
+        energy: energy.clamp(
+            before.energy.min(after.energy),
+            before.energy.max(after.energy),
+        ),
+    }
+}
