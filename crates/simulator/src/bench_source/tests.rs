@@ -21,6 +21,19 @@ fn check_refused(source: &str, message: &str) {
 }
 
 #[test]
+fn every_sink_of_the_example_bench_can_be_simulated() {
+    let bench = sink::bench::Bench::from_toml(WEIR).unwrap();
+    for entry in &bench.sinks {
+        let mut sink = simulated_sink(entry).unwrap();
+        let mut out = Vec::new();
+        sink.receive(b"hello 1 7 0000\n");
+        sink.advance(Span::from_secs(1), &mut out);
+        assert_eq!(sink.now(), Span::from_secs(1));
+        assert!(sink.truth().charge_c.abs() < 1e-12, "off at power-up");
+    }
+}
+
+#[test]
 fn a_cell_by_its_label_is_enough() {
     let parts = sink_parts(&left(r#"{"cell": "K-02"}"#)).unwrap();
     let Source::Cell(cell) = &parts.source else {
