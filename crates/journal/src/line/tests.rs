@@ -303,3 +303,17 @@ proptest! {
         prop_assert_eq!(decode(line.trim_end_matches('\n').as_bytes(), START), Ok(entry));
     }
 }
+
+#[test]
+fn every_example_in_the_users_page_is_a_line_of_this_format() {
+    let page = include_str!("../../../../docs/records.md");
+    let examples: Vec<&str> = page
+        .lines()
+        .filter(|line| line.starts_with("{\"n\":") || line.starts_with('['))
+        .collect();
+    assert_eq!(examples.len(), 7);
+    for example in examples {
+        let entry = decode(example.as_bytes(), START).expect(example);
+        assert_eq!(text(&entry).trim_end(), example);
+    }
+}

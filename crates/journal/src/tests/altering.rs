@@ -153,12 +153,12 @@ fn a_rewritten_line_with_a_checksum_of_its_own_breaks_the_chain() {
     let text = fs::read_to_string(&path).expect("a segment");
     let last = text.lines().last().expect("a line");
     let mut forged = entry(crate::line::claimed_number(last.as_bytes()).expect("a number"));
-    forged.at = forged.at + quantity::Span::from_micros(1);
+    forged.at += quantity::Span::from_micros(1);
     let header = text.lines().next().expect("a line");
     let base = crate::line::decode_object::<crate::segment::Header>(header.as_bytes())
         .expect("a first line")
         .at;
-    let mut bytes = text[..text.len() - last.len() - 1].as_bytes().to_vec();
+    let mut bytes = text.as_bytes()[..text.len() - last.len() - 1].to_vec();
     crate::line::encode(&mut bytes, base, &forged);
     fs::write(&path, bytes).expect("room");
     let report = verify(&folder).expect("readable");
