@@ -1,6 +1,9 @@
 //! The run: one event in, any number of outputs out.
 
+mod burst;
+mod pause;
 mod progress;
+mod queue;
 mod reading;
 mod session;
 
@@ -68,7 +71,7 @@ pub struct Sequencer {
     pub(crate) begun_through: SinkTime,
     /// Readback interval last ordered.
     pub(crate) readback: Span,
-    pub(crate) bursts: progress::Bursts,
+    pub(crate) bursts: burst::Bursts,
     /// A person or a script wants the run held: it is, or will be instead of beginning.
     pub(crate) held: bool,
     /// The sink has started anew while the link was gone.
@@ -104,7 +107,7 @@ impl Sequencer {
             latest_at: HostTime::ZERO,
             voltage: Voltage::ZERO,
             begun_through: SinkTime::ZERO,
-            bursts: progress::Bursts::default(),
+            bursts: burst::Bursts::default(),
             held: false,
             rebooted: false,
             now: HostTime::MIN,

@@ -1,67 +1,17 @@
-//! The run under way: queueing ahead, beginning and ending steps, conditions, hold and continue.
+//! The run under way: beginning and ending steps, conditions and where they lead.
 
-use std::collections::VecDeque;
+use quantity::SinkTime;
+use sequence::plan::Next;
+use wire::Order;
 
-use quantity::{Current, SinkTime, Span};
-use sequence::plan::{Action, Next};
-use wire::{Order, OrderId};
-
-use super::{OFF_BY, REACTION, Sequencer};
-use crate::account::Increment;
+use super::{REACTION, Sequencer};
+use crate::account::{Counted, Increment};
 use crate::condition::Watch;
-use crate::course::{LoopWatch, Queued, Running, Suspension, moved};
-use crate::event::{Ending, Finding, Interlock, StepEnd};
-use crate::expectation::Ordered;
+use crate::course::{LoopWatch, Queued, Running};
+use crate::event::{Ending, Finding, StepEnd};
 use crate::observation::Observation;
-use crate::orders::hold;
-use crate::phase::{Pause, Phase};
-use crate::program::{Cursor, Slot};
-
-/// Time that the samples of a capture take on their way, for each sample: an 80-byte line of four
-/// at 115 200 baud is 7 ms, and other lines share the port.
-const BURST_SAMPLE: Span = Span::from_millis(4);
-
-/// Captures that are wanted, and the one that is under way.
-#[derive(Debug, Clone, Default)]
-pub(crate) struct Bursts {
-    wanted: VecDeque<Burst>,
-    /// The latest ordered, until its samples have come.
-    ordered: Option<(OrderId, u32)>,
-    busy_until: SinkTime,
-    refused: Option<u32>,
-}
-
-#[derive(Debug, Clone, Copy)]
-struct Burst {
-    op: u32,
-    at: SinkTime,
-    before: u16,
-    after: u16,
-    length: Span,
-}
-
-impl Bursts {
-    pub(crate) fn clear(&mut self) {
-        *self = Self::default();
-    }
-
-    /// Whether this order was a capture, which the sink has refused.
-    pub(crate) fn refused(&mut self, order: OrderId) -> bool {
-        match self.ordered {
-            Some((ordered, op)) if ordered == order => {
-                self.ordered = None;
-                self.refused = Some(op);
-                true
-            }
-            Some(_) | None => false,
-        }
-    }
-
-    /// The step whose capture was refused last.
-    pub(crate) fn missed(&mut self) -> Option<u32> {
-        self.refused.take()
-    }
-}
+use crate::phase::Phase;
+use crate::program::{Frame, Slot};
 
 impl Sequencer {
     /// A reading under way on which nothing crossed.
@@ -153,7 +103,7 @@ impl Sequencer {
     }
 
     /// Leaves the loops that the step is not in, and begins those that are new.
-    fn enter_loops(&mut self, slot: &Slot, valid_from: SinkTime, base: crate::account::Counted) {
+    fn enter_loops(&mut self, slot: &Slot, valid_from: SinkTime, base: Counted) {
         let loops = &mut self.course.loops;
         loops.retain(|watched| {
             slot.frames
@@ -257,7 +207,7 @@ impl Sequencer {
     fn divert(
         &mut self,
         op: u32,
-        frames: &[crate::program::Frame],
+        frames: &[Frame],
         next: Next,
         by: StepEnd,
         time: SinkTime,
@@ -290,7 +240,7 @@ impl Sequencer {
                 from: SinkTime::ZERO,
             });
         }
-        self.bursts.wanted.clear();
+        self.bursts.forget_wanted();
         self.tell_end(by, start);
     }
 
@@ -318,342 +268,5 @@ impl Sequencer {
         self.off();
         self.end_running(end);
         self.end(Ending::Finished);
-    }
-
-    /// Keeps the sink's queue filled.
-    pub(super) fn fill(&mut self) {
-        let capacity = self.capacity();
-        while self.course.waiting(self.begun_through) < capacity {
-            self.catch_up();
-            let Some((slot, last)) = self.course.take(&self.program) else {
-                break;
-            };
-            self.queue_step(slot, last, None);
-        }
-        self.order_burst();
-    }
-
-    /// If the next step's time is past or too near to be met, the rest of the schedule moves.
-    fn catch_up(&mut self) {
-        let Some(ahead) = self.course.ahead() else {
-            return;
-        };
-        let (op, due) = (ahead.op, ahead.start);
-        let nearest = self.sink_now().saturating_add(self.plan().tick);
-        if due >= nearest {
-            return;
-        }
-        let start = self.sink_now().saturating_add(REACTION);
-        self.course.delay_ahead(start);
-        self.draw_on(start);
-        self.find(Finding::Rescheduled {
-            op,
-            by: start.saturating_since(due),
-        });
-    }
-
-    /// The next step begins later than the last one ends: that one lasts until its hold runs out,
-    /// or until `start` if the next is queued by then.
-    fn draw_on(&mut self, start: SinkTime) {
-        let last = match self.course.queue.back_mut() {
-            Some(queued) => Some(&mut queued.step),
-            None => self
-                .course
-                .running
-                .as_mut()
-                .map(|running| &mut running.step),
-        };
-        if let Some(last) = last {
-            last.drawn_until = last.drawn_until.max(last.hold_end).max(start);
-        }
-    }
-
-    /// A step was refused because its time had passed: the rest of the schedule moves.
-    pub(super) fn reschedule_refused(&mut self, order: OrderId) {
-        let place = self
-            .course
-            .queue
-            .iter()
-            .position(|queued| queued.step.order == order);
-        let Some(place) = place else { return };
-        let Some(late) = self.course.queue.get(place).cloned() else {
-            return;
-        };
-        self.order(Order::Clear {
-            from: SinkTime::ZERO,
-        });
-        let slot = late.step.slot;
-        let start = self.sink_now().saturating_add(REACTION);
-        self.course.drop_from(place, start);
-        let by = start.saturating_since(slot.start);
-        self.find(Finding::Rescheduled { op: slot.op, by });
-        self.bursts.wanted.clear();
-        self.course.set_out_from(moved(&slot, start));
-        if let Some((slot, last)) = self.course.take(&self.program) {
-            self.queue_step(slot, last, late.carried);
-        }
-        self.fill();
-    }
-
-    fn queue_step(&mut self, slot: Slot, last: bool, carried: Option<Watch>) {
-        let Some(step) = self.program.step(slot.op) else {
-            return;
-        };
-        let cap = self.program.plan().interlocks.over_current.threshold;
-        let previous = self.course.last_ordered();
-        let before = previous
-            .filter(|previous| !previous.broken_off && previous.drawn_until >= slot.start)
-            .map_or(Current::ZERO, |previous| {
-                previous
-                    .setpoint(slot.start, self.voltage)
-                    .unwrap_or(cap)
-                    .min(cap)
-            });
-        let (target, whole_ramp) = match step.action {
-            Action::Current { target, ramp } => (target, ramp),
-            Action::Rest | Action::Power { .. } | Action::Resistance { .. } => {
-                (Current::ZERO, Span::ZERO)
-            }
-        };
-        let ramp_from = self.course.ramp_from(slot.start, target);
-        let before = before.max(ramp_from.1);
-        let planned = step
-            .duration
-            .saturating_sub(slot.end.saturating_since(slot.start));
-        let ramp = match carried {
-            // What is left of a ramp that had begun.
-            Some(_) => whole_ramp.saturating_sub(planned),
-            None => whole_ramp,
-        };
-        let duration = slot.end.saturating_since(slot.start);
-        let held = hold(duration, last);
-        let order = Order::Step(wire::Step {
-            mode: self
-                .limits
-                .mode(self.program.plan(), step.action, self.voltage),
-            start: slot.start,
-            ramp,
-            hold: held,
-        });
-        let (action, may_give_up, burst) = (step.action, step.may_give_up, step.burst);
-        let order = self.order(order);
-        if let Some(burst) = burst.filter(|_| carried.is_none()) {
-            self.want_burst(&slot, burst);
-        }
-        let step = Ordered {
-            hold_end: slot.start.saturating_add(held),
-            drawn_until: slot.end,
-            slot,
-            order,
-            action,
-            before,
-            ramp_from,
-            ramp,
-            broken_off: false,
-            acknowledged: false,
-            may_give_up,
-        };
-        self.course.queue.push_back(Queued {
-            step,
-            carried,
-            edge: None,
-        });
-    }
-
-    fn want_burst(&mut self, slot: &Slot, request: sequence::plan::BurstRequest) {
-        let tick = self.plan().tick.micros().max(1);
-        let samples = |span: Span| u16::try_from(span.micros() / tick).unwrap_or(u16::MAX);
-        let (before, after) = (samples(request.before), samples(request.after));
-        let count = u64::from(before) + u64::from(after);
-        let sending = Span::from_micros(BURST_SAMPLE.micros() * count);
-        self.bursts.wanted.push_back(Burst {
-            op: slot.op,
-            at: slot.start,
-            before,
-            after,
-            length: request.after.saturating_add(sending),
-        });
-    }
-
-    /// Arms the next capture when the sink has sent the one before.
-    fn order_burst(&mut self) {
-        let now = self.sink_now();
-        while let Some(burst) = self.bursts.wanted.front().copied() {
-            let lead = Span::from_micros(self.plan().tick.micros() * u64::from(burst.before));
-            if burst.at <= now.saturating_add(lead) {
-                self.bursts.wanted.pop_front();
-                self.find(Finding::BurstMissed { op: burst.op });
-                continue;
-            }
-            if now < self.bursts.busy_until {
-                return;
-            }
-            self.bursts.wanted.pop_front();
-            self.bursts.busy_until = burst.at.saturating_add(burst.length);
-            let order = self.order(Order::Burst {
-                at: burst.at,
-                before: burst.before,
-                after: burst.after,
-            });
-            self.bursts.ordered = Some((order, burst.op));
-        }
-    }
-
-    /// Orders the readback interval of the step that runs, early enough for a faster one.
-    ///
-    /// How far it looks ahead is the running step's own interval, not the one ordered last: else
-    /// a faster one would be ordered and taken back in turns.
-    fn keep_readback(&mut self) {
-        let default = self.plan().readback;
-        let interval_of = |step: &Ordered| {
-            let step = self.program.step(step.slot.op);
-            step.and_then(|step| step.readback).unwrap_or(default)
-        };
-        let mut running = default;
-        let mut wanted = None;
-        for step in self.course.steps() {
-            if step.slot.start <= self.begun_through {
-                running = interval_of(step);
-                wanted = Some(running);
-                continue;
-            }
-            let horizon = self.latest.saturating_add(running).saturating_add(REACTION);
-            if step.slot.start > horizon {
-                break;
-            }
-            let interval = interval_of(step).min(running);
-            wanted = Some(wanted.map_or(interval, |wanted| interval.min(wanted)));
-        }
-        if let Some(interval) = wanted.filter(|interval| *interval != self.readback) {
-            self.readback = interval;
-            self.order(Order::Readback { interval });
-        }
-    }
-
-    /// A step began, by the sink's own word: there is room in its queue.
-    pub(super) fn on_edge(&mut self, time: SinkTime, order: OrderId) {
-        let queued = self
-            .course
-            .queue
-            .iter_mut()
-            .find(|queued| queued.step.order == order);
-        let Some(queued) = queued else { return };
-        queued.edge = Some(time);
-        queued.step.acknowledged = true;
-        self.begun_through = self.begun_through.max(queued.step.slot.start);
-        if self.phase == Phase::Progress {
-            self.fill();
-            self.keep_readback();
-        }
-    }
-
-    /// The sink has turned off because nothing followed: as planned at the end, or in a gap that
-    /// a late order has torn; anything else means that one side is wrong.
-    pub(super) fn on_hold_expired(&mut self, time: SinkTime) {
-        if self.phase != Phase::Progress {
-            return;
-        }
-        let begun = self
-            .course
-            .queue
-            .iter()
-            .filter(|queued| queued.step.acknowledged && queued.step.slot.start <= time)
-            .map(|queued| &queued.step)
-            .next_back()
-            .or(self.course.running.as_ref().map(|running| &running.step));
-        let slack = Span::from_micros(self.plan().tick.micros().saturating_mul(2));
-        let early = begun.is_none_or(|step| time.saturating_add(slack) < step.hold_end)
-            && !self.course.straggler_expired(time.saturating_add(slack));
-        if early {
-            let due = begun.map_or(SinkTime::ZERO, |step| step.hold_end);
-            let early_by = due.saturating_since(time);
-            self.trip_by(Interlock::Refusal, crate::guard::micros(early_by), 0);
-        }
-    }
-
-    /// Off for now.
-    pub(super) fn hold(&mut self) {
-        self.held = true;
-        if self.phase != Phase::Progress {
-            // Nothing runs; and nothing will begin until the run is continued.
-            return;
-        }
-        let now = self.sink_now();
-        self.off();
-        // Whatever overtakes or follows `off` on its way must not be carried out later.
-        self.order(Order::Clear {
-            from: SinkTime::ZERO,
-        });
-        self.bursts.clear();
-        self.suspension = self.course.break_off(now, now.saturating_add(OFF_BY));
-        self.enter(Phase::Pause(Pause::default()));
-        self.find(Finding::Held);
-    }
-
-    pub(super) fn ask_to_go_on(&mut self) {
-        self.held = false;
-        if let Phase::Pause(pause) = self.phase {
-            self.enter(Phase::Pause(Pause {
-                go_on: true,
-                ..pause
-            }));
-            self.go_on_if_possible();
-        }
-    }
-
-    pub(super) fn on_off_acknowledged(&mut self) {
-        if let Phase::Pause(pause) = self.phase {
-            self.enter(Phase::Pause(Pause { off: true, ..pause }));
-            self.go_on_if_possible();
-        }
-    }
-
-    /// Goes on once the sink has said that it is off and all that had begun is accounted for.
-    pub(super) fn go_on_if_possible(&mut self) {
-        let Phase::Pause(pause) = self.phase else {
-            return;
-        };
-        if !pause.off || !pause.go_on || !self.course.queue.is_empty() {
-            return;
-        }
-        self.find(Finding::Continued);
-        self.set_going();
-    }
-
-    /// Begins, or goes on where the run was broken off.
-    pub(super) fn set_going(&mut self) {
-        let start = self.sink_now().max(self.latest).saturating_add(super::LEAD);
-        self.begun_through = self.latest;
-        self.enter(Phase::Progress);
-        if let Some(suspension) = self.suspension.take() {
-            self.take_up(&suspension, start);
-        } else {
-            self.course.set_out(&self.program, Cursor::default(), start);
-        }
-        self.fill();
-    }
-
-    /// Goes on with a step where it was broken off.
-    pub(super) fn take_up(&mut self, suspension: &Suspension, start: SinkTime) {
-        let tick = self.plan().tick;
-        let slot = suspension.slot(start, tick);
-        for watched in &mut self.course.loops {
-            let untils = self
-                .program
-                .head(watched.frame.head)
-                .map_or(&[][..], |head| &head.until);
-            watched.watch.resume(untils, start.saturating_add(tick));
-        }
-        // The step that was broken off stays until this one begins: what it drew may still show
-        // in the next reading.
-        let carried = self.course.running.as_mut().and_then(|running| {
-            running.ended = true;
-            let same = suspension.begun && running.step.slot.op == slot.op;
-            same.then(|| running.watch.clone())
-        });
-        self.course.set_out_from(slot);
-        if let Some((slot, last)) = self.course.take(&self.program) {
-            self.queue_step(slot, last, carried);
-        }
     }
 }
