@@ -2,8 +2,8 @@
 //!
 //! Rules on the draft judge step by step and run even when other parts could not be read, so
 //! that one answer has all findings. Rules on the plan need the whole of it and run only when
-//! nothing has refused the sequence yet. A further rule (a certificate valid for the whole
-//! run) is a function and a line in a table.
+//! nothing has refused the sequence yet. A further rule is a function and a line in a
+//! table.
 
 mod burst;
 mod dut;
@@ -96,6 +96,7 @@ const PLAN_RULES: &[PlanRule] = &[
     record::charge_within_rated,
     record::limits_within_reach,
     record::limits_leave_room,
+    record::certificate_valid,
 ];
 
 /// Every finding of the rules on the draft.

@@ -1,5 +1,6 @@
 //! From text to plan: the stages in their order, and what the caller gets.
 
+use quantity::Span;
 use sink::bench::SinkEntry;
 use sink::correction::Correction;
 
@@ -27,6 +28,9 @@ pub struct Options {
     pub dut_label: Option<String>,
     /// The sink's calibration; identity for an uncalibrated sink.
     pub correction: Correction,
+    /// How long the sink's certificate is still valid when the run begins, zero if it is not;
+    /// `None` for a sink without one, whose figures say so themselves.
+    pub certificate_valid_for: Option<Span>,
     /// Free bytes on the disk that takes the record; `None`: not judged.
     pub disk_free_bytes: Option<u64>,
     /// Bytes that a readback takes in the record.
@@ -38,6 +42,7 @@ impl Default for Options {
         Self {
             dut_label: None,
             correction: Correction::IDENTITY,
+            certificate_valid_for: None,
             disk_free_bytes: None,
             // A line of JSON with two readback lines' worth of numbers, uncompressed.
             bytes_per_readback: 400,

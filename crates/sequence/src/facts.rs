@@ -4,8 +4,9 @@
 //! ports. The facts are taken out of the entry in one place, so that a rule names what it judges
 //! by and a test needs no bench.
 
-use quantity::{Charge, Current, Energy, Power, Quantity, Span, Temperature, Voltage};
-use sink::bench::{Codes, InterlockDefaults, Link, SinkEntry};
+use quantity::{Charge, Current, Energy, Power, Span, Temperature, Voltage};
+use sink::bench::{InterlockDefaults, Link, SinkEntry};
+use sink::converter::Converter;
 use sink::correction::Correction;
 use sink::envelope::Envelope;
 use sink::leads::LeadsError;
@@ -70,23 +71,14 @@ impl Facts {
     /// words over these fields.
     pub fn of(entry: &SinkEntry, correction: Correction) -> Self {
         let front_end = &entry.front_end;
-        let (dac, sense) = (&front_end.dac, front_end.sense_resistor.resistance);
-        let codes = match dac.codes {
-            Codes::PowerOfTwo => 1_i128 << dac.bits.min(32),
-            Codes::PowerOfTwoLessOne => (1_i128 << dac.bits.min(32)) - 1,
-        };
-        let through = |voltage: Voltage| voltage.over(sense).unwrap_or(Current::ZERO);
-        let full_scale = through(dac.full_scale);
-        // Rounded up: a step or a floor taken too small would pass what cannot be set.
-        let step = (full_scale.base_units() + codes - 1) / codes.max(1);
-        let lowest = dac.minimum.saturating_add(dac.offset.max(Voltage::ZERO));
+        let converter = Converter::of(front_end);
         Self {
             name: entry.name.clone(),
-            current_max: entry.limits.current.min(full_scale),
+            current_max: entry.limits.current.min(converter.top()),
             power_max: entry.limits.power,
             voltage_max: entry.limits.voltage,
-            current_step: Current::from_base_units(step).unwrap_or(Current::MAX),
-            current_floor: through(lowest),
+            current_step: converter.step(),
+            current_floor: converter.floor(),
             ranges: Ranges {
                 current: front_end.adc.current_full_scale,
                 voltage: front_end.adc.voltage_full_scale,

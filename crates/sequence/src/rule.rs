@@ -191,6 +191,8 @@ rules! {
         "A limit on the time of the run is within what the run can take."
     LimitBeforeEnd "limit-before-end" Warning
         "The interlocks on charge, energy and time leave room for what the run will probably take."
+    CertificateExpires "certificate-expires" Warning
+        "The sink's certificate is valid for the whole of the longest possible run."
     DiskSpace "disk-space" Error
         "The record of the longest possible run fits the disk."
     RecordLarge "record-large" Warning

@@ -656,6 +656,11 @@ const RUN: &[Case] = &[
         |bed| bed.interlock("charge", json!("3.2 Ah")),
     ),
     case(
+        Rule::CertificateExpires,
+        |bed| bed.options.certificate_valid_for = Some(Span::from_secs(431 * 60 - 1)),
+        |bed| bed.options.certificate_valid_for = Some(Span::from_secs(431 * 60)),
+    ),
+    case(
         // 431 min of five readbacks a second, 400 bytes each: 51.72 MB.
         Rule::DiskSpace,
         |bed| bed.options.disk_free_bytes = Some(51_719_999),

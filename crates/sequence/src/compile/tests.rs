@@ -3,7 +3,6 @@
 use std::fmt::Write as _;
 
 use expect_test::{Expect, expect};
-use quantity::Span;
 use serde_json::json;
 use sink::bench::Bench;
 
@@ -412,4 +411,35 @@ fn a_file_that_is_not_given_is_a_finding_and_wanted_files_are_named_in_any_depth
     )
     .unwrap_err();
     assert_eq!(findings.rules(), [Rule::ProfileSource]);
+}
+
+#[test]
+fn a_text_of_nothing_but_mistakes_gets_a_bounded_answer() {
+    let bench = bench();
+    let refused = |text: &str| {
+        let Refused(findings) = compile(
+            text,
+            bench.sink("left").unwrap(),
+            &Files::new(),
+            &Options::default(),
+        )
+        .unwrap_err();
+        findings.list
+    };
+    let base = include_str!("../check/tests/base.json");
+    let pairs = vec!["[1, 2]"; 50_000].join(",");
+    let profile =
+        format!("{{ \"profile\": {{ \"interpolation\": \"steps\", \"points\": [{pairs}] }} }},");
+    let list = refused(&base.replace("{ \"rest\": \"10 min\" },", &profile));
+    assert_eq!(list.len(), 201);
+    assert!(
+        list[200].message.starts_with("99800 more errors"),
+        "{}",
+        list[200]
+    );
+    let list = refused(&vec!["[01"; 50_000].join(","));
+    assert!(list.len() < 110, "{}", list.len());
+    let keys: Vec<String> = (0..50_000).map(|n| format!("\"k{n}\": 1")).collect();
+    let list = refused(&format!("{{{}}}", keys.join(",")));
+    assert_eq!(list.len(), 1, "{}", list[0]);
 }
