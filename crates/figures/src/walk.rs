@@ -8,7 +8,7 @@
 use std::ops::Range;
 
 use journal::Chunk;
-use quantity::{Charge, Current, Energy, SinkTime, Temperature, Voltage};
+use quantity::{Charge, Current, Energy, SinkTime, Span, Temperature, Voltage};
 use sink::accumulate::Sum;
 use wire::{Counters, TemperatureReading};
 
@@ -41,6 +41,14 @@ pub(crate) struct Sample {
     pub(crate) time: SinkTime,
     pub(crate) current: Current,
     pub(crate) voltage: Voltage,
+}
+
+impl Sample {
+    /// The middle of the interval, which its means stand for.
+    pub(crate) fn middle(&self) -> SinkTime {
+        let length = self.time.saturating_since(self.from).micros();
+        self.from.saturating_add(Span::from_micros(length / 2))
+    }
 }
 
 /// What a stretch of sink time delivered.

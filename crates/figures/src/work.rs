@@ -293,13 +293,14 @@ impl Workbench<'_> {
                 .volts()
         };
         let (high, low) = (voltage(&before), voltage(&after));
-        let seconds = after.time.saturating_since(before.time).seconds();
+        // A mean stands for the middle of its interval.
+        let seconds = after.middle().saturating_since(before.middle()).seconds();
         let slope = (high - low) / seconds;
         let share = ((high - limit.volts()) / (high - low)).clamp(0.0, 1.0);
         let end = delivered.end?;
         // From the crossing to the end of the stage a steady current flows; taking that off the
         // end keeps the counters' exactness.
-        let since = end.time.saturating_since(before.time).seconds();
+        let since = end.time.saturating_since(before.middle()).seconds();
         let beyond_s = (since - share * seconds).max(0.0) * self.time_base.factor;
         let current = self
             .plan
