@@ -40,4 +40,4 @@ mod worker;
 
 pub use config::{Config, Scope, Tokens, TokensError};
 pub use error::DaemonError;
-pub use supervise::{Daemon, serve};
+pub use supervise::{Daemon, host_name, serve};

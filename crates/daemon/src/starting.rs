@@ -110,8 +110,9 @@ pub(crate) fn start(
         folder,
         plan,
         sequencer,
+        started: writer.manifest().created.clone(),
         writer,
-        resumed: None,
+        resumed: false,
         reservation,
         answer: Some(answer),
     };

@@ -292,7 +292,8 @@ fn take_up(sink: &SinkHandle, resumption: Resumption) {
         plan: resumption.plan,
         sequencer: resumption.sequencer,
         writer: resumption.writer,
-        resumed: Some(resumption.started),
+        started: resumption.started,
+        resumed: true,
         reservation,
         answer: None,
     };
@@ -315,8 +316,8 @@ fn since_1970(now: HostTime) -> Duration {
     Duration::from_micros(now.saturating_since(HostTime::ZERO).micros())
 }
 
-/// The name of this host, for the records.
-fn host_name() -> String {
+/// The name of this host, as records have it; `unknown` where the system does not say.
+pub fn host_name() -> String {
     std::fs::read_to_string("/proc/sys/kernel/hostname")
         .ok()
         .map(|name| name.trim().to_owned())

@@ -88,8 +88,10 @@ pub(crate) struct Begin {
     pub(crate) sequencer: Sequencer,
     /// The writer of its record.
     pub(crate) writer: Writer,
-    /// When it was started, if it is resumed.
-    pub(crate) resumed: Option<String>,
+    /// When it was started (RFC 3339), as its manifest has it.
+    pub(crate) started: String,
+    /// Whether it is taken up again.
+    pub(crate) resumed: bool,
     /// The right to run on this sink.
     pub(crate) reservation: Reservation,
     /// The run as it began, or why it could not.

@@ -28,14 +28,10 @@ impl Worker {
         if let Err(busy) = self.keeper.begin(begin.sequencer, recorded, now) {
             return refuse(answer, busy.to_string());
         }
-        let news = match begin.resumed {
-            Some(_) => RunNews::Resumed,
-            None => RunNews::Began,
-        };
         self.run = Some(RunInProgress {
             id: begin.id,
             folder: begin.folder,
-            started: begin.resumed.unwrap_or_else(|| rfc3339(now)),
+            started: begin.started,
             expected: begin.plan.forecast().duration,
             plan: begin.plan,
             record,
@@ -44,11 +40,11 @@ impl Worker {
             ending: None,
             reservation: begin.reservation,
         });
-        let message = match news {
-            RunNews::Resumed => "resumed",
-            _ => "began",
-        };
-        self.tell(now, message.to_owned(), false, news);
+        if begin.resumed {
+            self.tell(now, "resumed".to_owned(), false, RunNews::Resumed);
+        } else {
+            self.tell(now, "began".to_owned(), false, RunNews::Began);
+        }
         self.newsworthy = true;
         self.settle();
         if let (Some(answer), Some(view)) = (answer, self.run_view()) {
