@@ -23,7 +23,7 @@ const IDLE_DEADMAN: Span = Span::from_secs(10);
 const IDLE_ORDERS: u64 = 1 << 63;
 
 /// What a keeper needs to know of its sink.
-#[derive(Debug, Clone)]
+#[derive(Debug, Clone, Copy)]
 pub struct KeeperConfig {
     /// How to hold the session.
     pub session: SessionConfig,
