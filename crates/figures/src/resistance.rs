@@ -4,6 +4,7 @@
 //! its end. IEC 61960-3 has 0,2 It for 10 s and then 1,0 It for 1 s; other currents and times
 //! give a resistance as well, which the label of the second step then names.
 
+use quantity::Voltage;
 use sequence::plan::{Action, Plan};
 
 use crate::contribution::{FrontEnd, of_resistance};
@@ -14,8 +15,9 @@ use crate::walk::{Delivered, Sample};
 /// The smallest rise of current, in steps of the converter, that a resistance is worked out for.
 const LEAST_RISE: f64 = 2.0;
 
-const HOW: &str = "(U1 - U2) / (I2 - I1), each the mean of the last readback wholly within its \
-                   step, the second step right after the first and at a larger current";
+const HOW: &str = "(U1 - U2) / (I2 - I1), each at the end of its step: the last readback wholly \
+                   within it, its voltage carried on in a straight line to the readback's end; \
+                   the second step right after the first and at a larger current";
 const SOURCE: &str = "IEC 61960-3, d.c. internal resistance by two currents (from memory)";
 
 /// Every pair of steps that gives a resistance.
@@ -34,9 +36,26 @@ pub(crate) fn resistances(
                 return None;
             }
             let label = second.label.or(first.label).map(str::to_owned);
-            figure(plan, label, before.last?, after.last?, front_end)
+            figure(plan, label, ended(before)?, ended(after)?, front_end)
         })
         .collect()
+}
+
+/// The last readback of a step, its voltage carried on from the middle of its interval to the
+/// end, along the straight line through it and the readback before.
+fn ended(delivered: &Delivered) -> Option<Sample> {
+    let last = delivered.last.1?;
+    let Some(before) = delivered.last.0 else {
+        return Some(last);
+    };
+    let apart = last.middle().saturating_since(before.middle()).seconds();
+    let on = last.time.saturating_since(last.middle()).seconds();
+    if apart <= 0.0 {
+        return Some(last);
+    }
+    let rise = last.voltage.volts() - before.voltage.volts();
+    let voltage = Voltage::from_volts(last.voltage.volts() + rise * on / apart).ok()?;
+    Some(Sample { voltage, ..last })
 }
 
 /// The current of a step that holds one from its first instant, ampere.

@@ -3,3 +3,5 @@
 mod bench;
 mod capacity;
 mod number;
+mod outside;
+mod resistance;

@@ -61,9 +61,10 @@ pub(crate) struct Delivered {
     pub(crate) latest: Option<Mark>,
     /// First and last row of the readbacks in it.
     pub(crate) rows: Option<(u64, u64)>,
-    /// The last readback that lies wholly in it.
-    pub(crate) last: Option<Sample>,
-    /// The last two readbacks around the first time the voltage watched fell below.
+    /// The last two readbacks that lie wholly in it, the later one second.
+    pub(crate) last: (Option<Sample>, Option<Sample>),
+    /// The two readbacks around the latest time the voltage watched fell below: an earlier
+    /// fall did not last, or the step would have ended there.
     pub(crate) crossing: Option<(Sample, Sample)>,
     /// Hottest heat sink.
     pub(crate) hottest: Option<Temperature>,
@@ -192,13 +193,13 @@ impl Delivered {
     /// Sets the counters at the stretch's ends as soon as the walk has passed them.
     fn reach(&mut self, stretch: &Stretch, previous: Option<Previous>, mark: Mark) {
         if self.begin.is_none() && mark.time >= stretch.time.start {
-            self.begin = Some(mark_at(stretch.time.start, previous, mark));
+            self.begin = mark_at(stretch.time.start, previous, mark);
         }
         if mark.time < stretch.time.end {
             self.latest = Some(mark);
         }
         if self.end.is_none() && mark.time >= stretch.time.end {
-            self.end = Some(mark_at(stretch.time.end, previous, mark));
+            self.end = mark_at(stretch.time.end, previous, mark);
         }
     }
 
@@ -217,13 +218,12 @@ impl Delivered {
         }
         let wholly = sample.from >= stretch.time.start && sample.time <= stretch.time.end;
         if wholly && sample.from < sample.time {
-            self.last = Some(*sample);
+            self.last = (self.last.1, Some(*sample));
         }
         let Some(previous) = previous else { return };
         self.add_trapezoid(stretch, previous, sample);
         if let Some(below) = stretch.below
             && wholly
-            && self.crossing.is_none()
             && sample.voltage < below
             && previous.voltage >= below
         {
@@ -245,27 +245,23 @@ impl Delivered {
     }
 }
 
-/// The counters at an instant between the readback before and the one after it.
-fn mark_at(instant: SinkTime, previous: Option<Previous>, after: Mark) -> Mark {
-    let Some(previous) = previous else {
-        return after;
-    };
-    let Some(before) = previous.mark else {
-        return after;
-    };
-    if instant >= after.time || instant <= before.time {
-        return if instant <= before.time {
-            before
-        } else {
-            after
-        };
+/// The counters at an instant between the readback before and the one after it; `None` where the
+/// record has none before, so that what flowed up to the first readback is not passed over.
+fn mark_at(instant: SinkTime, previous: Option<Previous>, after: Mark) -> Option<Mark> {
+    if instant >= after.time {
+        return Some(after);
+    }
+    let previous = previous?;
+    let before = previous.mark?;
+    if instant <= before.time {
+        return (instant == before.time).then_some(before);
     }
     let span = instant.saturating_since(before.time);
     let carried = previous.current.times(span);
     let power = previous.voltage.times(previous.current);
     let charge = before.charge.saturating_add(carried);
     let energy = before.energy.saturating_add(power.times(span));
-    Mark {
+    Some(Mark {
         time: instant,
         charge: charge.clamp(
             before.charge.min(after.charge),
@@ -275,5 +271,5 @@ fn mark_at(instant: SinkTime, previous: Option<Previous>, after: Mark) -> Mark {
             before.energy.min(after.energy),
             before.energy.max(after.energy),
         ),
-    }
+    })
 }

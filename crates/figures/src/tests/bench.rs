@@ -11,9 +11,10 @@ use sequence::{Options, compile};
 use sequencer::Sequencer;
 use sequencer::event::Finding;
 use simulator::bench_source::sink_parts;
-use simulator::device::SimulatedSink;
+use simulator::cell::{Cell, Model, Spread, Start};
+use simulator::device::{SimulatedSink, SinkParts};
 use simulator::front_end::Errors;
-use simulator::source::Truth;
+use simulator::source::{Source, Truth};
 use sink::bench::{Bench, SinkEntry};
 use tempfile::TempDir;
 
@@ -62,15 +63,33 @@ pub(crate) fn exact() -> SinkEntry {
 
 /// Rehearses a sequence into a record; without errors of the front end if asked.
 pub(crate) fn night(text: &str, entry: &SinkEntry, error_free: bool, seed: u64) -> Night {
-    let plan = match compile(text, entry, &BTreeMap::new(), &Options::default()) {
-        Ok(compiled) => compiled.plan,
-        Err(refused) => panic!("{refused}"),
-    };
     let mut parts = sink_parts(entry).unwrap();
     parts.seed = seed;
     if error_free {
         parts.errors = Errors::default();
     }
+    rehearsed(text, entry, parts)
+}
+
+/// Rehearses a sequence on a cell of a given model, without errors of the front end.
+pub(crate) fn night_on(text: &str, entry: &SinkEntry, model: &Model) -> Night {
+    let mut parts = sink_parts(entry).unwrap();
+    parts.errors = Errors::default();
+    let start = Start {
+        state_of_charge: 0.9,
+        temperature_degc: 23.0,
+        ambient_degc: 23.0,
+    };
+    let cell = Cell::new(model, Spread::default(), start).unwrap();
+    parts.source = Source::Cell(Box::new(cell));
+    rehearsed(text, entry, parts)
+}
+
+fn rehearsed(text: &str, entry: &SinkEntry, parts: SinkParts) -> Night {
+    let plan = match compile(text, entry, &BTreeMap::new(), &Options::default()) {
+        Ok(compiled) => compiled.plan,
+        Err(refused) => panic!("{refused}"),
+    };
     let mut device = SimulatedSink::new(parts).unwrap();
     device.watch_voltage(2.75);
     let folder = tempfile::tempdir().unwrap();
