@@ -1,8 +1,8 @@
 //! The steps of a run as they were carried out, from the findings in its record.
 
 use journal::{Body, Entry};
-use quantity::SinkTime;
-use sequence::plan::{Action, Condition, Op, Plan, PlanStep, Until};
+use quantity::{SinkTime, Voltage};
+use sequence::plan::{Action, Condition, Op, Plan, PlanStep};
 use sequencer::event::{Finding, StepEnd};
 
 /// One step as it was carried out.
@@ -30,13 +30,17 @@ impl Stage<'_> {
         }
     }
 
-    /// Whether a voltage falling below a value ended it: the cut-off.
-    pub(crate) fn cut_off(&self) -> Option<&Until> {
+    /// The cut-off: the voltage whose falling below ended the step.
+    pub(crate) fn cut_off(&self) -> Option<Voltage> {
         let Some(StepEnd::Until(index)) = self.ended_by else {
             return None;
         };
         let until = self.step.until.get(usize::from(index))?;
-        matches!(until.condition, Condition::VoltageBelow(_)).then_some(until)
+        if let Condition::VoltageBelow(voltage) = until.condition {
+            Some(voltage)
+        } else {
+            None
+        }
     }
 }
 
@@ -47,25 +51,22 @@ pub(crate) fn stages<'a>(plan: &'a Plan, others: &[Entry], last: SinkTime) -> Ve
         let Body::Finding(finding) = &entry.body else {
             continue;
         };
-        match finding {
-            Finding::StepBegan { op, time } => {
-                if let Some(step) = step_at(plan, *op) {
-                    stages.push(Stage {
-                        step,
-                        label: label_of(plan, step),
-                        begin: *time,
-                        end: last,
-                        ended_by: None,
-                    });
-                }
-            }
-            Finding::StepEnded { time, by, .. } => {
-                if let Some(stage) = stages.last_mut() {
-                    stage.end = *time;
-                    stage.ended_by = Some(*by);
-                }
-            }
-            _ => {}
+        if let Finding::StepBegan { op, time } = finding
+            && let Some(step) = step_at(plan, *op)
+        {
+            stages.push(Stage {
+                step,
+                label: label_of(plan, step),
+                begin: *time,
+                end: last,
+                ended_by: None,
+            });
+        }
+        if let Finding::StepEnded { time, by, .. } = finding
+            && let Some(stage) = stages.last_mut()
+        {
+            stage.end = *time;
+            stage.ended_by = Some(*by);
         }
     }
     stages

@@ -2,7 +2,7 @@
 
 use journal::{Entry, JournalError, Record};
 use quantity::{Charge, SinkTime, Span};
-use sequence::plan::{Condition, DutKind, Plan};
+use sequence::plan::{DutKind, Plan};
 use serde::Deserialize as _;
 use sink::bench::SinkEntry;
 use sink::correction::Bound;
@@ -81,17 +81,14 @@ pub fn work_out(record: &Record) -> Result<Figures, FiguresError> {
 
 /// Walks the readbacks once, a stretch for every stage.
 fn walk(record: &Record, stages: &[Stage<'_>]) -> Result<Vec<Delivered>, FiguresError> {
+    let correction = &record.manifest().plan.correction;
     let stretches = stages
         .iter()
         .map(|stage| Stretch {
             time: stage.begin..stage.end,
-            below: stage.cut_off().and_then(|until| match until.condition {
-                Condition::VoltageBelow(voltage) => {
-                    let correction = &record.manifest().plan.correction;
-                    Some(correction.voltage_limit_to_nominal(voltage, Bound::Lower))
-                }
-                _ => None,
-            }),
+            below: stage
+                .cut_off()
+                .map(|voltage| correction.voltage_limit_to_nominal(voltage, Bound::Lower)),
         })
         .collect();
     let mut walk = Walk::new(stretches);
@@ -281,9 +278,7 @@ impl Workbench<'_> {
     fn cut_off(&self, index: usize) -> Option<CutOff> {
         let stage = self.stages.get(index)?;
         let delivered = self.walked.get(index)?;
-        let Condition::VoltageBelow(limit) = stage.cut_off()?.condition else {
-            return None;
-        };
+        let limit = stage.cut_off()?;
         let begin = delivered.begin?;
         let (before, after) = delivered.crossing?;
         let voltage = |sample: &Sample| {
@@ -324,7 +319,7 @@ impl Workbench<'_> {
     fn trapezoid(&self, figures: &mut Figures, together: &Together, rows: Rows) {
         let factor = self.time_base.factor / 3600.0;
         let nominal = Charge::from_coulombs(together.trapezoid_as).unwrap_or(Charge::ZERO);
-        let span = Span::from_micros((together.amount.seconds * 1e6).round().max(0.0) as u64);
+        let span = Span::from_seconds(together.amount.seconds).unwrap_or(Span::ZERO);
         let value = self
             .plan
             .correction

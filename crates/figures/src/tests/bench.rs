@@ -32,13 +32,13 @@ pub(crate) struct Night {
 impl Night {
     /// When the step at this place of the plan began, seconds of the sink's clock.
     pub(crate) fn step_began_s(&self, place: u32) -> f64 {
-        let began =
-            self.record
-                .entries_without_readings()
-                .find_map(|entry| match entry.unwrap().body {
-                    Body::Finding(Finding::StepBegan { op, time }) if op == place => Some(time),
-                    _ => None,
-                });
+        let began = self.record.entries_without_readings().find_map(|entry| {
+            if let Body::Finding(Finding::StepBegan { op, time }) = entry.unwrap().body {
+                (op == place).then_some(time)
+            } else {
+                None
+            }
+        });
         began.unwrap().saturating_since(SinkTime::ZERO).seconds()
     }
 }
