@@ -15,7 +15,9 @@ use crate::command::{cargo, root, run, show};
 /// The invented scenario: an overnight capacity test of cell K-01 on the sink `left`.
 const SINK: &str = "left";
 const CELL: &str = "K-01";
-const SEQUENCE: &str = "sequences/overnight-capacity.json";
+const SEQUENCE: &str = "sequences/capacity-0.2-it.json";
+/// How much faster than real time the simulated night passes: some twenty seconds.
+const TIME_FACTOR: &str = "1000";
 
 /// Runs the demo.
 #[expect(
@@ -90,6 +92,8 @@ impl Daemon {
             .arg("--records")
             .arg(records)
             .args(["--listen", "127.0.0.1:0"])
+            .args(["--time-factor", TIME_FACTOR])
+            .args(["--log", "warn"])
             .stdout(Stdio::piped());
         let mut child = command
             .spawn()

@@ -1,0 +1,274 @@
+//! The flags as they are given; each command makes one validated value of its own.
+
+use std::net::SocketAddr;
+use std::num::NonZeroU32;
+use std::path::PathBuf;
+
+use clap::{Args, Parser, Subcommand};
+
+use crate::exit::CODES;
+
+/// Runs home-built DC current sinks through timed sequences, and says what they measured.
+///
+/// A sequence is checked against the sink and the cell, rehearsed on a simulated source, run by
+/// the daemon with interlocks on, and kept in a record from which every figure is worked out.
+///
+/// Cells vent, burn and explode, and a MOSFET that fails usually fails shorted: a fuse and a
+/// switch in series with the device under test, and supervision. The interlocks are a help, not
+/// a safety-rated protection.
+#[derive(Debug, Parser)]
+#[command(
+    name = "sinkwarden",
+    version,
+    max_term_width = 100,
+    disable_help_subcommand = true,
+    after_help = CODES
+)]
+pub(crate) struct Arguments {
+    /// Answer with JSON on stdout instead of text.
+    #[arg(long, global = true)]
+    pub(crate) json: bool,
+    /// What to do.
+    #[command(subcommand)]
+    pub(crate) command: Command,
+}
+
+/// What can be asked for.
+#[derive(Debug, Subcommand)]
+pub(crate) enum Command {
+    /// Print a bench file to start from: invented, simulated, ready to use.
+    #[command(after_help = "Example: sinkwarden bench > bench.toml")]
+    Bench,
+    /// Print the JSON Schema of a sequence file, for an editor.
+    #[command(after_help = "Example: sinkwarden schema > sequence.schema.json")]
+    Schema,
+    /// Check a sequence against a sink, the device under test and the interlocks.
+    ///
+    /// Names every mistake at once, each with its place and its mend, or says what the plan will
+    /// take. Nothing is connected.
+    #[command(after_help = "Example: sinkwarden check sequences/capacity-0.2-it.json --sink left")]
+    Check(SequenceOn),
+    /// Rehearse a sequence in virtual time, against a simulated source.
+    ///
+    /// The same sequencer, line protocol and firmware logic as in a run; a night takes seconds.
+    /// Says when it would end, why, and how near each interlock came. Never touches hardware.
+    #[command(
+        after_help = "Example: sinkwarden rehearse sequences/capacity-0.2-it.json --sink left --dut K-02"
+    )]
+    Rehearse(Rehearse),
+    /// Serve a bench: the daemon that holds the sinks, runs sequences and writes records.
+    #[command(after_help = "Example: sinkwarden serve --bench bench.toml --time-factor 600")]
+    Serve(Serve),
+    /// Run a sequence on a sink of the daemon and follow it to its end.
+    ///
+    /// Ctrl-C asks the daemon to stop the run and says what happened.
+    #[command(
+        after_help = "Example: sinkwarden run sequences/capacity-0.2-it.json --sink left --dut K-01"
+    )]
+    Run(Run),
+    /// Turn a sink off, or every sink; a run in progress ends as stopped.
+    #[command(after_help = "Example: sinkwarden off left")]
+    Off(SinkOf),
+    /// Show every sink of the daemon, or one, as it is now.
+    #[command(after_help = "Example: sinkwarden status")]
+    Status(SinkOf),
+    /// Watch a sink, or every sink, line by line until interrupted.
+    #[command(after_help = "Example: sinkwarden watch left")]
+    Watch(SinkOf),
+    /// List the records of a folder, the latest last.
+    #[command(after_help = "Example: sinkwarden records --dut K-01")]
+    Records(Records),
+    /// Work out a record's figures, each with its uncertainty and method.
+    #[command(after_help = "Example: sinkwarden figures latest --budget")]
+    Figures(Figures),
+    /// Replay a record: the same readings must give the same orders, bit for bit.
+    #[command(after_help = "Example: sinkwarden replay latest")]
+    Replay(RecordOf),
+    /// Verify that nothing in a record was altered since it was written.
+    #[command(after_help = "Example: sinkwarden verify latest")]
+    Verify(RecordOf),
+    /// Export a record's readbacks as CSV, with units in the column names.
+    #[command(after_help = "Example: sinkwarden export latest > readings.csv")]
+    Export(Export),
+}
+
+/// A sequence for a sink of a bench file.
+#[derive(Debug, Args)]
+pub(crate) struct SequenceOn {
+    /// The sequence file.
+    #[arg(value_name = "SEQUENCE")]
+    pub(crate) sequence: PathBuf,
+    /// The bench file.
+    #[arg(
+        long,
+        value_name = "FILE",
+        env = "SINKWARDEN_BENCH",
+        default_value = "bench.toml"
+    )]
+    pub(crate) bench: PathBuf,
+    /// The sink's name in the bench file.
+    #[arg(long, value_name = "NAME")]
+    pub(crate) sink: String,
+    /// What is written on the device under test; wins over the sequence's own label.
+    #[arg(long, value_name = "LABEL")]
+    pub(crate) dut: Option<String>,
+}
+
+/// `rehearse`.
+#[derive(Debug, Args)]
+pub(crate) struct Rehearse {
+    /// What to rehearse.
+    #[command(flatten)]
+    pub(crate) on: SequenceOn,
+    /// The simulated source: a cell by its label (K-01 to M-03, K, M), or a JSON file with a
+    /// source in the words of the bench file. Without it: the sink's own, or the cell of --dut.
+    #[arg(long, value_name = "LABEL|FILE")]
+    pub(crate) source: Option<String>,
+    /// Keep a record of the rehearsal in this folder, which must not exist yet.
+    #[arg(long, value_name = "FOLDER")]
+    pub(crate) keep: Option<PathBuf>,
+}
+
+/// `serve`.
+#[derive(Debug, Args)]
+pub(crate) struct Serve {
+    /// The bench file.
+    #[arg(
+        long,
+        value_name = "FILE",
+        env = "SINKWARDEN_BENCH",
+        default_value = "bench.toml"
+    )]
+    pub(crate) bench: PathBuf,
+    /// The folder for records; without it, the bench file's.
+    #[arg(long, value_name = "FOLDER")]
+    pub(crate) records: Option<PathBuf>,
+    /// Where to listen; port 0 takes any free one. Beyond this machine a token file is needed.
+    #[arg(long, value_name = "ADDRESS", default_value = "127.0.0.1:7070")]
+    pub(crate) listen: SocketAddr,
+    /// How much faster than real time simulated sinks run; without it, as the bench file says.
+    #[arg(long, value_name = "N")]
+    pub(crate) time_factor: Option<NonZeroU32>,
+    /// A file with a line `operate TOKEN` or `read TOKEN` for each token that is let in.
+    #[arg(long, value_name = "FILE")]
+    pub(crate) token_file: Option<PathBuf>,
+    /// A name under which other machines address this one; may be repeated.
+    #[arg(long = "host-name", value_name = "NAME")]
+    pub(crate) host_names: Vec<String>,
+    /// What to log on stderr: error, warn, info, debug, or a filter such as `daemon=debug`.
+    #[arg(
+        long,
+        value_name = "FILTER",
+        env = "SINKWARDEN_LOG",
+        default_value = "info"
+    )]
+    pub(crate) log: String,
+    /// A program with its arguments, started with an event as JSON on its stdin when a run ends
+    /// or a person is needed. Must come last.
+    #[arg(long, value_name = "COMMAND", num_args = 1.., allow_hyphen_values = true)]
+    pub(crate) notify: Option<Vec<String>>,
+}
+
+/// Where the daemon is.
+#[derive(Debug, Args)]
+pub(crate) struct DaemonAt {
+    /// Where the daemon listens.
+    #[arg(
+        long,
+        value_name = "URL",
+        env = "SINKWARDEN_DAEMON",
+        default_value = "http://127.0.0.1:7070"
+    )]
+    pub(crate) daemon: String,
+    /// A file with the daemon's token: the token alone, or the daemon's own token file.
+    #[arg(long, value_name = "FILE", env = "SINKWARDEN_TOKEN_FILE")]
+    pub(crate) token_file: Option<PathBuf>,
+}
+
+/// `run`.
+#[derive(Debug, Args)]
+pub(crate) struct Run {
+    /// The sequence file.
+    #[arg(value_name = "SEQUENCE")]
+    pub(crate) sequence: PathBuf,
+    /// The sink's name on the daemon's bench.
+    #[arg(long, value_name = "NAME")]
+    pub(crate) sink: String,
+    /// What is written on the device under test; wins over the sequence's own label.
+    #[arg(long, value_name = "LABEL")]
+    pub(crate) dut: Option<String>,
+    /// Return at once with the run's id; the run goes on.
+    #[arg(long)]
+    pub(crate) detach: bool,
+    /// Where.
+    #[command(flatten)]
+    pub(crate) at: DaemonAt,
+}
+
+/// A sink of the daemon, or all of them.
+#[derive(Debug, Args)]
+pub(crate) struct SinkOf {
+    /// The sink's name; without it, every sink.
+    #[arg(value_name = "SINK")]
+    pub(crate) sink: Option<String>,
+    /// Where.
+    #[command(flatten)]
+    pub(crate) at: DaemonAt,
+}
+
+/// `records`.
+#[derive(Debug, Args)]
+pub(crate) struct Records {
+    /// The folder that holds the records.
+    #[arg(
+        long,
+        value_name = "FOLDER",
+        env = "SINKWARDEN_RECORDS",
+        default_value = "records"
+    )]
+    pub(crate) records: PathBuf,
+    /// Only those of this device under test.
+    #[arg(long, value_name = "LABEL")]
+    pub(crate) dut: Option<String>,
+    /// Only those of this sink.
+    #[arg(long, value_name = "NAME")]
+    pub(crate) sink: Option<String>,
+}
+
+/// A record.
+#[derive(Debug, Args)]
+pub(crate) struct RecordOf {
+    /// The record: its folder, the beginning of its name or id, or `latest`.
+    #[arg(value_name = "RECORD")]
+    pub(crate) record: String,
+    /// The folder in which a name or id is looked up.
+    #[arg(
+        long,
+        value_name = "FOLDER",
+        env = "SINKWARDEN_RECORDS",
+        default_value = "records"
+    )]
+    pub(crate) records: PathBuf,
+}
+
+/// `figures`.
+#[derive(Debug, Args)]
+pub(crate) struct Figures {
+    /// Of which record.
+    #[command(flatten)]
+    pub(crate) of: RecordOf,
+    /// Show what contributes to each uncertainty, too.
+    #[arg(long)]
+    pub(crate) budget: bool,
+}
+
+/// `export`.
+#[derive(Debug, Args)]
+pub(crate) struct Export {
+    /// Of which record.
+    #[command(flatten)]
+    pub(crate) of: RecordOf,
+    /// Write to this file, which must not exist yet, instead of stdout.
+    #[arg(long, value_name = "FILE")]
+    pub(crate) output: Option<PathBuf>,
+}

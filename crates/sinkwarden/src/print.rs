@@ -1,0 +1,26 @@
+//! Text for people: plain lines and tables, no colour, units on every number.
+
+mod bench_state;
+mod check;
+mod ending;
+mod figures;
+mod findings;
+mod line;
+mod records;
+mod rehearsal;
+mod replay;
+mod table;
+mod unit;
+mod verify;
+
+pub(crate) use bench_state::{off, sinks};
+pub(crate) use check::check;
+pub(crate) use ending::{ended_run, started_run};
+pub(crate) use figures::figures;
+pub(crate) use findings::{findings, refused};
+pub(crate) use line::{progress_of, sink_line};
+pub(crate) use records::records;
+pub(crate) use rehearsal::rehearsal;
+pub(crate) use replay::replay;
+pub(crate) use unit::{count, duration, words};
+pub(crate) use verify::verify;

@@ -1,0 +1,99 @@
+//! Help, usage errors, files that are not there.
+
+use expect_test::expect;
+
+use crate::program::{Answer, Desk, sinkwarden};
+
+#[test]
+fn the_help_names_every_command_and_every_exit_code() {
+    let answer = Answer::from(sinkwarden().arg("-h").output().unwrap()).with_code(0);
+    expect![[""]].assert_eq(&answer.stdout);
+}
+
+#[test]
+fn a_flag_that_does_not_exist_is_a_usage_error() {
+    let desk = Desk::new();
+    let answer = desk
+        .run(&["check", "short.json", "--sinc", "left"])
+        .with_code(2);
+    assert!(answer.stderr.contains("--sink"), "{}", answer.stderr);
+    assert_eq!(answer.stdout, "");
+}
+
+#[test]
+fn a_bench_file_that_is_not_there_says_how_to_make_one() {
+    let desk = Desk::new();
+    let answer = desk
+        .run(&[
+            "check",
+            "short.json",
+            "--bench",
+            "none.toml",
+            "--sink",
+            "left",
+        ])
+        .with_code(1);
+    assert!(
+        answer.stderr.contains(
+            "hint: name it with --bench, or make one to start from: sinkwarden bench > bench.toml"
+        ),
+        "{}",
+        answer.stderr
+    );
+}
+
+#[test]
+fn a_sink_that_is_not_on_the_bench_says_which_are() {
+    let desk = Desk::new();
+    let answer = desk
+        .run(&["check", "short.json", "--sink", "middle"])
+        .with_code(1);
+    expect![[r#"
+        error: the bench file bench.toml has no sink `middle`
+        hint: give --sink one of: left, right
+    "#]]
+    .assert_eq(&answer.stderr);
+}
+
+#[test]
+fn a_bench_file_with_mistakes_names_each_with_its_place() {
+    let desk = Desk::new();
+    let bench = std::fs::read_to_string(desk.path("bench.toml")).unwrap();
+    desk.write("bench.toml", &bench.replacen("bits = 12", "bits = 0", 1));
+    let answer = desk
+        .run(&["check", "short.json", "--sink", "left"])
+        .with_code(1);
+    assert!(answer.stderr.contains("bench.toml:"), "{}", answer.stderr);
+    assert!(answer.stderr.contains("dac.bits"), "{}", answer.stderr);
+}
+
+#[test]
+fn a_daemon_that_is_not_there_is_an_error_with_what_to_do() {
+    let desk = Desk::new();
+    // Port 9 is discard: nothing of ours listens there.
+    let at = ["--daemon", "http://127.0.0.1:9"];
+    let answer = desk.run(&[&["status"][..], &at].concat()).with_code(1);
+    assert!(
+        answer
+            .stderr
+            .contains("hint: start one with `sinkwarden serve`"),
+        "{}",
+        answer.stderr
+    );
+    let answer = desk.run(&[&["off", "left"][..], &at].concat()).with_code(1);
+    assert!(
+        answer.stderr.contains("hint: open the switch in series"),
+        "{}",
+        answer.stderr
+    );
+}
+
+#[test]
+fn the_schema_is_json_and_names_its_draft() {
+    let answer = Answer::from(sinkwarden().arg("schema").output().unwrap()).with_code(0);
+    let schema = answer.json();
+    assert_eq!(
+        schema["$schema"],
+        "https://json-schema.org/draft/2020-12/schema"
+    );
+}
