@@ -5,8 +5,8 @@
 use std::fs;
 use std::path::Path;
 
+use figures::{Figures, work_out};
 use journal::Record;
-use serde_json::Value;
 
 /// The file in the record's folder.
 const FILE: &str = "figures.json";
@@ -14,24 +14,21 @@ const FILE: &str = "figures.json";
 /// Works the figures of a record out and writes them into its folder.
 pub(crate) fn write(folder: &Path) -> Result<(), String> {
     let record = Record::open(folder).map_err(|error| error.to_string())?;
-    let figures = work_out(&record)?;
+    let figures = work_out(&record).map_err(|error| error.to_string())?;
     let text = serde_json::to_vec_pretty(&figures).map_err(|error| error.to_string())?;
     let path = folder.join(FILE);
     fs::write(&path, text).map_err(|error| format!("writing {}: {error}", path.display()))
 }
 
-/// The figures of a record as they stand in its folder, or worked out anew.
-pub(crate) fn read(record: &Record) -> Result<Value, String> {
+/// The figures of a record as they stand in its folder; worked out anew where there are none, or
+/// where the record still grows.
+pub(crate) fn read(record: &Record) -> Result<Figures, String> {
     let path = record.folder().join(FILE);
-    if let Ok(text) = fs::read(&path)
+    if record.is_sealed()
+        && let Ok(text) = fs::read(&path)
         && let Ok(figures) = serde_json::from_slice(&text)
     {
         return Ok(figures);
     }
-    work_out(record)
-}
-
-fn work_out(record: &Record) -> Result<Value, String> {
-    let _ = record;
-    Err("figures are not available".to_owned())
+    work_out(record).map_err(|error| error.to_string())
 }

@@ -160,11 +160,11 @@ fn store(folder: &Path, path: &Path, entry: &Entry) -> io::Result<()> {
 }
 
 fn sha256(bytes: &[u8]) -> String {
-    let mut text = String::with_capacity(64);
-    for byte in Sha256::digest(bytes) {
-        text.push_str(&format!("{byte:02x}"));
-    }
-    text
+    let hash = Sha256::digest(bytes);
+    hash.iter()
+        .flat_map(|byte| [byte >> 4, byte & 0xf])
+        .filter_map(|digit| char::from_digit(u32::from(digit), 16))
+        .collect()
 }
 
 #[cfg(test)]

@@ -91,11 +91,11 @@ fn deal_with(
 ) -> Result<Option<Resumption>, Trouble> {
     let path = records.path(name);
     let (writer, recovery) = Writer::recover(&path, Options::default())?;
+    if let Some(ended) = writer.manifest().ended.clone() {
+        return seal(writer, ended, context).map(|()| None);
+    }
     let record = Record::open(&path)?;
     let mut left = LeftOpen::replay(&record, writer, &recovery, now)?;
-    if let Some(ended) = record.manifest().ended.clone() {
-        return seal(left.writer, ended, context).map(|()| None);
-    }
     left.append_due()?;
     if let Some(ending) = left.ended.clone() {
         return left.end(name, &ending, context).map(|()| None);

@@ -5,8 +5,12 @@
 
 use std::sync::Arc;
 
-use journal::{ClockKind, Disk, FORMAT, Manifest, Options, Storage as _, Writer};
-use sequence::{Compiled, compile_with};
+use journal::{
+    Body, ClockKind, Disk, Entry, FORMAT, JournalError, Manifest, Note, Options, Storage as _,
+    Writer,
+};
+use quantity::HostTime;
+use sequence::{Compiled, Findings, compile_with};
 use sequencer::Sequencer;
 use tokio::sync::oneshot;
 use uuid::Uuid;
@@ -14,7 +18,7 @@ use uuid::Uuid;
 use crate::app::App;
 use crate::records::folder_name;
 use crate::sinks::SinkHandle;
-use crate::view::{Code, Problem, RunView, SequenceRequest, StateWord, rfc3339};
+use crate::view::{Code, Problem, RunView, SequenceRequest, rfc3339};
 use crate::worker::{Answer, Ask, Begin};
 
 /// Compiles a sequence for a sink as it is now.
@@ -59,15 +63,9 @@ pub(crate) fn is_ready(sink: &SinkHandle) -> Result<(), Problem> {
         let detail = format!("no session stands with sink `{name}`{reason}; connect it first");
         return Err(Problem::new(Code::SinkNotConnected, detail));
     }
-    let reading = view
-        .reading
-        .filter(|reading| reading.state == StateWord::Latched);
-    if let (Some(reading), None) = (reading, &view.run) {
-        let cause = reading.latched_by.map_or_else(String::new, |cause| {
-            format!(" ({})", crate::metrics::word(&cause))
-        });
+    if let (Some(cause), None) = (&view.latched_by, &view.run) {
         let detail = format!(
-            "sink `{name}` has latched{cause}; see to the cause, then POST /v1/sinks/{name}/reset"
+            "sink `{name}` has latched ({cause}); see to the cause, then POST /v1/sinks/{name}/reset"
         );
         return Err(Problem::new(Code::SinkLatched, detail));
     }
@@ -100,10 +98,8 @@ pub(crate) fn start(
     let folder = folder_name(app.clock.now(), name, &plan.dut.label, id);
     let manifest = manifest(app, sink, request, &plan, id);
     let path = app.records.path(&folder);
-    let writer = Writer::create(&path, manifest, Options::default()).map_err(|error| {
-        let detail = format!("the record of the run cannot be written: {error}");
-        Problem::new(Code::RecordNotBegun, detail)
-    })?;
+    let writer = Writer::create(&path, manifest, Options::default()).map_err(not_begun)?;
+    let writer = with_warnings(writer, &compiled.warnings, sink.now()).map_err(not_begun)?;
     let (answer, answered): (Answer<Result<RunView, String>>, _) = oneshot::channel();
     let begin = Begin {
         id,
@@ -118,6 +114,32 @@ pub(crate) fn start(
     };
     sink.give(Ask::Begin(Box::new(begin)))?;
     Ok(answered)
+}
+
+fn not_begun(error: JournalError) -> Problem {
+    let detail = format!("the record of the run cannot be written: {error}");
+    Problem::new(Code::RecordNotBegun, detail)
+}
+
+/// What the check warned of is the first thing in the record.
+fn with_warnings(
+    mut writer: Writer,
+    warnings: &Findings,
+    at: HostTime,
+) -> Result<Writer, JournalError> {
+    for warning in &warnings.list {
+        let text = format!(
+            "check: {}[{}] at {}: {}",
+            warning.severity, warning.rule, warning.pointer, warning.message
+        );
+        writer.append(&Entry {
+            number: writer.next_number(),
+            at,
+            body: Body::Note(Note::Text(text)),
+        })?;
+    }
+    writer.commit()?;
+    Ok(writer)
 }
 
 fn manifest(

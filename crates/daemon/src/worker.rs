@@ -25,7 +25,7 @@ use quantity::{HostTime, Span};
 use run::keeper::{Effect, Keeper};
 use sequence::plan::Plan;
 use sequencer::Sequencer;
-use sequencer::event::Command;
+use sequencer::event::{Command, Interlock};
 use sink::correction::Correction;
 use tokio::sync::{oneshot, watch};
 use transport::port::{HostClock, Inbox, Link, LinkError};
@@ -172,6 +172,8 @@ pub(crate) struct Worker {
     outbound: Vec<u8>,
     offs: Vec<Answer<()>>,
     reset: Option<Answer<Result<(), NotReset>>>,
+    /// The interlock that tripped the last run; latched until reset.
+    tripped_by: Option<Interlock>,
     /// When an ending daemon stops waiting for the sink, on the host's own clock.
     ending: Option<HostTime>,
     off_acknowledged: bool,
@@ -205,6 +207,7 @@ impl Worker {
             outbound: Vec::with_capacity(4096),
             offs: Vec::new(),
             reset: None,
+            tripped_by: None,
             ending: None,
             off_acknowledged: false,
             newsworthy: true,
@@ -374,6 +377,10 @@ impl Worker {
                 self.link_stands(LinkState::Refused, Some(differences.join("; ")), now);
             }
             Effect::Reset(result) => {
+                if result.is_ok() {
+                    self.tripped_by = None;
+                    self.newsworthy = true;
+                }
                 if let Some(answer) = self.reset.take() {
                     let _ = answer.send(result.map_err(NotReset::Refused));
                 }

@@ -292,8 +292,8 @@ async fn export(app: &Arc<App>, id: &str) -> Result<Response, Problem> {
     tokio::task::spawn_blocking(move || {
         let _permit: OwnedSemaphorePermit = permit;
         let mut out = Blocks {
-            block: Vec::with_capacity(EXPORT_BLOCK_BYTES),
-            blocks: blocks.clone(),
+            filling: Vec::with_capacity(EXPORT_BLOCK_BYTES),
+            client: blocks.clone(),
             runtime,
         };
         let written = export_csv(&record, &mut out, |_| {});
@@ -310,26 +310,26 @@ async fn export(app: &Arc<App>, id: &str) -> Result<Response, Problem> {
 
 /// Hands an export over in blocks; waits for the client, but not for ever.
 struct Blocks {
-    block: Vec<u8>,
-    blocks: mpsc::Sender<io::Result<Bytes>>,
+    filling: Vec<u8>,
+    client: mpsc::Sender<io::Result<Bytes>>,
     runtime: Handle,
 }
 
 impl Write for Blocks {
     fn write(&mut self, bytes: &[u8]) -> io::Result<usize> {
-        self.block.extend_from_slice(bytes);
-        if self.block.len() >= EXPORT_BLOCK_BYTES {
+        self.filling.extend_from_slice(bytes);
+        if self.filling.len() >= EXPORT_BLOCK_BYTES {
             self.flush()?;
         }
         Ok(bytes.len())
     }
 
     fn flush(&mut self) -> io::Result<()> {
-        if self.block.is_empty() {
+        if self.filling.is_empty() {
             return Ok(());
         }
-        let block = Bytes::from(std::mem::take(&mut self.block));
-        let sending = timeout(EXPORT_WAIT, self.blocks.send(Ok(block)));
+        let block = Bytes::from(std::mem::take(&mut self.filling));
+        let sending = timeout(EXPORT_WAIT, self.client.send(Ok(block)));
         match self.runtime.block_on(sending) {
             Ok(Ok(())) => Ok(()),
             Ok(Err(_)) => Err(io::Error::other("the client has gone")),

@@ -114,17 +114,13 @@ async fn claim(app: &Arc<App>, key: String, body: axum::body::Bytes) -> Result<C
 
 /// The answer to a request whose run was started before.
 fn repeated(app: &App, id: Uuid) -> Response {
-    match run_of(app, id) {
-        Some(run) => {
-            let location = format!("/v1/runs/{id}");
-            ([(header::LOCATION, location)], Json(run)).into_response()
-        }
-        // It has ended before this daemon was started: its record is all there is.
-        None => {
-            let location = format!("/v1/records/{id}");
-            (StatusCode::SEE_OTHER, [(header::LOCATION, location)]).into_response()
-        }
+    if let Some(run) = run_of(app, id) {
+        let location = format!("/v1/runs/{id}");
+        return ([(header::LOCATION, location)], Json(run)).into_response();
     }
+    // It has ended before this daemon was started: its record is all there is.
+    let location = format!("/v1/records/{id}");
+    (StatusCode::SEE_OTHER, [(header::LOCATION, location)]).into_response()
 }
 
 /// Begins a run. A key whose request started nothing is free again.

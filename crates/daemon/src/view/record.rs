@@ -94,5 +94,5 @@ pub struct FiguresView {
     pub id: Uuid,
     /// The figures, each with unit, uncertainty, method and source.
     #[schema(value_type = Object)]
-    pub figures: serde_json::Value,
+    pub figures: figures::Figures,
 }

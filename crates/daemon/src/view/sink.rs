@@ -156,6 +156,10 @@ pub struct SinkView {
     pub calibrated: bool,
     /// The latest readback.
     pub reading: Option<ReadingView>,
+    /// Why nothing is started on it until it is reset: the interlock that tripped its last run, or
+    /// the cause for which the sink itself has latched.
+    #[serde(default)]
+    pub latched_by: Option<String>,
     /// The run in progress.
     pub run: Option<RunView>,
 }

@@ -18,6 +18,9 @@ use crate::view::{RunEvent, RunNews, RunState, RunView, rfc3339};
 impl Worker {
     pub(super) fn begin(&mut self, begin: Begin, now: HostTime) {
         let answer = begin.answer;
+        if self.ending.is_some() {
+            return refuse(answer, "the daemon is ending".to_owned());
+        }
         let writer = begin.writer;
         let recorded = writer.durable();
         let record = RunRecord::start(writer, self.free_bytes_min, self.commands.clone());
@@ -41,9 +44,9 @@ impl Worker {
             reservation: begin.reservation,
         });
         if begin.resumed {
-            self.tell(now, "resumed".to_owned(), false, RunNews::Resumed);
+            self.tell(now, "resumed", false, RunNews::Resumed);
         } else {
-            self.tell(now, "began".to_owned(), false, RunNews::Began);
+            self.tell(now, "began", false, RunNews::Began);
         }
         self.newsworthy = true;
         self.settle();

@@ -11,7 +11,7 @@ use sequencer::event::{Crossing, Ending, Finding, Happening, Interlock};
 use sequencer::status::{Standing, Status};
 use sink::bench::SinkEntry;
 use uuid::Uuid;
-use wire::Description;
+use wire::{Description, SinkState};
 
 use super::record::RunRecord;
 use super::{Reservation, Worker};
@@ -68,6 +68,7 @@ impl Face {
             limits: self.limits.clone(),
             calibrated: self.calibrated,
             reading: None,
+            latched_by: None,
             run: None,
         }
     }
@@ -167,8 +168,20 @@ impl Worker {
         SinkView {
             description: presence.description.as_ref().map(DescriptionView::from),
             reading: self.reading_view(),
+            latched_by: self.latched_by(),
             run: self.run_view(),
             ..self.face.view(self.link.now())
+        }
+    }
+
+    /// The interlock that tripped the last run, or else the cause of the sink's own latch.
+    fn latched_by(&self) -> Option<String> {
+        if let Some(interlock) = &self.tripped_by {
+            return Some(word(interlock));
+        }
+        match self.keeper.presence().reading?.1.values.state {
+            SinkState::Latched(cause) => Some(word(&cause)),
+            SinkState::Off | SinkState::On | SinkState::Saturated => None,
         }
     }
 
@@ -298,28 +311,25 @@ impl Worker {
             Finding::Crossed(crossing) if crossing.interlock == Interlock::NotReleasing
         );
         self.newsworthy = true;
-        self.tell(at, message, calls_for_person, news);
+        self.tell(at, &message, calls_for_person, news);
     }
 
     pub(super) fn tell_ended(&mut self, ending: &Ending, at: HostTime) {
         let Some(run) = &mut self.run else { return };
+        if let Ending::Tripped(interlock) = ending {
+            self.tripped_by = Some(*interlock);
+        }
         let view = ending_view(ending, &run.crossings, run.stopped_by, at);
         let message = ending_text(&view);
         let calls_for_person = view.interlock == Some(Interlock::NotReleasing);
         self.metrics.ended(view.how);
         run.ending = Some(view.clone());
         self.newsworthy = true;
-        self.tell(at, message, calls_for_person, RunNews::Ended(view));
+        self.tell(at, &message, calls_for_person, RunNews::Ended(view));
     }
 
     /// Tells everyone of something about the run in progress.
-    pub(super) fn tell(
-        &self,
-        at: HostTime,
-        message: String,
-        calls_for_person: bool,
-        news: RunNews,
-    ) {
+    pub(super) fn tell(&self, at: HostTime, message: &str, calls_for_person: bool, news: RunNews) {
         let Some(run) = &self.run else { return };
         self.context.tell(RunEvent {
             run: run.id,

@@ -163,10 +163,6 @@ impl Desk {
         self.run(&id)
     }
 
-    #[expect(
-        clippy::disallowed_methods,
-        reason = "a real daemon in another thread is waited for"
-    )]
     pub(crate) fn wait_for(&self, what: &str, is_so: impl Fn(&Self) -> bool) {
         let since = Instant::now();
         while !is_so(self) {

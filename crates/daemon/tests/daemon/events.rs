@@ -65,10 +65,9 @@ fn a_run_is_followed_from_its_beginning_to_its_record() {
         .map(|event| {
             let data: serde_json::Value = serde_json::from_str(&event.data).unwrap();
             assert_eq!(data["run"], run.id.to_string());
-            match &data["news"] {
-                serde_json::Value::String(word) => word.clone(),
-                other => other.as_object().unwrap().keys().next().unwrap().clone(),
-            }
+            let news = &data["news"];
+            let word = news.as_str().map(str::to_owned);
+            word.unwrap_or_else(|| news.as_object().unwrap().keys().next().unwrap().clone())
         })
         .collect();
     assert_eq!(news[0], "began");

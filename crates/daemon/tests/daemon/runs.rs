@@ -129,3 +129,43 @@ fn a_run_that_is_not_there_is_told_from_one_that_has_ended() {
     let late = desk.post(&format!("/v1/runs/{}/stop", run.id));
     assert_eq!((late.status, late.code().as_str()), (409, "not-running"));
 }
+
+#[test]
+fn a_disk_that_runs_out_trips_the_run() {
+    let desk = Desk::open_with(50, |config| {
+        // More than any disk has free.
+        config.bench.sinks[0].interlocks.record.free_space_mb = u64::MAX;
+    });
+    let run = desk.start(&long());
+    let run = desk.wait_for_run(run.id, "the end", |run| run.state == RunState::Ended);
+    let ending = run.ending.unwrap();
+    assert_eq!(ending.how, EndingWord::Tripped);
+    assert_eq!(serde_json::to_value(ending.interlock).unwrap(), "record");
+    // There is still room to write that down.
+    desk.wait_for_run(run.id, "the seal", |run| run.sealed);
+
+    // Latched until reset.
+    let body = json!({"sequence": SHORT, "sink": "left"});
+    let again = desk.post_json("/v1/runs", &body);
+    assert_eq!((again.status, again.code().as_str()), (409, "sink-latched"));
+    assert_eq!(desk.get("/v1/sinks/left").json()["latched_by"], "record");
+    assert_eq!(desk.post("/v1/sinks/left/reset").status, 200);
+    desk.wait_for("the reset to show", |desk| {
+        desk.get("/v1/sinks/left").json()["latched_by"].is_null()
+    });
+    desk.start(SHORT);
+}
+
+#[test]
+fn figures_are_worked_out_from_the_record_and_kept_beside_it() {
+    let desk = Desk::open(50);
+    let run = desk.start(SHORT);
+    desk.wait_for_run(run.id, "the record", |run| run.sealed);
+    let path = format!("/v1/records/{}/figures", run.id);
+    desk.wait_for("the figures", |desk| desk.get(&path).status == 200);
+    let view = desk.get(&path).json();
+    assert_eq!(view["figures"]["record"], run.id.to_string());
+    assert!(!view["figures"]["figures"].as_array().unwrap().is_empty());
+    let file = desk.records().join(&run.record).join("figures.json");
+    desk.wait_for("figures.json", |_| file.exists());
+}
