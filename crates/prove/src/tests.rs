@@ -1,0 +1,6 @@
+//! The checks against the reference firmware in virtual time, and against the same firmware with
+//! its lines tampered with on the way.
+
+mod bench;
+mod faults;
+mod sound;
