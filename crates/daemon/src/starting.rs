@@ -98,8 +98,10 @@ pub(crate) fn start(
     let folder = folder_name(app.clock.now(), name, &plan.dut.label, id);
     let manifest = manifest(app, sink, request, &plan, id);
     let path = app.records.path(&folder);
-    let writer = Writer::create(&path, manifest, Options::default()).map_err(not_begun)?;
-    let writer = with_warnings(writer, &compiled.warnings, sink.now()).map_err(not_begun)?;
+    let writer =
+        Writer::create(&path, manifest, Options::default()).map_err(|error| not_begun(&error))?;
+    let writer =
+        with_warnings(writer, &compiled.warnings, sink.now()).map_err(|error| not_begun(&error))?;
     let (answer, answered): (Answer<Result<RunView, String>>, _) = oneshot::channel();
     let begin = Begin {
         id,
@@ -116,7 +118,7 @@ pub(crate) fn start(
     Ok(answered)
 }
 
-fn not_begun(error: JournalError) -> Problem {
+fn not_begun(error: &JournalError) -> Problem {
     let detail = format!("the record of the run cannot be written: {error}");
     Problem::new(Code::RecordNotBegun, detail)
 }

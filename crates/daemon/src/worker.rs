@@ -310,9 +310,10 @@ impl Worker {
         self.keeper.command(command, now);
         self.transmit();
         self.settle();
+        self.newsworthy = true;
+        self.publish();
         let view = self.run_view().or_else(|| self.context.ended.get(id));
         let _ = answer.send(view);
-        self.newsworthy = true;
     }
 
     fn reset(&mut self, answer: Answer<Result<(), NotReset>>, now: HostTime) {

@@ -275,8 +275,9 @@ fn in_progress(app: &App, id: Uuid) -> Option<(&SinkHandle, RunView)> {
 
 /// A run in progress, or one that has ended.
 fn run_of(app: &App, id: Uuid) -> Option<RunView> {
-    let ended = app.context.ended.get(id);
-    ended.or_else(|| in_progress(app, id).map(|(_, run)| run))
+    // In this order: a run that ends is among the ended before its sink shows it no more.
+    let running = in_progress(app, id).map(|(_, run)| run);
+    app.context.ended.get(id).or(running)
 }
 
 fn no_such_run(id: Uuid) -> Problem {

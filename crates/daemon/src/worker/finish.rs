@@ -50,6 +50,8 @@ impl Worker {
         }
         self.newsworthy = true;
         self.settle();
+        // Shown before it is answered: whoever asks for it next finds it.
+        self.publish();
         if let (Some(answer), Some(view)) = (answer, self.run_view()) {
             let _ = answer.send(Ok(view));
         }

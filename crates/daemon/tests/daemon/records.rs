@@ -55,15 +55,17 @@ fn readings_are_thinned_with_their_extremes_kept() {
             .fold(f64::MAX, f64::min)
     };
     assert_eq!(least(&all).to_bits(), least(&few).to_bits());
-    let part = view("?from_s=4&to_s=8");
+    // The discharge lasts 10 s: 2 s on either side of any point in its middle lie within it.
+    let drawing = |index: &usize| all.curve.current_min_a[*index] > 0.6;
+    let within: Vec<usize> = (0..all.curve.time_s.len()).filter(drawing).collect();
+    let middle = all.curve.time_s[within[within.len() / 2]];
+    let (from, to) = (middle - 2.0, middle + 2.0);
+    let part = view(&format!("?from_s={from}&to_s={to}"));
+    let curve = &part.curve;
+    assert!(curve.time_s.len() > 10, "{part:?}");
+    assert!(curve.time_s.iter().all(|time| (from..to).contains(time)));
     assert!(
-        part.curve
-            .time_s
-            .iter()
-            .all(|time| (4.0..8.0).contains(time))
-    );
-    assert!(
-        part.curve
+        curve
             .current_a
             .iter()
             .all(|current| (0.6..0.7).contains(current))

@@ -14,7 +14,7 @@ fn metrics_tell_of_runs_readbacks_and_commits() {
     assert!(value("sinkwarden_readbacks_total{sink=\"left\"}") > 50.0);
     assert!(value("sinkwarden_runs_total{sink=\"left\",ending=\"finished\"}") > 0.5);
     assert!(value("sinkwarden_link_up{sink=\"right\"}") > 0.5);
-    assert!(value("sinkwarden_record_commit_seconds_count{sink=\"left\"}") > 2.0);
+    assert!(value("sinkwarden_record_commit_seconds_count{sink=\"left\"}") > 0.5);
     assert!(value("sinkwarden_heat_sink_temperature_celsius{sink=\"left\"}") > 20.0);
 }
 
