@@ -38,7 +38,11 @@ pub fn export_csv(
     mut progress: impl FnMut(Progress),
 ) -> Result<u64, JournalError> {
     let mut csv = csv::Writer::from_writer(target);
-    let refused = |error: csv::Error| JournalError::Export(std::io::Error::from(error));
+    let refused = |error: csv::Error| match error.into_kind() {
+        // As it came, so that a reader who closes the pipe can be told from a full disk.
+        csv::ErrorKind::Io(error) => JournalError::Export(error),
+        other => JournalError::Export(std::io::Error::other(format!("{other:?}"))),
+    };
     csv.write_record(COLUMNS.iter().map(|column| column.name))
         .map_err(refused)?;
     let plan = &record.manifest().plan;

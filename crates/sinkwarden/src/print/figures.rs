@@ -1,5 +1,6 @@
 //! A record's figures with their uncertainty and method.
 
+use std::collections::BTreeSet;
 use std::io::{self, Write};
 
 use figures::{Figure, Figures, Standing, with_uncertainty};
@@ -81,13 +82,13 @@ fn methods(out: &mut dyn Write, figures: &Figures) -> io::Result<()> {
             continue;
         }
         told.push(&method.how);
-        let mut names: Vec<String> = figures
+        let names: BTreeSet<String> = figures
             .figures
             .iter()
             .filter(|other| other.method.how == method.how)
             .map(|other| words(&other.name))
             .collect();
-        names.dedup();
+        let names: Vec<String> = names.into_iter().collect();
         writeln!(out, "  {}: {}", names.join(", "), method.how)?;
         writeln!(out, "    source: {}", method.source)?;
     }
@@ -103,8 +104,8 @@ fn budget(out: &mut dyn Write, figure: &Figure) -> io::Result<()> {
     if let Some(expanded) = figure.expanded {
         write!(
             out,
-            ", expanded {:.2e} {} (k = {:.2}, {:.0} %)",
-            expanded.half_width,
+            ", expanded {} {} (k = {:.2}, {:.0} %)",
+            with_uncertainty(expanded.half_width, None),
             figure.unit.symbol(),
             expanded.coverage_factor,
             expanded.probability * 100.0
@@ -133,7 +134,7 @@ fn budget(out: &mut dyn Write, figure: &Figure) -> io::Result<()> {
         rows.add_row([
             line.name.clone(),
             words(&line.evaluation),
-            format!("{share:.2e} {}", figure.unit.symbol()),
+            format!("{} {}", with_uncertainty(share, None), figure.unit.symbol()),
             format!("{part:.1} %"),
         ]);
     }

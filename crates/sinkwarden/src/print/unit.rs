@@ -2,10 +2,13 @@
 
 use serde::Serialize;
 
-/// A span of time in its two or three largest units.
+/// A span of time in the units that fit it.
 pub(crate) fn duration(seconds: f64) -> String {
     if !seconds.is_finite() || seconds < 0.0 {
         return format!("{seconds} s");
+    }
+    if seconds < 1.0 {
+        return format!("{} ms", significant(seconds * 1e3));
     }
     if seconds < 60.0 {
         return format!("{} s", significant(seconds));
@@ -35,6 +38,9 @@ pub(crate) fn duration(seconds: f64) -> String {
 pub(crate) fn quantity(value: f64, unit: &str) -> String {
     if unit.is_empty() {
         return significant(value);
+    }
+    if unit == "s" && value >= 60.0 {
+        return duration(value);
     }
     let prefixed = matches!(unit, "A" | "V" | "W" | "Ah" | "Wh" | "s" | "ohm");
     let magnitude = value.abs();

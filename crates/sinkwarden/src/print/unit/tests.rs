@@ -4,7 +4,7 @@ use super::*;
 
 #[test]
 fn a_span_shows_its_largest_units() {
-    assert_eq!(duration(0.25), "0.250 s");
+    assert_eq!(duration(0.25), "250.0 ms");
     assert_eq!(duration(59.0), "59.00 s");
     assert_eq!(duration(192.4), "3 min 12 s");
     assert_eq!(duration(20_412.0), "5 h 40 min 12 s");
@@ -26,6 +26,7 @@ fn a_quantity_gets_the_prefix_that_fits() {
     assert_eq!(quantity(0.0, "A"), "0 A");
     assert_eq!(quantity(31.24, "degC"), "31.24 degC");
     assert_eq!(quantity(0.5, "degC"), "0.500 degC");
+    assert_eq!(quantity(144_000.0, "s"), "1 d 16 h 0 min");
 }
 
 #[test]
