@@ -50,6 +50,8 @@ pub(crate) struct Active {
     held: VecDeque<Held>,
     ending: Option<Ending>,
     closing: Closing,
+    /// Readbacks come in this session.
+    readbacks: bool,
 }
 
 impl Active {
@@ -62,6 +64,7 @@ impl Active {
             held: VecDeque::new(),
             ending: None,
             closing: Closing::Open,
+            readbacks: true,
         }
     }
 
@@ -86,6 +89,16 @@ impl Active {
         if !matches!(self.closing, Closing::Closed) {
             self.append(at, Body::Note(note), demands);
         }
+    }
+
+    /// Records what the session of a run that is over has left unanswered.
+    pub(crate) fn note_at_the_close(
+        &mut self,
+        at: HostTime,
+        note: Note,
+        demands: &mut VecDeque<Demand>,
+    ) {
+        self.append(at, Body::Note(note), demands);
     }
 
     /// Takes the news that all entries up to `number` are durable; yields the orders that may
@@ -134,6 +147,25 @@ impl Active {
         self.sequencer.plan().on_interruption == OnInterruption::Resume
     }
 
+    /// Whether the run has ended, whatever is still to be recorded of it.
+    pub(crate) fn has_ended(&self) -> bool {
+        self.ending.is_some()
+    }
+
+    /// A new session begins: what was to be sent in the one before is not sent, and a run that
+    /// has ended gets no readback any more, since nobody orders any.
+    pub(crate) fn leave_session(&mut self, at: HostTime, demands: &mut VecDeque<Demand>) {
+        while let Some(held) = self.held.pop_front() {
+            self.note_unsent(at, held.id, "its session is over", demands);
+        }
+        if self.has_ended() {
+            self.readbacks = false;
+            if let Closing::AwaitingCounters { .. } = self.closing {
+                self.closing = Closing::Closed;
+            }
+        }
+    }
+
     /// How the run stands, for whoever looks on.
     pub(crate) fn status(&self) -> Status {
         self.sequencer.status()
@@ -147,9 +179,12 @@ impl Active {
             }
             Output::Off => {
                 // Off first, the record right after; and nothing from before it may follow it.
-                self.held.clear();
+                let overtaken = std::mem::take(&mut self.held);
                 demands.push_back(Demand::Off);
                 self.append(at, Body::Off, demands);
+                for held in overtaken {
+                    self.note_unsent(at, held.id, "off overtook it", demands);
+                }
             }
             Output::Finding(finding) => {
                 self.append(at, Body::Finding(finding), demands);
@@ -160,6 +195,17 @@ impl Active {
                 self.closing = Closing::AwaitingOff { since: at };
             }
         }
+    }
+
+    fn note_unsent(
+        &mut self,
+        at: HostTime,
+        id: OrderId,
+        why: &str,
+        demands: &mut VecDeque<Demand>,
+    ) {
+        let text = format!("order {} was not sent: {why}", id.0);
+        self.append(at, Body::Note(Note::Text(text)), demands);
     }
 
     fn append(&mut self, at: HostTime, body: Body, demands: &mut VecDeque<Demand>) -> u64 {
@@ -173,6 +219,7 @@ impl Active {
     /// more readback, which brings the last counters.
     fn advance_closing(&mut self, is_off: bool, is_reading: bool) {
         self.closing = match self.closing {
+            Closing::AwaitingOff { .. } if is_off && !self.readbacks => Closing::Closed,
             Closing::AwaitingOff { since } if is_off => Closing::AwaitingCounters { since },
             Closing::AwaitingCounters { .. } if is_reading => Closing::Closed,
             Closing::Open

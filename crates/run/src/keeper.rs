@@ -11,7 +11,7 @@ use transport::session::{Heard, Mismatch, RebootEvidence, Session, SessionConfig
 use wire::{Description, Order, OrderId, Reading, ReasonRefused};
 
 use crate::active::{Active, Demand};
-use crate::notes::note_of;
+use crate::notes::{another_sink, clock_fault, note_of, started_anew};
 
 /// How often an idle sink is asked for a readback.
 const IDLE_READBACK: Span = Span::from_secs(1);
@@ -141,7 +141,9 @@ impl Keeper {
     pub fn link_back(&mut self, now: HostTime) {
         self.note(now, Note::LinkBack);
         self.session.link_back(now);
-        if self.active.as_ref().is_some_and(Active::resumes) {
+        // A run that has ended keeps its session: the last counters are still to come in it.
+        let takes_up = |active: &Active| active.resumes() && !active.has_ended();
+        if self.active.as_ref().is_some_and(takes_up) {
             self.greet(now);
         } else {
             self.listen(now);
@@ -173,17 +175,20 @@ impl Keeper {
                 self.session.order(id, order, now);
             }
         }
+        self.listen(now);
     }
 
     /// The record cannot be written.
     pub fn record_failed(&mut self, now: HostTime) {
         self.happen(now, Happening::RecordFailed);
+        self.listen(now);
     }
 
     /// Passes a command on to the run; `false` if there is none.
     pub fn command(&mut self, command: Command, now: HostTime) -> bool {
         let running = self.active.is_some();
         self.happen(now, Happening::Command(command));
+        self.listen(now);
         running
     }
 
@@ -193,12 +198,14 @@ impl Keeper {
         self.command(Command::Stop, now);
     }
 
-    /// Asks an idle sink to clear its latch. `false` while a run is in progress.
+    /// Asks an idle sink to clear its latch; [`Effect::Reset`] brings the answer. `false` while
+    /// a run is in progress.
     pub fn reset(&mut self, now: HostTime) -> bool {
         if self.active.is_some() {
             return false;
         }
         self.reset = Some(self.idle_order(Order::Reset, now));
+        self.listen(now);
         true
     }
 
@@ -235,18 +242,27 @@ impl Keeper {
         &self.presence
     }
 
-    /// Begins a new session: whatever the sink was doing, it is off after it.
+    /// Begins a new session: whatever the sink was doing, it is off after it. Orders of the
+    /// session before that still wait for the disk have no meaning in this one.
     fn greet(&mut self, now: HostTime) {
-        self.session_number = self.session_number.checked_add(1).unwrap_or(1);
-        self.presence.description = None;
+        if let Some(active) = &mut self.active {
+            active.leave_session(now, &mut self.demands);
+            self.meet_demands(now);
+        }
+        self.restart(now);
         self.note(
             now,
             Note::SessionBegun {
                 session: self.session_number,
             },
         );
-        self.session.restart(self.session_number, now);
         self.listen(now);
+    }
+
+    fn restart(&mut self, now: HostTime) {
+        self.session_number = self.session_number.checked_add(1).unwrap_or(1);
+        self.presence.description = None;
+        self.session.restart(self.session_number, now);
     }
 
     /// Takes everything the session has heard, in order.
@@ -283,14 +299,19 @@ impl Keeper {
             }
             Heard::SinkRebooted { evidence } => self.rebooted(evidence, now),
             Heard::ClockOff { by, fault } => {
-                self.note(
-                    now,
-                    Note::Text(format!("the sink's clock is off: {fault:?}")),
-                );
+                self.note(now, clock_fault(&fault));
                 self.happen(now, Happening::ClockOff { by });
             }
-            Heard::Resumed { .. }
-            | Heard::StepSeen { .. }
+            Heard::Abandoned { order } if self.reset == Some(order) => {
+                self.reset = None;
+                self.effects
+                    .push_back(Effect::Reset(Err(ReasonRefused::Session)));
+            }
+            Heard::Resumed { .. } => {
+                self.presence.description = self.session.description().copied();
+                self.note_heard(&heard, now);
+            }
+            Heard::StepSeen { .. }
             | Heard::EventsLost { .. }
             | Heard::Withdrawn { .. }
             | Heard::Abandoned { .. }
@@ -305,10 +326,7 @@ impl Keeper {
 
     fn rebooted(&mut self, evidence: RebootEvidence, now: HostTime) {
         self.presence.description = None;
-        self.note(
-            now,
-            Note::Text(format!("the sink has started anew: {evidence:?}")),
-        );
+        self.note(now, started_anew(&evidence));
         self.interrupt(now);
         self.happen(now, Happening::SinkRebooted);
         self.greet(now);
@@ -345,12 +363,10 @@ impl Keeper {
 
     /// A sink that is not the one described is never driven: a run on it cannot go on.
     fn refuse(&mut self, mismatches: Vec<Mismatch>, now: HostTime) {
+        self.session.off(now);
         self.presence.refused.clone_from(&mismatches);
-        self.note(
-            now,
-            Note::Text(format!("not the sink described: {mismatches:?}")),
-        );
-        self.off(now);
+        self.note(now, another_sink(&mismatches));
+        self.happen(now, Happening::AnotherSink);
         self.effects
             .push_back(Effect::NotTheSinkDescribed(mismatches));
     }
@@ -411,13 +427,21 @@ impl Keeper {
 
     /// Ends a run whose record is complete, and takes the sink into an idle session.
     fn close_if_complete(&mut self, now: HostTime) {
-        let Some(active) = &self.active else { return };
-        let Some(ending) = active.closed().cloned() else {
+        let closed = |active: &Active| active.closed().is_some();
+        let Some(mut active) = self.active.take_if(|active| closed(active)) else {
             return;
         };
-        let status = Box::new(active.status());
-        self.active = None;
-        self.effects.push_back(Effect::Closed { ending, status });
-        self.greet(now);
+        self.restart(now);
+        // What the session leaves unanswered still belongs to this record.
+        while let Some(heard) = self.session.poll_heard() {
+            if let Some(note) = note_of(&heard) {
+                active.note_at_the_close(now, note, &mut self.demands);
+            }
+        }
+        self.meet_demands(now);
+        if let Some(ending) = active.closed().cloned() {
+            let status = Box::new(active.status());
+            self.effects.push_back(Effect::Closed { ending, status });
+        }
     }
 }

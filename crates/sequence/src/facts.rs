@@ -34,6 +34,8 @@ pub struct Facts {
     pub tick: Span,
     /// Steps its queue holds.
     pub queue: u16,
+    /// Whether it has an isolator relay.
+    pub isolator: bool,
     /// Its shortest readback interval.
     pub readback_fastest: Span,
     /// Its longest readback interval.
@@ -85,6 +87,7 @@ impl Facts {
             },
             tick: front_end.tick,
             queue: QUEUE_LEAST,
+            isolator: entry.isolator,
             readback_fastest: entry.readback.fastest,
             readback_slowest: entry.readback.slowest,
             readback_usual: entry.readback.usual,

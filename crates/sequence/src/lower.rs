@@ -68,6 +68,7 @@ pub(crate) fn lower(
         ranges: facts.ranges,
         tick: facts.tick,
         queue: facts.queue,
+        isolator: facts.isolator,
         correction: facts.correction,
     })
 }

@@ -53,6 +53,9 @@ pub struct Plan {
     pub tick: Span,
     /// Steps the sink's queue holds.
     pub queue: u16,
+    /// The sink has an isolator relay, which must be closed before the first step.
+    #[serde(default)]
+    pub isolator: bool,
     /// Nominal from true values and back.
     pub correction: Correction,
 }

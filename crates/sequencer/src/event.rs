@@ -73,6 +73,8 @@ pub enum Happening {
         /// By how much.
         by: Span,
     },
+    /// The sink on the link is not the one described: it is never driven.
+    AnotherSink,
     /// The record cannot be written, or the disk runs out.
     RecordFailed,
     /// A person or a script asks for something.
@@ -223,7 +225,8 @@ pub enum Interlock {
     Record,
     /// The sink's clock jumped or drifted (us), or the sink started anew.
     Clock,
-    /// The sink refused an order, or the sequencer found itself wrong.
+    /// The sink refused an order or is not the one described, or the sequencer found itself
+    /// wrong.
     Refusal,
 }
 

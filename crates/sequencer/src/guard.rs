@@ -21,6 +21,9 @@ const TEMPERATURES: std::ops::RangeInclusive<i64> = -60_000..=300_000;
 /// stuck: far above any rounding of either (uC).
 const STUCK_CHARGE: i64 = 1_000;
 
+/// The sink's value of a trip by the sensor: the current stands at its converter's stop.
+pub(crate) const CURRENT_AT_STOP: i64 = 3;
+
 /// Crossings of one event, in the table's order.
 #[derive(Debug, Clone, Copy, Default)]
 pub(crate) struct Crossings {
@@ -32,6 +35,13 @@ impl Crossings {
     pub(crate) fn add(&mut self, crossing: Crossing) {
         if let Some(place) = self.found.get_mut(crossing.interlock.index()) {
             place.get_or_insert(crossing);
+        }
+    }
+
+    /// Adds one if there is one.
+    pub(crate) fn add_some(&mut self, crossing: Option<Crossing>) {
+        if let Some(crossing) = crossing {
+            self.add(crossing);
         }
     }
 
@@ -467,6 +477,23 @@ pub(crate) fn interlock_of(cause: Cause, plan: &Plan) -> (Interlock, i64) {
         Cause::Deadman => (Interlock::Silence, micros(plan.deadman)),
         Cause::Watchdog => (Interlock::Clock, 0),
     }
+}
+
+/// A current at its converter's stop, which the sink has turned off for as a faulty sensor.
+///
+/// The stop hides how much flows, but it is above anything that may be asked for: unless the
+/// limit lies as high as the stop, the sink does not release, and a person must hear of it.
+pub(crate) fn beyond_any_setpoint(plan: &Plan) -> Option<Crossing> {
+    let armed = &plan.interlocks;
+    let shown = plan.correction.current_from_readback(plan.ranges.current);
+    let excess = shown.saturating_sub(armed.over_current.threshold);
+    let threshold = armed.not_releasing.threshold;
+    (excess > threshold).then_some(Crossing {
+        interlock: Interlock::NotReleasing,
+        value: excess.microamperes(),
+        threshold: threshold.microamperes(),
+        by_sink: true,
+    })
 }
 
 /// A span as an interlock's value.

@@ -38,6 +38,8 @@ pub(crate) struct Observation {
     pub(crate) first: bool,
     /// A value that no working converter shows: at its stop, or out of order.
     pub(crate) impossible: bool,
+    /// The largest current is at its converter's stop: what flows is that or more.
+    pub(crate) current_at_stop: bool,
 }
 
 impl Observation {
@@ -76,6 +78,8 @@ impl Observation {
                 values.voltage_max
             },
         };
+        let current_at_stop =
+            current.max.microamperes() >= stop(plan.ranges.current.microamperes());
         Self {
             at,
             from: previous.unwrap_or(reading.time),
@@ -88,7 +92,9 @@ impl Observation {
             voltage_nominal: values.voltage,
             lost: reading.lost,
             first,
-            impossible: at_a_stop(plan, current, voltage)
+            current_at_stop,
+            impossible: current_at_stop
+                || voltage.max.microvolts() >= stop(plan.ranges.voltage.microvolts())
                 || out_of_order(current)
                 || out_of_order(voltage),
         }
@@ -126,10 +132,8 @@ fn true_voltage(correction: &Correction, nominal: Spread<Voltage>) -> Spread<Vol
 
 /// The highest code of a converter with ten bits or more lies within a thousandth of its full
 /// scale: what shows there is not large but beyond what the converter can tell.
-fn at_a_stop(plan: &Plan, current: Spread<Current>, voltage: Spread<Voltage>) -> bool {
-    let stop = |full_scale: i64| full_scale.saturating_sub(full_scale / 1000);
-    current.max.microamperes() >= stop(plan.ranges.current.microamperes())
-        || voltage.max.microvolts() >= stop(plan.ranges.voltage.microvolts())
+const fn stop(full_scale: i64) -> i64 {
+    full_scale.saturating_sub(full_scale / 1000)
 }
 
 fn out_of_order<T: PartialOrd + Copy>(spread: Spread<T>) -> bool {

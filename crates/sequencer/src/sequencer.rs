@@ -20,7 +20,7 @@ use crate::course::{Course, Suspension};
 use crate::event::{
     Command, Crossing, Ending, Event, Finding, Happening, Interlock, Output, StepEnd,
 };
-use crate::guard::{Crossings, Guard, interlock_of, micros};
+use crate::guard::{CURRENT_AT_STOP, Crossings, Guard, beyond_any_setpoint, interlock_of, micros};
 use crate::orders::Limits;
 use crate::phase::Phase;
 use crate::program::{PlanError, Program};
@@ -160,6 +160,7 @@ impl Sequencer {
                 let threshold = self.plan().interlocks.clock;
                 self.trip_by(Interlock::Clock, micros(*by), micros(threshold));
             }
+            Happening::AnotherSink => self.trip_by(Interlock::Refusal, 0, 0),
             Happening::RecordFailed => self.trip_by(Interlock::Record, 1, 0),
             Happening::Command(command) => self.on_command(command),
             Happening::TimePassed => {}
@@ -234,6 +235,7 @@ impl Sequencer {
             | Happening::OffAcknowledged
             | Happening::SinkRebooted
             | Happening::ClockOff { .. }
+            | Happening::AnotherSink
             | Happening::RecordFailed
             | Happening::Command(_)
             | Happening::TimePassed => {}
@@ -325,6 +327,9 @@ impl Sequencer {
             threshold,
             by_sink: true,
         });
+        if cause == Cause::Sensor && value == CURRENT_AT_STOP {
+            crossings.add_some(beyond_any_setpoint(self.plan()));
+        }
         self.trip(&crossings);
     }
 

@@ -111,12 +111,16 @@ static uint8_t crossing(const struct sink_core *core)
     return result;
 }
 
-/* Whether a converter that reads stands at its upper stop. */
-static bool impossible(const struct sink_core *core)
+/* The VALUE of a trip by a converter at its upper stop: 3 the current's, which
+ * asks the operator to cut the circuit by hand, 4 the voltage's; 0 if neither. */
+static int64_t at_stop(const struct sink_core *core)
 {
     uint16_t most = (uint16_t)((1u << core->config.sense_bits) - 1u);
 
-    return core->sample.current_code >= most || core->sample.voltage_code >= most;
+    if (core->sample.current_code >= most) {
+        return 3;
+    }
+    return core->sample.voltage_code >= most ? 4 : 0;
 }
 
 void sink_limits_trip(struct sink_core *core, enum sink_cause cause, int64_t value,
@@ -126,7 +130,7 @@ void sink_limits_trip(struct sink_core *core, enum sink_cause cause, int64_t val
     core->latch = (uint8_t)cause;
     core->latch_limit = cause <= SINK_CAUSE_EXCESS ? core->limits[cause - 1].value : 0;
     /* Where the gate may have lost its say, only the relay can still cut. */
-    if (cause == SINK_CAUSE_EXCESS || (cause == SINK_CAUSE_SENSOR && value == 3)) {
+    if (cause == SINK_CAUSE_EXCESS || (cause == SINK_CAUSE_SENSOR && value >= 3)) {
         core->drive.isolator = false;
     }
     sink_event_trip(core, now_us, cause, value);
@@ -143,9 +147,10 @@ static bool trip_by_sensor(struct sink_core *core, uint64_t now_us)
         value = 1;
     } else if (core->sample.sensor != SINK_SENSOR_GOOD) {
         value = 2;
-    } else if (core->on && impossible(core)) {
-        value = 3;
     } else {
+        value = core->on ? at_stop(core) : 0;
+    }
+    if (value == 0) {
         return false;
     }
     sink_limits_trip(core, SINK_CAUSE_SENSOR, value, now_us);
@@ -211,7 +216,7 @@ bool sink_limits_cause_stands(const struct sink_core *core)
     int64_t limit;
 
     if (cause == SINK_CAUSE_SENSOR) {
-        return core->sample.sensor != SINK_SENSOR_GOOD || impossible(core);
+        return core->sample.sensor != SINK_SENSOR_GOOD || at_stop(core) != 0;
     }
     if (cause == SINK_CAUSE_NONE || cause > SINK_CAUSE_EXCESS) {
         return false;

@@ -111,6 +111,7 @@ pub(crate) fn plan() -> Plan {
         },
         tick: Span::from_millis(1),
         queue: 16,
+        isolator: false,
         correction: Correction {
             current_read: Line::new(2_000, -30_000_000).expect("a gain error of 3 %"),
             ..Correction::IDENTITY

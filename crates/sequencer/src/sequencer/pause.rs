@@ -64,6 +64,10 @@ impl Sequencer {
         let start = self.sink_now().max(self.latest).saturating_add(LEAD);
         self.begun_through = self.latest;
         self.enter(Phase::Progress);
+        if self.plan().isolator {
+            // Not with the setup: while a latch stands, closing is refused.
+            self.order(Order::Isolator { closed: true });
+        }
         if let Some(suspension) = self.suspension.take() {
             self.take_up(&suspension, start);
         } else {

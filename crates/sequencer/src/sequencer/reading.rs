@@ -6,7 +6,7 @@ use super::{Sequencer, crossing};
 use crate::account::Increment;
 use crate::event::{Crossing, Finding, Interlock};
 use crate::expectation::Expectation;
-use crate::guard::{Crossings, interlock_of, judge_delivered, micros};
+use crate::guard::{Crossings, beyond_any_setpoint, interlock_of, judge_delivered, micros};
 use crate::observation::Observation;
 use crate::phase::Phase;
 
@@ -53,6 +53,9 @@ impl Sequencer {
         };
         if let (Some(cause), true) = (latched, self.phase.is_under_way()) {
             crossings.add(self.crossed_by_sink(cause, &seen));
+            if cause == Cause::Sensor && seen.current_at_stop {
+                crossings.add_some(beyond_any_setpoint(self.plan()));
+            }
         }
         if !crossings.is_empty() {
             self.trip(&crossings);

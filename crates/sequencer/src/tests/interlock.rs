@@ -389,6 +389,42 @@ fn what_the_sink_trips_by_is_named_as_the_interlock() {
 }
 
 #[test]
+fn a_current_at_its_converters_stop_is_named_not_releasing() {
+    let tripped = |value, full_scale| {
+        let mut plan = plan(vec![draw(1_000, Span::from_secs(1_000))]);
+        plan.ranges.current = milliamperes(full_scale);
+        let mut bench = Bench::connected(plan);
+        bench.run(Span::from_secs(3));
+        bench.happen(Happening::SinkTripped {
+            time: bench.now,
+            cause: Cause::Sensor,
+            value,
+        });
+        bench.run(Span::from_secs(1));
+        bench.ended.clone()
+    };
+    let not_releasing = Some(Ending::Tripped(Interlock::NotReleasing));
+    let sensor_fault = Some(Ending::Tripped(Interlock::SensorFault));
+    assert_eq!(tripped(3, 10_000), not_releasing);
+    // The voltage's converter says nothing of the gate.
+    assert_eq!(tripped(4, 10_000), sensor_fault);
+    // A limit as high as the stop leaves open whether it is too much.
+    let limit = plan(vec![]).interlocks.over_current.threshold;
+    assert_eq!(tripped(3, limit.microamperes() / 1_000), sensor_fault);
+}
+
+#[test]
+fn another_sink_than_the_one_described_trips() {
+    let mut bench = running();
+    bench.happen(Happening::AnotherSink);
+    trips(&mut bench, Interlock::Refusal);
+    let mut bench = Bench::new(plan(vec![draw(1_000, millis(1_000))]));
+    bench.happen(Happening::AnotherSink);
+    assert_eq!(bench.ended, Some(Ending::Tripped(Interlock::Refusal)));
+    assert!(bench.starts.is_empty());
+}
+
+#[test]
 fn a_sink_that_is_latched_is_not_started() {
     let mut bench = Bench::new(plan(vec![draw(1_000, millis(1_000))]));
     bench.latched = Some(Cause::Temperature);

@@ -68,6 +68,7 @@ pub(super) fn plan(ops: Vec<Op>) -> Plan {
         },
         tick: millis(1),
         queue: 16,
+        isolator: false,
         correction: Correction::IDENTITY,
     }
 }

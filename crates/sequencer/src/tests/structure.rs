@@ -5,6 +5,7 @@ use sequence::plan::{Action, Next, Op, Plan};
 use sink::correction::{Correction, Line};
 use wire::{LimitKind, Mode, Order};
 
+use super::bench::Bench;
 use super::plans::{
     armed, current, draw, head, milliamperes, millis, millivolts, plan, rest, step,
 };
@@ -224,4 +225,27 @@ fn a_sink_that_follows_never_exceeds_its_own_excess_limit() {
     };
     // At 3 A the readback shows 61 mA more than was set, though nothing is wrong.
     assert!(excess > milliamperes(61), "{excess}");
+}
+
+#[test]
+fn an_isolator_is_closed_before_the_first_step() {
+    let with = |isolator| {
+        let mut plan = plan(vec![draw(1_000, millis(100))]);
+        plan.isolator = isolator;
+        let mut bench = Bench::connected(plan);
+        bench.run(Span::from_secs(3));
+        let orders = bench.record.iter().filter_map(|recorded| match recorded {
+            Recorded::Output(Output::Order { order, .. }) => Some(*order),
+            Recorded::Output(_) | Recorded::Event(_) => None,
+        });
+        orders.collect::<Vec<Order>>()
+    };
+    let closing = Order::Isolator { closed: true };
+    let orders = with(true);
+    let closed = orders.iter().position(|order| *order == closing);
+    let step = orders
+        .iter()
+        .position(|order| matches!(order, Order::Step(_)));
+    assert!(closed.is_some() && closed < step, "{orders:?}");
+    assert!(!with(false).contains(&closing));
 }
