@@ -2,4 +2,13 @@
 //! protocol, the firmware's own logic, front end, source.
 
 mod bench;
+mod crash;
+mod edges;
+mod history;
+mod interlocks;
 mod overnight;
+mod random;
+mod ready;
+mod schedules;
+mod stack;
+mod tapped;
