@@ -123,20 +123,17 @@ pub(crate) fn the_counters_hold_the_charge(stack: &Stack) {
 
 /// The charge in the last counters that the sink sent, whether or not they arrived.
 pub(crate) fn last_said_charge_c(stack: &Stack) -> f64 {
-    let said = stack.link.device().said.iter().rev();
-    said.filter_map(|(_, line)| match line {
+    let mut said = stack.link.device().said.iter().rev();
+    let charge = said.find_map(|(_, line)| match line {
         SinkLine::Counters { counters, .. } => Some(counters.charge.coulombs()),
         _ => None,
-    })
-    .next()
-    .unwrap_or(0.0)
+    });
+    charge.unwrap_or(0.0)
 }
 
 /// The charge in the last counters of the record.
 pub(crate) fn last_recorded_charge_c(entries: &[Entry]) -> Option<f64> {
-    let readings = entries.iter().rev().filter_map(Entry::reading);
-    readings
-        .filter_map(|reading| reading.counters)
-        .map(|counters| counters.charge.coulombs())
-        .next()
+    let mut readings = entries.iter().rev().filter_map(Entry::reading);
+    let counters = readings.find_map(|reading| reading.counters);
+    counters.map(|counters| counters.charge.coulombs())
 }

@@ -11,11 +11,8 @@ use crate::bench::{error_free, plan, rehearsed, sink};
 const SEQUENCE: &str = include_str!("../../../../sequences/capacity-0.2-it.json");
 
 fn last_counters(entries: &[Entry]) -> Counters {
-    let readings = entries.iter().rev().filter_map(Entry::reading);
-    readings
-        .filter_map(|reading| reading.counters)
-        .next()
-        .unwrap()
+    let mut readings = entries.iter().rev().filter_map(Entry::reading);
+    readings.find_map(|reading| reading.counters).unwrap()
 }
 
 #[test]

@@ -74,7 +74,11 @@ fn no_ready_sequence_is_left_out() {
     let files = std::fs::read_dir(folder()).unwrap();
     let names: BTreeSet<String> = files
         .map(|file| file.unwrap().file_name().into_string().unwrap())
-        .filter(|name| name.ends_with(".json"))
+        .filter(|name| {
+            Path::new(name)
+                .extension()
+                .is_some_and(|kind| kind == "json")
+        })
         .collect();
     assert_eq!(names, REHEARSED.map(str::to_owned).into());
 }

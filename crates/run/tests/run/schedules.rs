@@ -36,7 +36,7 @@ fn schedule(seed: u64) -> Schedule {
         } else {
             chance.below(permille + 1)
         };
-        Ratio::from_fraction(drawn as f64 / 10_000.0).unwrap()
+        Ratio::from_fraction(f64::from(u32::try_from(drawn).unwrap()) / 10_000.0).unwrap()
     };
     let (drop_byte, corrupt_byte, duplicate_byte) = (share(20), share(20), share(20));
     let (drop_line, duplicate_line) = (share(500), share(500));

@@ -64,7 +64,7 @@ impl Stack {
         let config = KeeperConfig::for_sink(entry).unwrap();
         let mut stack = Self {
             plan: Arc::new(plan),
-            keeper: Some(Keeper::new(config.clone(), 1)),
+            keeper: Some(Keeper::new(config, 1)),
             config,
             link: FaultyDevice::new(tapped, faults, seed),
             entries: Vec::new(),
@@ -273,7 +273,7 @@ impl Stack {
             self.entries.push(entry);
         }
         self.durable = self.entries.len() as u64;
-        self.keeper = Some(Keeper::new(self.config.clone(), 1_000));
+        self.keeper = Some(Keeper::new(self.config, 1_000));
         self.sent = Decoder::new();
         let recorded = self.durable;
         self.act(|keeper, now| keeper.begin(sequencer, recorded, now).unwrap());
