@@ -155,6 +155,11 @@ impl<'p> Probe<'p> {
         std::mem::take(&mut self.evidence)
     }
 
+    /// Whether the sink has not yet been greeted: nothing can have been turned on.
+    pub(crate) const fn untouched(&self) -> bool {
+        self.description.is_none()
+    }
+
     /// From here on nothing is said unasked.
     pub(crate) const fn fall_silent(&mut self) {
         self.silent = true;

@@ -179,13 +179,13 @@ pub(crate) fn clock(probe: &mut Probe<'_>) -> Outcome {
     let done = probe.elapsed();
     let sink = end.saturating_since(first);
     // Each instant lies between its ask and its answer.
-    let least = asked.saturating_sub(answered);
+    let shortest = asked.saturating_sub(answered);
     let most = done.saturating_sub(began);
     let slack = Span::from_micros(most.micros() / 50);
     ensure!(
-        sink.saturating_add(slack) >= least && sink <= most.saturating_add(slack),
-        "the sink's clock advanced {sink} while between {least} and {most} passed here: TIME is \
+        sink.saturating_add(slack) >= shortest && sink <= most.saturating_add(slack),
+        "the sink's clock advanced {sink} while between {shortest} and {most} passed here: TIME is \
          in microseconds (chapter 3)"
     );
-    Ok(format!("{sink} there, {least} to {most} here"))
+    Ok(format!("{sink} there, {shortest} to {most} here"))
 }

@@ -117,14 +117,14 @@ pub(crate) fn charge(probe: &mut Probe<'_>) -> Outcome {
         .energy
         .saturating_sub(first.counters.energy)
         .microjoules();
-    let (least, most) = (
+    let (lower, upper) = (
         narrow(energy_least / 1_000_000_000_000),
         narrow(energy_most / 1_000_000_000_000),
     );
-    let slack = most / 1_000 + pairs + 2;
+    let slack = upper / 1_000 + pairs + 2;
     ensure!(
-        energy >= least - slack && energy <= most + slack,
-        "the energy counter moved by {energy} uJ, charge times voltage is {least} to {most} uJ \
+        energy >= lower - slack && energy <= upper + slack,
+        "the energy counter moved by {energy} uJ, charge times voltage is {lower} to {upper} uJ \
          (chapter 6.9)"
     );
     Ok(format!(

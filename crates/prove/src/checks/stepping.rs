@@ -172,7 +172,7 @@ pub(crate) fn hold_waits(probe: &mut Probe<'_>) -> Outcome {
         ));
     };
     ensure!(
-        end > edge.time,
+        end >= edge.time,
         "a step ended by its hold while another was queued: only the last step's hold counts \
          (chapter 3)"
     );

@@ -117,10 +117,6 @@ impl Probe<'_> {
         Ok(interval)
     }
 
-    pub(crate) const fn session(&self) -> u32 {
-        self.session
-    }
-
     /// Turns the sink off behind a check, and hears it out. What it answers, or that it does
     /// not, is for the checks of `off` to judge.
     pub(crate) fn leave_off(&mut self) -> Result<(), PortError> {
