@@ -3,8 +3,14 @@
 use serde::{Deserialize, Serialize};
 use sink::uncertainty::{Budget, Combined, Expanded};
 
+use crate::cell::CellModel;
+use crate::stage::Stage;
+
 /// The probability that an expanded uncertainty covers.
-const PROBABILITY: f64 = 0.95;
+pub(crate) const PROBABILITY: f64 = 0.95;
+
+/// The source of what no standard says.
+pub(crate) const COMMON: &str = "common practice, no source";
 
 /// All figures of one record.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -22,6 +28,9 @@ pub struct Figures {
     pub missing: Vec<Missing>,
     /// What a reader must know before trusting them.
     pub warnings: Vec<String>,
+    /// The cell's model, where pulses between rests tell one.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub cell_model: Option<CellModel>,
 }
 
 /// What stands behind a figure.
@@ -54,6 +63,38 @@ pub enum Name {
     ChargeByTrapezoid,
     /// D.c. internal resistance from two currents.
     DcResistance,
+    /// D.c. resistance 10 ms after an edge.
+    #[serde(rename = "resistance_at_10_ms")]
+    ResistanceAt10Ms,
+    /// D.c. resistance 100 ms after an edge.
+    #[serde(rename = "resistance_at_100_ms")]
+    ResistanceAt100Ms,
+    /// D.c. resistance 1 s after an edge.
+    #[serde(rename = "resistance_at_1_s")]
+    ResistanceAt1S,
+    /// D.c. resistance 10 s after an edge.
+    #[serde(rename = "resistance_at_10_s")]
+    ResistanceAt10S,
+    /// Largest fall of the voltage after a rise of the current.
+    Droop,
+    /// Largest rise of the voltage after a fall of the current.
+    Overshoot,
+    /// From an edge until the voltage stays in a band about where it settles.
+    RecoveryTime,
+    /// Change of a supply's voltage from the smallest to the largest current of a sweep.
+    LoadRegulation,
+    /// Slope of a supply's voltage over its current.
+    OutputResistance,
+    /// The largest current a supply gave before its voltage gave way.
+    CurrentLimitKnee,
+    /// The current that a supply fell back to beyond its knee.
+    FoldBackCurrent,
+    /// Heat sink temperature that a steady power would have led to.
+    SettledTemperature,
+    /// From the heat sink to the air around it.
+    ThermalResistance,
+    /// What was left to the MOSFET's largest junction temperature.
+    JunctionMargin,
     /// Hottest heat sink.
     PeakTemperature,
 }
@@ -79,6 +120,18 @@ pub enum Unit {
     /// Degrees Celsius.
     #[serde(rename = "degC")]
     DegreeCelsius,
+    /// Amperes.
+    #[serde(rename = "A")]
+    Ampere,
+    /// Kelvins, of a difference of temperatures.
+    #[serde(rename = "K")]
+    Kelvin,
+    /// Kelvins per watt.
+    #[serde(rename = "K/W")]
+    KelvinPerWatt,
+    /// Nothing: a ratio or an exponent.
+    #[serde(rename = "1")]
+    One,
 }
 
 impl Unit {
@@ -91,6 +144,10 @@ impl Unit {
             Self::Ohm => "ohm",
             Self::Second => "s",
             Self::DegreeCelsius => "degC",
+            Self::Ampere => "A",
+            Self::Kelvin => "K",
+            Self::KelvinPerWatt => "K/W",
+            Self::One => "1",
         }
     }
 }
@@ -103,6 +160,9 @@ pub struct Figure {
     pub name: Name,
     /// The label of the steps it is of; `None`: the whole run.
     pub label: Option<String>,
+    /// Which of the steps with that label, from 1; `None`: the only one, or all together.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub occurrence: Option<u32>,
     /// The value, in `unit`.
     pub value: f64,
     /// Its unit.
@@ -171,6 +231,7 @@ impl Figure {
         Self {
             name,
             label,
+            occurrence: None,
             value,
             unit,
             uncertainty: combined,
@@ -182,6 +243,41 @@ impl Figure {
                 source: source.to_owned(),
             },
             rows,
+        }
+    }
+
+    /// The figure of one step, with its label and which of those it is.
+    pub(crate) fn of_stage(
+        name: Name,
+        stage: &Stage<'_>,
+        value: (f64, Unit),
+        budget: Budget,
+        method: (&str, &str),
+        rows: Rows,
+    ) -> Self {
+        let label = stage.label.map(str::to_owned);
+        Self {
+            occurrence: stage.occurrence,
+            ..Self::new(name, label, value, budget, method, rows)
+        }
+    }
+}
+
+impl Missing {
+    /// A figure of the whole run that cannot be given.
+    pub(crate) fn new(name: Name, reason: impl Into<String>) -> Self {
+        Self {
+            name,
+            label: None,
+            reason: reason.into(),
+        }
+    }
+
+    /// The same, of a label.
+    pub(crate) fn of(name: Name, label: Option<&str>, reason: impl Into<String>) -> Self {
+        Self {
+            label: label.map(str::to_owned),
+            ..Self::new(name, reason)
         }
     }
 }

@@ -12,18 +12,38 @@
 //! What it deliberately does not do: print tables (the command line and the report do), judge
 //! whether a cell is good.
 
+mod capture;
+mod cell;
+mod cell_fit;
+mod channel;
 mod charge;
+mod compare;
 mod contribution;
+mod cut_off;
+mod delivery;
+mod droop;
 mod figure;
+mod heat;
+mod knee;
+mod least_squares;
+mod look;
 mod number;
+mod peukert;
+mod pulse;
 mod resistance;
 mod stage;
+mod supply;
 mod time_base;
+mod track;
+mod trust;
 mod walk;
 mod work;
 
+pub use cell::{CellModel, CellPoint, Known, PairPoint};
+pub use compare::{Compared, Comparison, Difference, Group, compare};
 pub use figure::{Figure, Figures, Method, Missing, Name, Rows, Standing, Unit};
 pub use number::with_uncertainty;
+pub use peukert::{Peukert, PeukertError, peukert};
 pub use work::{FiguresError, work_out};
 
 #[cfg(test)]

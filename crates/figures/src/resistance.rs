@@ -7,13 +7,14 @@
 use quantity::Voltage;
 use sequence::plan::{Action, Plan};
 
-use crate::contribution::{FrontEnd, of_resistance};
+use crate::channel::Instrument;
+use crate::contribution::{CARRIED_ON, of_resistance};
 use crate::figure::{Figure, Name, Rows, Unit};
 use crate::stage::Stage;
 use crate::walk::{Delivered, Sample};
 
 /// The smallest rise of current, in steps of the converter, that a resistance is worked out for.
-const LEAST_RISE: f64 = 2.0;
+pub(crate) const LEAST_RISE: f64 = 2.0;
 
 const HOW: &str = "(U1 - U2) / (I2 - I1), each at the end of its step: the last readback wholly \
                    within it, its voltage carried on in a straight line to the readback's end; \
@@ -25,7 +26,7 @@ pub(crate) fn resistances(
     plan: &Plan,
     stages: &[Stage<'_>],
     delivered: &[Delivered],
-    front_end: &FrontEnd,
+    instrument: &Instrument,
 ) -> Vec<Figure> {
     let steps = stages.iter().zip(delivered);
     let pairs = steps.clone().zip(steps.skip(1));
@@ -36,14 +37,14 @@ pub(crate) fn resistances(
                 return None;
             }
             let label = second.label.or(first.label).map(str::to_owned);
-            figure(plan, label, ended(before)?, ended(after)?, front_end)
+            figure(plan, label, ended(before)?, ended(after)?, instrument)
         })
         .collect()
 }
 
 /// The last readback of a step, its voltage carried on from the middle of its interval to the
 /// end, along the straight line through it and the readback before.
-fn ended(delivered: &Delivered) -> Option<Sample> {
+pub(crate) fn ended(delivered: &Delivered) -> Option<Sample> {
     let last = delivered.last.1?;
     let Some(before) = delivered.last.0 else {
         return Some(last);
@@ -74,7 +75,7 @@ fn figure(
     label: Option<String>,
     low: Sample,
     high: Sample,
-    front_end: &FrontEnd,
+    instrument: &Instrument,
 ) -> Option<Figure> {
     let current = |sample: &Sample| {
         plan.correction
@@ -87,7 +88,7 @@ fn figure(
             .volts()
     };
     let rise = current(&high) - current(&low);
-    if rise <= LEAST_RISE * front_end.current_step() {
+    if rise <= LEAST_RISE * instrument.current.step {
         return None;
     }
     let resistance = (voltage(&low) - voltage(&high)) / rise;
@@ -95,7 +96,7 @@ fn figure(
         Name::DcResistance,
         label,
         (resistance, Unit::Ohm),
-        of_resistance(front_end, resistance, rise),
+        of_resistance(instrument, resistance, rise, CARRIED_ON),
         (HOW, SOURCE),
         Rows {
             first: low.row,

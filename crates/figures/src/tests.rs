@@ -1,7 +1,14 @@
-//! Figures against what the simulated cell truly gave, and against other people's integrals.
+//! Figures against what the simulated source truly gave, and against other people's numbers.
 
 mod bench;
 mod capacity;
+mod cell;
+mod certificate;
+mod compare;
+mod coverage;
+mod least_squares;
 mod number;
 mod outside;
+mod pulse;
 mod resistance;
+mod supply;

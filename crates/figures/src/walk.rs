@@ -12,6 +12,8 @@ use quantity::{Charge, Current, Energy, SinkTime, Span, Temperature, Voltage};
 use sink::accumulate::Sum;
 use wire::{Counters, TemperatureReading};
 
+use crate::track::Track;
+
 /// The counters at an instant, nominal.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(crate) struct Mark {
@@ -41,6 +43,9 @@ pub(crate) struct Sample {
     pub(crate) time: SinkTime,
     pub(crate) current: Current,
     pub(crate) voltage: Voltage,
+    /// Smallest of its samples.
+    pub(crate) current_min: Current,
+    pub(crate) voltage_min: Voltage,
 }
 
 impl Sample {
@@ -72,13 +77,58 @@ pub(crate) struct Delivered {
     pub(crate) trapezoid: Sum,
     /// Sum of half the squared jumps of current times their intervals: the trapezoid's doubt.
     pub(crate) trapezoid_doubt: Sum,
+    /// The latest heat sink temperature.
+    pub(crate) latest_temperature: Option<Temperature>,
+    /// What else was asked for.
+    pub(crate) looked: Looked,
 }
+
+/// What a closer look at a stretch saw; `None` where none was asked for.
+#[derive(Debug, Clone, Default)]
+pub(crate) struct Looked {
+    /// The readbacks around some instants after its beginning.
+    pub(crate) around: Option<Box<[Around; DELAYS.len()]>>,
+    /// All readbacks that lie wholly in it, as far as they were kept.
+    pub(crate) curve: Option<Vec<Sample>>,
+    /// Its temperature.
+    pub(crate) heat: Option<Box<Track>>,
+}
+
+/// The two readbacks whose middles lie around an instant.
+#[derive(Debug, Clone, Copy, Default)]
+pub(crate) struct Around {
+    pub(crate) before: Option<Sample>,
+    pub(crate) after: Option<Sample>,
+}
+
+/// The times after an edge that [`Look::around`] looks at.
+pub(crate) const DELAYS: [Span; 4] = [
+    Span::from_millis(10),
+    Span::from_millis(100),
+    Span::from_secs(1),
+    Span::from_secs(10),
+];
+
+/// How closely to look at a stretch.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+pub(crate) struct Look {
+    /// At [`DELAYS`] after its beginning.
+    pub(crate) around: bool,
+    /// At every readback for so long.
+    pub(crate) curve: Option<Span>,
+    /// At the temperature.
+    pub(crate) heat: bool,
+}
+
+/// Readbacks kept for curves, all stretches together: beyond that a curve breaks off.
+const KEPT_MAX: usize = 2_000_000;
 
 /// A stretch of sink time to look at, and a voltage to watch in it.
 #[derive(Debug, Clone)]
 pub(crate) struct Stretch {
     pub(crate) time: Range<SinkTime>,
     pub(crate) below: Option<Voltage>,
+    pub(crate) look: Look,
 }
 
 /// The walk: give it the chunks in order, then take what the stretches delivered.
@@ -88,6 +138,8 @@ pub(crate) struct Walk {
     /// Stretches before this one have ended.
     first_open: usize,
     previous: Option<Previous>,
+    /// How many more readbacks may be kept.
+    keep: usize,
 }
 
 #[derive(Clone, Copy)]
@@ -103,8 +155,9 @@ struct Previous {
 impl Walk {
     /// Stretches in the order of their beginnings.
     pub(crate) fn new(stretches: Vec<Stretch>) -> Self {
-        let delivered = vec![Delivered::default(); stretches.len()];
+        let delivered = stretches.iter().map(Delivered::looking).collect();
         Self {
+            keep: KEPT_MAX,
             stretches,
             delivered,
             first_open: 0,
@@ -138,6 +191,8 @@ impl Walk {
                 time: reading.time,
                 current: reading.values.current,
                 voltage: reading.values.voltage,
+                current_min: reading.values.current_min,
+                voltage_min: reading.values.voltage_min,
             };
             let mark = reading.counters.map(Mark::from);
             self.sample(&sample, mark, reading.values.temperature);
@@ -168,6 +223,7 @@ impl Walk {
             }
             if sample.time > stretch.time.start && sample.from < stretch.time.end {
                 delivered.cover(stretch, previous, sample, temperature);
+                delivered.look(stretch, sample, temperature, &mut self.keep);
             }
             if stretch.time.end <= sample.time && delivered.end.is_some() {
                 ended += 1;
@@ -190,6 +246,52 @@ impl Walk {
 }
 
 impl Delivered {
+    fn looking(stretch: &Stretch) -> Self {
+        let look = stretch.look;
+        let looked = Looked {
+            around: look.around.then(Box::default),
+            curve: look.curve.map(|_| Vec::new()),
+            heat: look.heat.then(Box::default),
+        };
+        Self {
+            looked,
+            ..Self::default()
+        }
+    }
+
+    /// Looks at a readback as closely as was asked for.
+    fn look(
+        &mut self,
+        stretch: &Stretch,
+        sample: &Sample,
+        temperature: TemperatureReading,
+        keep: &mut usize,
+    ) {
+        let wholly = sample.from >= stretch.time.start && sample.time <= stretch.time.end;
+        if !wholly || sample.from >= sample.time {
+            return;
+        }
+        let since = sample.middle().saturating_since(stretch.time.start);
+        if let Some(instants) = &mut self.looked.around {
+            for (around, delay) in instants.iter_mut().zip(DELAYS) {
+                around.take(since, delay, sample);
+            }
+        }
+        if let (Some(curve), Some(span)) = (&mut self.looked.curve, stretch.look.curve)
+            && since <= span
+            && *keep > 0
+        {
+            *keep -= 1;
+            curve.push(*sample);
+        }
+        if let (Some(track), TemperatureReading::Value(value)) =
+            (&mut self.looked.heat, temperature)
+        {
+            let watts = sample.voltage.volts() * sample.current.amperes();
+            track.add(since.seconds(), value.degrees_celsius(), watts);
+        }
+    }
+
     /// Sets the counters at the stretch's ends as soon as the walk has passed them.
     fn reach(&mut self, stretch: &Stretch, previous: Option<Previous>, mark: Mark) {
         if self.begin.is_none() && mark.time >= stretch.time.start {
@@ -215,6 +317,7 @@ impl Delivered {
         self.rows = Some((first, sample.row));
         if let TemperatureReading::Value(value) = temperature {
             self.hottest = Some(self.hottest.map_or(value, |hottest| hottest.max(value)));
+            self.latest_temperature = Some(value);
         }
         let wholly = sample.from >= stretch.time.start && sample.time <= stretch.time.end;
         if wholly && sample.from < sample.time {
@@ -242,6 +345,16 @@ impl Delivered {
         self.trapezoid.add(0.5 * (before + now) * seconds);
         self.trapezoid_doubt
             .add((0.5 * (now - before) * seconds).powi(2));
+    }
+}
+
+impl Around {
+    fn take(&mut self, since: Span, delay: Span, sample: &Sample) {
+        if since <= delay {
+            self.before = Some(*sample);
+        } else if self.after.is_none() {
+            self.after = Some(*sample);
+        }
     }
 }
 

@@ -2,10 +2,11 @@
 
 use std::collections::BTreeMap;
 
-use journal::{Body, Record};
+use journal::{
+    Body, ClockKind, Ended, Entry, Manifest, Options as WriterOptions, Record, SequenceText, Writer,
+};
 use quantity::{Current, HostTime, Resistance, SinkTime, Span, Voltage};
 use run::KeeperConfig;
-use run::recording::{About, Recording};
 use run::rehearse::{Rehearsal, rehearse};
 use sequence::{Options, compile};
 use sequencer::Sequencer;
@@ -16,7 +17,11 @@ use simulator::device::{SimulatedSink, SinkParts};
 use simulator::front_end::Errors;
 use simulator::source::{Source, Truth};
 use sink::bench::{Bench, SinkEntry};
+use sink::calibration::Certificate;
+use sink::correction::Correction;
 use tempfile::TempDir;
+
+use crate::{Figure, Figures, Name};
 
 const EVENING: HostTime = HostTime::from_micros(1_796_155_200_000_000);
 
@@ -44,8 +49,16 @@ impl Night {
 }
 
 pub(crate) fn left() -> SinkEntry {
+    sink("left")
+}
+
+pub(crate) fn right() -> SinkEntry {
+    sink("right")
+}
+
+fn sink(name: &str) -> SinkEntry {
     let bench = Bench::from_toml(include_str!("../../../sink/src/bench/weir.toml")).unwrap();
-    bench.sink("left").unwrap().clone()
+    bench.sink(name).unwrap().clone()
 }
 
 /// A sink like `left` whose codes are whole microamperes and microvolts, so that nothing is lost
@@ -61,64 +74,151 @@ pub(crate) fn exact() -> SinkEntry {
     entry
 }
 
-/// Rehearses a sequence into a record; without errors of the front end if asked.
-pub(crate) fn night(text: &str, entry: &SinkEntry, error_free: bool, seed: u64) -> Night {
-    let mut parts = sink_parts(entry).unwrap();
-    parts.seed = seed;
-    if error_free {
-        parts.errors = Errors::default();
-    }
-    rehearsed(text, entry, parts)
+/// A rehearsal to be recorded.
+pub(crate) struct Setup<'a> {
+    pub(crate) text: &'a str,
+    pub(crate) entry: &'a SinkEntry,
+    pub(crate) parts: SinkParts,
+    pub(crate) certificate: Option<Certificate>,
+    /// A voltage whose crossing the simulated source writes down.
+    pub(crate) watched_v: f64,
 }
 
-/// Rehearses a sequence on a cell of a given model, without errors of the front end.
-pub(crate) fn night_on(text: &str, entry: &SinkEntry, model: &Model) -> Night {
-    let mut parts = sink_parts(entry).unwrap();
-    parts.errors = Errors::default();
+impl<'a> Setup<'a> {
+    /// The sink as its bench entry simulates it.
+    pub(crate) fn new(text: &'a str, entry: &'a SinkEntry) -> Self {
+        Self {
+            text,
+            entry,
+            parts: sink_parts(entry).unwrap(),
+            certificate: None,
+            watched_v: 2.75,
+        }
+    }
+
+    /// On a cell, without errors of the front end.
+    pub(crate) fn on_cell(
+        text: &'a str,
+        entry: &'a SinkEntry,
+        model: &Model,
+        state_of_charge: f64,
+    ) -> Self {
+        let mut setup = Self::new(text, entry);
+        setup.parts.errors = Errors::default();
+        setup.parts.source = cell(model, state_of_charge);
+        setup
+    }
+
+    /// Rehearses into a record.
+    pub(crate) fn night(self) -> Night {
+        let correction = self
+            .certificate
+            .as_ref()
+            .map_or(Correction::IDENTITY, |certificate| certificate.correction);
+        let options = Options {
+            correction,
+            ..Options::default()
+        };
+        let plan = match compile(self.text, self.entry, &BTreeMap::new(), &options) {
+            Ok(compiled) => compiled.plan,
+            Err(refused) => panic!("{refused}"),
+        };
+        let mut device = SimulatedSink::new(self.parts).unwrap();
+        device.watch_voltage(self.watched_v);
+        let folder = tempfile::tempdir().unwrap();
+        let path = folder.path().join("record");
+        let manifest = Manifest {
+            format: journal::FORMAT,
+            record: "rehearsal".to_owned(),
+            created: "2026-12-01T20:00:00Z".to_owned(),
+            host: "bench".to_owned(),
+            software: "test".to_owned(),
+            sink: self.entry.name.clone(),
+            clock: ClockKind::Virtual,
+            bench: serde_json::to_value(self.entry).unwrap(),
+            sequence: SequenceText {
+                text: self.text.to_owned(),
+                files: BTreeMap::new(),
+            },
+            plan: plan.clone(),
+            certificate: self
+                .certificate
+                .map(|certificate| serde_json::to_value(certificate).unwrap()),
+            description: None,
+            resumed: Vec::new(),
+            ended: None,
+        };
+        let mut writer = Writer::create(&path, manifest, WriterOptions::default()).unwrap();
+        let mut observer = |entry: &Entry| {
+            writer.append(entry).unwrap();
+        };
+        let rehearsal = rehearse(
+            Sequencer::new(plan).unwrap(),
+            KeeperConfig::for_sink(self.entry).unwrap(),
+            &mut device,
+            EVENING,
+            Span::from_secs(48 * 3600),
+            &mut observer,
+        )
+        .unwrap();
+        let ended = Ended {
+            how: rehearsal.ending.clone(),
+            at: "2026-12-02T02:00:00Z".to_owned(),
+            reason: None,
+        };
+        writer.seal(ended).unwrap();
+        Night {
+            record: Record::open(&path).unwrap(),
+            _folder: folder,
+            rehearsal,
+            truth: device.truth(),
+            device,
+        }
+    }
+}
+
+/// A cell at rest at 23 degrees Celsius.
+pub(crate) fn cell(model: &Model, state_of_charge: f64) -> Source {
     let start = Start {
-        state_of_charge: 0.9,
+        state_of_charge,
         temperature_degc: 23.0,
         ambient_degc: 23.0,
     };
-    let cell = Cell::new(model, Spread::default(), start).unwrap();
-    parts.source = Source::Cell(Box::new(cell));
-    rehearsed(text, entry, parts)
+    Source::Cell(Box::new(
+        Cell::new(model, Spread::default(), start).unwrap(),
+    ))
 }
 
-fn rehearsed(text: &str, entry: &SinkEntry, parts: SinkParts) -> Night {
-    let plan = match compile(text, entry, &BTreeMap::new(), &Options::default()) {
-        Ok(compiled) => compiled.plan,
-        Err(refused) => panic!("{refused}"),
+/// The only figure of this name.
+pub(crate) fn only(figures: &Figures, name: Name) -> &Figure {
+    let found: Vec<&Figure> = figures
+        .figures
+        .iter()
+        .filter(|figure| figure.name == name)
+        .collect();
+    let [figure] = found[..] else {
+        panic!("{} of {name:?}: {:#?}", found.len(), figures.missing)
     };
-    let mut device = SimulatedSink::new(parts).unwrap();
-    device.watch_voltage(2.75);
-    let folder = tempfile::tempdir().unwrap();
-    let path = folder.path().join("record");
-    let about = About {
-        record: "rehearsal".to_owned(),
-        created: "2026-12-01T20:00:00Z".to_owned(),
-        host: "bench".to_owned(),
-        sequence: text.to_owned(),
-        files: BTreeMap::new(),
-    };
-    let mut recording = Recording::create(&path, about, &plan, entry).unwrap();
-    let rehearsal = rehearse(
-        Sequencer::new(plan).unwrap(),
-        KeeperConfig::for_sink(entry).unwrap(),
-        &mut device,
-        EVENING,
-        Span::from_secs(48 * 3600),
-        &mut recording,
-    )
-    .unwrap();
-    recording
-        .seal(rehearsal.ending.clone(), "2026-12-02T02:00:00Z".to_owned())
-        .unwrap();
-    Night {
-        record: Record::open(&path).unwrap(),
-        _folder: folder,
-        rehearsal,
-        truth: device.truth(),
-        device,
+    figure
+}
+
+/// The figure is within so many standard uncertainties of the truth.
+pub(crate) fn assert_covers(figure: &Figure, truth: f64, times: f64) {
+    let standard = figure.uncertainty.unwrap().standard_uncertainty;
+    assert!(
+        (figure.value - truth).abs() < times * standard,
+        "{:?}: {} with u = {standard}, truth {truth}",
+        figure.name,
+        figure.value
+    );
+}
+
+/// Rehearses a sequence into a record; without errors of the front end if asked.
+pub(crate) fn night(text: &str, entry: &SinkEntry, error_free: bool, seed: u64) -> Night {
+    let mut setup = Setup::new(text, entry);
+    setup.parts.seed = seed;
+    if error_free {
+        setup.parts.errors = Errors::default();
     }
+    setup.night()
 }

@@ -2,13 +2,13 @@
 
 use simulator::cell::Model;
 
-use super::bench::{exact, night_on};
+use super::bench::{Setup, exact};
 use crate::{Name, work_out};
 
 const SEQUENCE: &str = include_str!("../../../../sequences/dc-resistance-two-currents.json");
 
 /// The cell of the closed form: nothing in it depends on the state of charge or on temperature.
-const CLOSED_FORM: &str = r#"{
+pub(crate) const CLOSED_FORM: &str = r#"{
   "format": "sinkwarden cell model 1", "name": "closed form",
   "origin": "a worked case, not a cell",
   "rated_capacity": "2.5 Ah", "capacity": "2.5 Ah",
@@ -26,7 +26,7 @@ const CLOSED_FORM: &str = r#"{
 fn the_resistance_by_two_currents_is_that_of_the_closed_form() {
     let model: Model = serde_json::from_str(CLOSED_FORM).unwrap();
     let text = SEQUENCE.replace("2.6 Ah", "2.5 Ah");
-    let night = night_on(&text, &exact(), &model);
+    let night = Setup::on_cell(&text, &exact(), &model, 0.9).night();
     let figures = work_out(&night.record).unwrap();
     let found = figures
         .figures

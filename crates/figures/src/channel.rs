@@ -1,0 +1,293 @@
+//! What is known of the errors of a sink's readings: one channel for the current, one for the
+//! voltage.
+//!
+//! Every error of a channel is an offset and a gain, and the two may hang together: a reading
+//! errs by `offset + gain * value`, so what adds up over a time errs by
+//! `offset * time + gain * amount`. The same few sources of error therefore serve a reading, a
+//! charge, an energy and a difference of readings, with a certificate and without.
+//!
+//! Without a certificate there is only what the bench file states: the sense resistor's
+//! tolerance and temperature coefficient, the reading converter's own stated errors, its steps.
+//! What a calibration would find beyond that is not in it, and the figures say so.
+
+use sink::bench::{Codes, SinkEntry};
+use sink::calibration::{Certificate, ChannelSummary, ReferenceMeter, SecondOrder};
+use sink::uncertainty::{
+    Budget, Contribution, DegreesOfFreedom, Evaluation, Stated, of_resolution,
+};
+
+/// The temperature at which a sense resistor has its nominal value, degrees Celsius.
+const REFERENCE_DEGC: f64 = 25.0;
+
+/// Micro-units in a unit.
+const MICRO: f64 = 1e6;
+
+/// One source of error of a channel.
+#[derive(Debug, Clone, PartialEq)]
+struct Source {
+    name: &'static str,
+    evaluation: Evaluation,
+    freedom: DegreesOfFreedom,
+    /// Standard uncertainty of the offset, ampere or volt.
+    offset: f64,
+    /// Standard uncertainty of the gain, a fraction.
+    gain: f64,
+    /// Correlation coefficient of offset and gain; 1 where one cause makes both.
+    correlation: f64,
+    /// Whether it differs from reading to reading instead of being common to all.
+    fresh: bool,
+}
+
+/// What is known of one channel's errors.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Channel {
+    sources: Vec<Source>,
+    /// One step of the converter that reads, ampere or volt.
+    pub(crate) step: f64,
+    /// Smallest and largest true value that is vouched for; `None`: no certificate says.
+    pub(crate) range: Option<(f64, f64)>,
+}
+
+/// What is known of a sink's readings.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Instrument {
+    pub(crate) current: Channel,
+    pub(crate) voltage: Channel,
+}
+
+impl Instrument {
+    /// Of a sink without a valid certificate; `hottest_degc` is its hottest heat sink.
+    pub(crate) fn nominal(entry: &SinkEntry, hottest_degc: Option<f64>) -> Self {
+        let front_end = &entry.front_end;
+        let adc = front_end.adc;
+        let codes = f64::from(1_u32 << adc.bits.min(31));
+        let steps = match adc.codes {
+            Codes::PowerOfTwo => codes,
+            Codes::PowerOfTwoLessOne => codes - 1.0,
+        };
+        let resistor = front_end.sense_resistor;
+        let warming = hottest_degc.map_or(0.0, |hottest| (hottest - REFERENCE_DEGC).abs());
+        let drift = resistor.temperature_coefficient.fraction_per_kelvin() * warming;
+        let mut current = vec![
+            Source::stated_gain("sense resistor, tolerance", resistor.tolerance.fraction()),
+            Source::stated_gain("sense resistor, temperature", drift),
+        ];
+        let mut voltage = Vec::new();
+        let current_step = adc.current_full_scale.amperes() / steps;
+        let voltage_step = adc.voltage_full_scale.volts() / steps;
+        current.push(Source::step("converter step, current", current_step));
+        voltage.push(Source::step("converter step, voltage", voltage_step));
+        Self {
+            current: Channel::new(current, current_step),
+            voltage: Channel::new(voltage, voltage_step),
+        }
+    }
+
+    /// Of a sink with a valid certificate.
+    pub(crate) fn certified(certificate: &Certificate) -> Self {
+        let measurements = &certificate.measurements;
+        let mut current = certified(
+            &certificate.current_read,
+            [
+                "certificate, current: offset and slope",
+                "certificate, current: departure from a straight line",
+            ],
+        );
+        current.push(of_meter(
+            "reference meter, current",
+            &measurements.current_meter,
+        ));
+        let drift = measurements
+            .temperature_coefficient
+            .fraction_per_kelvin()
+            .abs()
+            * measurements.temperature_spread_k;
+        current.push(Source::stated_gain("sense resistor, temperature", drift));
+        let current_step = measurements.current_step.amperes();
+        current.push(Source::step("converter step, current", current_step));
+        let mut voltage = certified(
+            &certificate.voltage_read,
+            [
+                "certificate, voltage: offset and slope",
+                "certificate, voltage: departure from a straight line",
+            ],
+        );
+        voltage.push(of_meter(
+            "reference meter, voltage",
+            &measurements.voltage_meter,
+        ));
+        let voltage_step = measurements.voltage_step.volts();
+        voltage.push(Source::step("converter step, voltage", voltage_step));
+        Self {
+            current: Channel {
+                range: Some(true_range(&certificate.current_read)),
+                ..Channel::new(current, current_step)
+            },
+            voltage: Channel {
+                range: Some(true_range(&certificate.voltage_read)),
+                ..Channel::new(voltage, voltage_step)
+            },
+        }
+    }
+}
+
+impl Channel {
+    fn new(sources: Vec<Source>, step: f64) -> Self {
+        Self {
+            sources,
+            step,
+            range: None,
+        }
+    }
+
+    /// The contributions to what adds up over a time: `time` is what a steady error of one
+    /// ampere (or volt) would have added to the figure, `amount` the figure itself.
+    pub(crate) fn over(&self, time: f64, amount: f64) -> Vec<Contribution> {
+        self.contributions(|source| source.share(time, amount))
+    }
+
+    /// The contributions to one reading of a value.
+    pub(crate) fn of_reading(&self, value: f64) -> Vec<Contribution> {
+        self.over(1.0, value)
+    }
+
+    /// The contributions to a difference of readings, each times `sensitivity`. An offset that
+    /// is common to all cancels; one that differs from reading to reading counts `weight` times,
+    /// the root of the sum of the squares of the weights that the readings have.
+    pub(crate) fn of_difference(
+        &self,
+        difference: f64,
+        weight: f64,
+        sensitivity: f64,
+    ) -> Vec<Contribution> {
+        self.contributions(|source| {
+            let offset = if source.fresh { weight } else { 0.0 };
+            source.share(offset, difference) * sensitivity.abs()
+        })
+    }
+
+    /// The contributions to something in proportion to the channel's gain alone.
+    pub(crate) fn of_gain(&self, amount: f64) -> Vec<Contribution> {
+        self.of_difference(amount, 0.0, 1.0)
+    }
+
+    /// Standard uncertainty of one reading of a value.
+    pub(crate) fn standard(&self, value: f64) -> f64 {
+        Budget::new(self.of_reading(value))
+            .combined()
+            .map_or(0.0, |combined| combined.standard_uncertainty)
+    }
+
+    /// Standard uncertainty of what differs from reading to reading.
+    pub(crate) fn resolution(&self) -> f64 {
+        of_resolution(self.step)
+    }
+
+    fn contributions(&self, share: impl Fn(&Source) -> f64) -> Vec<Contribution> {
+        self.sources
+            .iter()
+            .map(|source| {
+                let share = share(source);
+                Contribution::new(source.name, source.evaluation, share, source.freedom)
+            })
+            .filter(|line| line.standard_uncertainty > 0.0)
+            .collect()
+    }
+}
+
+impl Source {
+    fn share(&self, time: f64, amount: f64) -> f64 {
+        let (offset, gain) = (self.offset * time, self.gain * amount);
+        let both = 2.0 * self.correlation * offset * gain;
+        (offset * offset + gain * gain + both).max(0.0).sqrt()
+    }
+
+    /// From bounds stated in a data sheet: any value within them is as likely (JCGM 100:2008,
+    /// 4.3.7).
+    const fn type_b(name: &'static str, offset: f64, gain: f64) -> Self {
+        Self {
+            name,
+            evaluation: Evaluation::TypeB,
+            freedom: DegreesOfFreedom::INFINITE,
+            offset,
+            gain,
+            correlation: 0.0,
+            fresh: false,
+        }
+    }
+
+    fn stated_gain(name: &'static str, bound: f64) -> Self {
+        Self::type_b(name, 0.0, Stated::Rectangular.standard_uncertainty(bound))
+    }
+
+    fn step(name: &'static str, step: f64) -> Self {
+        Self {
+            fresh: true,
+            ..Self::type_b(name, of_resolution(step), 0.0)
+        }
+    }
+}
+
+/// The fit of a certificate's line, and how far a curve departs from it where the points
+/// demand one.
+fn certified(
+    summary: &ChannelSummary,
+    [fit_name, departure_name]: [&'static str; 2],
+) -> Vec<Source> {
+    // The certificate's line stands on nominal values, `true = a + b nominal`. On true values
+    // the error is that of `a - (a / b) b` and of `b / b`, with what both have in common.
+    let (u_offset, u_slope) = (
+        summary.offset_uncertainty_micro / MICRO,
+        summary.slope_uncertainty,
+    );
+    let covariance = if summary.correlation.is_finite() {
+        summary.correlation * u_offset * u_slope
+    } else {
+        0.0
+    };
+    let nominal_zero = summary.offset_micro / MICRO / summary.slope;
+    let variance =
+        u_offset * u_offset - 2.0 * nominal_zero * covariance + (nominal_zero * u_slope).powi(2);
+    let offset = variance.max(0.0).sqrt();
+    let gain = u_slope / summary.slope.abs();
+    let shared = (covariance - nominal_zero * u_slope * u_slope) / summary.slope;
+    let correlation = if offset * gain > 0.0 {
+        (shared / (offset * gain)).clamp(-1.0, 1.0)
+    } else {
+        0.0
+    };
+    let fit = Source {
+        evaluation: Evaluation::TypeA,
+        freedom: summary.degrees_of_freedom,
+        correlation,
+        ..Source::type_b(fit_name, offset, gain)
+    };
+    let SecondOrder {
+        demanded,
+        departure_micro,
+        ..
+    } = summary.second_order;
+    let departure = Stated::Rectangular.standard_uncertainty(departure_micro / MICRO);
+    let departure = demanded.then(|| Source::type_b(departure_name, departure, 0.0));
+    [Some(fit), departure].into_iter().flatten().collect()
+}
+
+/// One meter read all points, so its constant part and its part of the reading err together.
+fn of_meter<T: quantity::Textual + quantity::Quantity>(
+    name: &'static str,
+    meter: &ReferenceMeter<T>,
+) -> Source {
+    let constant = meter.accuracy(0.0) / MICRO;
+    let of_reading = meter.accuracy(MICRO) / MICRO - constant;
+    Source {
+        correlation: 1.0,
+        ..Source::type_b(name, constant, of_reading)
+    }
+}
+
+fn true_range(summary: &ChannelSummary) -> (f64, f64) {
+    let [low, high] = summary
+        .range_micro
+        .map(|nominal| (summary.offset_micro + summary.slope * nominal) / MICRO);
+    (low, high)
+}

@@ -1,0 +1,142 @@
+//! A supply's current limit: where its voltage gives way, and whether it folds back.
+//!
+//! Seen in a step that raises the current and may give up. The knee is the largest current that
+//! a whole readback saw; beyond it the loop of the sink is out of headroom, and the current that
+//! still flows is the supply's own.
+
+use sequence::plan::{Action, DutKind};
+use sink::uncertainty::Budget;
+
+use crate::contribution::bounded;
+use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
+use crate::stage::Stage;
+use crate::walk::Sample;
+use crate::work::Workbench;
+
+/// The voltage has given way where it is below this share of what it was at the knee.
+const GIVEN_WAY: f64 = 0.9;
+
+/// A limit folds back if beyond the knee less than this share of the knee's current flows.
+const FOLDS: f64 = 0.95;
+
+const KNEE: &str = "largest mean current of a readback before the voltage fell below 90 % of \
+                    what it was there (its smallest sample), in a step that raises the current";
+const FOLD: &str = "smallest sample of the current beyond the knee, the sink still asking for \
+                    more; below 95 % of the knee the limit folds back";
+
+/// A readback of the sweep, true values.
+struct Seen {
+    amperes: f64,
+    volts: f64,
+    least_amperes: f64,
+    least_volts: f64,
+    row: u64,
+}
+
+impl Workbench<'_> {
+    /// Knee and fold-back of every rising step in which the supply may give up.
+    pub(crate) fn knees(&self, figures: &mut Figures) {
+        if self.plan.dut.kind != DutKind::Supply {
+            return;
+        }
+        for (stage, delivered) in self.stages.iter().zip(self.walked) {
+            let rising = match stage.step.action {
+                Action::Current { ramp, .. } => ramp.micros() > 0,
+                Action::Rest | Action::Power { .. } | Action::Resistance { .. } => false,
+            };
+            let Some(curve) = &delivered.looked.curve else {
+                continue;
+            };
+            if rising {
+                self.knee(figures, stage, curve);
+            }
+        }
+    }
+
+    fn knee(&self, figures: &mut Figures, stage: &Stage<'_>, curve: &[Sample]) {
+        let points: Vec<Seen> = curve
+            .iter()
+            .map(|sample| {
+                let (amperes, volts) = self.true_values(sample);
+                let (least_amperes, least_volts) =
+                    self.true_pair(sample.current_min, sample.voltage_min);
+                Seen {
+                    amperes,
+                    volts,
+                    least_amperes,
+                    least_volts,
+                    row: sample.row,
+                }
+            })
+            .collect();
+        let (Some(first), Some(last)) = (points.first(), points.last()) else {
+            return;
+        };
+        let top = points
+            .iter()
+            .enumerate()
+            .max_by(|(_, one), (_, other)| one.amperes.total_cmp(&other.amperes));
+        let Some((place, &Seen { amperes: knee, .. })) = top else {
+            return;
+        };
+        // A ramp that only comes down shows no knee.
+        if knee - first.amperes <= 3.0 * self.instrument.current.step {
+            return;
+        }
+        // The voltage may give way within the readback of the knee itself.
+        let before = place.saturating_sub(1);
+        let up_to_it = points.iter().skip(before).take(place - before + 1);
+        let level = up_to_it.map(|seen| seen.volts).fold(0.0, f64::max);
+        let beyond: Vec<&Seen> = points
+            .iter()
+            .skip(place)
+            .filter(|seen| seen.least_volts < GIVEN_WAY * level)
+            .collect();
+        let rows = Rows {
+            first: first.row,
+            last: last.row,
+        };
+        if beyond.is_empty() {
+            let reason = format!("the supply held its voltage up to {knee:.4} A");
+            figures
+                .missing
+                .push(Missing::of(Name::CurrentLimitKnee, stage.label, reason));
+            return;
+        }
+        let before = place.checked_sub(1).and_then(|before| points.get(before));
+        let climb = before.map_or(0.0, |before| (knee - before.amperes).abs());
+        let mut lines = self.instrument.current.of_reading(knee);
+        lines.push(bounded("rise of the current in a readback", climb));
+        figures.figures.push(Figure::of_stage(
+            Name::CurrentLimitKnee,
+            stage,
+            (knee, Unit::Ampere),
+            Budget::new(lines),
+            (KNEE, COMMON),
+            rows,
+        ));
+        let least = beyond
+            .iter()
+            .map(|seen| seen.least_amperes)
+            .fold(f64::INFINITY, f64::min);
+        if least < FOLDS * knee {
+            figures.figures.push(Figure::of_stage(
+                Name::FoldBackCurrent,
+                stage,
+                (least, Unit::Ampere),
+                Budget::new(self.instrument.current.of_reading(least)),
+                (FOLD, COMMON),
+                rows,
+            ));
+        } else {
+            let reason = format!(
+                "the limit does not fold back: beyond the knee of {knee:.4} A the current stayed \
+                 above {:.0} % of it",
+                FOLDS * 100.0
+            );
+            figures
+                .missing
+                .push(Missing::of(Name::FoldBackCurrent, stage.label, reason));
+        }
+    }
+}

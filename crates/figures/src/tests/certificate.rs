@@ -1,0 +1,218 @@
+//! Figures of a calibrated sink: standing, correction, covariance.
+
+use quantity::{Current, Ratio, Temperature, TemperatureCoefficient, Text, Voltage};
+use simulator::front_end::Errors;
+use sink::calibration::{
+    Certificate, CurrentPoint, Measurements, ReferenceMeter, VoltagePoint, calibrate,
+};
+use sink::montecarlo::Random;
+use sink::uncertainty::{DegreesOfFreedom, Evaluation, Stated};
+
+use super::bench::{Setup, left, only};
+use crate::channel::Instrument;
+use crate::{Figures, Name, Standing, work_out};
+
+/// 2026-12-01T20:00:00Z, when the rehearsals begin.
+const EVENING_UNIX_S: i64 = 1_796_155_200;
+
+/// How a reference meter errs, within what it states: 500 ppm of the reading, 50 ppm of the range.
+#[derive(Debug, Clone, Copy, Default)]
+pub(crate) struct MeterErrors {
+    /// -1 to 1 of its accuracy.
+    pub(crate) current: f64,
+    pub(crate) voltage: f64,
+}
+
+fn meter<T>(range: T, resolution: T) -> ReferenceMeter<T> {
+    ReferenceMeter {
+        identity: "invented reference meter, no. 1".to_owned(),
+        range,
+        of_reading: Text(Ratio::from_parts_per_million(500)),
+        of_range: Text(Ratio::from_parts_per_million(50)),
+        stated: Stated::Rectangular,
+        resolution,
+    }
+}
+
+/// A calibration of a sink that errs so, on a 3 A and a 10 V range.
+pub(crate) fn certificate(errors: &Errors, meter_errors: MeterErrors, seed: u64) -> Certificate {
+    let mut random = Random::from_seed(seed);
+    let amperes = |value: f64| Text(Current::from_amperes(value).unwrap());
+    let volts = |value: f64| Text(Voltage::from_volts(value).unwrap());
+    let current_points = (1..=12)
+        .map(|step| {
+            let flowing = 0.24 * f64::from(step);
+            let shown = flowing + meter_errors.current * (500e-6 * flowing + 50e-6 * 3.0);
+            let read = flowing * (1.0 + errors.current_gain) + errors.current_offset_a;
+            CurrentPoint {
+                setpoint: amperes(flowing).0,
+                reference: (0..4)
+                    .map(|_| amperes(shown + 20e-6 * random.normal()))
+                    .collect(),
+                readback: (0..4)
+                    .map(|_| amperes(read + 200e-6 * random.normal()))
+                    .collect(),
+            }
+        })
+        .collect();
+    let voltage_points = (2..=9)
+        .map(|step| {
+            let there = 0.5 * f64::from(step);
+            let shown = there + meter_errors.voltage * (500e-6 * there + 50e-6 * 10.0);
+            let read = there * (1.0 + errors.voltage_gain) + errors.voltage_offset_v;
+            VoltagePoint {
+                reference: vec![volts(shown)],
+                readback: (0..4)
+                    .map(|_| volts(read + 500e-6 * random.normal()))
+                    .collect(),
+            }
+        })
+        .collect();
+    calibrate(Measurements {
+        identity: "weir-left-2026-11".to_owned(),
+        sink: "left".to_owned(),
+        serial_number: Some(1),
+        operator: "invented".to_owned(),
+        issued_unix_s: EVENING_UNIX_S - 30 * 86_400,
+        valid_until_unix_s: EVENING_UNIX_S + 335 * 86_400,
+        ambient: Temperature::from_whole_degrees_celsius(23),
+        temperature_spread_k: 5.0,
+        temperature_coefficient: TemperatureCoefficient::from_ppm_per_kelvin(50),
+        set_step: Current::from_microamperes(806),
+        current_step: Current::from_microamperes(806),
+        voltage_step: Voltage::from_microvolts(2_417),
+        current_meter: meter(
+            Current::from_milliamperes(3_000),
+            Current::from_microamperes(10),
+        ),
+        voltage_meter: meter(
+            Voltage::from_millivolts(10_000),
+            Voltage::from_microvolts(100),
+        ),
+        current_points,
+        voltage_points,
+    })
+    .unwrap()
+}
+
+/// Re-issues a certificate with another statement; its points stay.
+fn restated(certificate: &Certificate, change: impl Fn(&mut Measurements)) -> Certificate {
+    let mut measurements = certificate.measurements.clone();
+    change(&mut measurements);
+    calibrate(measurements).unwrap()
+}
+
+const SEQUENCE: &str = r#"{ "sequence": 1, "title": "One hour",
+  "dut": { "label": "K-01", "kind": "cell", "rated_capacity": "3.2 Ah",
+           "voltage_min": "2.5 V", "voltage_max": "4.2 V", "current_max": "6.4 A" },
+  "readback": "1 s",
+  "interlocks": { "undervoltage": { "below": "2.5 V", "for": "0 s" } },
+  "steps": [ { "rest": "10 s" }, { "draw": "1 A", "for": "1 h", "label": "hour" } ] }"#;
+
+/// The figures of an hour by a sink with large errors, and the charge that truly flowed.
+fn hour(change: impl Fn(&Certificate) -> Certificate) -> (Figures, f64) {
+    let entry = left();
+    let mut setup = Setup::new(SEQUENCE, &entry);
+    setup.parts.errors = Errors {
+        current_gain: -0.03,
+        current_offset_a: 0.005,
+        voltage_gain: 0.01,
+        voltage_offset_v: 0.004,
+        ..Errors::default()
+    };
+    let issued = certificate(&setup.parts.errors, MeterErrors::default(), 7);
+    setup.certificate = Some(change(&issued));
+    let night = setup.night();
+    (
+        work_out(&night.record).unwrap(),
+        night.truth.charge_c / 3600.0,
+    )
+}
+
+#[test]
+fn a_valid_certificate_makes_figures_calibrated_and_right() {
+    let (figures, truth_ah) = hour(Certificate::clone);
+    assert_eq!(figures.standing, Standing::Calibrated);
+    assert!(figures.warnings.is_empty(), "{:?}", figures.warnings);
+    let charge = figures
+        .figures
+        .iter()
+        .find(|figure| figure.name == Name::DeliveredCharge && figure.label.is_none())
+        .unwrap();
+    let standard = charge.uncertainty.unwrap().standard_uncertainty;
+    // 500 ppm of 1 A and 50 ppm of 3 A, rectangular, for an hour: 375 uAh, and no more than
+    // a few hundred beside it.
+    assert!((375e-6..700e-6).contains(&standard), "u = {standard} Ah");
+    assert!(
+        (charge.value - truth_ah).abs() < 2.0 * standard,
+        "{} Ah, truth {truth_ah} Ah",
+        charge.value
+    );
+    assert_eq!(
+        charge.dominated_by.as_deref(),
+        Some("reference meter, current")
+    );
+    assert!((only(&figures, Name::Duration).value - 3600.0).abs() < 0.01);
+}
+
+/// `Q = a T + b Q_nominal`: with the covariance of the fit, offset and slope together are better
+/// known than each alone would let expect, and as well as the fit predicts at the mean current.
+#[test]
+fn offset_and_slope_enter_with_their_covariance() {
+    let certificate = certificate(&Errors::default(), MeterErrors::default(), 3);
+    let instrument = Instrument::certified(&certificate);
+    let summary = &certificate.current_read;
+    for (amperes, hours) in [(0.3, 5.0), (1.5, 2.0), (2.8, 1.0)] {
+        let lines = instrument.current.over(hours, amperes * hours);
+        let fit = lines
+            .iter()
+            .find(|line| line.evaluation == Evaluation::TypeA)
+            .unwrap();
+        let nominal = (amperes - summary.offset_micro * 1e-6) / summary.slope;
+        let predicted = certificate
+            .channels()
+            .unwrap()
+            .current_read
+            .budget(nominal * 1e6);
+        let expected = predicted.contributions[0].share() * 1e-6 * hours;
+        assert!(
+            (fit.share() / expected - 1.0).abs() < 1e-6,
+            "{amperes} A: {} Ah, the fit predicts {expected} Ah",
+            fit.share()
+        );
+        assert_eq!(fit.degrees_of_freedom, DegreesOfFreedom::finite(10.0));
+    }
+}
+
+#[test]
+fn a_certificate_that_does_not_hold_leaves_figures_nominal_and_says_why() {
+    type Change = fn(&mut Measurements);
+    let cases: [(Change, &str); 3] = [
+        (
+            |stated| stated.valid_until_unix_s = EVENING_UNIX_S + 60,
+            "before the run did; calibrate again",
+        ),
+        (
+            |stated| stated.issued_unix_s = EVENING_UNIX_S + 60,
+            "after the run began",
+        ),
+        (
+            |stated| stated.sink = "right".to_owned(),
+            "it is of sink `right`, and the record of sink `left`",
+        ),
+    ];
+    for (change, reason) in cases {
+        let (figures, _) = hour(|issued| restated(issued, change));
+        assert_eq!(figures.standing, Standing::NominalUncalibrated);
+        assert!(
+            figures
+                .warnings
+                .iter()
+                .any(|warning| warning.contains(reason)),
+            "{:?}",
+            figures.warnings
+        );
+        let duration = only(&figures, Name::Duration);
+        assert!(duration.value > 3599.0);
+    }
+}
