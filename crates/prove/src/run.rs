@@ -8,7 +8,7 @@ use crate::probe::{Probe, Stop};
 use crate::report::{Report, Shown, Verdict};
 
 /// A failing check is tried again when the line itself damaged something meanwhile, so often.
-const TRIES: u32 = 3;
+const TRIES: u32 = 2;
 
 /// What may be done to the sink, and what is borne from it.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -48,7 +48,8 @@ pub enum Progress<'a> {
     Ends(&'a Shown),
 }
 
-/// The longest that all checks can take with these options.
+/// The longest that all checks can take with these options: on a port that damages lines, with
+/// every answer at the last moment.
 pub fn time_at_most(options: &Options) -> Span {
     guarantees().fold(Span::ZERO, |sum, guarantee| {
         let one = longest(guarantee, options);
@@ -60,7 +61,7 @@ pub fn time_at_most(options: &Options) -> Span {
 /// moment, and turning the sink off behind it.
 fn longest(guarantee: &Guarantee, options: &Options) -> Span {
     let margin = options.patience.saturating_add(options.late);
-    (0..8).fold(guarantee.longest, |sum, _| sum.saturating_add(margin))
+    (0..4).fold(guarantee.longest, |sum, _| sum.saturating_add(margin))
 }
 
 /// Runs every check on what is on the port.

@@ -2,5 +2,6 @@
 //! its lines tampered with on the way.
 
 mod bench;
+mod document;
 mod faults;
 mod sound;
