@@ -88,7 +88,7 @@ impl Probe<'_> {
         };
         let excess = description.sense_current.microamperes() / 4;
         for limit in [
-            format!("current {}", most.microamperes()),
+            format!("current {}", most.microamperes().clamp(0, 999_999_999)),
             "power 999999999".to_owned(),
             "voltage-high 999999999".to_owned(),
             "voltage-low -99999999".to_owned(),
