@@ -9,6 +9,7 @@ mod burst;
 mod dut;
 mod envelope;
 mod flow;
+mod import;
 mod interlock;
 mod port;
 mod record;
@@ -61,6 +62,7 @@ const DRAFT_RULES: &[DraftRule] = &[
     flow::skips,
     flow::repeats_end,
     flow::ramp_starts,
+    import::losses,
     time::above_zero,
     time::not_below_tick,
     time::whole_ticks,

@@ -169,7 +169,7 @@ fn plan(
     if !matches!(root.value, Value::Object(_)) {
         return None;
     }
-    let draft = draft::read(root, files, findings);
+    let draft = draft::read(root, files, facts, findings);
     let merged = check::merge(&draft.interlocks, &facts.interlocks);
     let scene = Scene {
         draft: &draft,

@@ -13,6 +13,7 @@ use quantity::{
 
 pub(crate) use read::{is_plain, read};
 
+use crate::import::ImportReport;
 use crate::plan::{DutKind, OnInterruption};
 use crate::profile::Segment;
 
@@ -81,6 +82,16 @@ pub(crate) struct StepDraft {
     pub(crate) readback: Option<Span>,
     pub(crate) may_give_up: bool,
     pub(crate) burst: Option<(Span, Span)>,
+    /// What an import made of the profile.
+    pub(crate) imported: Option<ImportDraft>,
+}
+
+/// What an import made of a profile, beside its segments.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(crate) struct ImportDraft {
+    /// How often the segments are gone through.
+    pub(crate) turns: u64,
+    pub(crate) report: ImportReport,
 }
 
 /// What a step does, as read; currents are amperes already.

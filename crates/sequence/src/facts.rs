@@ -24,6 +24,8 @@ pub struct Facts {
     pub power_max: Power,
     /// Largest voltage it may be connected to.
     pub voltage_max: Voltage,
+    /// Its setting converter.
+    pub converter: Converter,
     /// What one step of the setting converter is.
     pub current_step: Current,
     /// Least current it can hold.
@@ -79,6 +81,7 @@ impl Facts {
             current_max: entry.limits.current.min(converter.top()),
             power_max: entry.limits.power,
             voltage_max: entry.limits.voltage,
+            converter,
             current_step: converter.step(),
             current_floor: converter.floor(),
             ranges: Ranges {

@@ -419,8 +419,36 @@ static PROFILE: Object = Object {
             Shape::Word(INTERPOLATION),
             "what the current does between two pairs",
         ),
+        may(
+            "import",
+            Shape::Object(&IMPORT),
+            "makes the fewest steps of a recording; without it each pair is drawn as it stands",
+        ),
     ],
     one_of: &["points", "csv", "file"],
+};
+
+static IMPORT: Object = Object {
+    name: "Import",
+    meaning: "an import",
+    fields: &[
+        must(
+            "error",
+            Shape::Quantity(Kind::Current),
+            "the largest error of the current, at least one step of the sink's converter",
+        ),
+        may(
+            "period",
+            TIME,
+            "the period of the recording's cycle; cycles that agree become one that is repeated",
+        ),
+        may(
+            "clip_above",
+            Shape::Quantity(Kind::Current),
+            "the current at which peaks are cut; without it none is",
+        ),
+    ],
+    one_of: &[],
 };
 
 pub(crate) const INTERPOLATION: &[Word] = &[

@@ -22,6 +22,7 @@ mod draft;
 mod facts;
 mod finding;
 mod format;
+pub mod import;
 mod json;
 mod lower;
 pub mod plan;

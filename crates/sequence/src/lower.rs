@@ -267,10 +267,11 @@ impl Writer<'_> {
         let step = common.step;
         let (until, elapsed) = self.until(&step.until)?;
         let begin = self.here()?;
-        let looped = !until.is_empty() || elapsed.is_some();
+        let turns = step.imported.map_or(1, |imported| imported.turns);
+        let looped = turns > 1 || !until.is_empty() || elapsed.is_some();
         if looped {
             self.ops.push(Op::LoopBegin(LoopHead {
-                times: Some(1),
+                times: Some(turns),
                 until,
                 at_most: elapsed.map(|(span, _)| span),
                 end: 0,
@@ -278,16 +279,34 @@ impl Writer<'_> {
                 pointer: step.pointer.clone(),
             }));
         }
+        if turns > 1 {
+            // The second turn begins where the first ended.
+            self.level = None;
+        }
         for &segment in segments {
             self.segment(common, segment)?;
         }
         let then = self.next(&step.then)?;
+        if turns > 1 && then != Next::GoOn {
+            return self.turned(common, begin, then);
+        }
         if let Some(Op::Step(last)) = self.ops.last_mut() {
             last.then = then;
         }
         if looped {
             self.close(begin)?;
         }
+        Some(())
+    }
+
+    /// Ends a profile of several turns that does not simply go on: what follows stands at a step
+    /// of its own behind the last turn, one tick of rest.
+    fn turned(&mut self, common: &Common<'_>, begin: OpIndex, then: Next) -> Option<()> {
+        self.close(begin)?;
+        let mut rest = common.plain(Action::Rest, self.tick);
+        rest.then = then;
+        self.ops.push(Op::Step(rest));
+        self.level = Some(Current::ZERO);
         Some(())
     }
 

@@ -2,17 +2,19 @@
 //!
 //! Two stages with a seam between. The first makes [`Point`]s of whatever was given (pairs in
 //! the sequence, a CSV inside it or beside it); the second makes [`Segment`]s of points, as the
-//! interpolation says. An import that thins a measured profile stands between the two: points
-//! in, fewer points out.
+//! interpolation says. A measured profile takes another way (`import`): rows of a CSV in, the
+//! fewest segments out.
 //!
 //! Invariants: segments last longer than zero and add up to the profile's time; neither stage
 //! knows a sink, so neither clips, rounds or drops anything.
 
 mod csv;
+mod number;
 
 use quantity::{Current, Span};
 
 pub(crate) use self::csv::points as points_of_csv;
+pub(crate) use self::csv::{Row, Rows};
 
 /// A moment of a profile.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -23,33 +25,45 @@ pub(crate) struct Point {
 
 /// What the current does between two points.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub(crate) enum Interpolation {
+pub enum Interpolation {
+    /// It stays until the next point; the last point only says when the profile ends.
     Steps,
+    /// It follows the straight line to the next point.
     Linear,
 }
 
 /// A piece of a profile.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub(crate) enum Segment {
+pub enum Segment {
     /// A constant current.
-    Hold { current: Current, span: Span },
-    /// A straight line.
+    Hold {
+        /// The current.
+        current: Current,
+        /// How long.
+        span: Span,
+    },
+    /// A straight line. Where the current before is another than `from`, the jump to it takes
+    /// one tick of the sink out of `span`.
     Slope {
+        /// The current at its beginning.
         from: Current,
+        /// The current at its end.
         to: Current,
+        /// How long.
         span: Span,
     },
 }
 
 impl Segment {
-    pub(crate) const fn span(self) -> Span {
+    /// How long it lasts.
+    pub const fn span(self) -> Span {
         match self {
             Self::Hold { span, .. } | Self::Slope { span, .. } => span,
         }
     }
 
     /// The currents at its beginning and its end.
-    pub(crate) const fn ends(self) -> [Current; 2] {
+    pub const fn ends(self) -> [Current; 2] {
         match self {
             Self::Hold { current, .. } => [current, current],
             Self::Slope { from, to, .. } => [from, to],
@@ -57,7 +71,7 @@ impl Segment {
     }
 
     /// The current it leaves off with.
-    pub(crate) const fn last(self) -> Current {
+    pub const fn last(self) -> Current {
         match self {
             Self::Hold { current, .. } => current,
             Self::Slope { to, .. } => to,

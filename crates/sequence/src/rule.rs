@@ -125,6 +125,22 @@ rules! {
         "A profile has at least two pairs, begins at 0 s, and its times never go back."
     ProfileLastCurrent "profile-last-current" Warning
         "With steps, the last pair of a profile only says when the profile ends."
+    ImportError "import-error" Error
+        "The error that an import allows is at least one step of the sink's converter."
+    ImportPeriod "import-period" Error
+        "The period of an import is whole ticks and within the recording."
+    ImportPeak "import-peak" Error
+        "An import reaches no more than the sink can draw; peaks are cut only where `clip_above` says so."
+    ImportBelowFloor "import-below-floor" Warning
+        "A recording lies above the sink's floor; what sleeps below is drawn within other steps."
+    ImportEdges "import-edges" Warning
+        "A recording does not change within a tick of the sink by more than the error."
+    ImportClipped "import-clipped" Warning
+        "No peak of a recording is cut."
+    ImportCycles "import-cycles" Warning
+        "The cycles of a recording agree, and it ends with a whole one."
+    ImportCharge "import-charge" Warning
+        "The charge of each cycle of a recording is kept to one converter step for one tick."
     DutVoltages "dut-voltages" Error
         "The least voltage of the DUT is above zero and below its largest."
     DutCurrent "dut-current" Error

@@ -9,24 +9,28 @@ use std::str::FromStr;
 use quantity::{Charge, Current, CurrentSpec, Span};
 
 use super::{
-    ActionDraft, ConditionDraft, Draft, DutDraft, InterlocksDraft, NextDraft, RampDraft,
-    RepeatDraft, StepDraft, UntilDraft, Written, amperes,
+    ActionDraft, ConditionDraft, Draft, DutDraft, ImportDraft, InterlocksDraft, NextDraft,
+    RampDraft, RepeatDraft, StepDraft, UntilDraft, Written, amperes,
 };
 use crate::Files;
+use crate::facts::Facts;
 use crate::finding::{Finding, Findings};
 use crate::format::CONDITIONS;
+use crate::import::{ImportError, ImportOptions, Limits, import};
 use crate::json::{Node, Value};
 use crate::plan::{Condition, DutKind, OnInterruption};
 use crate::profile::{self, Interpolation, Point, Segment};
 use crate::rule::Rule;
 
 /// Reads the draft of a sequence.
-pub(crate) fn read(root: &Node, files: &Files, findings: &mut Findings) -> Draft {
+pub(crate) fn read(root: &Node, files: &Files, facts: &Facts, findings: &mut Findings) -> Draft {
     let dut = root.get("dut").map(dut).unwrap_or_default();
     let interlocks = root.get("interlocks").map(interlocks).unwrap_or_default();
     let mut reader = Reader {
         rated_capacity: dut.rated_capacity,
         files,
+        facts,
+        imported: None,
         findings,
     };
     let steps = reader.steps(root, "");
@@ -177,13 +181,43 @@ pub(crate) fn is_plain(name: &str) -> bool {
     !name.starts_with('.') && !name.contains(['/', '\\', ':', '\0'])
 }
 
+/// The finding for a recording that cannot be imported.
+fn not_imported(error: ImportError, name: &str, place: &str, pointer: &str) -> Finding {
+    let whole = error.to_string();
+    let (message, hint) = whole.split_once("; ").unwrap_or((&whole, ""));
+    let at = |key: &str| format!("{pointer}/import{key}");
+    match error {
+        ImportError::Text { message, hint, .. } => Finding::new(
+            Rule::ProfileSource,
+            place,
+            format!("{name}: {message}"),
+            hint,
+        ),
+        ImportError::Error { error, step } => {
+            Finding::new(Rule::ImportError, at("/error"), message, hint).numbers(error, step)
+        }
+        ImportError::Period { found, limit, .. } => {
+            Finding::new(Rule::ImportPeriod, at("/period"), message, hint).numbers(found, limit)
+        }
+        ImportError::Peak {
+            current, largest, ..
+        } => {
+            let message = format!("{name}: {message}");
+            Finding::new(Rule::ImportPeak, at(""), message, hint).numbers(current, largest)
+        }
+    }
+}
+
 struct Reader<'a> {
     rated_capacity: Option<Charge>,
     files: &'a Files,
+    facts: &'a Facts,
+    /// What the import of the profile at work has made, until its step takes it.
+    imported: Option<ImportDraft>,
     findings: &'a mut Findings,
 }
 
-impl Reader<'_> {
+impl<'a> Reader<'a> {
     fn find(
         &mut self,
         rule: Rule,
@@ -206,8 +240,12 @@ impl Reader<'_> {
 
     fn step(&mut self, node: &Node, pointer: String) -> StepDraft {
         let action = self.action(node, &pointer);
+        let imported = self.imported.take();
         self.clashes(node, action.as_ref(), &pointer);
-        let time = self.time(node, action.as_ref(), &pointer);
+        let turns = imported.map_or(1, |imported| imported.turns);
+        let time = self
+            .time(node, action.as_ref(), &pointer)
+            .map(|once| Span::from_micros(once.micros().saturating_mul(turns)));
         let inside = match &action {
             Some(ActionDraft::Repeat(_)) => node.get("repeat"),
             Some(_) | None => None,
@@ -228,6 +266,7 @@ impl Reader<'_> {
             burst: node
                 .get("burst")
                 .and_then(|burst| Some((get(burst, "before")?, get(burst, "after")?))),
+            imported,
             action,
             pointer,
         }
@@ -401,31 +440,16 @@ impl Reader<'_> {
             "linear" => Interpolation::Linear,
             _ => return None,
         };
+        if let Some(wanted) = node.get("import") {
+            return self.recording(node, wanted, interpolation, pointer);
+        }
         let (points, place) = if let Some(points) = node.get("points") {
             (self.inline(points, pointer)?, format!("{pointer}/points"))
         } else if let Some(csv) = node.get("csv") {
             let place = format!("{pointer}/csv");
             (self.csv(csv.text()?, &place, "the profile")?, place)
         } else {
-            let place = format!("{pointer}/file");
-            let name = node.get("file")?.text()?;
-            if !is_plain(name) {
-                let message = format!("`{name}` is no plain file name");
-                let hint = "give the file beside the sequence, and write its name without a path";
-                self.find(Rule::ProfileSource, &place, message, hint);
-                return None;
-            }
-            let Some(text) = self.files.get(name) else {
-                let given: Vec<&str> = self.files.keys().map(String::as_str).collect();
-                let hint = if given.is_empty() {
-                    "give the file beside the sequence, or write its text at `csv`".to_owned()
-                } else {
-                    format!("the files given are {}", given.join(", "))
-                };
-                let message = format!("the file `{name}` is not given");
-                self.find(Rule::ProfileSource, &place, message, hint);
-                return None;
-            };
+            let (name, text, place) = self.file(node, pointer)?;
             (self.csv(text, &place, name)?, place)
         };
         self.last_current(&points, interpolation, &place);
@@ -439,6 +463,74 @@ impl Reader<'_> {
                     place
                 };
                 self.find(Rule::ProfilePoints, &place, fault.message, fault.hint);
+                None
+            }
+        }
+    }
+
+    /// The name, the text and the place of a profile's file.
+    fn file<'n>(&mut self, node: &'n Node, pointer: &str) -> Option<(&'n str, &'a str, String)> {
+        let place = format!("{pointer}/file");
+        let name = node.get("file")?.text()?;
+        if !is_plain(name) {
+            let message = format!("`{name}` is no plain file name");
+            let hint = "give the file beside the sequence, and write its name without a path";
+            self.find(Rule::ProfileSource, &place, message, hint);
+            return None;
+        }
+        let Some(text) = self.files.get(name) else {
+            let given: Vec<&str> = self.files.keys().map(String::as_str).collect();
+            let hint = if given.is_empty() {
+                "give the file beside the sequence, or write its text at `csv`".to_owned()
+            } else {
+                format!("the files given are {}", given.join(", "))
+            };
+            let message = format!("the file `{name}` is not given");
+            self.find(Rule::ProfileSource, &place, message, hint);
+            return None;
+        };
+        Some((name, text, place))
+    }
+
+    /// The steps of a recording, as its `import` asks for.
+    fn recording(
+        &mut self,
+        node: &Node,
+        wanted: &Node,
+        interpolation: Interpolation,
+        pointer: &str,
+    ) -> Option<Vec<Segment>> {
+        if node.get("points").is_some() {
+            let message = "pairs in the sequence are drawn as they stand and have no `import`";
+            let hint = "give the recording as `csv` or `file`, or leave `import` out";
+            self.find(
+                Rule::ClashingKeys,
+                &format!("{pointer}/import"),
+                message,
+                hint,
+            );
+            return None;
+        }
+        let (name, text, place) = match node.get("csv") {
+            Some(csv) => ("the profile", csv.text()?, format!("{pointer}/csv")),
+            None => self.file(node, pointer)?,
+        };
+        let options = ImportOptions {
+            error: get(wanted, "error")?,
+            period: get(wanted, "period"),
+            clip_above: get(wanted, "clip_above"),
+        };
+        match import(text, interpolation, &Limits::of(self.facts), &options) {
+            Ok(imported) => {
+                self.imported = Some(ImportDraft {
+                    turns: imported.turns,
+                    report: imported.report,
+                });
+                Some(imported.segments)
+            }
+            Err(error) => {
+                let finding = not_imported(error, name, &place, pointer);
+                self.findings.push(finding);
                 None
             }
         }

@@ -48,15 +48,15 @@ fn what_is_not_understood_is_refused_with_the_line_and_the_mend() {
     );
     assert_eq!(
         read("time_s;current_a\n0;1\n1;0,5\n"),
-        "line 3: `0,5` is no number of A; write a decimal point, not a comma"
+        "line 3, column `current_a`: `0,5` is no number of A; write a decimal point, not a comma"
     );
     assert_eq!(
         read("time_s,current_a\n0,nan\n"),
-        "line 2: `nan` is no number of A; write a number within the range"
+        "line 2, column `current_a`: `nan` is no number of A; write a number within the range"
     );
     assert_eq!(
         read("time_s,current_a\n-1,1\n"),
-        "line 2: `-1` is no number of s; write a number within the range"
+        "line 2, column `time_s`: a time below zero; let the times begin at 0"
     );
     assert_eq!(
         read("time_s,current_a\n0,1\n1\n"),
