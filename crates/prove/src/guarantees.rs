@@ -72,8 +72,8 @@ const fn drawing(
 #[rustfmt::skip]
 pub(crate) const CHECKS: &[(Guarantee, Check)] = &[
     (idle("session-first", "2", 3, "no order is taken before a session has begun"), contact::session_first),
-    (idle("description", "5", 3, "describes itself in five lines, whole or not at all"), contact::description),
     (idle("off-at-session", "3, 6.1", 3, "a new session finds it off, with nothing queued"), contact::off_at_session),
+    (idle("description", "5", 3, "describes itself in five lines, whole or not at all"), contact::description),
     (idle("off-after-reset", "6.1", 1, "off at power-up and after every reset"), contact::off_after_reset),
     (idle("forgets-at-session", "3", 4, "a new session forgets limits, readbacks, queue and numbers"), contact::forgets),
     (idle("damaged-lines", "1", 4, "a damaged line is counted, and neither answered nor acted on"), lines::damaged),
