@@ -5,6 +5,7 @@ use std::num::NonZeroU32;
 use std::path::PathBuf;
 
 use clap::{Args, Parser, Subcommand};
+use quantity::Current;
 
 use crate::exit::CODES;
 
@@ -48,6 +49,12 @@ pub(crate) enum Command {
     /// take. Nothing is connected.
     #[command(after_help = "Example: sinkwarden check sequences/capacity-0.2-it.json --sink left")]
     Check(SequenceOn),
+    /// Prove the firmware on a port: whether it keeps every guarantee of the line protocol.
+    ///
+    /// Draws nothing unless a source is allowed; what needs a current is then not shown. A port
+    /// belongs to one program: stop the daemon first.
+    #[command(after_help = "Example: sinkwarden prove /dev/ttyACM0 --with-source \"500 mA\"")]
+    Prove(Prove),
     /// Rehearse a sequence in virtual time, against a simulated source.
     ///
     /// The same sequencer, line protocol and firmware logic as in a run; a night takes seconds.
@@ -112,6 +119,20 @@ pub(crate) struct SequenceOn {
     /// What is written on the device under test; wins over the sequence's own label.
     #[arg(long, value_name = "LABEL")]
     pub(crate) dut: Option<String>,
+}
+
+/// `prove`.
+#[derive(Debug, Args)]
+pub(crate) struct Prove {
+    /// The serial port's path, or the address of a network port (`host:port`).
+    #[arg(value_name = "PORT")]
+    pub(crate) port: String,
+    /// A source is connected, from which at most so much may be drawn.
+    #[arg(long, value_name = "CURRENT")]
+    pub(crate) with_source: Option<Current>,
+    /// The serial port's rate, bits a second.
+    #[arg(long, value_name = "N", default_value_t = transport::port::BAUD_DEFAULT)]
+    pub(crate) baud: u32,
 }
 
 /// `rehearse`.

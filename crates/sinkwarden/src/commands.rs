@@ -8,6 +8,7 @@ mod follow;
 mod interrupt;
 mod keeping;
 mod off;
+mod prove;
 mod records;
 mod rehearse;
 mod replay;
@@ -42,6 +43,7 @@ pub(crate) fn carry_out(command: Command, output: &Output) -> Result<Exit> {
             Ok(Exit::Done)
         }
         Command::Check(on) => check::carry_out(&on, *output),
+        Command::Prove(arguments) => prove::carry_out(&arguments, *output),
         Command::Rehearse(arguments) => rehearse::carry_out(&arguments, *output),
         Command::Serve(arguments) => serve::carry_out(arguments, *output),
         Command::Run(arguments) => run::carry_out(&arguments, *output),

@@ -18,7 +18,8 @@ Exit codes:
   4  the run was stopped by a person or a script
   5  the run was tripped by an interlock
   6  the run was interrupted: the host or the link died
-  7  the record was altered, or a replay differs from it";
+  7  the record was altered, or a replay differs from it
+  8  the firmware fails a guarantee of the protocol";
 
 /// In which of the ways the program ends.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -37,6 +38,8 @@ pub(crate) enum Exit {
     Interrupted,
     /// The record was altered, or differs from its replay.
     Altered,
+    /// The firmware fails a guarantee.
+    Unproven,
 }
 
 impl Exit {
@@ -50,6 +53,7 @@ impl Exit {
             Self::Tripped => 5,
             Self::Interrupted => 6,
             Self::Altered => 7,
+            Self::Unproven => 8,
         }
     }
 }

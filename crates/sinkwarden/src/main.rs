@@ -4,6 +4,7 @@
 //!   flags ─► arguments ─► one validated value a command ─► commands ─► print ─► stdout
 //!                                                             │
 //!                         bench, check, rehearse, records ────┤ the crates, no daemon
+//!                         prove ──────────────────────────────┤ a port, no daemon
 //!                         run, off, watch, status ────────────┘ client ─► the daemon
 //! ```
 //!
@@ -14,7 +15,7 @@
 //! - Nothing is coloured; progress is drawn only where stderr is a terminal.
 //!
 //! What it deliberately does not do: decide anything about a run, compute a figure, or reach a
-//! sink other than through the daemon.
+//! sink other than through the daemon; but `prove` opens the port itself.
 
 mod arguments;
 mod bench_file;
