@@ -19,6 +19,11 @@
 //!   that the record replays.
 //! - After `off` no order from before it reaches the sink.
 //! - A record that cannot be written ends the run; a failing disk never delays `off`.
+//! - No order outlives its session: one that still waits for the disk when a new session begins
+//!   is not sent in it.
+//! - A closed record says of every order what became of it: acknowledged, refused, or in a note
+//!   that it was not sent, overtaken by `off`, or left without an answer.
+//! - A sink that is not the one described gets nothing but `off`, and a run on it trips.
 //!
 //! What it deliberately does not do: open files or ports, read a clock, decide an interlock.
 

@@ -13,6 +13,7 @@ mod crash;
 mod edges;
 mod history;
 mod interlocks;
+mod keeping;
 mod overnight;
 mod random;
 mod ready;

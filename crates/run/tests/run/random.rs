@@ -73,7 +73,9 @@ proptest! {
         times in 1..4_u32,
         fault in fault(),
         deeds in deeds(),
-        disk in 0..250_u64,
+        // Below the sequencer's reaction time of 200 ms: behind a disk that is always slower, every
+        // step ordered anew comes too late again, and the run does not get on (the sink is off).
+        disk in 0..150_u64,
     ) {
         let entry = sink("left");
         let steps = json!([{ "repeat": { "times": times, "steps": steps } }]);
