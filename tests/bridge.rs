@@ -24,18 +24,21 @@ use std::path::{Path, PathBuf};
 use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
 use std::thread::{self, JoinHandle};
-use std::time::Duration;
+use std::time::{Duration, Instant};
 
 use serialport::{SerialPort, TTYPort};
 
 /// How long a pump waits for bytes before it looks whether it should end.
 const GLANCE: Duration = Duration::from_millis(20);
 
+/// How far a pump that was not woken in time may catch up.
+const LAG: Duration = Duration::from_millis(500);
+
 /// Bits on the line for each byte: start, eight, stop.
 const BITS_A_BYTE: u64 = 10;
 
-/// Bytes moved at once: a few milliseconds at 115200 baud.
-const PIECE: usize = 48;
+/// Bytes moved at once: some ten milliseconds at 115200 baud.
+const PIECE: usize = 128;
 
 /// What happens to bytes in either direction, in parts of a million of the bytes.
 #[derive(Debug, Clone, Copy, Default)]
@@ -242,6 +245,7 @@ impl Bridge {
             stop: Arc::clone(&stop),
             baud: self.baud,
             faults: self.faults,
+            free_at: now(),
             chance: Chance(self.seed.wrapping_mul(0x9E37_79B9_7F4A_7C15) ^ chance | 1),
         };
         let (outward, inward) = (pump(1), pump(1 << 33));
@@ -270,6 +274,8 @@ struct Pump {
     stop: Arc<AtomicBool>,
     baud: u32,
     faults: Faults,
+    /// When the last byte taken has passed.
+    free_at: Instant,
     chance: Chance,
 }
 
@@ -295,7 +301,11 @@ impl Pump {
     /// Takes the time that the bytes take on the line. False when the far side is gone.
     fn carry(&mut self, bytes: &[u8], to: &mut impl Write) -> bool {
         let micros = bytes.len() as u64 * BITS_A_BYTE * 1_000_000 / u64::from(self.baud.max(1));
-        wait(Duration::from_micros(micros));
+        let now = now();
+        // A pump that was not woken in time catches up: the line itself did not stand still.
+        self.free_at = self.free_at.max(now.checked_sub(LAG).unwrap_or(now));
+        self.free_at += Duration::from_micros(micros);
+        wait(self.free_at.saturating_duration_since(now));
         let mut out = Vec::with_capacity(bytes.len() + 2);
         for byte in bytes {
             self.pass(*byte, &mut out);
@@ -345,6 +355,11 @@ fn idle(error: &io::Error) -> bool {
 )]
 fn wait(span: Duration) {
     thread::sleep(span);
+}
+
+#[expect(clippy::disallowed_methods, reason = "pacing is by the clock")]
+fn now() -> Instant {
+    Instant::now()
 }
 
 /// Marsaglia's xorshift64: small, seeded, good enough to choose bytes (Journal of Statistical

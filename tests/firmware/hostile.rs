@@ -198,7 +198,7 @@ impl Hostile {
             2 => {
                 bytes = (0..self.chance.below(300))
                     .map(|_| self.chance.byte())
-                    .collect()
+                    .collect();
             }
             3 => bytes = bytes.repeat(3),
             _ => {}

@@ -5,7 +5,9 @@
     clippy::unwrap_used,
     clippy::indexing_slicing,
     clippy::print_stderr,
-    reason = "helpers of tests stand outside `#[test]`: a failure there is a failed test"
+    clippy::wildcard_enum_match_arm,
+    reason = "helpers of tests stand outside `#[test]`, where a failure is a failed test; a wait picks \
+              what it waits for out of all that is heard"
 )]
 
 mod board;

@@ -79,7 +79,7 @@ pub(crate) fn charge(probe: &mut Probe<'_>) -> Outcome {
     probe.ready()?;
     let set = probe.draw()?;
     begin(probe, "current", set.microamperes(), Span::ZERO)?;
-    let first = settled(probe)?;
+    let mut first = settled(probe)?;
     let mut last = first;
     let mut expected_pc: i128 = 0;
     let mut energy_least: i128 = 0;
@@ -90,7 +90,10 @@ pub(crate) fn charge(probe: &mut Probe<'_>) -> Outcome {
         let next = probe.pair(mark, after)?;
         let mean = next.values;
         if next.count != last.count.checked_add(1).unwrap_or(1) {
-            return cannot("a readback was lost on the way; try again");
+            // A readback was lost, and with it its mean: begin again.
+            (first, last) = (next, next);
+            (expected_pc, energy_least, energy_most, pairs) = (0, 0, 0, 0);
+            continue;
         }
         let passed = i128::from(next.counters.time.saturating_since(after).micros());
         let current = i128::from(mean.current.microamperes());
