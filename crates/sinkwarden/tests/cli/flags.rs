@@ -7,7 +7,44 @@ use crate::program::{Answer, Desk, sinkwarden};
 #[test]
 fn the_help_names_every_command_and_every_exit_code() {
     let answer = Answer::from(sinkwarden().arg("-h").output().unwrap()).with_code(0);
-    expect![[""]].assert_eq(&answer.stdout);
+    expect![[r#"
+        Runs home-built DC current sinks through timed sequences, and says what they measured
+
+        Usage: sinkwarden [OPTIONS] <COMMAND>
+
+        Commands:
+          bench     Print a bench file to start from: invented, simulated, ready to use
+          schema    Print the JSON Schema of a sequence file, for an editor
+          check     Check a sequence against a sink, the device under test and the interlocks
+          prove     Prove the firmware on a port: whether it keeps every guarantee of the line protocol
+          rehearse  Rehearse a sequence in virtual time, against a simulated source
+          serve     Serve a bench: the daemon that holds the sinks, runs sequences and writes records
+          run       Run a sequence on a sink of the daemon and follow it to its end
+          off       Turn a sink off, or every sink; a run in progress ends as stopped
+          status    Show every sink of the daemon, or one, as it is now
+          watch     Watch a sink, or every sink, line by line until interrupted
+          records   List the records of a folder, the latest last
+          figures   Work out a record's figures, each with its uncertainty and method
+          replay    Replay a record: the same readings must give the same orders, bit for bit
+          verify    Verify that nothing in a record was altered since it was written
+          export    Export a record's readbacks as CSV, with units in the column names
+
+        Options:
+              --json     Answer with JSON on stdout instead of text
+          -h, --help     Print help (see more with '--help')
+          -V, --version  Print version
+
+        Exit codes:
+          0  done; a run finished
+          1  an error: what, where and the mend are on stderr
+          2  the command line itself is wrong
+          3  the check refuses the sequence
+          4  the run was stopped by a person or a script
+          5  the run was tripped by an interlock
+          6  the run was interrupted: the host or the link died
+          7  the record was altered, or a replay differs from it
+          8  the firmware fails a guarantee of the protocol
+    "#]].assert_eq(&answer.stdout);
 }
 
 #[test]
