@@ -82,17 +82,30 @@ impl PtySink {
     ///
     /// # Panics
     /// If it does not within `at_most`.
+    pub fn wait_for_current(&self, at_most: Duration, meets: impl Fn(f64) -> bool) -> Duration {
+        self.wait_for(at_most, |sink| meets(sink.current_a()))
+    }
+
+    /// Waits until the source has given so much charge.
+    ///
+    /// # Panics
+    /// If it does not within `at_most`.
+    pub fn wait_for_charge(&self, at_most: Duration, coulombs: f64) {
+        self.wait_for(at_most, |sink| sink.charge_c() >= coulombs);
+    }
+
     #[expect(
         clippy::disallowed_methods,
         reason = "real time is what is tested here"
     )]
-    pub fn wait_for_current(&self, at_most: Duration, meets: impl Fn(f64) -> bool) -> Duration {
+    fn wait_for(&self, at_most: Duration, meets: impl Fn(&Self) -> bool) -> Duration {
         let begun = Instant::now();
-        while !meets(self.current_a()) {
+        while !meets(self) {
             assert!(
                 begun.elapsed() < at_most,
-                "after {at_most:?} the current is still {} A",
-                self.current_a()
+                "after {at_most:?} the current is {} A and the charge {} C",
+                self.current_a(),
+                self.charge_c()
             );
             std::thread::sleep(STRIDE);
         }

@@ -115,7 +115,7 @@ fn a_killed_daemons_run_is_taken_up_where_the_record_stands_if_its_sequence_says
     bench
         .sink
         .wait_for_current(Duration::from_secs(10), |current| current > 0.4);
-    std::thread::sleep(Duration::from_secs(2));
+    bench.sink.wait_for_charge(Duration::from_secs(5), 1.0);
     daemon.kill();
     bench
         .sink
