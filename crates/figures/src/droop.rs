@@ -17,6 +17,10 @@ use crate::work::Workbench;
 /// Half the band about the settled voltage in which it counts as recovered, a share of it.
 const BAND: f64 = 0.005;
 
+const NOT_CAPTURED: &str = "the samples around the edge were not captured: the sink takes one \
+                            capture at a time and was still sending the one before; set the \
+                            edges farther apart";
+
 /// Fewest samples after the edge.
 const LEAST: usize = 8;
 
@@ -34,8 +38,15 @@ impl Workbench<'_> {
             if stage.is_beyond_counting() || !stage.follows(before) {
                 continue;
             }
-            if let Some(capture) = of_stage(self.captures, stage, self.plan.tick) {
-                self.droop(figures, stage, capture, rises);
+            match of_stage(self.captures, stage, self.plan.tick) {
+                Some(capture) => self.droop(figures, stage, capture, rises),
+                None if stage.step.burst.is_some() && stage.is_first() => {
+                    let name = if rises { Name::Droop } else { Name::Overshoot };
+                    figures
+                        .missing
+                        .push(Missing::of(name, stage.label, NOT_CAPTURED));
+                }
+                None => {}
             }
         }
     }

@@ -61,7 +61,7 @@ impl Workbench<'_> {
                 }
                 match self.after(index, delay, stage, delivered, capture) {
                     Some(seen) => figures.figures.extend(self.pulse(name, stage, start, seen)),
-                    None if stage.occurrence.is_none_or(|nth| nth == 1) => {
+                    None if stage.is_first() => {
                         figures
                             .missing
                             .push(Missing::of(name, stage.label, coarse(delay)));

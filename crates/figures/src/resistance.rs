@@ -5,7 +5,7 @@
 //! give a resistance as well, which the label of the second step then names.
 
 use quantity::Voltage;
-use sequence::plan::{Action, Plan};
+use sequence::plan::Plan;
 
 use crate::channel::Instrument;
 use crate::contribution::{CARRIED_ON, of_resistance};
@@ -32,12 +32,11 @@ pub(crate) fn resistances(
     let pairs = steps.clone().zip(steps.skip(1));
     pairs
         .filter_map(|((first, before), (second, after))| {
-            let (one, other) = (constant(first)?, constant(second)?);
-            if one <= 0.0 || other <= one || first.end != second.begin {
+            let (one, other) = (first.held_current()?, second.held_current()?);
+            if one <= 0.0 || other <= one || !second.follows(first) || second.is_beyond_counting() {
                 return None;
             }
-            let label = second.label.or(first.label).map(str::to_owned);
-            figure(plan, label, ended(before)?, ended(after)?, instrument)
+            figure(plan, second, ended(before)?, ended(after)?, instrument)
         })
         .collect()
 }
@@ -59,20 +58,9 @@ pub(crate) fn ended(delivered: &Delivered) -> Option<Sample> {
     Some(Sample { voltage, ..last })
 }
 
-/// The current of a step that holds one from its first instant, ampere.
-fn constant(stage: &Stage<'_>) -> Option<f64> {
-    match stage.step.action {
-        Action::Current { target, ramp } if ramp.micros() == 0 => Some(target.amperes()),
-        Action::Current { .. }
-        | Action::Rest
-        | Action::Power { .. }
-        | Action::Resistance { .. } => None,
-    }
-}
-
 fn figure(
     plan: &Plan,
-    label: Option<String>,
+    stage: &Stage<'_>,
     low: Sample,
     high: Sample,
     instrument: &Instrument,
@@ -92,9 +80,9 @@ fn figure(
         return None;
     }
     let resistance = (voltage(&low) - voltage(&high)) / rise;
-    Some(Figure::new(
+    Some(Figure::of_stage(
         Name::DcResistance,
-        label,
+        stage,
         (resistance, Unit::Ohm),
         of_resistance(instrument, resistance, rise, CARRIED_ON),
         (HOW, SOURCE),

@@ -56,6 +56,11 @@ impl Stage<'_> {
         self.begin == before.end
     }
 
+    /// Whether it is the first of its label.
+    pub(crate) fn is_first(&self) -> bool {
+        self.occurrence.is_none_or(|nth| nth == 1)
+    }
+
     /// Whether it is one of so many of its label that figures for each would say nothing.
     pub(crate) fn is_beyond_counting(&self) -> bool {
         self.occurrence.is_some_and(|nth| nth > EACH_MAX)
