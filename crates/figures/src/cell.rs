@@ -45,6 +45,8 @@ pub struct CellModel {
     pub points: Vec<CellPoint>,
     /// Charge from full to empty that the states of charge stand on, ampere hour.
     pub capacity_ah: f64,
+    /// Its standard uncertainty; of a rated capacity none is known, and it is zero.
+    pub capacity_standard_uncertainty_ah: f64,
     /// Where that charge comes from.
     pub capacity_from: String,
     /// Root of the mean squared residual of all pulses, volt.
@@ -108,6 +110,9 @@ const METHOD: &str = "least squares (Levenberg-Marquardt) of a series resistance
                       them and both are told; uncertainties from the covariance of the fit and \
                       the gains of current and voltage";
 
+/// Where a capacity comes from that was not measured.
+const RATED: &str = "the rated capacity";
+
 /// A pulse of the record, ready to be fitted.
 struct Found {
     pulse: Pulse,
@@ -147,6 +152,8 @@ impl Workbench<'_> {
         let last_ah = fitted.last()?.found.delivered_ah;
         let two = fitted.iter().all(|pulse| pulse.two.is_ok());
         let (capacity_ah, capacity_from) = self.capacity_for(last_ah, &mut notes);
+        let measured = capacity_from != RATED;
+        let capacity_u = if measured { self.whole_charge_u() } else { 0.0 };
         let points: Vec<CellPoint> = fitted
             .iter()
             .map(|pulse| self.point(pulse, two, capacity_ah))
@@ -167,7 +174,8 @@ impl Workbench<'_> {
             residual_rms_v: (squares / number(points.len())).sqrt(),
             points,
             capacity_ah,
-            capacity_from,
+            capacity_standard_uncertainty_ah: capacity_u,
+            capacity_from: capacity_from.to_owned(),
             file,
             notes,
             method: METHOD.to_owned(),
@@ -262,12 +270,19 @@ impl Workbench<'_> {
         }
     }
 
+    /// Standard uncertainty of all charge delivered, ampere hour.
+    fn whole_charge_u(&self) -> f64 {
+        let together = self.together_of(|_, stage| stage.draws());
+        let combined = self.charge_budget(&together, 0.0).combined();
+        combined.map_or(0.0, |combined| combined.standard_uncertainty)
+    }
+
     /// The charge that the states of charge stand on, and where it comes from.
-    fn capacity_for(&self, last_ah: f64, notes: &mut Vec<String>) -> (f64, String) {
+    fn capacity_for(&self, last_ah: f64, notes: &mut Vec<String>) -> (f64, &'static str) {
         let whole = self.together_of(|_, stage| stage.draws()).amount.charge_ah;
         let ended_empty = self.stages.iter().any(|stage| stage.cut_off().is_some());
         if ended_empty {
-            return (whole, "delivered in this run, to its cut-off".to_owned());
+            return (whole, "delivered in this run, to its cut-off");
         }
         let rated = self
             .plan
@@ -281,7 +296,7 @@ impl Workbench<'_> {
                      capacity, as if the cell had begun full"
                         .to_owned(),
                 );
-                (rated, "the rated capacity".to_owned())
+                (rated, RATED)
             }
             Some(_) | None => {
                 notes.push(
@@ -289,7 +304,7 @@ impl Workbench<'_> {
                      charge stand on all that was delivered"
                         .to_owned(),
                 );
-                (whole.max(last_ah), "delivered in this run".to_owned())
+                (whole.max(last_ah), "delivered in this run")
             }
         }
     }

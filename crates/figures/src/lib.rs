@@ -29,6 +29,7 @@ mod least_squares;
 mod look;
 mod number;
 mod peukert;
+mod predict;
 mod pulse;
 mod resistance;
 mod stage;
@@ -44,6 +45,7 @@ pub use compare::{Compared, Comparison, Difference, Group, compare};
 pub use figure::{Figure, Figures, Method, Missing, Name, Rows, Standing, Unit};
 pub use number::with_uncertainty;
 pub use peukert::{Peukert, PeukertError, peukert};
+pub use predict::{CellSpread, Load, LoadStep, PredictError, RunTime, predict};
 pub use work::{FiguresError, work_out};
 
 #[cfg(test)]

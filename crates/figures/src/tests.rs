@@ -9,6 +9,7 @@ mod coverage;
 mod least_squares;
 mod number;
 mod outside;
+mod predict;
 mod pulse;
 mod resistance;
 mod supply;
