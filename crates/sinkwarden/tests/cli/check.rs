@@ -131,7 +131,8 @@ fn a_sequence_that_may_run_says_what_it_will_take() {
           readbacks     at most 300
 
         "About" is reckoned from the data sheet's values alone; `rehearse` knows better.
-    "#]].assert_eq(&answer.stdout);
+    "#]]
+    .assert_eq(&answer.stdout);
 }
 
 #[test]
