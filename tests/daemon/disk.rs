@@ -38,10 +38,10 @@ fn a_full_disk_trips_the_record_interlock_and_leaves_a_readable_record() {
     let records = folder.path().join("records");
     std::fs::create_dir(&records).unwrap();
     let daemon = Daemon::start_by(with_small_disk(&records, 96), &bench, &records);
-    let sequence = discharge(120, "end").replace("100 ms", "20 ms");
+    let sequence = discharge(120, "end").replace("100 ms", "25 ms");
     let id = daemon.run(&sequence, "left");
     sink.wait_for_current(Duration::from_secs(10), |current| current > 0.4);
-    // 50 readbacks a second of some 120 bytes fill 96 KiB in a quarter of a minute.
+    // 40 readbacks a second of some 120 bytes fill 96 KiB in a third of a minute.
     sink.wait_for_current(Duration::from_secs(60), |current| current < 0.01);
     let run = daemon.wait_for(
         &format!("/v1/runs/{id}"),

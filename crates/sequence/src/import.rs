@@ -16,7 +16,8 @@
 //!
 //! Invariants:
 //! - No current is left further from a sample than the stated error, but for what the report
-//!   names: sleep under the floor, edges within a tick, clipped peaks.
+//!   names: sleep under the floor, edges within a tick, clipped peaks; and below twice the floor,
+//!   where a tick may be drawn as none, since no smaller setting could settle the charge.
 //! - The charge of each cycle is kept to one converter step for one tick; the report says what
 //!   is left. All sums are whole numbers.
 //! - Nothing is clipped unless it was asked for, and then with its charge.
