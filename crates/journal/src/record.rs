@@ -8,7 +8,7 @@
 use std::path::{Path, PathBuf};
 
 use crate::segment::{self, Expected, Reader};
-use crate::{Damage, Disk, Entry, JournalError, Manifest, layout};
+use crate::{Damage, Disk, Entry, JournalError, Manifest, Seal, Storage as _, checked, layout};
 
 /// A record opened for reading.
 #[derive(Debug, Clone)]
@@ -59,6 +59,25 @@ impl Record {
     /// Whether it is sealed; whether the seal holds is for [`crate::verify`] to say.
     pub fn is_sealed(&self) -> bool {
         self.sealed
+    }
+
+    /// The seal, once its own checksum held; `None` in an unsealed record. Whether what it
+    /// seals is still as it was is for [`crate::verify`] to say.
+    ///
+    /// # Errors
+    /// [`JournalError::Manifest`] if the seal's file is damaged, and what the disk says.
+    pub fn seal(&self) -> Result<Option<Seal>, JournalError> {
+        if !self.sealed {
+            return Ok(None);
+        }
+        let path = self.folder.join(layout::SEAL);
+        let bytes = Disk
+            .read(&path)
+            .map_err(|error| JournalError::io("reading", &path, error))?;
+        match checked::from_bytes(&bytes) {
+            Ok(seal) => Ok(Some(seal)),
+            Err(detail) => Err(JournalError::Manifest { path, detail }),
+        }
     }
 
     /// The segments' numbers.
