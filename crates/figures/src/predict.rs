@@ -292,12 +292,16 @@ fn values(pair: &PairPoint) -> (f64, f64) {
 /// A root of the correlations of a pulse's parameters.
 fn factor(point: &CellPoint) -> DMatrix<f64> {
     let size = point.correlations.len();
+    if size == 0 {
+        // A model stated without uncertainty, not fitted: nothing is drawn.
+        return DMatrix::zeros(0, 0);
+    }
     let correlation = DMatrix::from_fn(size, size, |row, column| {
         let found = point.correlations.get(row).and_then(|row| row.get(column));
         found
             .copied()
             .filter(|value| value.is_finite())
-            .unwrap_or({ if row == column { 1.0 } else { 0.0 } })
+            .unwrap_or(if row == column { 1.0 } else { 0.0 })
     });
     // Eigenvectors, since parameters that hang together wholly leave a singular matrix.
     let eigen = correlation.symmetric_eigen();

@@ -38,11 +38,9 @@ pub fn export_csv(
     mut progress: impl FnMut(Progress),
 ) -> Result<u64, JournalError> {
     let mut csv = csv::Writer::from_writer(target);
-    let refused = |error: csv::Error| match error.into_kind() {
-        // As it came, so that a reader who closes the pipe can be told from a full disk.
-        csv::ErrorKind::Io(error) => JournalError::Export(error),
-        other => JournalError::Export(std::io::Error::other(format!("{other:?}"))),
-    };
+    // An error of the target keeps its kind, so that a reader who closes the pipe can be told
+    // from a full disk.
+    let refused = |error: csv::Error| JournalError::Export(error.into());
     csv.write_record(COLUMNS.iter().map(|column| column.name))
         .map_err(refused)?;
     let plan = &record.manifest().plan;

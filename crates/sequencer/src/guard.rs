@@ -432,13 +432,14 @@ fn ratio(part: i64, whole: i64, crossed: bool) -> u32 {
         .max(least)
 }
 
-/// A counter that stands still while the means say that charge has flowed.
+/// A counter that stands still while the nominal means say that charge has flowed. True values
+/// would not do: a correction's offset flows in them even where the converter shows nothing.
 ///
 /// Equal readings prove nothing (a quiet front end shows the same codes for hours), so this is
 /// the only sign of a frozen reading that the host takes by itself; a readback frozen across a
 /// change of setpoint shows as not following or not releasing.
 fn stuck(seen: &Observation, counted: Option<Charge>) -> bool {
-    let expected = seen.current.mean.times(seen.interval());
+    let expected = seen.current_nominal.times(seen.interval());
     seen.on()
         && seen.lost == 0
         && expected.microcoulombs() >= STUCK_CHARGE

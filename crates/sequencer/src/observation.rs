@@ -32,6 +32,9 @@ pub(crate) struct Observation {
     pub(crate) counters: Option<Counters>,
     /// Mean nominal voltage, which the energy's correction wants.
     pub(crate) voltage_nominal: Voltage,
+    /// Mean nominal current, which the counters count: an offset that the correction adds is not
+    /// in them.
+    pub(crate) current_nominal: Current,
     /// Pairs lost since the previous one: the extremes do not cover the whole interval.
     pub(crate) lost: u16,
     /// The first reading of a session.
@@ -90,6 +93,7 @@ impl Observation {
             state: values.state,
             counters: reading.counters,
             voltage_nominal: values.voltage,
+            current_nominal: values.current,
             lost: reading.lost,
             first,
             current_at_stop,

@@ -77,7 +77,8 @@ fn load() -> Load {
 #[test]
 fn a_rehearsal_on_the_same_cell_ends_when_predicted() {
     let cell: Model = serde_json::from_str(CELL).unwrap();
-    let mut setup = Setup::on_cell(SEQUENCE, &exact(), &cell, 1.0);
+    let entry = exact();
+    let mut setup = Setup::on_cell(SEQUENCE, &entry, &cell, 1.0);
     setup.watched_v = 3.0;
     let night = setup.night();
     let crossed_s = night.device.crossings().first().unwrap().at_s.unwrap();
