@@ -137,7 +137,7 @@ impl Daemon {
     pub fn run(&self, sequence: &str, sink: &str) -> String {
         let body = serde_json::json!({ "sequence": sequence, "sink": sink });
         let answer = self.post("/v1/runs", &body);
-        answer["id"].as_str().unwrap().to_owned()
+        answer.get("id").and_then(Value::as_str).unwrap().to_owned()
     }
 
     /// Asks for a resource until the answer meets a condition, and gives that answer.

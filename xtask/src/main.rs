@@ -2,7 +2,7 @@
 //!
 //! - `demo` runs the main job on the simulator, with nothing to configure;
 //! - `test` runs everything the project can check about itself;
-//! - `bench` measures, and prints ratios to references measured in the same run;
+//! - `bench` measures what must be fast, on release builds;
 //! - `docs` rewrites the generated documents.
 
 mod bench;
@@ -27,7 +27,7 @@ enum Chore {
     Demo,
     /// Run every check and test; install nothing, name what is missing.
     Test(test::Options),
-    /// Measure what must be fast, as ratios to references of the same run.
+    /// Measure what must be fast, on release builds.
     Bench,
     /// Rewrite the documents that are generated from the code.
     Docs,

@@ -115,16 +115,16 @@ impl Workbench<'_> {
             (KNEE, COMMON),
             rows,
         ));
-        let least = beyond
+        let folded = beyond
             .iter()
             .map(|seen| seen.least_amperes)
             .fold(f64::INFINITY, f64::min);
-        if least < FOLDS * knee {
+        if folded < FOLDS * knee {
             figures.figures.push(Figure::of_stage(
                 Name::FoldBackCurrent,
                 stage,
-                (least, Unit::Ampere),
-                Budget::new(self.instrument.current.of_reading(least)),
+                (folded, Unit::Ampere),
+                Budget::new(self.instrument.current.of_reading(folded)),
                 (FOLD, COMMON),
                 rows,
             ));

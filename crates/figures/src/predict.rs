@@ -109,7 +109,7 @@ pub fn predict(
     let mut random = Random::from_seed(seed);
     let values = (0..trials)
         .map(|_| {
-            let drawn = Drawn::drawn(model, &best, &factors, spread, &mut random);
+            let drawn = Drawn::at_random(model, &best, &factors, spread, &mut random);
             drawn.run(load).0
         })
         .collect();
@@ -168,7 +168,7 @@ impl Drawn {
         })
     }
 
-    fn drawn(
+    fn at_random(
         model: &CellModel,
         best: &Self,
         factors: &[DMatrix<f64>],

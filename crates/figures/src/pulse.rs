@@ -60,7 +60,9 @@ impl Workbench<'_> {
                     continue;
                 }
                 match self.after(index, delay, stage, delivered, capture) {
-                    Some(seen) => figures.figures.extend(self.pulse(name, stage, start, seen)),
+                    Some(seen) => figures
+                        .figures
+                        .extend(self.pulse(name, stage, start, &seen)),
                     None if stage.is_first() => {
                         figures
                             .missing
@@ -78,7 +80,7 @@ impl Workbench<'_> {
         }
     }
 
-    fn pulse(&self, name: Name, stage: &Stage<'_>, start: Sample, seen: Seen) -> Option<Figure> {
+    fn pulse(&self, name: Name, stage: &Stage<'_>, start: Sample, seen: &Seen) -> Option<Figure> {
         let correction = &self.plan.correction;
         let (low_a, low_v) = (
             correction.current_from_readback(start.current).amperes(),

@@ -189,14 +189,14 @@ fn run(faults: &LinkFaults, seed: u64) {
         .filter(|h| matches!(h, Heard::Acknowledged { .. }))
         .count();
     assert_eq!(outcomes, 24, "{:?}", bench.heard);
-    let mut begun = BTreeMap::new();
+    let mut edges = BTreeMap::new();
     for heard in &bench.heard {
         if let Heard::Edge { time, order } | Heard::StepSeen { time, order } = heard {
-            begun.entry(*order).or_insert(*time);
+            edges.entry(*order).or_insert(*time);
         }
     }
     for (place, id) in ids.iter().enumerate() {
-        if let Some(time) = begun.get(id) {
+        if let Some(time) = edges.get(id) {
             let due = begin + Span::from_millis(250 * place as u64);
             assert!(
                 *time >= due && *time <= due + Span::from_millis(250),

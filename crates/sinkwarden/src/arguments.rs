@@ -242,12 +242,13 @@ pub(crate) struct SinkOf {
 pub(crate) struct Records {
     /// The folder that holds the records.
     #[arg(
-        long,
+        long = "records",
+        id = "records",
         value_name = "FOLDER",
         env = "SINKWARDEN_RECORDS",
         default_value = "records"
     )]
-    pub(crate) records: PathBuf,
+    pub(crate) folder: PathBuf,
     /// Only those of this device under test.
     #[arg(long, value_name = "LABEL")]
     pub(crate) dut: Option<String>,

@@ -32,7 +32,7 @@ pub(crate) use replay::ReplayAnswer;
 ///
 /// # Errors
 /// What keeps it from being carried out, for stderr.
-pub(crate) fn carry_out(command: Command, output: &Output) -> Result<Exit> {
+pub(crate) fn carry_out(command: Command, output: Output) -> Result<Exit> {
     match command {
         Command::Bench => {
             give_text(STARTING)?;
@@ -42,18 +42,18 @@ pub(crate) fn carry_out(command: Command, output: &Output) -> Result<Exit> {
             give_text(&format!("{:#}\n", sequence::schema()))?;
             Ok(Exit::Done)
         }
-        Command::Check(on) => check::carry_out(&on, *output),
-        Command::Prove(arguments) => prove::carry_out(&arguments, *output),
-        Command::Rehearse(arguments) => rehearse::carry_out(&arguments, *output),
-        Command::Serve(arguments) => serve::carry_out(arguments, *output),
-        Command::Run(arguments) => run::carry_out(&arguments, *output),
-        Command::Off(of) => off::carry_out(&of, *output),
-        Command::Status(of) => status::carry_out(&of, *output),
-        Command::Watch(of) => watch::carry_out(&of, *output),
-        Command::Records(arguments) => records::carry_out(&arguments, *output),
-        Command::Figures(arguments) => figures::carry_out(&arguments, *output),
-        Command::Replay(of) => replay::carry_out(&of, *output),
-        Command::Verify(of) => verify::carry_out(&of, *output),
-        Command::Export(arguments) => export::carry_out(&arguments, *output),
+        Command::Check(on) => check::carry_out(&on, output),
+        Command::Prove(arguments) => prove::carry_out(&arguments, output),
+        Command::Rehearse(arguments) => rehearse::carry_out(&arguments, output),
+        Command::Serve(arguments) => serve::carry_out(arguments, output),
+        Command::Run(arguments) => run::carry_out(&arguments, output),
+        Command::Off(of) => off::carry_out(&of, output),
+        Command::Status(of) => status::carry_out(&of, output),
+        Command::Watch(of) => watch::carry_out(&of, output),
+        Command::Records(arguments) => records::carry_out(&arguments, output),
+        Command::Figures(arguments) => figures::carry_out(&arguments, output),
+        Command::Replay(of) => replay::carry_out(&of, output),
+        Command::Verify(of) => verify::carry_out(&of, output),
+        Command::Export(arguments) => export::carry_out(&arguments, output),
     }
 }

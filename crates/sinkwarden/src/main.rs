@@ -39,7 +39,7 @@ use crate::output::Output;
 fn main() -> ExitCode {
     let arguments = Arguments::parse();
     let output = Output::new(arguments.json);
-    match commands::carry_out(arguments.command, &output) {
+    match commands::carry_out(arguments.command, output) {
         Ok(exit) => exit.into(),
         Err(error) => exit::report(&error).into(),
     }

@@ -57,10 +57,13 @@ fn write(record: &Record, target: &mut dyn Write) -> Result<u64> {
         progress.at(done.segments_done, text);
     });
     progress.finish();
-    let rows = exported.map_err(|error| match error {
+    let rows = exported.map_err(|error| {
         // Told apart, so that a reader who has had enough is no error.
-        JournalError::Export(error) => anyhow::Error::from(error),
-        other => other.into(),
+        if let JournalError::Export(error) = error {
+            anyhow::Error::from(error)
+        } else {
+            error.into()
+        }
     })?;
     target.flush()?;
     Ok(rows)

@@ -9,7 +9,7 @@ use crate::print;
 use crate::record_folder;
 
 pub(super) fn carry_out(arguments: &Records, output: Output) -> Result<Exit> {
-    let mut list = record_folder::list(&arguments.records)?;
+    let mut list = record_folder::list(&arguments.folder)?;
     let fits = |wanted: &Option<String>, found: &str| {
         wanted.as_deref().is_none_or(|wanted| wanted == found)
     };

@@ -43,7 +43,7 @@ pub(super) fn carry_out(of: &SinkOf, output: Output) -> Result<Exit> {
                     })?;
                 }
                 EventBody::Gone(_) => {
-                    tell("some events were missed while the daemon could not be reached")
+                    tell("some events were missed while the daemon could not be reached");
                 }
                 EventBody::Sink(_) | EventBody::Run(_) | EventBody::Link(_) => {}
             },
