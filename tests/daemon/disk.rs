@@ -37,11 +37,14 @@ fn a_full_disk_trips_the_record_interlock_and_leaves_a_readable_record() {
     std::fs::write(&bench, bench_on(sink.path())).unwrap();
     let records = folder.path().join("records");
     std::fs::create_dir(&records).unwrap();
-    let daemon = Daemon::start_by(with_small_disk(&records, 96), &bench, &records);
-    let sequence = discharge(120, "end").replace("100 ms", "25 ms");
-    let id = daemon.run(&sequence, "left");
+    let daemon = Daemon::start_by(with_small_disk(&records, 4096), &bench, &records);
+    let id = daemon.run(&discharge(120, "end"), "left");
     sink.wait_for_current(Duration::from_secs(10), |current| current > 0.4);
-    // 40 readbacks a second of some 120 bytes fill 96 KiB in a third of a minute.
+    // The check has seen room enough; then somebody else takes all of it. The file system lives
+    // in the daemon's own name space and is reached through it.
+    let seen = format!("/proc/{}/root{}", daemon.process_id(), records.display());
+    let taken = std::fs::write(format!("{seen}/ballast"), vec![0; 8 << 20]);
+    assert!(taken.is_err(), "8 MiB fit on a disk of 4 MiB");
     sink.wait_for_current(Duration::from_secs(60), |current| current < 0.01);
     let run = daemon.wait_for(
         &format!("/v1/runs/{id}"),
@@ -49,8 +52,6 @@ fn a_full_disk_trips_the_record_interlock_and_leaves_a_readable_record() {
         |answer| answer.to_string().contains("tripped"),
     );
     assert!(run.to_string().contains("record"), "{run:#}");
-    // The file system lives in the daemon's own name space: read the record through it.
-    let seen = format!("/proc/{}/root{}", daemon.process_id(), records.display());
     let record = std::fs::read_dir(seen)
         .unwrap()
         .map(|entry| entry.unwrap().path())
@@ -60,5 +61,5 @@ fn a_full_disk_trips_the_record_interlock_and_leaves_a_readable_record() {
     let readings = record
         .entries()
         .filter(|entry| entry.as_ref().is_ok_and(|entry| entry.reading().is_some()));
-    assert!(readings.count() > 100);
+    assert!(readings.count() > 0);
 }
