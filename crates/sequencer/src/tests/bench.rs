@@ -404,7 +404,7 @@ impl Bench {
     }
 
     /// What came out, one line each, without the setup; times since the first step.
-    pub(super) fn transcript(&self) -> String {
+    pub(super) fn chronicle(&self) -> String {
         let mut text = String::new();
         let zero = self
             .starts

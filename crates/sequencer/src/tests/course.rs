@@ -16,7 +16,7 @@ use crate::status::Standing;
 fn check(plan: Plan, expected: &Expect) {
     let mut bench = Bench::connected(plan);
     bench.run(Span::from_secs(3_600));
-    expected.assert_eq(&bench.transcript());
+    expected.assert_eq(&bench.chronicle());
 }
 
 #[test]
@@ -159,7 +159,7 @@ fn a_stalled_link_moves_the_schedule_and_says_so() {
     bench.latency = millis(5);
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
     assert_eq!(bench.starts.len(), 80);
-    assert!(bench.transcript().contains("Rescheduled"));
+    assert!(bench.chronicle().contains("Rescheduled"));
 }
 
 #[test]
@@ -279,7 +279,7 @@ fn captures_are_armed_one_at_a_time_and_a_missed_one_is_told() {
     ];
     let mut bench = Bench::connected(plan(unhurried));
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
-    let text = bench.transcript();
+    let text = bench.chronicle();
     assert_eq!(text.matches("Burst {").count(), 6, "{text}");
     assert_eq!(text.matches("before: 5, after: 45").count(), 6);
     // Every 100 ms there is no time to send one before the next.
@@ -291,7 +291,7 @@ fn captures_are_armed_one_at_a_time_and_a_missed_one_is_told() {
     ];
     let mut bench = Bench::connected(plan(hurried));
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
-    let text = bench.transcript();
+    let text = bench.chronicle();
     let (armed, missed) = (
         text.matches("Burst {").count(),
         text.matches("BurstMissed").count(),

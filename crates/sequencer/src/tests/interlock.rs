@@ -101,7 +101,7 @@ fn overvoltage_reversed_leads_and_overpower_trip() {
     trips(&mut bench, Interlock::ReversedPolarity);
     assert!(
         bench
-            .transcript()
+            .chronicle()
             .contains("crossed ReversedPolarity -350000 against -200000")
     );
     let mut plan = plan(vec![draw(2_900, Span::from_secs(1_000))]);
@@ -127,7 +127,7 @@ fn all_that_cross_at_once_are_recorded_and_the_first_in_the_table_names_the_trip
           ended 0 at 2.600 by Run
         Tripped(Undervoltage)
     "#]]
-    .assert_eq(bench.transcript().split_once("off\n").unwrap().1);
+    .assert_eq(bench.chronicle().split_once("off\n").unwrap().1);
 }
 
 #[test]
@@ -186,7 +186,7 @@ fn a_faulty_temperature_sensor_trips() {
         trips(&mut bench, Interlock::SensorFault);
         assert!(
             bench
-                .transcript()
+                .chronicle()
                 .contains(&format!("crossed SensorFault {value} against 0"))
         );
     }
@@ -354,7 +354,7 @@ fn a_clock_out_of_bounds_by_the_transports_word_trips() {
     trips(&mut bench, Interlock::Clock);
     assert!(
         bench
-            .transcript()
+            .chronicle()
             .contains("crossed Clock 700000 against 500000")
     );
 }
@@ -379,12 +379,12 @@ fn what_the_sink_trips_by_is_named_as_the_interlock() {
             value: 1,
         });
         trips(&mut bench, interlock);
-        assert!(bench.transcript().contains("by the sink"));
+        assert!(bench.chronicle().contains("by the sink"));
         // The event was lost; the readings say it.
         let mut bench = running();
         bench.latched = Some(cause);
         trips(&mut bench, interlock);
-        assert!(bench.transcript().contains("by the sink"));
+        assert!(bench.chronicle().contains("by the sink"));
     }
 }
 

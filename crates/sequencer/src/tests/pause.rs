@@ -13,7 +13,7 @@ use crate::replay::{Recorded, ReplayError, replay};
 use crate::status::Standing;
 
 fn check(bench: &Bench, expected: &Expect) {
-    expected.assert_eq(&bench.transcript());
+    expected.assert_eq(&bench.chronicle());
 }
 
 fn two_steps() -> Plan {
@@ -218,7 +218,7 @@ fn a_run_is_taken_up_where_the_counters_stand() {
         (wanted - charge).abs() <= Charge::from_millicoulombs(1),
         "{charge}"
     );
-    assert!(bench.transcript().contains("Continued"));
+    assert!(bench.chronicle().contains("Continued"));
 }
 
 #[test]
@@ -240,11 +240,7 @@ fn a_crashed_host_resumes_from_its_record_on_a_sink_that_its_deadman_turned_off(
     bench.happen(Happening::LinkLost);
     bench.connect();
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
-    assert!(
-        bench.transcript().contains("Reset"),
-        "{}",
-        bench.transcript()
-    );
+    assert!(bench.chronicle().contains("Reset"), "{}", bench.chronicle());
     let status = bench.sequencer.status();
     assert!(
         status.elapsed < Span::from_secs(30),

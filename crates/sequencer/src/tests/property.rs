@@ -291,7 +291,7 @@ proptest! {
         let ending = bench.run(Span::from_secs(3_000));
         prop_assert!(
             ending == Some(Ending::Finished),
-            "{:?}\n{}", ending, bench.transcript()
+            "{:?}\n{}", ending, bench.chronicle()
         );
     }
 }

@@ -34,7 +34,7 @@ fn falling(plan: Plan) -> Bench {
 
 fn check(mut bench: Bench, expected: &Expect) {
     bench.run(Span::from_secs(7_200));
-    expected.assert_eq(&bench.transcript());
+    expected.assert_eq(&bench.chronicle());
 }
 
 #[test]
@@ -109,7 +109,7 @@ fn a_dip_between_two_readbacks_does_not_meet_a_persistence() {
         bench.emf = millivolts(3_700);
         bench.run(Span::from_secs(1));
     }
-    assert!(!bench.transcript().contains("ended 0"));
+    assert!(!bench.chronicle().contains("ended 0"));
 }
 
 #[test]
@@ -129,9 +129,9 @@ fn an_interval_that_straddles_the_beginning_does_not_count() {
     let mut bench = Bench::connected(plan(ops));
     bench.run(Span::from_secs(30));
     assert!(
-        bench.transcript().contains("ended 1 at 3.050 by Duration"),
+        bench.chronicle().contains("ended 1 at 3.050 by Duration"),
         "{}",
-        bench.transcript()
+        bench.chronicle()
     );
 }
 
@@ -148,7 +148,7 @@ fn charge_counts_from_the_steps_own_beginning() {
     let mut bench = Bench::connected(plan(ops));
     bench.run(Span::from_secs(30));
     // Five seconds from 3.030, seen at the next readback, plus the reaction.
-    let text = bench.transcript();
+    let text = bench.chronicle();
     assert!(
         text.contains("ended 1 at 8.2") || text.contains("ended 1 at 8.3"),
         "{text}"
@@ -246,9 +246,9 @@ fn a_settled_voltage_ends_a_rest_only_after_a_whole_window() {
         bench.emf += Voltage::from_millivolts(1);
         bench.run(millis(200));
     }
-    assert!(!bench.transcript().contains("ended 0"));
+    assert!(!bench.chronicle().contains("ended 0"));
     bench.run(Span::from_secs(60));
-    let text = bench.transcript();
+    let text = bench.chronicle();
     assert!(text.contains("ended 0 at 29."), "{text}");
 }
 
@@ -275,9 +275,9 @@ fn a_source_that_may_give_up_ends_its_step_and_does_not_trip() {
     bench.limit = milliamperes(1_500);
     assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
     assert!(
-        bench.transcript().contains("GaveUp"),
+        bench.chronicle().contains("GaveUp"),
         "{}",
-        bench.transcript()
+        bench.chronicle()
     );
 }
 
@@ -307,8 +307,8 @@ fn a_regulated_step_is_followed_and_ended_by_its_current() {
     bench.emf = millivolts(3_000);
     assert_eq!(bench.run(Span::from_secs(30)), Some(Ending::Finished));
     assert!(
-        bench.transcript().contains("ended 1 at 4.0"),
+        bench.chronicle().contains("ended 1 at 4.0"),
         "{}",
-        bench.transcript()
+        bench.chronicle()
     );
 }
