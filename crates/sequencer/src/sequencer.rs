@@ -30,6 +30,8 @@ pub(crate) const LEAD: Span = Span::from_millis(300);
 /// Time between a reading that meets a condition and the step that follows: the order must be on
 /// stable storage and on the sink before its start.
 pub(crate) const REACTION: Span = Span::from_millis(200);
+/// How often the time above is doubled at most while order after order comes too late: 12.8 s.
+const DOUBLINGS: u32 = 6;
 /// Longest time in which a session must accept the setup.
 pub(crate) const SETUP: Span = Span::from_secs(10);
 /// Time after `off` at which no current may flow any more: orders, lines and samples are past.
@@ -69,6 +71,8 @@ pub struct Sequencer {
     pub(crate) voltage: Voltage,
     /// Steps up to here have begun, by the sink's word.
     pub(crate) begun_through: SinkTime,
+    /// Steps refused as too late since one last began.
+    late: u32,
     /// Readback interval last ordered.
     pub(crate) readback: Span,
     pub(crate) bursts: burst::Bursts,
@@ -107,6 +111,7 @@ impl Sequencer {
             latest_at: HostTime::ZERO,
             voltage: Voltage::ZERO,
             begun_through: SinkTime::ZERO,
+            late: 0,
             bursts: burst::Bursts::default(),
             held: false,
             rebooted: false,
@@ -427,6 +432,15 @@ impl Sequencer {
             .sink_time(self.now)
             .unwrap_or(self.latest)
             .max(self.latest)
+    }
+
+    /// Time left to an order that is given now, to reach the sink before its step is due.
+    ///
+    /// Doubled with each order in turn that came too late: behind a disk or a link that always
+    /// needs longer than [`REACTION`], a step would else be put off for ever.
+    pub(crate) fn reaction(&self) -> Span {
+        let factor = 1_i64 << self.late.min(DOUBLINGS);
+        REACTION.checked_mul_int(factor).unwrap_or(REACTION)
     }
 
     /// Steps that may wait in the sink's queue.

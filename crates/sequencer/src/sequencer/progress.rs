@@ -4,7 +4,7 @@ use quantity::SinkTime;
 use sequence::plan::Next;
 use wire::Order;
 
-use super::{REACTION, Sequencer};
+use super::Sequencer;
 use crate::account::{Counted, Increment};
 use crate::condition::Watch;
 use crate::course::{LoopWatch, Queued, Running};
@@ -213,7 +213,7 @@ impl Sequencer {
         time: SinkTime,
         as_planned: bool,
     ) {
-        let start = self.sink_now().max(time).saturating_add(REACTION);
+        let start = self.sink_now().max(time).saturating_add(self.reaction());
         let end = self
             .course
             .running

@@ -41,7 +41,7 @@ impl Sequencer {
         if due >= nearest {
             return;
         }
-        let start = self.sink_now().saturating_add(REACTION);
+        let start = self.sink_now().saturating_add(self.reaction());
         self.course.delay_ahead(start);
         self.draw_on(start);
         self.find(Finding::Rescheduled {
@@ -81,7 +81,8 @@ impl Sequencer {
             from: SinkTime::ZERO,
         });
         let slot = late.step.slot;
-        let start = self.sink_now().saturating_add(REACTION);
+        self.late = self.late.saturating_add(1);
+        let start = self.sink_now().saturating_add(self.reaction());
         self.course.drop_from(place, start);
         let by = start.saturating_since(slot.start);
         self.find(Finding::Rescheduled { op: slot.op, by });
@@ -199,6 +200,7 @@ impl Sequencer {
         let Some(queued) = queued else { return };
         queued.edge = Some(time);
         queued.step.acknowledged = true;
+        self.late = 0;
         self.begun_through = self.begun_through.max(queued.step.slot.start);
         if self.phase == Phase::Progress {
             self.fill();

@@ -163,6 +163,22 @@ fn a_stalled_link_moves_the_schedule_and_says_so() {
 }
 
 #[test]
+fn a_disk_that_is_always_slow_costs_a_few_tries_and_no_livelock() {
+    // Each order needs longer than is left to it before the first step.
+    for latency in [250, 1_000, 5_000] {
+        let steps = vec![rest(millis(20_000)), draw(420, millis(20_000))];
+        let mut bench = Bench::connected(plan(steps));
+        bench.latency = millis(latency);
+        assert_eq!(
+            bench.run(Span::from_secs(120)),
+            Some(Ending::Finished),
+            "{latency} ms"
+        );
+        assert_eq!(bench.starts.len(), 2, "each step once: {latency} ms");
+    }
+}
+
+#[test]
 fn charge_is_shared_out_at_an_edge_by_what_was_asked_for() {
     // 1000 mA from 50 ms after a readback on: half an interval of it belongs to the step.
     let mut bench = Bench::connected(plan(vec![rest(millis(1_050)), draw(1_000, millis(10_000))]));
