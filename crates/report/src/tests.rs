@@ -1,0 +1,6 @@
+//! Reports of small rehearsed records on the invented bench, and of records by hand.
+
+mod bench;
+mod escaping;
+mod states;
+mod structure;
