@@ -26,6 +26,7 @@ mod events;
 mod figures_file;
 mod http;
 mod keys;
+mod latches;
 mod metrics;
 mod notify;
 mod records;

@@ -13,6 +13,7 @@ use std::time::Duration;
 use quantity::{HostTime, Span};
 use run::KeeperConfig;
 use run::keeper::Keeper;
+use sequencer::event::Interlock;
 use sink::bench::SinkEntry;
 use tokio::net::TcpListener;
 use tokio::runtime::{Builder, Runtime};
@@ -26,6 +27,7 @@ use crate::context::Context;
 use crate::error::DaemonError;
 use crate::http;
 use crate::keys::Keys;
+use crate::latches;
 use crate::notify::Notifier;
 use crate::records::Records;
 use crate::recovery::{Resumption, recover};
@@ -104,7 +106,9 @@ impl Daemon {
         for entry in &config.bench.sinks {
             let place = resumptions.iter().position(|one| one.sink == entry.name);
             let resumption = place.map(|place| resumptions.swap_remove(place));
-            let (handle, worker) = start_sink(entry, &config, &context, clock, resumption)?;
+            let tripped_by = latches::latched_by(&records, &entry.name);
+            let (handle, worker) =
+                start_sink(entry, &config, &context, clock, resumption, tripped_by)?;
             sinks.push(handle);
             workers.push(worker);
         }
@@ -228,6 +232,7 @@ fn start_sink(
     context: &Arc<Context>,
     clock: HostClock,
     resumption: Option<Resumption>,
+    tripped_by: Option<Interlock>,
 ) -> Result<(SinkHandle, JoinHandle<()>), DaemonError> {
     let (correction, certificate) = calibration::load(entry, &config.bench_path)?;
     let keeper_config = KeeperConfig::for_sink(entry).map_err(|error| DaemonError::Sink {
@@ -267,6 +272,7 @@ fn start_sink(
             .record
             .free_space_mb
             .saturating_mul(1_000_000),
+        tripped_by,
         view,
         time: virtual_time,
         context: Arc::clone(context),

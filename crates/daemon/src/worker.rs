@@ -145,6 +145,8 @@ pub(crate) struct WorkerParts {
     pub(crate) correction: Correction,
     /// Free space below which a run trips.
     pub(crate) free_bytes_min: u64,
+    /// The interlock that tripped the last run and has not been reset since.
+    pub(crate) tripped_by: Option<Interlock>,
     /// Where the view goes.
     pub(crate) view: watch::Sender<Arc<Snapshot>>,
     /// The link's time, for those who stamp with it.
@@ -207,7 +209,7 @@ impl Worker {
             outbound: Vec::with_capacity(4096),
             offs: Vec::new(),
             reset: None,
-            tripped_by: None,
+            tripped_by: parts.tripped_by,
             ending: None,
             off_acknowledged: false,
             newsworthy: true,

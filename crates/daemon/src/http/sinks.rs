@@ -7,9 +7,11 @@ use axum::Json;
 use axum::extract::{Path, State};
 use futures_util::future::join_all;
 use tokio::sync::oneshot;
+use tokio::task::spawn_blocking;
 use tokio::time::timeout;
 
 use crate::app::App;
+use crate::latches;
 use crate::sinks::SinkHandle;
 use crate::view::{Code, OffList, OffView, Problem, ResetView, SinkList, SinkView};
 use crate::worker::{Ask, NotReset};
@@ -82,6 +84,7 @@ pub(super) async fn reset(
     sink.give(Ask::Reset(answer))?;
     let refused = match timeout(RESET_WAIT, answered).await {
         Ok(Ok(Ok(()))) => {
+            remember_reset(Arc::clone(&app), name.clone()).await;
             return Ok(Json(ResetView {
                 sink: name,
                 reset: true,
@@ -108,4 +111,12 @@ pub(super) async fn reset(
         }
     };
     Err(refused)
+}
+
+/// The latch is clear whether or not that can be written down; if not, it is back after a restart.
+async fn remember_reset(app: Arc<App>, name: String) {
+    let noted = spawn_blocking(move || latches::note_reset(&app.records, &name)).await;
+    if let Ok(Err(error)) = noted {
+        tracing::warn!("the reset could not be written down: {error}");
+    }
 }

@@ -1,5 +1,6 @@
+use daemon::Config;
 use daemon::view::{EndingWord, RunState};
-use serde_json::json;
+use serde_json::{Value, json};
 
 use crate::desk::{Desk, SHORT};
 
@@ -154,6 +155,27 @@ fn a_disk_that_runs_out_trips_the_run() {
         desk.get("/v1/sinks/left").json()["latched_by"].is_null()
     });
     desk.start(SHORT);
+}
+
+#[test]
+fn a_latch_and_its_reset_outlive_the_daemon() {
+    let starve = |config: &mut Config| {
+        config.bench.sinks[0].interlocks.record.free_space_mb = u64::MAX;
+    };
+    let latched_by = |desk: &Desk| desk.get("/v1/sinks/left").json()["latched_by"].clone();
+    let desk = Desk::open_with(50, starve);
+    let run = desk.start(&long());
+    desk.wait_for_run(run.id, "the seal", |run| run.sealed);
+
+    let desk = Desk::open_in(desk.close(), 50, starve);
+    assert_eq!(latched_by(&desk), "record");
+    let body = json!({"sequence": SHORT, "sink": "left"});
+    let refused = desk.post_json("/v1/runs", &body);
+    assert_eq!(refused.code(), "sink-latched");
+    assert_eq!(desk.post("/v1/sinks/left/reset").status, 200);
+
+    let desk = Desk::open_in(desk.close(), 50, starve);
+    assert_eq!(latched_by(&desk), Value::Null);
 }
 
 #[test]
