@@ -1,17 +1,20 @@
 //! What is known of the errors of a sink's readings: one channel for the current, one for the
 //! voltage.
 //!
-//! Every error of a channel is an offset and a gain, and the two may hang together: a reading
-//! errs by `offset + gain * value`, so what adds up over a time errs by
+//! Nearly every error of a channel is an offset and a gain, and the two may hang together: a
+//! reading errs by `offset + gain * value`, so what adds up over a time errs by
 //! `offset * time + gain * amount`. The same few sources of error therefore serve a reading, a
-//! charge, an energy and a difference of readings, with a certificate and without.
+//! charge, an energy and a difference of readings, with a certificate and without. The fit of a
+//! bent curve errs as it predicts at the mean.
 //!
 //! Without a certificate there is only what the bench file states: the sense resistor's
 //! tolerance and temperature coefficient, the reading converter's own stated errors, its steps.
 //! What a calibration would find beyond that is not in it, and the figures say so.
 
 use sink::bench::{Codes, SinkEntry};
-use sink::calibration::{Certificate, ChannelSummary, ReferenceMeter, SecondOrder};
+use sink::calibration::{
+    CalibrationError, Certificate, Channel as Fitted, ChannelSummary, ReferenceMeter,
+};
 use sink::uncertainty::{
     Budget, Contribution, DegreesOfFreedom, Evaluation, Stated, of_resolution,
 };
@@ -28,14 +31,25 @@ struct Source {
     name: &'static str,
     evaluation: Evaluation,
     freedom: DegreesOfFreedom,
-    /// Standard uncertainty of the offset, ampere or volt.
-    offset: f64,
-    /// Standard uncertainty of the gain, a fraction.
-    gain: f64,
-    /// Correlation coefficient of offset and gain; 1 where one cause makes both.
-    correlation: f64,
+    law: Law,
     /// Whether it differs from reading to reading instead of being common to all.
     fresh: bool,
+}
+
+/// How a source's error depends on the value.
+#[derive(Debug, Clone, PartialEq)]
+enum Law {
+    /// An offset and a gain.
+    Straight {
+        /// Standard uncertainty of the offset, ampere or volt.
+        offset: f64,
+        /// Standard uncertainty of the gain, a fraction.
+        gain: f64,
+        /// Correlation coefficient of both; 1 where one cause makes both.
+        correlation: f64,
+    },
+    /// As the fit of a bent curve predicts.
+    Bent(Box<Fitted>),
 }
 
 /// What is known of one channel's errors.
@@ -84,19 +98,23 @@ impl Instrument {
     }
 
     /// Of a sink with a valid certificate.
-    pub(crate) fn certified(certificate: &Certificate) -> Self {
+    ///
+    /// # Errors
+    /// Those of its fits; none for a certificate that was computed again from its points.
+    pub(crate) fn certified(certificate: &Certificate) -> Result<Self, CalibrationError> {
+        let channels = certificate.channels()?;
         let measurements = &certificate.measurements;
-        let mut current = certified(
-            &certificate.current_read,
-            [
-                "certificate, current: offset and slope",
-                "certificate, current: departure from a straight line",
-            ],
-        );
-        current.push(of_meter(
-            "reference meter, current",
-            &measurements.current_meter,
-        ));
+        let mut current = vec![
+            fitted(
+                [
+                    "certificate, current: offset and slope",
+                    "certificate, current: curve",
+                ],
+                &certificate.current_read,
+                channels.current_read,
+            ),
+            of_meter("reference meter, current", &measurements.current_meter),
+        ];
         let drift = measurements
             .temperature_coefficient
             .fraction_per_kelvin()
@@ -105,20 +123,20 @@ impl Instrument {
         current.push(Source::stated_gain("sense resistor, temperature", drift));
         let current_step = measurements.current_step.amperes();
         current.push(Source::step("converter step, current", current_step));
-        let mut voltage = certified(
-            &certificate.voltage_read,
-            [
-                "certificate, voltage: offset and slope",
-                "certificate, voltage: departure from a straight line",
-            ],
-        );
-        voltage.push(of_meter(
-            "reference meter, voltage",
-            &measurements.voltage_meter,
-        ));
+        let mut voltage = vec![
+            fitted(
+                [
+                    "certificate, voltage: offset and slope",
+                    "certificate, voltage: curve",
+                ],
+                &certificate.voltage_read,
+                channels.voltage_read,
+            ),
+            of_meter("reference meter, voltage", &measurements.voltage_meter),
+        ];
         let voltage_step = measurements.voltage_step.volts();
         voltage.push(Source::step("converter step, voltage", voltage_step));
-        Self {
+        Ok(Self {
             current: Channel {
                 range: Some(true_range(&certificate.current_read)),
                 ..Channel::new(current, current_step)
@@ -127,7 +145,7 @@ impl Instrument {
                 range: Some(true_range(&certificate.voltage_read)),
                 ..Channel::new(voltage, voltage_step)
             },
-        }
+        })
     }
 }
 
@@ -197,9 +215,25 @@ impl Channel {
 
 impl Source {
     fn share(&self, time: f64, amount: f64) -> f64 {
-        let (offset, gain) = (self.offset * time, self.gain * amount);
-        let both = 2.0 * self.correlation * offset * gain;
-        (offset * offset + gain * gain + both).max(0.0).sqrt()
+        match &self.law {
+            Law::Straight {
+                offset,
+                gain,
+                correlation,
+            } => {
+                let (offset, gain) = (offset * time, gain * amount);
+                let both = 2.0 * correlation * offset * gain;
+                (offset * offset + gain * gain + both).max(0.0).sqrt()
+            }
+            // A difference of two readings: the slope where it is known least.
+            Law::Bent(fit) if time.abs() < f64::MIN_POSITIVE => {
+                fit.slope_uncertainty_max() * amount.abs()
+            }
+            Law::Bent(fit) => {
+                let nominal = nominal_of(fit, amount / time * MICRO);
+                fit.predict(nominal).standard_uncertainty / MICRO * time.abs()
+            }
+        }
     }
 
     /// From bounds stated in a data sheet: any value within them is as likely (JCGM 100:2008,
@@ -209,9 +243,11 @@ impl Source {
             name,
             evaluation: Evaluation::TypeB,
             freedom: DegreesOfFreedom::INFINITE,
-            offset,
-            gain,
-            correlation: 0.0,
+            law: Law::Straight {
+                offset,
+                gain,
+                correlation: 0.0,
+            },
             fresh: false,
         }
     }
@@ -228,12 +264,16 @@ impl Source {
     }
 }
 
-/// The fit of a certificate's line, and how far a curve departs from it where the points
-/// demand one.
-fn certified(
-    summary: &ChannelSummary,
-    [fit_name, departure_name]: [&'static str; 2],
-) -> Vec<Source> {
+/// The fit of a certificate's curve.
+fn fitted([straight, bent]: [&'static str; 2], summary: &ChannelSummary, fit: Fitted) -> Source {
+    if summary.curvature.is_some() {
+        return Source {
+            evaluation: Evaluation::TypeA,
+            freedom: summary.degrees_of_freedom,
+            law: Law::Bent(Box::new(fit)),
+            ..Source::type_b(bent, 0.0, 0.0)
+        };
+    }
     // The certificate's line stands on nominal values, `true = a + b nominal`. On true values
     // the error is that of `a - (a / b) b` and of `b / b`, with what both have in common.
     let (u_offset, u_slope) = (
@@ -256,20 +296,26 @@ fn certified(
     } else {
         0.0
     };
-    let fit = Source {
+    Source {
         evaluation: Evaluation::TypeA,
         freedom: summary.degrees_of_freedom,
-        correlation,
-        ..Source::type_b(fit_name, offset, gain)
-    };
-    let SecondOrder {
-        demanded,
-        departure_micro,
-        ..
-    } = summary.second_order;
-    let departure = Stated::Rectangular.standard_uncertainty(departure_micro / MICRO);
-    let departure = demanded.then(|| Source::type_b(departure_name, departure, 0.0));
-    [Some(fit), departure].into_iter().flatten().collect()
+        law: Law::Straight {
+            offset,
+            gain,
+            correlation,
+        },
+        ..Source::type_b(straight, 0.0, 0.0)
+    }
+}
+
+/// The nominal value whose true value is the given one, micro-units: after Newton, from the value
+/// itself; a correction is near enough to one that the fourth step changes nothing.
+fn nominal_of(fit: &Fitted, value_micro: f64) -> f64 {
+    (0..4).fold(value_micro, |nominal, _| {
+        let found = fit.predict(nominal).value;
+        let slope = fit.predict(nominal + 1.0).value - found;
+        nominal - (found - value_micro) / slope
+    })
 }
 
 /// One meter read all points, so its constant part and its part of the reading err together.
@@ -280,14 +326,23 @@ fn of_meter<T: quantity::Textual + quantity::Quantity>(
     let constant = meter.accuracy(0.0) / MICRO;
     let of_reading = meter.accuracy(MICRO) / MICRO - constant;
     Source {
-        correlation: 1.0,
-        ..Source::type_b(name, constant, of_reading)
+        law: Law::Straight {
+            offset: constant,
+            gain: of_reading,
+            correlation: 1.0,
+        },
+        ..Source::type_b(name, 0.0, 0.0)
     }
 }
 
+/// The true values of the least and the largest nominal value of the points.
 fn true_range(summary: &ChannelSummary) -> (f64, f64) {
-    let [low, high] = summary
-        .range_micro
-        .map(|nominal| (summary.offset_micro + summary.slope * nominal) / MICRO);
+    let curvature = summary
+        .curvature
+        .map_or(0.0, |curvature| curvature.per_unit / MICRO);
+    let [low, high] = summary.range_micro.map(|nominal| {
+        let bent = curvature * nominal * nominal;
+        (summary.offset_micro + summary.slope * nominal + bent) / MICRO
+    });
     (low, high)
 }

@@ -18,6 +18,10 @@ pub(crate) struct Amount {
     pub(crate) energy_wh: f64,
     /// Seconds.
     pub(crate) seconds: f64,
+    /// What the bend of a correction may hide in the charge, at most, ampere hours.
+    pub(crate) hidden_ah: f64,
+    /// The same of the energy, watt hours.
+    pub(crate) hidden_wh: f64,
 }
 
 impl Amount {
@@ -38,6 +42,29 @@ impl Amount {
             charge_ah: true_charge.coulombs() / HOUR_S * time_base.factor,
             energy_wh: true_energy.joules() / HOUR_S * time_base.factor,
             seconds: span.seconds() * time_base.factor,
+            hidden_ah: 0.0,
+            hidden_wh: 0.0,
+        }
+    }
+
+    /// With what bent curves may hide in it, for a stretch that goes to and fro.
+    pub(crate) fn hiding(self, delivered: &Delivered, correction: &Correction) -> Self {
+        let hours = |seconds: f64| seconds / HOUR_S;
+        let hidden_ah = hours(delivered.current_spread.hides(correction.current_read));
+        let hidden_vh = hours(delivered.voltage_spread.hides(correction.voltage_read));
+        if self.seconds <= 0.0 {
+            return self;
+        }
+        let mean_current = self.charge_ah / hours(self.seconds);
+        let mean_voltage = if self.charge_ah > 0.0 {
+            self.energy_wh / self.charge_ah
+        } else {
+            0.0
+        };
+        Self {
+            hidden_ah,
+            hidden_wh: hidden_ah * mean_voltage + hidden_vh * mean_current,
+            ..self
         }
     }
 
@@ -48,12 +75,13 @@ impl Amount {
         correction: &Correction,
         time_base: TimeBase,
     ) -> Option<Self> {
-        Some(Self::between(
+        let between = Self::between(
             delivered.begin?,
             delivered.end.or(delivered.latest)?,
             correction,
             time_base,
-        ))
+        );
+        Some(between.hiding(delivered, correction))
     }
 
     /// The sum of both.
@@ -62,6 +90,8 @@ impl Amount {
             charge_ah: self.charge_ah + other.charge_ah,
             energy_wh: self.energy_wh + other.energy_wh,
             seconds: self.seconds + other.seconds,
+            hidden_ah: self.hidden_ah + other.hidden_ah,
+            hidden_wh: self.hidden_wh + other.hidden_wh,
         }
     }
 }

@@ -17,6 +17,8 @@ pub(crate) struct Conditions {
     pub(crate) per_volt: Option<f64>,
     /// Uncertainty of the end, in the figure's unit: the cut-off instant.
     pub(crate) cut_off: f64,
+    /// What a bent correction may hide, at most, in the figure's unit.
+    pub(crate) hidden: f64,
 }
 
 /// The budget of a charge, `Q = a T + b Q_nominal`, or of an energy.
@@ -28,6 +30,9 @@ pub(crate) fn of_delivery(instrument: &Instrument, time_base: TimeBase, of: &Con
     lines.push(stated("clocks", (of.value * time_base.uncertainty).abs()));
     if of.cut_off > 0.0 {
         lines.push(stated("cut-off instant", of.cut_off));
+    }
+    if of.hidden > 0.0 {
+        lines.push(bounded("certificate: bend within steps", of.hidden));
     }
     Budget::new(lines)
 }

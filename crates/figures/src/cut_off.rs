@@ -94,7 +94,9 @@ impl Workbench<'_> {
             .correction
             .current_from_readback(after.current)
             .amperes();
-        let whole = Amount::between(begin, end, &self.plan.correction, self.time_base);
+        let correction = &self.plan.correction;
+        let whole =
+            Amount::between(begin, end, correction, self.time_base).hiding(delivered, correction);
         let instant_s = self.instrument.voltage.standard(limit.volts()) / slope.abs();
         let power = current * limit.volts();
         Some(CutOff {
@@ -102,6 +104,7 @@ impl Workbench<'_> {
                 charge_ah: whole.charge_ah - current * beyond_s / 3600.0,
                 energy_wh: whole.energy_wh - power * beyond_s / 3600.0,
                 seconds: whole.seconds - beyond_s,
+                ..whole
             },
             uncertainty_ah: current * instant_s / 3600.0,
             uncertainty_wh: power * instant_s / 3600.0,

@@ -186,6 +186,7 @@ impl Workbench<'_> {
             per_ampere: together.amount.seconds / 3600.0,
             per_volt: None,
             cut_off: cut_off_ah,
+            hidden: together.amount.hidden_ah,
         };
         of_delivery(self.instrument, self.time_base, &conditions)
     }
@@ -202,6 +203,7 @@ impl Workbench<'_> {
             per_ampere: mean_voltage * amount.seconds / 3600.0,
             per_volt: Some(amount.charge_ah),
             cut_off: cut_off_wh,
+            hidden: amount.hidden_wh,
         };
         of_delivery(self.instrument, self.time_base, &conditions)
     }

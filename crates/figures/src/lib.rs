@@ -32,6 +32,7 @@ mod peukert;
 mod predict;
 mod pulse;
 mod resistance;
+mod spread;
 mod stage;
 mod supply;
 mod time_base;

@@ -49,10 +49,15 @@ impl Trust {
                 "certificate `{}` is not used: {objection}",
                 certificate.measurements.identity
             ))),
-            None => Self {
-                standing: Standing::Calibrated,
-                instrument: Instrument::certified(&certificate),
-                warning: None,
+            None => match Instrument::certified(&certificate) {
+                Ok(instrument) => Self {
+                    standing: Standing::Calibrated,
+                    instrument,
+                    warning: None,
+                },
+                Err(error) => nominal(Some(format!(
+                    "the record's certificate is not used: {error}"
+                ))),
             },
         }
     }

@@ -12,6 +12,7 @@ use quantity::{Charge, Current, Energy, SinkTime, Span, Temperature, Voltage};
 use sink::accumulate::Sum;
 use wire::{Counters, TemperatureReading};
 
+use crate::spread::Spread;
 use crate::track::Track;
 
 /// The counters at an instant, nominal.
@@ -46,6 +47,9 @@ pub(crate) struct Sample {
     /// Smallest of its samples.
     pub(crate) current_min: Current,
     pub(crate) voltage_min: Voltage,
+    /// Largest of its samples.
+    pub(crate) current_max: Current,
+    pub(crate) voltage_max: Voltage,
 }
 
 impl Sample {
@@ -77,6 +81,9 @@ pub(crate) struct Delivered {
     pub(crate) trapezoid: Sum,
     /// Sum of half the squared jumps of current times their intervals: the trapezoid's doubt.
     pub(crate) trapezoid_doubt: Sum,
+    /// How far the current and the voltage went to and fro, nominal.
+    pub(crate) current_spread: Spread,
+    pub(crate) voltage_spread: Spread,
     /// The latest heat sink temperature.
     pub(crate) latest_temperature: Option<Temperature>,
     /// What else was asked for.
@@ -193,6 +200,8 @@ impl Walk {
                 voltage: reading.values.voltage,
                 current_min: reading.values.current_min,
                 voltage_min: reading.values.voltage_min,
+                current_max: reading.values.current_max,
+                voltage_max: reading.values.voltage_max,
             };
             let mark = reading.counters.map(Mark::from);
             self.sample(&sample, mark, reading.values.temperature);
@@ -324,6 +333,7 @@ impl Delivered {
             self.last = (self.last.1, Some(*sample));
         }
         let Some(previous) = previous else { return };
+        self.add_spreads(stretch, sample);
         self.add_trapezoid(stretch, previous, sample);
         if let Some(below) = stretch.below
             && wholly
@@ -332,6 +342,22 @@ impl Delivered {
         {
             self.crossing = Some((previous.sample, *sample));
         }
+    }
+
+    fn add_spreads(&mut self, stretch: &Stretch, sample: &Sample) {
+        let from = sample.from.max(stretch.time.start);
+        let until = sample.time.min(stretch.time.end);
+        let seconds = until.saturating_since(from).seconds();
+        self.current_spread.add(
+            seconds,
+            sample.current.amperes(),
+            [sample.current_min, sample.current_max].map(Current::amperes),
+        );
+        self.voltage_spread.add(
+            seconds,
+            sample.voltage.volts(),
+            [sample.voltage_min, sample.voltage_max].map(Voltage::volts),
+        );
     }
 
     /// The mean current of each readback is taken to hold at the end of its interval, and to

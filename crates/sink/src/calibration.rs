@@ -1,11 +1,8 @@
 //! Calibration: from points against a reference meter to a certificate.
 //!
-//! Three straight lines are fitted (current set, current read, voltage read) by
-//! weighted least squares, and an F-test says whether the residuals demand more
-//! than a line. They rarely do; where they do, the correction stays a line, the
-//! certificate says so, and the largest departure from it widens the
-//! uncertainty: a correction that the sink's limits and the wire can carry is
-//! worth more than a curve nobody can invert in an interlock.
+//! Three curves are fitted (current set, current read, voltage read) by weighted
+//! least squares: straight lines, and second-order curves only where an F-test
+//! says that the residuals demand them.
 //!
 //! Invariants:
 //! - A certificate holds every input it was computed from. Reading one computes
@@ -22,10 +19,10 @@ mod verify;
 use quantity::{Current, Temperature, TemperatureCoefficient, Text, Textual, Voltage};
 use serde::{Deserialize, Serialize};
 
-use crate::correction::{Correction, LineError};
+use crate::correction::{Correction, Curve, CurveError};
 use crate::regression::RegressionError;
 
-pub use channel::{Channel, ChannelSummary, SecondOrder};
+pub use channel::{Channel, ChannelSummary, CurvatureSummary, SecondOrder};
 pub use meter::ReferenceMeter;
 pub use verify::{Verification, VerificationPoint, verify};
 
@@ -112,11 +109,11 @@ pub struct Certificate {
     pub measurements: Measurements,
     /// What it corrects.
     pub correction: Correction,
-    /// The line of the current that is set, micro-units.
+    /// The curve of the current that is set, micro-units.
     pub current_set: ChannelSummary,
-    /// The line of the current readback, micro-units.
+    /// The curve of the current readback, micro-units.
     pub current_read: ChannelSummary,
-    /// The line of the voltage readback, micro-units.
+    /// The curve of the voltage readback, micro-units.
     pub voltage_read: ChannelSummary,
 }
 
@@ -181,7 +178,7 @@ pub enum CalibrationError {
     /// A validity that ends before it begins.
     #[error("the certificate would end before it begins; correct its dates")]
     Dates,
-    /// A line that cannot be fitted.
+    /// A curve that cannot be fitted.
     #[error("{channel}: {cause}")]
     Fit {
         /// Which line.
@@ -189,13 +186,13 @@ pub enum CalibrationError {
         /// Why.
         cause: RegressionError,
     },
-    /// A line that no working sink has.
+    /// A curve that no working sink has.
     #[error("{channel}: {cause}")]
-    Line {
-        /// Which line.
+    Curve {
+        /// Which curve.
         channel: &'static str,
         /// Why.
-        cause: LineError,
+        cause: CurveError,
     },
 }
 
@@ -248,9 +245,9 @@ pub fn calibrate(measurements: Measurements) -> Result<Certificate, CalibrationE
     Ok(Certificate {
         form: FORM,
         correction: Correction {
-            current_set: channels.current_set.line()?,
-            current_read: channels.current_read.line()?,
-            voltage_read: channels.voltage_read.line()?,
+            current_set: channels.current_set.curve()?,
+            current_read: channels.current_read.curve()?,
+            voltage_read: channels.voltage_read.curve()?,
         },
         current_set: channels.current_set.summary(),
         current_read: channels.current_read.summary(),
@@ -260,7 +257,7 @@ pub fn calibrate(measurements: Measurements) -> Result<Certificate, CalibrationE
 }
 
 impl Channels {
-    /// Fits the three lines.
+    /// Fits the three curves.
     ///
     /// # Errors
     /// As [`calibrate`].
@@ -388,9 +385,23 @@ fn same_but_for_rounding(one: &Correction, other: &Correction) -> bool {
         (one.current_read, other.current_read),
         (one.voltage_read, other.voltage_read),
     ];
-    pairs.iter().all(|(one, other)| {
-        one.offset().abs_diff(other.offset()) <= 1 && one.gain_ppb().abs_diff(other.gain_ppb()) <= 1
-    })
+    pairs.iter().all(|(one, other)| alike(*one, *other))
+}
+
+fn alike(one: Curve, other: Curve) -> bool {
+    let bends = match (one.bend(), other.bend()) {
+        (None, None) => true,
+        (Some(one), Some(other)) => {
+            let apart = one
+                .curvature_ppb_per_unit
+                .abs_diff(other.curvature_ppb_per_unit);
+            apart <= 1 && one.from_micro == other.from_micro && one.to_micro == other.to_micro
+        }
+        (Some(_), None) | (None, Some(_)) => false,
+    };
+    bends
+        && one.offset().abs_diff(other.offset()) <= 1
+        && one.gain_ppb().abs_diff(other.gain_ppb()) <= 1
 }
 
 /// A quantity counted in micro-units (µA, µV) as a float.

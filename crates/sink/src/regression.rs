@@ -109,6 +109,19 @@ impl Form {
             }
         }
     }
+
+    /// The basis functions' derivatives at a scaled abscissa.
+    fn derivative(self, t: f64) -> Vec<f64> {
+        match self {
+            Self::ThroughOrigin => vec![1.0],
+            Self::Polynomial(degree) => (0..=i32::from(degree))
+                .map(|power| match power {
+                    0 => 0.0,
+                    power => f64::from(power) * t.powi(power - 1),
+                })
+                .collect(),
+        }
+    }
 }
 
 /// Fits a form to points by weighted least squares.
@@ -226,7 +239,7 @@ fn solve(
 impl Fit {
     /// The function's value at an abscissa.
     pub fn value(&self, x: f64) -> f64 {
-        let row = DVector::from_vec(self.form.row((x - self.centre) / self.scale));
+        let row = DVector::from_vec(self.form.row(self.scaled(x)));
         self.coefficients.dot(&row)
     }
 
@@ -234,10 +247,33 @@ impl Fit {
     /// fit there (all covariances taken in; not the spread of a single new
     /// observation).
     pub fn predict(&self, x: f64) -> Estimate {
-        let row = DVector::from_vec(self.form.row((x - self.centre) / self.scale));
-        let variance = row.dot(&(&self.covariance * &row));
+        self.estimate(&DVector::from_vec(self.form.row(self.scaled(x))))
+    }
+
+    /// As [`Self::predict`] between two abscissas; beyond them the function is
+    /// carried on by its tangent at the nearer one, and so is its uncertainty.
+    pub fn predict_carried_on(&self, x: f64, (low, high): (f64, f64)) -> Estimate {
+        let within = self.scaled(x.clamp(low, high));
+        let row = DVector::from_vec(self.form.row(within))
+            + DVector::from_vec(self.form.derivative(within)) * (self.scaled(x) - within);
+        self.estimate(&row)
+    }
+
+    /// The function's slope at an abscissa with its standard uncertainty.
+    pub fn slope(&self, x: f64) -> Estimate {
+        let row = DVector::from_vec(self.form.derivative(self.scaled(x))) / self.scale;
+        self.estimate(&row)
+    }
+
+    fn scaled(&self, x: f64) -> f64 {
+        (x - self.centre) / self.scale
+    }
+
+    /// A linear combination of the coefficients.
+    fn estimate(&self, row: &DVector<f64>) -> Estimate {
+        let variance = row.dot(&(&self.covariance * row));
         Estimate {
-            value: self.coefficients.dot(&row),
+            value: self.coefficients.dot(row),
             standard_uncertainty: variance.max(0.0).sqrt(),
             degrees_of_freedom: self.degrees_of_freedom(),
         }

@@ -160,7 +160,7 @@ fn a_valid_certificate_makes_figures_calibrated_and_right() {
 #[test]
 fn offset_and_slope_enter_with_their_covariance() {
     let certificate = certificate(&Errors::default(), MeterErrors::default(), 3);
-    let instrument = Instrument::certified(&certificate);
+    let instrument = Instrument::certified(&certificate).unwrap();
     let summary = &certificate.current_read;
     for (amperes, hours) in [(0.3, 5.0), (1.5, 2.0), (2.8, 1.0)] {
         let lines = instrument.current.over(hours, amperes * hours);
@@ -182,6 +182,38 @@ fn offset_and_slope_enter_with_their_covariance() {
         );
         assert_eq!(fit.degrees_of_freedom, DegreesOfFreedom::finite(10.0));
     }
+}
+
+/// A readback that bends by 3 mA per A^2: the fit's own prediction stands behind a charge, and a
+/// difference of readings is as uncertain as the slope where it is known least.
+#[test]
+fn a_bent_certificate_enters_as_its_fit_predicts() {
+    let straight = certificate(&Errors::default(), MeterErrors::default(), 3);
+    let bent = restated(&straight, |measurements| {
+        for point in &mut measurements.current_points {
+            for reading in &mut point.readback {
+                let amperes = reading.0.amperes();
+                *reading =
+                    Text(Current::from_amperes(amperes + 0.003 * amperes * amperes).unwrap());
+            }
+        }
+    });
+    assert!(bent.current_read.second_order.demanded);
+    let instrument = Instrument::certified(&bent).unwrap();
+    let fit = bent.channels().unwrap().current_read;
+    for (amperes, hours) in [(0.3, 5.0), (1.5, 2.0), (2.8, 1.0)] {
+        let lines = instrument.current.over(hours, amperes * hours);
+        let line = &lines[0];
+        assert_eq!(line.name, "certificate, current: curve");
+        let nominal = amperes + 0.003 * amperes * amperes;
+        let expected = fit.predict(nominal * 1e6).standard_uncertainty * 1e-6 * hours;
+        assert!((line.share() / expected - 1.0).abs() < 0.01);
+        assert_eq!(line.degrees_of_freedom, DegreesOfFreedom::finite(9.0));
+    }
+    let difference = &instrument.current.of_difference(2.0, 1.0, 1.0)[0];
+    assert!((difference.share() - 2.0 * fit.slope_uncertainty_max()).abs() < 1e-12);
+    let (low, high) = instrument.current.range.unwrap();
+    assert!((low - 0.24).abs() < 1e-3 && (high - 2.88).abs() < 1e-3);
 }
 
 #[test]

@@ -9,7 +9,7 @@ use sequence::plan::{
     Action, Armed, Dut, DutKind, Interlocks, Next, OnInterruption, Op, Plan, PlanStep, Ranges,
 };
 use sequencer::event::{Ending, Finding, Happening};
-use sink::correction::{Correction, Line};
+use sink::correction::{Correction, Curve};
 use wire::{
     Cause, Counters, Mode, Order, OrderId, OrderNumber, Readback, Reading, SinkState, Step,
     TemperatureReading,
@@ -113,7 +113,7 @@ pub(crate) fn plan() -> Plan {
         queue: 16,
         isolator: false,
         correction: Correction {
-            current_read: Line::new(2_000, -30_000_000).expect("a gain error of 3 %"),
+            current_read: Curve::line(2_000, -30_000_000).expect("a gain error of 3 %"),
             ..Correction::IDENTITY
         },
     }

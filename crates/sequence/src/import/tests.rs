@@ -330,7 +330,7 @@ fn times_count_from_the_first_row_and_noise_below_zero_is_kept_in_the_charge() {
 
 #[test]
 fn a_certificate_s_correction_moves_the_settings_and_keeps_the_charge() {
-    let line = sink::correction::Line::new(1_500, 20_000_000).unwrap();
+    let line = sink::correction::Curve::line(1_500, 20_000_000).unwrap();
     let mut limits = limits("left");
     limits.correction.current_set = line;
     let rows = logger(1, 9_620);

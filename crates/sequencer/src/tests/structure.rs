@@ -2,7 +2,7 @@
 
 use quantity::{Current, Power, Resistance, Span};
 use sequence::plan::{Action, Next, Op, Plan};
-use sink::correction::{Correction, Line};
+use sink::correction::{Correction, Curve};
 use wire::{LimitKind, Mode, Order};
 
 use super::bench::Bench;
@@ -92,7 +92,7 @@ fn steps_that_no_sink_can_time_or_hold_are_refused() {
 fn a_target_whose_nominal_value_is_above_the_nominal_limit_is_refused() {
     let mut plan = plan(vec![draw(2_990, millis(10))]);
     // The sink sets 1 % too little, so 2990 mA take a nominal 3020 mA.
-    plan.correction.current_set = Line::new(0, -10_000_000).unwrap();
+    plan.correction.current_set = Curve::line(0, -10_000_000).unwrap();
     assert_eq!(refusal(plan), PlanError::AboveLimit { op: 0 });
 }
 
@@ -144,9 +144,9 @@ fn intervals_that_would_trip_or_that_no_sink_takes_are_refused() {
 fn all_six_limits_come_before_anything_else_and_on_the_safe_side() {
     let mut plan = plan(vec![draw(1_000, millis(1_000))]);
     plan.correction = Correction {
-        current_set: Line::IDENTITY,
-        current_read: Line::new(2_000, 10_000_000).unwrap(),
-        voltage_read: Line::new(-3_000, -5_000_000).unwrap(),
+        current_set: Curve::IDENTITY,
+        current_read: Curve::line(2_000, 10_000_000).unwrap(),
+        voltage_read: Curve::line(-3_000, -5_000_000).unwrap(),
     };
     let bench = super::bench::Bench::connected(plan);
     let orders: Vec<Order> = bench
@@ -190,9 +190,9 @@ fn all_six_limits_come_before_anything_else_and_on_the_safe_side() {
 fn a_power_is_converted_so_that_the_true_power_is_the_one_asked_for() {
     let mut plan = plan(vec![draw(1, millis(10))]);
     plan.correction = Correction {
-        current_set: Line::new(0, 20_000_000).unwrap(),
-        current_read: Line::IDENTITY,
-        voltage_read: Line::new(0, -10_000_000).unwrap(),
+        current_set: Curve::line(0, 20_000_000).unwrap(),
+        current_read: Curve::IDENTITY,
+        voltage_read: Curve::line(0, -10_000_000).unwrap(),
     };
     let limits = Limits::new(&plan);
     let target = Power::from_milliwatts(4_000);
@@ -214,7 +214,7 @@ fn a_power_is_converted_so_that_the_true_power_is_the_one_asked_for() {
 fn a_sink_that_follows_never_exceeds_its_own_excess_limit() {
     let mut plan = plan(vec![draw(1, millis(10))]);
     plan.interlocks.not_releasing = armed(milliamperes(40), Span::ZERO);
-    plan.correction.current_read = Line::new(0, -20_000_000).unwrap();
+    plan.correction.current_read = Curve::line(0, -20_000_000).unwrap();
     let setup = Limits::new(&plan).setup(&plan);
     let Order::Limit {
         limit: LimitKind::Excess(excess),

@@ -1,4 +1,9 @@
-//! One line of a certificate: its fit, its test for straightness, its budget.
+//! One curve of a certificate: its fit, its test for straightness, its budget.
+//!
+//! A straight line is fitted, and a second-order curve beside it. The curve is
+//! taken only where the extra-sum-of-squares F-test of both, at a level of 1 %,
+//! demands it: one in a hundred straight sinks gets a curve that it did not need,
+//! and pays with a somewhat larger uncertainty.
 //!
 //! Values are in micro-units (µA or µV) throughout.
 
@@ -7,9 +12,11 @@ use serde::{Deserialize, Serialize};
 
 use super::{CalibrationError, POINTS_MIN, ReferenceMeter, micro};
 use crate::accumulate::{Moments, count};
-use crate::correction::Line;
+use crate::correction::{Bend, Curve};
 use crate::regression::{Fit, Form, Point, Weights, f_test, fit};
-use crate::uncertainty::{Budget, Contribution, DegreesOfFreedom, Evaluation, of_resolution};
+use crate::uncertainty::{
+    Budget, Contribution, DegreesOfFreedom, Estimate, Evaluation, of_resolution,
+};
 
 /// The F-test's level below which a line is not straight enough.
 const STRAIGHTNESS_LEVEL: f64 = 0.01;
@@ -18,7 +25,7 @@ const OUTLIER_BEYOND: f64 = 3.5;
 /// Where a departure from the line is looked for: this many places.
 const PLACES: u16 = 64;
 
-/// One fitted line with all that its uncertainty needs.
+/// One fitted curve with all that its uncertainty needs.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Channel {
     name: &'static str,
@@ -46,11 +53,11 @@ pub struct SecondOrder {
     /// Whether the level is fallen below.
     pub demanded: bool,
     /// Largest departure of the second-order curve from the line over the
-    /// range, micro-units; widens the uncertainty if demanded.
+    /// range, micro-units.
     pub departure_micro: f64,
 }
 
-/// What a certificate shows of a line; micro-units.
+/// What a certificate shows of a curve; micro-units.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
 pub struct ChannelSummary {
@@ -64,6 +71,10 @@ pub struct ChannelSummary {
     pub slope_uncertainty: f64,
     /// Correlation coefficient of offset and slope.
     pub correlation: f64,
+    /// The second-order term; absent for a straight line. Offset and slope are
+    /// then those at nominal zero.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub curvature: Option<CurvatureSummary>,
     /// Degrees of freedom of the fit.
     pub degrees_of_freedom: DegreesOfFreedom,
     /// Observed minus fitted, in the points' order.
@@ -76,6 +87,18 @@ pub struct ChannelSummary {
     pub range_micro: [f64; 2],
     /// The test for straightness.
     pub second_order: SecondOrder,
+}
+
+/// What a certificate shows of a second-order term.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct CurvatureSummary {
+    /// Coefficient of the nominal value's square, per ampere or volt.
+    pub per_unit: f64,
+    /// Its standard uncertainty from the fit, likewise.
+    pub uncertainty_per_unit: f64,
+    /// Correlation coefficients with the offset and with the slope.
+    pub correlations: [f64; 2],
 }
 
 /// Nominal readings and reference readings of one point.
@@ -125,10 +148,13 @@ impl Channel {
             .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), point| {
                 (low.min(point.x), high.max(point.x))
             });
-        let second_order = second_order(&points, &line, range);
+        // Points at only two abscissas cannot show a bend.
+        let curve = fit(&points, Form::Polynomial(2), Weights::Known).ok();
+        let second_order = SecondOrder::of(&line, curve.as_ref(), range);
+        let fit = curve.filter(|_| second_order.demanded).unwrap_or(line);
         Ok(Self {
             name,
-            fit: line,
+            fit,
             point_uncertainties: points.iter().map(|point| point.u).collect(),
             range,
             second_order,
@@ -141,20 +167,30 @@ impl Channel {
         })
     }
 
-    /// The line as the correction holds it.
-    pub(super) fn line(&self) -> Result<Line, CalibrationError> {
+    /// The curve as the correction holds it.
+    pub(super) fn curve(&self) -> Result<Curve, CalibrationError> {
         let (coefficients, _) = self.fit.coefficients_about(0.0);
-        let [offset, slope] = coefficients[..] else {
-            return Err(CalibrationError::TooFewPoints {
-                channel: self.name,
-                points: 0,
-            });
-        };
-        Line::new(rounded(offset), rounded((slope - 1.0) * 1e9)).map_err(|cause| {
-            CalibrationError::Line {
-                channel: self.name,
-                cause,
+        let curve = match coefficients[..] {
+            [offset, slope] => Curve::line(rounded(offset), rounded((slope - 1.0) * 1e9)),
+            [offset, slope, curvature] => Curve::bent(
+                rounded(offset),
+                rounded((slope - 1.0) * 1e9),
+                Bend {
+                    curvature_ppb_per_unit: rounded(curvature * 1e15),
+                    from_micro: rounded(self.range.0),
+                    to_micro: rounded(self.range.1),
+                },
+            ),
+            _ => {
+                return Err(CalibrationError::TooFewPoints {
+                    channel: self.name,
+                    points: 0,
+                });
             }
+        };
+        curve.map_err(|cause| CalibrationError::Curve {
+            channel: self.name,
+            cause,
         })
     }
 
@@ -177,6 +213,14 @@ impl Channel {
             slope: coefficients.get(1).copied().unwrap_or(1.0),
             slope_uncertainty: u_slope,
             correlation: at(0, 1) / (u_offset * u_slope),
+            curvature: coefficients.get(2).map(|curvature| {
+                let u = at(2, 2).max(0.0).sqrt();
+                CurvatureSummary {
+                    per_unit: curvature * 1e6,
+                    uncertainty_per_unit: u * 1e6,
+                    correlations: [at(0, 2) / (u_offset * u), at(1, 2) / (u_slope * u)],
+                }
+            }),
             degrees_of_freedom: self.fit.degrees_of_freedom(),
             residuals_micro: residuals,
             outliers,
@@ -188,13 +232,17 @@ impl Channel {
     /// The uncertainty budget of a true value got from one nominal value, in
     /// micro-units.
     pub fn budget(&self, nominal_micro: f64) -> Budget {
-        let predicted = self.fit.predict(nominal_micro);
+        let predicted = self.predict(nominal_micro);
         let (constant, per_million) = self.meter;
         let infinite = DegreesOfFreedom::INFINITE;
         let stated = |name: &str, u: f64| Contribution::new(name, Evaluation::TypeB, u, infinite);
         let mut lines = vec![
             Contribution::new(
-                "fit (offset and slope, correlated)",
+                if self.fit.form() == Form::Polynomial(2) {
+                    "fit (offset, slope and curvature, correlated)"
+                } else {
+                    "fit (offset and slope, correlated)"
+                },
                 Evaluation::TypeA,
                 predicted.standard_uncertainty,
                 predicted.degrees_of_freedom,
@@ -211,13 +259,23 @@ impl Channel {
                 self.drift * predicted.value.abs() / 3_f64.sqrt(),
             ));
         }
-        if self.second_order.demanded {
-            lines.push(stated(
-                "departure from a straight line",
-                self.second_order.departure_micro / 3_f64.sqrt(),
-            ));
-        }
         Budget::new(lines)
+    }
+
+    /// The true value of a nominal one with the standard uncertainty of the
+    /// fit there, micro-units; beyond the calibrated range carried on by the
+    /// tangent, as the correction does.
+    pub fn predict(&self, nominal_micro: f64) -> Estimate {
+        self.fit.predict_carried_on(nominal_micro, self.range)
+    }
+
+    /// The slope's standard uncertainty where it is largest: at one of the ends
+    /// of the range.
+    pub fn slope_uncertainty_max(&self) -> f64 {
+        [self.range.0, self.range.1]
+            .map(|end| self.fit.slope(end).standard_uncertainty)
+            .into_iter()
+            .fold(0.0, f64::max)
     }
 
     /// Whether a nominal value lies within the calibrated range.
@@ -301,29 +359,28 @@ fn moments<T: Textual + Quantity>(readings: &[Text<T>]) -> Moments {
     readings.iter().map(|reading| micro(reading.0)).collect()
 }
 
-fn second_order(points: &[Point], line: &Fit, (low, high): (f64, f64)) -> SecondOrder {
-    let straight = SecondOrder {
-        ratio: 0.0,
-        probability: 1.0,
-        demanded: false,
-        departure_micro: 0.0,
-    };
-    // Points at only two abscissas cannot show a bend.
-    let Ok(curve) = fit(points, Form::Polynomial(2), Weights::Known) else {
-        return straight;
-    };
-    let Some(test) = f_test(line, &curve) else {
-        return straight;
-    };
-    let departure = (0..=PLACES)
-        .map(|place| low + (high - low) * f64::from(place) / f64::from(PLACES))
-        .map(|x| (curve.value(x) - line.value(x)).abs())
-        .fold(0.0, f64::max);
-    SecondOrder {
-        ratio: test.ratio,
-        probability: test.probability,
-        demanded: test.probability < STRAIGHTNESS_LEVEL,
-        departure_micro: departure,
+impl SecondOrder {
+    fn of(line: &Fit, curve: Option<&Fit>, (low, high): (f64, f64)) -> Self {
+        let straight = Self {
+            ratio: 0.0,
+            probability: 1.0,
+            demanded: false,
+            departure_micro: 0.0,
+        };
+        let Some((curve, test)) = curve.and_then(|curve| Some((curve, f_test(line, curve)?)))
+        else {
+            return straight;
+        };
+        let departure = (0..=PLACES)
+            .map(|place| low + (high - low) * f64::from(place) / f64::from(PLACES))
+            .map(|x| (curve.value(x) - line.value(x)).abs())
+            .fold(0.0, f64::max);
+        Self {
+            ratio: test.ratio,
+            probability: test.probability,
+            demanded: test.probability < STRAIGHTNESS_LEVEL,
+            departure_micro: departure,
+        }
     }
 }
 
