@@ -89,7 +89,7 @@ fn row(section: &mut Markup, name: &'static str, line: &ChannelSummary, symbol: 
         with_unit(&significant(high / 1e6, 3), symbol)
     ));
     section.raw("</td><td>").raw(if line.second_order.demanded {
-        "no: the largest departure is in the uncertainty"
+        "no: a second-order term is corrected, too"
     } else {
         "yes"
     });
