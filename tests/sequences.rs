@@ -34,6 +34,26 @@ pub fn bench_on(port: &Path) -> String {
     format!("{before}{link}{one}").replace("free_space_mb = 500", "free_space_mb = 0")
 }
 
+/// A bench of so many simulated sinks, each like `left`, called `sink-1` and on.
+///
+/// # Panics
+/// If the bench file has changed so that its first sink cannot be found.
+pub fn bench_of(sinks: usize) -> String {
+    let mut parts = WEIR.split("[[sink]]");
+    let (Some(head), Some(left)) = (parts.next(), parts.next()) else {
+        panic!("the bench file has no sink");
+    };
+    let mut bench = head.to_owned();
+    for number in 1..=sinks {
+        bench.push_str("[[sink]]");
+        let one = left
+            .replace("name = \"left\"", &format!("name = \"sink-{number}\""))
+            .replace("serial_number = 1", &format!("serial_number = {number}"));
+        bench.push_str(&one);
+    }
+    bench.replace("free_space_mb = 500", "free_space_mb = 0")
+}
+
 /// The sink `left` as the bench file has it.
 ///
 /// # Panics

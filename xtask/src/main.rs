@@ -28,7 +28,7 @@ enum Chore {
     /// Run every check and test; install nothing, name what is missing.
     Test(test::Options),
     /// Measure what must be fast, on release builds.
-    Bench,
+    Bench(bench::Options),
     /// Rewrite the documents that are generated from the code.
     Docs,
 }
@@ -37,7 +37,7 @@ fn main() -> Result<()> {
     match Arguments::parse().chore {
         Chore::Demo => demo::run_through(),
         Chore::Test(options) => test::run_everything(&options),
-        Chore::Bench => bench::measure(),
+        Chore::Bench(options) => bench::measure(&options),
         Chore::Docs => test::rewrite_documents(),
     }
 }

@@ -1,6 +1,9 @@
-//! How fast a record is written and read back on this machine.
+//! How fast a record is written and read back on this machine, a line of JSON a measurement.
 //!
 //! `cargo run --release -p journal --example throughput -- [readbacks]`
+//!
+//! The references do what a script would: the same entries as lines of JSON into a file with one
+//! sync at the end; the same readbacks as CSV, split at the commas, each field read as a number.
 
 #![expect(
     clippy::print_stdout,
@@ -12,7 +15,10 @@
 )]
 
 use std::error::Error;
-use std::time::Instant;
+use std::fs::File;
+use std::io::{BufRead as _, BufReader, BufWriter, Write as _};
+use std::path::Path;
+use std::time::{Duration, Instant};
 
 use journal::{Body, Entry, Manifest, Options, Record, Timing, Writer, WriterThread};
 use quantity::{Charge, Current, Energy, HostTime, SinkTime, Temperature, Voltage};
@@ -45,52 +51,102 @@ fn main() -> Result<(), Box<dyn Error>> {
         }
         number = end + 1;
     }
-    let writer = thread.close();
-    report("written", readbacks, begun);
-    let begun = Instant::now();
-    let seal = writer.seal(ended)?;
-    report("sealed", readbacks, begun);
+    let seal = thread.close().seal(ended)?;
+    let written = begun.elapsed();
     let plain: u64 = seal
         .segments
         .iter()
         .map(|segment| segment.plain_bytes)
         .sum();
-    println!("{plain} plain bytes in {} segments", seal.segments.len());
+    if plain == 0 {
+        return Err("nothing was written".into());
+    }
+    tell(
+        &format!("journal: {readbacks} readbacks written and sealed"),
+        written,
+        "the same as lines of JSON, one sync",
+        write_as_lines(readbacks, &parent.path().join("lines"))?,
+    );
 
     let begun = Instant::now();
     let record = Record::open(&folder)?;
-    let mut rows = 0_u64;
     let mut sum = 0_i64;
     for chunk in record.chunks()? {
-        let readings = chunk?.readings;
-        rows += readings.len() as u64;
-        sum += readings
-            .current
+        let currents = chunk?.readings.current;
+        sum += currents
             .iter()
             .map(|current| current.microamperes())
             .sum::<i64>();
     }
-    println!("{rows} rows, sum of currents {sum} uA");
-    report("read back", rows, begun);
+    let read = begun.elapsed();
 
     let begun = Instant::now();
     let verified = journal::verify(&folder)?;
-    println!("{} findings", verified.findings.len());
-    report("verified", verified.entries, begun);
+    let verifying = begun.elapsed();
+    if sum == 0 || !verified.findings.is_empty() {
+        return Err("the record is not what was written".into());
+    }
 
+    let csv = parent.path().join("readbacks.csv");
     let begun = Instant::now();
-    let rows = journal::export_csv(&record, &mut std::io::sink(), |_| {})?;
-    report("exported as CSV", rows, begun);
+    let mut out = BufWriter::new(File::create(&csv)?);
+    journal::export_csv(&record, &mut out, |_| {})?;
+    out.flush()?;
+    let exporting = begun.elapsed();
+
+    let reference = "the same as CSV, read by field";
+    let by_field = read_fields(&csv)?;
+    tell(
+        &format!("journal: {readbacks} readbacks read back"),
+        read,
+        reference,
+        by_field,
+    );
+    tell("journal: verified", verifying, reference, by_field);
+    tell("journal: exported as CSV", exporting, reference, by_field);
     Ok(())
 }
 
-#[expect(clippy::cast_precision_loss, reason = "a rate in a few digits")]
-fn report(what: &str, count: u64, begun: Instant) {
-    let seconds = begun.elapsed().as_secs_f64();
-    println!(
-        "{what}: {seconds:.2} s, {:.0} a second",
-        count as f64 / seconds
-    );
+fn write_as_lines(readbacks: u64, path: &Path) -> Result<Duration, Box<dyn Error>> {
+    let begun = Instant::now();
+    let mut out = BufWriter::new(File::create(path)?);
+    for number in 1..=readbacks {
+        let entry = entry(number)?;
+        let reading = entry.reading().ok_or("an entry without a reading")?;
+        let line = (entry.number, entry.at.micros(), reading);
+        serde_json::to_writer(&mut out, &line)?;
+        out.write_all(b"\n")?;
+    }
+    out.into_inner()?.sync_all()?;
+    Ok(begun.elapsed())
+}
+
+fn read_fields(path: &Path) -> Result<Duration, Box<dyn Error>> {
+    let begun = Instant::now();
+    let mut sum = 0.0;
+    for line in BufReader::new(File::open(path)?).lines() {
+        let line = line?;
+        let fields = line
+            .split(',')
+            .filter_map(|field| field.parse::<f64>().ok());
+        sum += fields.sum::<f64>();
+    }
+    let took = begun.elapsed();
+    if sum > 0.0 {
+        Ok(took)
+    } else {
+        Err("the export holds no number".into())
+    }
+}
+
+fn tell(measured: &str, took: Duration, reference: &str, reference_took: Duration) {
+    let line = serde_json::json!({
+        "measured": measured,
+        "seconds": took.as_secs_f64(),
+        "reference": reference,
+        "reference_seconds": reference_took.as_secs_f64(),
+    });
+    println!("{line}");
 }
 
 /// An invented readback of a 10 Hz discharge.
