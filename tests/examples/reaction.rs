@@ -106,8 +106,7 @@ fn processor_time(sinks: usize) -> Outcome<Duration> {
         );
     }
     daemon.wait_for("/v1/sinks", AT_MOST, |answer| {
-        let sinks = answer["sinks"].as_array();
-        sinks.is_some_and(|sinks| sinks.iter().all(|sink| !sink["run"].is_null()))
+        every_sink(answer, |sink| sink.get("run").is_some_and(Value::is_object))
     });
     let before = spent(daemon.process_id())?;
     std::thread::sleep(WATCH);
@@ -129,18 +128,23 @@ fn start(folder: &Path, bench: &str) -> Outcome<Daemon> {
     std::fs::write(&file, bench)?;
     let daemon = Daemon::start(&file, &folder.join("records"));
     daemon.wait_for("/v1/sinks", AT_MOST, |answer| {
-        let sinks = answer["sinks"].as_array();
-        sinks.is_some_and(|sinks| {
-            sinks
-                .iter()
-                .all(|sink| sink["link"]["state"] == "connected")
+        every_sink(answer, |sink| {
+            sink.pointer("/link/state")
+                .is_some_and(|state| state == "connected")
         })
     });
     Ok(daemon)
 }
 
 fn free(daemon: &Daemon) {
-    daemon.wait_for("/v1/sinks/left", AT_MOST, |sink| sink["run"].is_null());
+    daemon.wait_for("/v1/sinks/left", AT_MOST, |sink| {
+        sink.get("run").is_none_or(Value::is_null)
+    });
+}
+
+fn every_sink(answer: &Value, meets: impl Fn(&Value) -> bool) -> bool {
+    let sinks = answer.get("sinks").and_then(Value::as_array);
+    sinks.is_some_and(|sinks| sinks.iter().all(meets))
 }
 
 /// The same sequence with another readback interval than its 100 ms.
