@@ -309,11 +309,13 @@ impl Stretch {
             let nominal = Current::from_microamperes(micro);
             correction.current_from_readback(nominal).amperes()
         };
-        let voltage = |micro| {
-            let nominal = Voltage::from_microvolts(micro);
-            correction.voltage_from_readback(nominal).volts()
+        let voltage = |microvolts, microamperes| {
+            let nominal = Voltage::from_microvolts(microvolts);
+            let current = Current::from_microamperes(microamperes);
+            correction.voltage_from_readback(nominal, current).volts()
         };
         let [least, sum, largest] = self.current;
+        let with = [least, mean(sum, self.count).unwrap_or(least), largest];
         view.time_s.push(self.first.seconds());
         view.readbacks.push(self.count);
         view.current_min_a.push(current(least));
@@ -321,10 +323,10 @@ impl Stretch {
             .push(current(mean(sum, self.count).unwrap_or(least)));
         view.current_max_a.push(current(largest));
         let [least, sum, largest] = self.voltage;
-        view.voltage_min_v.push(voltage(least));
+        view.voltage_min_v.push(voltage(least, with[0]));
         view.voltage_v
-            .push(voltage(mean(sum, self.count).unwrap_or(least)));
-        view.voltage_max_v.push(voltage(largest));
+            .push(voltage(mean(sum, self.count).unwrap_or(least), with[1]));
+        view.voltage_max_v.push(voltage(largest, with[2]));
         let (count, sum, hottest) = self.temperature;
         let degc =
             |milli| quantity::Temperature::from_millidegrees_celsius(milli).degrees_celsius();

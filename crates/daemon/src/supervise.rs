@@ -15,6 +15,7 @@ use run::KeeperConfig;
 use run::keeper::Keeper;
 use sequencer::event::Interlock;
 use sink::bench::SinkEntry;
+use sink::leads::two_wire_resistance;
 use tokio::net::TcpListener;
 use tokio::runtime::{Builder, Runtime};
 use tokio::sync::watch;
@@ -235,6 +236,9 @@ fn start_sink(
     tripped_by: Option<Interlock>,
 ) -> Result<(SinkHandle, JoinHandle<()>), DaemonError> {
     let (correction, certificate) = calibration::load(entry, &config.bench_path)?;
+    // Leads in no table are told by the check of every sequence.
+    let leads = two_wire_resistance(entry).unwrap_or_default();
+    let correction = correction.with_leads(leads);
     let keeper_config = KeeperConfig::for_sink(entry).map_err(|error| DaemonError::Sink {
         sink: entry.name.clone(),
         reason: error.to_string(),

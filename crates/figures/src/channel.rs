@@ -8,10 +8,12 @@
 //! bent curve errs as it predicts at the mean.
 //!
 //! Without a certificate there is only what the bench file states: the sense resistor's
-//! tolerance and temperature coefficient, the reading converter's own stated errors, its steps.
+//! tolerance and temperature coefficient, the reading converter's own stated errors (if it states
+//! any), its steps.
 //! What a calibration would find beyond that is not in it, and the figures say so.
 
-use sink::bench::{Codes, SinkEntry};
+use quantity::{Quantity, Textual};
+use sink::bench::{Codes, ReadError, SinkEntry};
 use sink::calibration::{
     CalibrationError, Certificate, Channel as Fitted, ChannelSummary, ReferenceMeter,
 };
@@ -67,6 +69,8 @@ pub(crate) struct Channel {
 pub(crate) struct Instrument {
     pub(crate) current: Channel,
     pub(crate) voltage: Channel,
+    /// Standard uncertainty of the resistance that two-wire voltages were corrected by, ohm.
+    pub(crate) leads_ohm: f64,
 }
 
 impl Instrument {
@@ -87,6 +91,14 @@ impl Instrument {
             Source::stated_gain("sense resistor, temperature", drift),
         ];
         let mut voltage = Vec::new();
+        current.extend(
+            adc.current_error
+                .map(|error| Source::stated_error("reading converter, current", &error)),
+        );
+        voltage.extend(
+            adc.voltage_error
+                .map(|error| Source::stated_error("reading converter, voltage", &error)),
+        );
         let current_step = adc.current_full_scale.amperes() / steps;
         let voltage_step = adc.voltage_full_scale.volts() / steps;
         current.push(Source::step("converter step, current", current_step));
@@ -94,6 +106,7 @@ impl Instrument {
         Self {
             current: Channel::new(current, current_step),
             voltage: Channel::new(voltage, voltage_step),
+            leads_ohm: 0.0,
         }
     }
 
@@ -145,6 +158,7 @@ impl Instrument {
                 range: Some(true_range(&certificate.voltage_read)),
                 ..Channel::new(voltage, voltage_step)
             },
+            leads_ohm: 0.0,
         })
     }
 }
@@ -256,6 +270,24 @@ impl Source {
         Self::type_b(name, 0.0, Stated::Rectangular.standard_uncertainty(bound))
     }
 
+    /// A share of the reading and a constant that one bound holds: they err together.
+    fn stated_error<T: Textual + Quantity>(name: &'static str, error: &ReadError<T>) -> Self {
+        let standard = |bound| error.stated.standard_uncertainty(bound);
+        #[expect(
+            clippy::cast_precision_loss,
+            reason = "a bound is below 2^53 micro-units"
+        )]
+        let constant = error.constant.base_units() as f64 / MICRO;
+        Self {
+            law: Law::Straight {
+                offset: standard(constant),
+                gain: standard(error.of_reading.0.fraction()),
+                correlation: 1.0,
+            },
+            ..Self::type_b(name, 0.0, 0.0)
+        }
+    }
+
     fn step(name: &'static str, step: f64) -> Self {
         Self {
             fresh: true,
@@ -319,10 +351,7 @@ fn nominal_of(fit: &Fitted, value_micro: f64) -> f64 {
 }
 
 /// One meter read all points, so its constant part and its part of the reading err together.
-fn of_meter<T: quantity::Textual + quantity::Quantity>(
-    name: &'static str,
-    meter: &ReferenceMeter<T>,
-) -> Source {
+fn of_meter<T: Textual + Quantity>(name: &'static str, meter: &ReferenceMeter<T>) -> Source {
     let constant = meter.accuracy(0.0) / MICRO;
     let of_reading = meter.accuracy(MICRO) / MICRO - constant;
     Source {

@@ -47,11 +47,13 @@ impl Amount {
         }
     }
 
-    /// With what bent curves may hide in it, for a stretch that goes to and fro.
+    /// With what bent curves, and leads, may hide in it, for a stretch that goes to and fro.
     pub(crate) fn hiding(self, delivered: &Delivered, correction: &Correction) -> Self {
         let hours = |seconds: f64| seconds / HOUR_S;
         let hidden_ah = hours(delivered.current_spread.hides(correction.current_read));
         let hidden_vh = hours(delivered.voltage_spread.hides(correction.voltage_read));
+        let leads = correction.leads.ohms();
+        let hidden_leads_wh = hours(leads * delivered.current_spread.squares());
         if self.seconds <= 0.0 {
             return self;
         }
@@ -63,7 +65,7 @@ impl Amount {
         };
         Self {
             hidden_ah,
-            hidden_wh: hidden_ah * mean_voltage + hidden_vh * mean_current,
+            hidden_wh: hidden_ah * mean_voltage + hidden_vh * mean_current + hidden_leads_wh,
             ..self
         }
     }

@@ -26,13 +26,18 @@ pub(crate) fn of_delivery(instrument: &Instrument, time_base: TimeBase, of: &Con
     let mut lines = instrument.current.over(of.per_ampere, of.value);
     if let Some(per_volt) = of.per_volt {
         lines.extend(instrument.voltage.over(per_volt, of.value));
+        if of.per_ampere > 0.0 {
+            // A steady ohm would have added the mean current times the charge.
+            let amperes = of.value / of.per_ampere;
+            lines.extend(of_leads(instrument, amperes * per_volt));
+        }
     }
     lines.push(stated("clocks", (of.value * time_base.uncertainty).abs()));
     if of.cut_off > 0.0 {
         lines.push(stated("cut-off instant", of.cut_off));
     }
     if of.hidden > 0.0 {
-        lines.push(bounded("certificate: bend within steps", of.hidden));
+        lines.push(bounded("bend and leads within steps", of.hidden));
     }
     Budget::new(lines)
 }
@@ -61,7 +66,15 @@ pub(crate) fn of_resistance(
             .current
             .of_difference(current, ONE_EACH, resistance / current),
     );
+    lines.extend(of_leads(instrument, 1.0));
     Budget::new(lines)
+}
+
+/// The share of two-wire leads in a figure to which an ohm would have added so much; none over
+/// four wires.
+pub(crate) fn of_leads(instrument: &Instrument, per_ohm: f64) -> Option<Contribution> {
+    let standard = (instrument.leads_ohm * per_ohm).abs();
+    (standard > 0.0).then(|| stated("leads", standard))
 }
 
 /// A line whose standard uncertainty is stated.

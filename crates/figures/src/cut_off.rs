@@ -76,7 +76,7 @@ impl Workbench<'_> {
         let voltage = |sample: &Sample| {
             self.plan
                 .correction
-                .voltage_from_readback(sample.voltage)
+                .voltage_from_readback(sample.voltage, sample.current)
                 .volts()
         };
         let (high, low) = (voltage(&before), voltage(&after));
@@ -97,7 +97,9 @@ impl Workbench<'_> {
         let correction = &self.plan.correction;
         let whole =
             Amount::between(begin, end, correction, self.time_base).hiding(delivered, correction);
-        let instant_s = self.instrument.voltage.standard(limit.volts()) / slope.abs();
+        let leads = self.instrument.leads_ohm * current;
+        let standard = self.instrument.voltage.standard(limit.volts()).hypot(leads);
+        let instant_s = standard / slope.abs();
         let power = current * limit.volts();
         Some(CutOff {
             amount: Amount {

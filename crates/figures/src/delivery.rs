@@ -4,7 +4,7 @@ use quantity::{Charge, Span};
 use sink::uncertainty::Budget;
 
 use crate::charge::Amount;
-use crate::contribution::{Conditions, of_delivery, stated};
+use crate::contribution::{Conditions, of_delivery, of_leads, stated};
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
 use crate::stage::Stage;
 use crate::walk::Delivered;
@@ -108,11 +108,14 @@ impl Workbench<'_> {
         }
         let mean = amount.energy_wh / amount.charge_ah;
         // Charge and clock errors are common to both and cancel; the voltage's own remain.
+        let mut lines = self.instrument.voltage.of_reading(mean);
+        let amperes = amount.charge_ah * 3600.0 / amount.seconds;
+        lines.extend(of_leads(self.instrument, amperes));
         figures.figures.push(Figure::new(
             Name::MeanVoltage,
             label,
             (mean, Unit::Volt),
-            Budget::new(self.instrument.voltage.of_reading(mean)),
+            Budget::new(lines),
             ("energy over charge, both from the sink's counters", COMMON),
             rows,
         ));

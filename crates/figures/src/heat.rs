@@ -160,7 +160,8 @@ impl Workbench<'_> {
         let voltage = self.instrument.voltage.standard(volts) / volts;
         let sense = entry.front_end.sense_resistor.resistance.ohms();
         let leads = match entry.leads.sensing {
-            Sensing::TwoWire => 0.0,
+            // The voltage is the device's as far as the leads' drop was added.
+            Sensing::TwoWire => correction.leads.ohms(),
             Sensing::FourWire => {
                 loop_resistance(&entry.leads.conductor, entry.ambient).map_or(0.0, Resistance::ohms)
             }

@@ -81,11 +81,7 @@ impl Workbench<'_> {
     }
 
     fn pulse(&self, name: Name, stage: &Stage<'_>, start: Sample, seen: &Seen) -> Option<Figure> {
-        let correction = &self.plan.correction;
-        let (low_a, low_v) = (
-            correction.current_from_readback(start.current).amperes(),
-            correction.voltage_from_readback(start.voltage).volts(),
-        );
+        let (low_a, low_v) = self.true_values(&start);
         let rise = seen.amperes - low_a;
         if rise <= LEAST_RISE * self.instrument.current.step {
             return None;
@@ -176,7 +172,7 @@ impl Workbench<'_> {
         let correction = &self.plan.correction;
         (
             correction.current_from_readback(current).amperes(),
-            correction.voltage_from_readback(voltage).volts(),
+            correction.voltage_from_readback(voltage, current).volts(),
         )
     }
 }

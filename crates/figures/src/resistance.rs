@@ -72,7 +72,7 @@ fn figure(
     };
     let voltage = |sample: &Sample| {
         plan.correction
-            .voltage_from_readback(sample.voltage)
+            .voltage_from_readback(sample.voltage, sample.current)
             .volts()
     };
     let rise = current(&high) - current(&low);

@@ -26,7 +26,7 @@ impl Spread {
     }
 
     /// The time integral of the squared deviation from the mean, at most.
-    fn at_most(&self) -> f64 {
+    pub(crate) fn squares(&self) -> f64 {
         if self.seconds <= 0.0 {
             return 0.0;
         }
@@ -37,7 +37,7 @@ impl Spread {
     /// By how much the mean of the curve, times time, may differ from the curve at the mean.
     pub(crate) fn hides(&self, curve: Curve) -> f64 {
         curve.bend().map_or(0.0, |bend| {
-            per_unit(bend.curvature_ppb_per_unit).abs() * self.at_most()
+            per_unit(bend.curvature_ppb_per_unit).abs() * self.squares()
         })
     }
 }

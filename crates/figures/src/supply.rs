@@ -7,7 +7,7 @@ use sequence::plan::DutKind;
 use sink::regression::{Form, Point, Weights, fit};
 use sink::uncertainty::Budget;
 
-use crate::contribution::{ONE_EACH, observed};
+use crate::contribution::{ONE_EACH, observed, of_leads};
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
 use crate::walk::Sample;
 use crate::work::Workbench;
@@ -66,6 +66,8 @@ impl Workbench<'_> {
         };
         let regulation = least.volts - most.volts;
         let voltage = &self.instrument.voltage;
+        let mut lines = voltage.of_difference(regulation, ONE_EACH, 1.0);
+        lines.extend(of_leads(self.instrument, most.amperes - least.amperes));
         let how = format!(
             "{REGULATION}; from {:.4} A to {:.4} A",
             least.amperes, most.amperes
@@ -74,7 +76,7 @@ impl Workbench<'_> {
             Name::LoadRegulation,
             None,
             (regulation, Unit::Volt),
-            Budget::new(voltage.of_difference(regulation, ONE_EACH, 1.0)),
+            Budget::new(lines),
             (&how, COMMON),
             rows,
         ));
@@ -126,6 +128,7 @@ impl Workbench<'_> {
         )];
         lines.extend(self.instrument.voltage.of_gain(slope));
         lines.extend(self.instrument.current.of_gain(slope));
+        lines.extend(of_leads(self.instrument, 1.0));
         Ok(Figure::new(
             Name::OutputResistance,
             None,

@@ -6,8 +6,10 @@
 //!   record's first entry to its last. Else the figures are nominal, and a warning says why.
 
 use journal::{Entry, Manifest};
+use quantity::Resistance;
 use sink::bench::SinkEntry;
 use sink::calibration::{Certificate, Validity};
+use sink::leads::two_wire_uncertainty;
 
 use crate::channel::Instrument;
 use crate::figure::Standing;
@@ -28,9 +30,13 @@ impl Trust {
         others: &[Entry],
         hottest_degc: Option<f64>,
     ) -> Self {
+        let leads_ohm = leads_ohm(manifest, entry);
         let nominal = |warning| Self {
             standing: Standing::NominalUncalibrated,
-            instrument: Instrument::nominal(entry, hottest_degc),
+            instrument: Instrument {
+                leads_ohm,
+                ..Instrument::nominal(entry, hottest_degc)
+            },
             warning,
         };
         let Some(value) = &manifest.certificate else {
@@ -52,7 +58,10 @@ impl Trust {
             None => match Instrument::certified(&certificate) {
                 Ok(instrument) => Self {
                     standing: Standing::Calibrated,
-                    instrument,
+                    instrument: Instrument {
+                        leads_ohm,
+                        ..instrument
+                    },
                     warning: None,
                 },
                 Err(error) => nominal(Some(format!(
@@ -61,6 +70,15 @@ impl Trust {
             },
         }
     }
+}
+
+/// How well the leads are known that the record's two-wire voltages were corrected for.
+fn leads_ohm(manifest: &Manifest, entry: &SinkEntry) -> f64 {
+    if manifest.plan.correction.leads == Resistance::ZERO {
+        return 0.0;
+    }
+    // The correction's leads came from the same entry: their tables know it.
+    two_wire_uncertainty(entry).unwrap_or(0.0)
 }
 
 /// Why a sound certificate does not count for this record.
@@ -72,7 +90,8 @@ fn objection(certificate: &Certificate, manifest: &Manifest, others: &[Entry]) -
             measurements.sink, manifest.sink
         ));
     }
-    if certificate.correction != manifest.plan.correction {
+    let driven_with = manifest.plan.correction;
+    if certificate.correction.with_leads(driven_with.leads) != driven_with {
         return Some("the run was driven with another correction than it gives".to_owned());
     }
     let unix_s = |entry: &Entry| entry.at.micros().div_euclid(1_000_000);

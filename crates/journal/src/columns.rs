@@ -98,17 +98,17 @@ pub const COLUMNS: &[Column] = &[
     ),
     column(
         "voltage_v",
-        |row| voltage(row, |r| r.values.voltage),
+        |row| voltage(row, |r| (r.values.voltage, r.values.current)),
         "Mean voltage.",
     ),
     column(
         "voltage_min_v",
-        |row| voltage(row, |r| r.values.voltage_min),
+        |row| voltage(row, |r| (r.values.voltage_min, r.values.current_min)),
         "Least voltage.",
     ),
     column(
         "voltage_max_v",
-        |row| voltage(row, |r| r.values.voltage_max),
+        |row| voltage(row, |r| (r.values.voltage_max, r.values.current_max)),
         "Largest voltage.",
     ),
     column(
@@ -245,10 +245,14 @@ fn current(row: &Row<'_>, which: fn(&Reading) -> quantity::Current) -> Cell<'sta
     )
 }
 
-fn voltage(row: &Row<'_>, which: fn(&Reading) -> quantity::Voltage) -> Cell<'static> {
+fn voltage(
+    row: &Row<'_>,
+    which: fn(&Reading) -> (quantity::Voltage, quantity::Current),
+) -> Cell<'static> {
+    let (voltage, current) = which(row.reading);
     micro(
         row.correction
-            .voltage_from_readback(which(row.reading))
+            .voltage_from_readback(voltage, current)
             .microvolts(),
     )
 }

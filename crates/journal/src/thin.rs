@@ -79,8 +79,16 @@ pub fn thin(
                 time: reading.time,
                 current: [values.current_min, values.current, values.current_max]
                     .map(|nominal| correction.current_from_readback(nominal).microamperes()),
-                voltage: [values.voltage_min, values.voltage, values.voltage_max]
-                    .map(|nominal| correction.voltage_from_readback(nominal).microvolts()),
+                voltage: [
+                    (values.voltage_min, values.current_min),
+                    (values.voltage, values.current),
+                    (values.voltage_max, values.current_max),
+                ]
+                .map(|(voltage, current)| {
+                    correction
+                        .voltage_from_readback(voltage, current)
+                        .microvolts()
+                }),
                 temperature: match values.temperature {
                     TemperatureReading::Value(value) => Some(value.millidegrees_celsius()),
                     TemperatureReading::Open | TemperatureReading::Short => None,

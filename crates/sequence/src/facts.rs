@@ -9,7 +9,7 @@ use sink::bench::{InterlockDefaults, Link, SinkEntry};
 use sink::converter::Converter;
 use sink::correction::Correction;
 use sink::envelope::Envelope;
-use sink::leads::LeadsError;
+use sink::leads::{LeadsError, two_wire_resistance};
 
 use crate::plan::{Armed, Interlocks, Ranges};
 
@@ -74,6 +74,8 @@ impl Facts {
     /// as the reference firmware has it; whoever has read the sink's description writes its
     /// words over these fields.
     pub fn of(entry: &SinkEntry, correction: Correction) -> Self {
+        // Leads in no table are told by the envelope's rule.
+        let leads = two_wire_resistance(entry).unwrap_or_default();
         let front_end = &entry.front_end;
         let converter = Converter::of(front_end);
         Self {
@@ -104,7 +106,7 @@ impl Facts {
             deadman: entry.deadman,
             interlocks: Thresholds::of(&entry.interlocks),
             envelope: Envelope::of(entry),
-            correction,
+            correction: correction.with_leads(leads),
         }
     }
 }

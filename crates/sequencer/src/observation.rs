@@ -88,7 +88,7 @@ impl Observation {
             from: previous.unwrap_or(reading.time),
             time: reading.time,
             current: true_current(&plan.correction, current),
-            voltage: true_voltage(&plan.correction, voltage),
+            voltage: true_voltage(&plan.correction, voltage, current),
             temperature: values.temperature,
             state: values.state,
             counters: reading.counters,
@@ -126,11 +126,17 @@ fn true_current(correction: &Correction, nominal: Spread<Current>) -> Spread<Cur
     }
 }
 
-fn true_voltage(correction: &Correction, nominal: Spread<Voltage>) -> Spread<Voltage> {
+/// At the device under test. Over two wires the extremes are bounds: the least voltage comes with
+/// the largest current, but its drop is not counted on.
+fn true_voltage(
+    correction: &Correction,
+    nominal: Spread<Voltage>,
+    current: Spread<Current>,
+) -> Spread<Voltage> {
     Spread {
-        mean: correction.voltage_from_readback(nominal.mean),
-        min: correction.voltage_from_readback(nominal.min),
-        max: correction.voltage_from_readback(nominal.max),
+        mean: correction.voltage_from_readback(nominal.mean, current.mean),
+        min: correction.voltage_from_readback(nominal.min, current.min),
+        max: correction.voltage_from_readback(nominal.max, current.max),
     }
 }
 

@@ -312,7 +312,7 @@ impl Sequencer {
                 .current_from_readback(quantity::Current::from_microamperes(value))
                 .microamperes(),
             Cause::VoltageHigh | Cause::VoltageLow => correction
-                .voltage_from_readback(Voltage::from_microvolts(value))
+                .terminal_voltage(Voltage::from_microvolts(value))
                 .microvolts(),
             Cause::Power
             | Cause::Temperature

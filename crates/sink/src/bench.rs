@@ -29,8 +29,8 @@ use quantity::{Span, Temperature};
 use serde::{Deserialize, Serialize};
 
 pub use front_end::{
-    Adc, Codes, Dac, Element, FrontEnd, ResistancePoint, SenseResistor, SensorDivider, SensorSide,
-    TemperatureSensor,
+    Adc, Codes, Dac, Element, FrontEnd, ReadError, ResistancePoint, SenseResistor, SensorDivider,
+    SensorSide, TemperatureSensor,
 };
 pub use interlock::{
     Above, AboveBy, Below, ClockOff, For, FreeSpace, InterlockDefaults, Limits, ShortBy,

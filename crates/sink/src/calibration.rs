@@ -248,6 +248,8 @@ pub fn calibrate(measurements: Measurements) -> Result<Certificate, CalibrationE
             current_set: channels.current_set.curve()?,
             current_read: channels.current_read.curve()?,
             voltage_read: channels.voltage_read.curve()?,
+            // The leads are the bench's, not the certificate's.
+            ..Correction::IDENTITY
         },
         current_set: channels.current_set.summary(),
         current_read: channels.current_read.summary(),

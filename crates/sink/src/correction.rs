@@ -13,11 +13,11 @@
 //! - Results are held at the end of a quantity's range; no input panics.
 //!
 //! What it deliberately does not do: it knows no uncertainty (that is the
-//! certificate's) and no temperature.
+//! certificate's and the leads') and no temperature.
 
 mod curve;
 
-use quantity::{Charge, Current, Energy, Power, Quantity, Span, Voltage};
+use quantity::{Charge, Current, Energy, Power, Quantity, Resistance, Span, Voltage};
 use serde::{Deserialize, Serialize};
 
 pub use curve::{Bend, Curve, CurveError};
@@ -80,8 +80,25 @@ pub struct Correction {
     pub current_set: Curve,
     /// The current that really flows for a nominal current readback.
     pub current_read: Curve,
-    /// The voltage that is really there for a nominal voltage readback.
+    /// The voltage at the sense terminals for a nominal voltage readback.
     pub voltage_read: Curve,
+    /// The resistance of both leads where the voltage is read over them (two
+    /// wires); zero for four wires.
+    #[serde(
+        default = "no_leads",
+        skip_serializing_if = "is_no_leads",
+        with = "quantity::text"
+    )]
+    pub leads: Resistance,
+}
+
+const fn no_leads() -> Resistance {
+    Resistance::ZERO
+}
+
+#[expect(clippy::trivially_copy_pass_by_ref, reason = "serde asks for it")]
+fn is_no_leads(leads: &Resistance) -> bool {
+    *leads == Resistance::ZERO
 }
 
 impl Correction {
@@ -90,7 +107,15 @@ impl Correction {
         current_set: Curve::IDENTITY,
         current_read: Curve::IDENTITY,
         voltage_read: Curve::IDENTITY,
+        leads: Resistance::ZERO,
     };
+
+    /// The same over leads of a resistance (see
+    /// [`two_wire_resistance`](crate::leads::two_wire_resistance)).
+    #[must_use]
+    pub const fn with_leads(self, leads: Resistance) -> Self {
+        Self { leads, ..self }
+    }
 
     /// The nominal setpoint for a wanted current, to the nearest microampere.
     ///
@@ -114,13 +139,29 @@ impl Correction {
     }
 
     /// The voltage at the sink's sense terminals for a nominal readback.
-    pub fn voltage_from_readback(&self, nominal: Voltage) -> Voltage {
+    pub fn terminal_voltage(&self, nominal: Voltage) -> Voltage {
         Voltage::from_microvolts(self.voltage_read.to_true(nominal.microvolts()))
     }
 
-    /// The true power of a nominal current and voltage readback.
+    /// The voltage at the device under test for a nominal readback of voltage
+    /// and current: over two wires the drop of the leads is added.
+    ///
+    /// Of a least (or largest) voltage with the least (or largest) current it
+    /// is a bound: which of both came together, a readback does not tell.
+    pub fn voltage_from_readback(&self, voltage: Voltage, current: Current) -> Voltage {
+        let terminals = self.terminal_voltage(voltage);
+        if self.leads == Resistance::ZERO {
+            return terminals;
+        }
+        terminals.saturating_add(
+            self.current_from_readback(current)
+                .times_resistance(self.leads),
+        )
+    }
+
+    /// The true power in the sink of a nominal current and voltage readback.
     pub fn power_from_readback(&self, voltage: Voltage, current: Current) -> Power {
-        self.voltage_from_readback(voltage)
+        self.terminal_voltage(voltage)
             .times(self.current_from_readback(current))
     }
 
@@ -136,8 +177,11 @@ impl Correction {
         Current::from_microamperes(nominal)
     }
 
-    /// The nominal limit for voltage readbacks that stands for a true one, on
-    /// the safe side as for [`Self::current_limit_to_nominal`].
+    /// The nominal limit for voltage readbacks that stands for a true one at the
+    /// sense terminals, on the safe side as for
+    /// [`Self::current_limit_to_nominal`]. Over two wires the terminals of a
+    /// sink that draws lie below the device under test: its own limits judge
+    /// the terminals.
     pub fn voltage_limit_to_nominal(&self, limit: Voltage, bound: Bound) -> Voltage {
         let nominal = self
             .voltage_read
@@ -217,7 +261,9 @@ impl Correction {
     ///
     /// `E = g_v g_i E_n + g_v o_i U_n T + o_v Q`, with the true charge `Q`: the
     /// integral of the product of two lines, tangents at the means where the
-    /// curves are bent. To the nearest microjoule of each term.
+    /// curves are bent. Over two wires `R Q^2 / T` is added, the leads' loss of
+    /// a steady current; one that goes to and fro loses more. To the nearest
+    /// microjoule of each term.
     pub fn energy_from_counter(
         &self,
         nominal: Energy,
@@ -237,8 +283,23 @@ impl Correction {
         );
         let true_charge = Charge::from_microcoulombs(held(of_charge(amperes, charge, over)));
         let from_offset = true_charge.times(Voltage::from_microvolts(volts.intercept()));
-        Energy::from_microjoules(held(by_voltage + from_offset.base_units()))
+        let in_leads = loss(self.leads, true_charge, over);
+        Energy::from_microjoules(held(
+            (by_voltage + from_offset.base_units()).saturating_add(in_leads),
+        ))
     }
+}
+
+/// What a steady current loses in a resistance, in microjoules: R Q^2 / T.
+fn loss(resistance: Resistance, charge: Charge, over: Span) -> i128 {
+    if resistance == Resistance::ZERO || over == Span::ZERO {
+        return 0;
+    }
+    let square = charge.base_units().saturating_mul(charge.base_units());
+    let numerator = square.saturating_mul(resistance.base_units());
+    let divisor = i128::from(over.micros()) * 1_000_000;
+    // Not to the nearest: a product held at the end of its type has no half.
+    numerator / divisor
 }
 
 /// What a line makes of a counted charge, in microcoulombs.

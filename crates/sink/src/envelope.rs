@@ -17,13 +17,13 @@
 mod limit;
 mod table;
 
-use quantity::{Current, Resistance, Span, Voltage};
+use quantity::{Current, Resistance, Span, Temperature, Voltage};
 
 use crate::bench::SinkEntry;
 use crate::circuit::{Circuit, Wall};
 use crate::converter::Converter;
 use crate::leads::{LeadsError, loop_resistance};
-use crate::thermal::{Network, sense_resistor_rating};
+use crate::thermal::{Lag, Network, sense_resistor_rating};
 
 pub use limit::{Limit, Warning};
 pub use table::{EnvelopeTable, Row, usual_durations};
@@ -139,6 +139,41 @@ impl Envelope {
         let junction = ambient
             + watts * (self.junction_to_case.resistance() + self.case_to_ambient.resistance());
         (junction, sink)
+    }
+
+    /// The power in the MOSFET, in watts, at a voltage at the device under test
+    /// and a current: what leads and sense resistor turn into heat is not in it.
+    pub fn mosfet_watts(&self, volts: f64, amperes: f64) -> f64 {
+        (amperes * (volts - amperes * (self.leads + self.sense()))).max(0.0)
+    }
+
+    /// The heat path from the junction to the heat sink (to the case and over
+    /// its pad), and that from the heat sink to the air; each a rise per watt
+    /// over time.
+    pub fn heat_path(&self) -> (Network, Network) {
+        let pad = Network::new(vec![Lag {
+            resistance: self.sink.heat_sink.from_case.kelvins_per_watt(),
+            time_constant: 0.0,
+        }]);
+        (
+            self.junction_to_case.clone().then(&pad),
+            self.sink_to_ambient.clone(),
+        )
+    }
+
+    /// The ambient temperature that the envelope stands on.
+    pub const fn ambient(&self) -> Temperature {
+        self.sink.ambient
+    }
+
+    /// The hottest that the junction may get.
+    pub const fn junction_max(&self) -> Temperature {
+        self.sink.mosfet.junction_max
+    }
+
+    /// The hottest that the heat sink may get.
+    pub fn heat_sink_max(&self) -> Temperature {
+        self.sink.limits.temperature.min(self.sink.heat_sink.limit)
     }
 
     /// The resistance of both leads in ohms.

@@ -7,9 +7,10 @@
 //! kelvin at 20 degC). IEC 60228 has a temperature factor of its own, 0.004 per
 //! kelvin, which differs in the third digit; 0.00393 is used throughout.
 
-use quantity::{Area, Current, Length, Resistance, Temperature, Voltage};
+use quantity::{Area, Length, Resistance, Temperature};
 
-use crate::bench::{Conductor, Leads, Sensing, Strands};
+use crate::bench::{Conductor, Sensing, SinkEntry, Strands};
+use crate::uncertainty::Stated;
 
 /// Copper's temperature coefficient at 20 degC, per kelvin.
 pub const COPPER_PER_KELVIN: f64 = 0.003_93;
@@ -88,33 +89,34 @@ pub fn temperature_factor(at: Temperature) -> f64 {
     1.0 + COPPER_PER_KELVIN * (at.degrees_celsius() - 20.0)
 }
 
-/// The voltage at the device under test for a voltage read at the sink's sense
-/// terminals: two-wire readings lack the drop of the leads.
-pub fn voltage_at_device(
-    leads: &Leads,
-    loop_resistance: Resistance,
-    reading: Voltage,
-    current: Current,
-) -> Voltage {
-    match leads.sensing {
-        Sensing::FourWire => reading,
-        Sensing::TwoWire => reading.saturating_add(current.times_resistance(loop_resistance)),
+/// The resistance of both leads if the voltage is read over them, at the bench's
+/// ambient temperature; zero for four wires.
+///
+/// # Errors
+/// [`LeadsError`] as [`loop_resistance`].
+pub fn two_wire_resistance(sink: &SinkEntry) -> Result<Resistance, LeadsError> {
+    match sink.leads.sensing {
+        Sensing::FourWire => Ok(Resistance::ZERO),
+        Sensing::TwoWire => loop_resistance(&sink.leads.conductor, sink.ambient),
     }
 }
 
-/// The standard uncertainty that two-wire sensing adds to a voltage, in volts,
-/// for a current in amperes; zero for four wires.
+/// The standard uncertainty of the resistance that two-wire voltages are
+/// corrected by, in ohms; zero for four wires.
 ///
 /// A tabled resistance is a largest value and leaves the contacts out; it is
 /// taken as known to a tenth (rectangular; common practice, no source), a
 /// measured one to a twentieth.
-pub fn voltage_uncertainty(leads: &Leads, loop_resistance: Resistance, amperes: f64) -> f64 {
-    let share = match (leads.sensing, leads.conductor) {
-        (Sensing::FourWire, _) => return 0.0,
-        (Sensing::TwoWire, Conductor::Measured { .. }) => 0.05,
-        (Sensing::TwoWire, Conductor::Copper { .. } | Conductor::Gauge { .. }) => 0.1,
+///
+/// # Errors
+/// [`LeadsError`] as [`loop_resistance`].
+pub fn two_wire_uncertainty(sink: &SinkEntry) -> Result<f64, LeadsError> {
+    let share = match sink.leads.conductor {
+        Conductor::Measured { .. } => 0.05,
+        Conductor::Copper { .. } | Conductor::Gauge { .. } => 0.1,
     };
-    amperes.abs() * loop_resistance.ohms() * share / 3_f64.sqrt()
+    let bound = two_wire_resistance(sink)?.ohms() * share;
+    Ok(Stated::Rectangular.standard_uncertainty(bound))
 }
 
 #[cfg(test)]

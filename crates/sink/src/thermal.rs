@@ -126,6 +126,26 @@ impl Rise {
         }
     }
 
+    /// Repeats what led here from an earlier rise, in a time, so many times
+    /// more.
+    ///
+    /// Each lag is linear: a round takes its rise `r` to `a r + b` with
+    /// `a = exp(-T / tau)`, whatever the powers within the round, and the next
+    /// one does the same.
+    pub fn repeat(&mut self, before: &Self, seconds: f64, times: f64) {
+        let lags = self.network.lags.iter().zip(&before.rises);
+        for (rise, (lag, earlier)) in self.rises.iter_mut().zip(lags) {
+            let covered = lag.covered(seconds);
+            if covered <= 0.0 {
+                continue;
+            }
+            // Where the rounds settle: r = a r + b.
+            let settled = earlier + (*rise - earlier) / covered;
+            let all = lag.covered(seconds * times);
+            *rise += (settled - *rise) * all;
+        }
+    }
+
     /// The rise in kelvins.
     pub fn kelvins(&self) -> f64 {
         self.rises.iter().sum()

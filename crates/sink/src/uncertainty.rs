@@ -140,6 +140,16 @@ pub enum Stated {
 }
 
 impl Stated {
+    /// Whether it says anything: a coverage factor must be above zero.
+    pub fn is_sound(self) -> bool {
+        match self {
+            Self::Rectangular | Self::Triangular | Self::ArcSine => true,
+            Self::Normal { coverage_factor } => {
+                coverage_factor.is_finite() && coverage_factor > 0.0
+            }
+        }
+    }
+
     /// The standard uncertainty of a bound ± `half_width`.
     pub fn standard_uncertainty(self, half_width: f64) -> f64 {
         let divisor = match self {

@@ -5,7 +5,7 @@ use std::num::NonZeroU32;
 use std::path::PathBuf;
 
 use clap::{Args, Parser, Subcommand};
-use quantity::Current;
+use quantity::{Current, Resistance, Span, Voltage};
 
 use crate::exit::CODES;
 
@@ -43,12 +43,20 @@ pub(crate) enum Command {
     /// Print the JSON Schema of a sequence file, for an editor.
     #[command(after_help = "Example: sinkwarden schema > sequence.schema.json")]
     Schema,
+    /// Show what a sink can do: the largest current at each source voltage, and which limit binds.
+    ///
+    /// Worked out from the bench file alone, for ever and for a time. It holds for a sink that is
+    /// in order: it is no protection.
+    #[command(
+        after_help = "Example: sinkwarden envelope --sink left --voltage \"4.2 V\" --plot left.svg"
+    )]
+    Envelope(EnvelopeOf),
     /// Check a sequence against a sink, the device under test and the interlocks.
     ///
     /// Names every mistake at once, each with its place and its mend, or says what the plan will
     /// take. Nothing is connected.
     #[command(after_help = "Example: sinkwarden check sequences/capacity-0.2-it.json --sink left")]
-    Check(SequenceOn),
+    Check(Check),
     /// Prove the firmware on a port: whether it keeps every guarantee of the line protocol.
     ///
     /// Draws nothing unless a source is allowed; what needs a current is then not shown. A port
@@ -119,6 +127,46 @@ pub(crate) struct SequenceOn {
     /// What is written on the device under test; wins over the sequence's own label.
     #[arg(long, value_name = "LABEL")]
     pub(crate) dut: Option<String>,
+}
+
+/// `envelope`.
+#[derive(Debug, Args)]
+pub(crate) struct EnvelopeOf {
+    /// The bench file.
+    #[arg(
+        long,
+        value_name = "FILE",
+        env = "SINKWARDEN_BENCH",
+        default_value = "bench.toml"
+    )]
+    pub(crate) bench: PathBuf,
+    /// The sink's name in the bench file.
+    #[arg(long, value_name = "NAME")]
+    pub(crate) sink: String,
+    /// A source voltage; may be repeated. Without it, whole steps up to the largest the sink may
+    /// have. Of a single one every limit is shown.
+    #[arg(long = "voltage", value_name = "VOLTAGE")]
+    pub(crate) voltages: Vec<Voltage>,
+    /// For how long; may be repeated. Without it: for ever, 10 ms, 1 s, 10 s, 5 min.
+    #[arg(long = "for", value_name = "TIME")]
+    pub(crate) spans: Vec<Span>,
+    /// The source's own resistance; zero is the hottest case.
+    #[arg(long, value_name = "RESISTANCE", default_value = "0 ohm")]
+    pub(crate) source_resistance: Resistance,
+    /// Draw it into this file, too, over an earlier one.
+    #[arg(long, value_name = "FILE.svg")]
+    pub(crate) plot: Option<PathBuf>,
+}
+
+/// `check`.
+#[derive(Debug, Args)]
+pub(crate) struct Check {
+    /// What to check.
+    #[command(flatten)]
+    pub(crate) on: SequenceOn,
+    /// Draw the planned current into this file, too, over an earlier one.
+    #[arg(long, value_name = "FILE.svg")]
+    pub(crate) plot: Option<PathBuf>,
 }
 
 /// `prove`.

@@ -2,6 +2,7 @@
 //! print.
 
 mod check;
+mod envelope;
 mod export;
 mod figures;
 mod follow;
@@ -25,6 +26,7 @@ use crate::bench_file::STARTING;
 use crate::exit::Exit;
 use crate::output::{Output, give_text};
 
+pub(crate) use envelope::EnvelopeAnswer;
 pub(crate) use rehearse::RehearsalAnswer;
 pub(crate) use replay::ReplayAnswer;
 
@@ -42,7 +44,8 @@ pub(crate) fn carry_out(command: Command, output: Output) -> Result<Exit> {
             give_text(&format!("{:#}\n", sequence::schema()))?;
             Ok(Exit::Done)
         }
-        Command::Check(on) => check::carry_out(&on, output),
+        Command::Envelope(arguments) => envelope::carry_out(&arguments, output),
+        Command::Check(arguments) => check::carry_out(&arguments, output),
         Command::Prove(arguments) => prove::carry_out(&arguments, output),
         Command::Rehearse(arguments) => rehearse::carry_out(&arguments, output),
         Command::Serve(arguments) => serve::carry_out(arguments, output),

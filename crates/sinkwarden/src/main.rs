@@ -3,7 +3,7 @@
 //! ```text
 //!   flags ─► arguments ─► one validated value a command ─► commands ─► print ─► stdout
 //!                                                             │
-//!                         bench, check, rehearse, records ────┤ the crates, no daemon
+//!                         bench, envelope, check, rehearse, …─┤ the crates, no daemon
 //!                         prove ──────────────────────────────┤ a port, no daemon
 //!                         run, off, watch, status ────────────┘ client ─► the daemon
 //! ```
@@ -23,6 +23,7 @@ mod client;
 mod commands;
 mod exit;
 mod output;
+mod picture;
 mod print;
 mod progress;
 mod record_folder;

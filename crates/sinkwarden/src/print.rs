@@ -3,6 +3,7 @@
 mod bench_state;
 mod check;
 mod ending;
+mod envelope;
 mod figures;
 mod findings;
 mod line;
@@ -16,6 +17,7 @@ mod verify;
 pub(crate) use bench_state::{off, sinks};
 pub(crate) use check::check;
 pub(crate) use ending::{ended_run, started_run};
+pub(crate) use envelope::envelope;
 pub(crate) use figures::figures;
 pub(crate) use findings::{findings, refused};
 pub(crate) use line::{progress_of, sink_line};

@@ -41,7 +41,7 @@ pub struct ReadingView {
     pub current_min_a: f64,
     /// Largest current.
     pub current_max_a: f64,
-    /// Mean voltage times mean current.
+    /// Mean voltage at the sink's terminals times mean current.
     pub power_w: f64,
     /// Heat sink temperature; absent if its sensor fails.
     pub temperature_degc: Option<f64>,
@@ -58,7 +58,7 @@ impl ReadingView {
     /// A readback as it came, corrected.
     pub(crate) fn new(at: HostTime, reading: &Reading, correction: &Correction) -> Self {
         let values = &reading.values;
-        let voltage = |nominal| correction.voltage_from_readback(nominal).volts();
+        let voltage = |nominal, current| correction.voltage_from_readback(nominal, current).volts();
         let current = |nominal| correction.current_from_readback(nominal).amperes();
         let (temperature_degc, sensor_fault) = match values.temperature {
             TemperatureReading::Value(value) => (Some(value.degrees_celsius()), None),
@@ -77,9 +77,9 @@ impl ReadingView {
                 i64::try_from(reading.time.micros()).unwrap_or(i64::MAX),
                 1e6,
             ),
-            voltage_v: voltage(values.voltage),
-            voltage_min_v: voltage(values.voltage_min),
-            voltage_max_v: voltage(values.voltage_max),
+            voltage_v: voltage(values.voltage, values.current),
+            voltage_min_v: voltage(values.voltage_min, values.current_min),
+            voltage_max_v: voltage(values.voltage_max, values.current_max),
             current_a: current(values.current),
             current_min_a: current(values.current_min),
             current_max_a: current(values.current_max),

@@ -1,12 +1,13 @@
 //! Figures of a calibrated sink: standing, correction, covariance.
 
-use quantity::{Current, Ratio, Temperature, TemperatureCoefficient, Text, Voltage};
+use quantity::{Current, Ratio, Resistance, Temperature, TemperatureCoefficient, Text, Voltage};
 use simulator::front_end::Errors;
+use sink::bench::{Conductor, Leads, ReadError, Sensing};
 use sink::calibration::{
     Certificate, CurrentPoint, Measurements, ReferenceMeter, VoltagePoint, calibrate,
 };
 use sink::montecarlo::Random;
-use sink::uncertainty::{DegreesOfFreedom, Evaluation, Stated};
+use sink::uncertainty::{Contribution, DegreesOfFreedom, Evaluation, Stated};
 
 use super::bench::{Setup, left, only};
 use crate::channel::Instrument;
@@ -214,6 +215,83 @@ fn a_bent_certificate_enters_as_its_fit_predicts() {
     assert!((difference.share() - 2.0 * fit.slope_uncertainty_max()).abs() < 1e-12);
     let (low, high) = instrument.current.range.unwrap();
     assert!((low - 0.24).abs() < 1e-3 && (high - 2.88).abs() < 1e-3);
+}
+
+/// A reading converter that states 0.5 % of the reading and 2 mA: at 1 A for an hour, and with the
+/// 1 % of the sense resistor beside it.
+#[test]
+fn the_errors_that_a_bench_file_states_stand_behind_nominal_figures() {
+    let mut entry = left();
+    entry.front_end.adc.current_error = Some(ReadError {
+        of_reading: Text(Ratio::from_parts_per_million(5_000)),
+        constant: Current::from_milliamperes(2),
+        stated: Stated::Rectangular,
+    });
+    entry.front_end.adc.voltage_error = Some(ReadError {
+        of_reading: Text(Ratio::ZERO),
+        constant: Voltage::from_millivolts(20),
+        stated: Stated::Normal {
+            coverage_factor: 2.0,
+        },
+    });
+    let instrument = Instrument::nominal(&entry, None);
+    let share = |lines: &[Contribution], name: &str| {
+        let line = lines.iter().find(|line| line.name == name);
+        line.unwrap().share()
+    };
+    let lines = instrument.current.over(1.0, 1.0);
+    let stated = share(&lines, "reading converter, current");
+    assert!((stated - 0.007 / 3_f64.sqrt()).abs() < 1e-12);
+    let resistor = share(&lines, "sense resistor, tolerance");
+    assert!((resistor - 0.01 / 3_f64.sqrt()).abs() < 1e-12);
+    let lines = instrument.voltage.of_reading(3.7);
+    assert!((share(&lines, "reading converter, voltage") - 0.01).abs() < 1e-12);
+}
+
+/// The same discharge read over two wires of 42 mohm: the energy is the device's, to what is known
+/// of the leads.
+#[test]
+fn two_wire_leads_are_corrected_and_stand_in_the_budget() {
+    let mut entry = left();
+    entry.leads = Leads {
+        sensing: Sensing::TwoWire,
+        conductor: Conductor::Measured {
+            resistance: Resistance::from_milliohms(42),
+        },
+    };
+    let mut setup = Setup::new(SEQUENCE, &entry);
+    setup.parts.errors = Errors::default();
+    setup.parts.four_wire = false;
+    setup.parts.path.lead_ohm = 0.042;
+    let night = setup.night();
+    let figures = work_out(&night.record).unwrap();
+    let whole = |name| {
+        figures
+            .figures
+            .iter()
+            .find(|figure| figure.name == name && figure.label.is_none())
+            .unwrap()
+    };
+    let energy = whole(Name::DeliveredEnergy);
+    let leads = energy
+        .budget
+        .contributions
+        .iter()
+        .find(|line| line.name == "leads")
+        .unwrap();
+    // 2.1 mohm, rectangular, times 1 A squared for an hour.
+    assert!((leads.share() - 0.0021 / 3_f64.sqrt()).abs() < 2e-5);
+    let mean = whole(Name::MeanVoltage);
+    let outside = (night.truth.mosfet_j + night.truth.sense_j + night.truth.leads_j) / 3600.0;
+    assert!(
+        (energy.value - outside).abs() < 0.003,
+        "{} Wh, truth {outside} Wh",
+        energy.value
+    );
+    let charge_ah = night.truth.charge_c / 3600.0;
+    assert!((mean.value - outside / charge_ah).abs() < 0.003);
+    let without = outside - night.truth.leads_j / 3600.0;
+    assert!(energy.value - without > 0.035);
 }
 
 #[test]

@@ -2,11 +2,12 @@
 //!
 //! Everything is looked at; all findings are told at once.
 
-use quantity::{Current, Quantity, Resistance, Span, Voltage};
+use quantity::{Current, Quantity, Resistance, Span, Textual, Voltage};
 
 use super::place::{Finding, Step};
 use super::{
-    Bench, Conductor, DEADMAN_MAX, DEADMAN_MIN, Element, Link, Mosfet, SinkEntry, Transfer,
+    Bench, Conductor, DEADMAN_MAX, DEADMAN_MIN, Element, Link, Mosfet, ReadError, SinkEntry,
+    Transfer,
 };
 
 pub(super) fn check(bench: &Bench) -> Vec<Finding> {
@@ -264,6 +265,26 @@ fn check_front_end(sink: &SinkEntry, place: &mut Place<'_>) {
         &["front_end", "adc", "voltage_full_scale"],
         front_end.adc.voltage_full_scale,
     );
+    check_read_error("current_error", front_end.adc.current_error, place);
+    check_read_error("voltage_error", front_end.adc.voltage_error, place);
+}
+
+/// The stated error of a readback.
+fn check_read_error<T: Quantity + Textual + std::fmt::Display>(
+    name: &'static str,
+    error: Option<ReadError<T>>,
+    place: &mut Place<'_>,
+) {
+    let Some(error) = error else { return };
+    let key = |part| ["front_end", "adc", name, part];
+    place.not_negative(&key("of_reading"), error.of_reading.0);
+    place.not_negative(&key("constant"), error.constant);
+    if !error.stated.is_sound() {
+        place.add(
+            &key("stated"),
+            "a coverage factor that is not above zero; data sheets state 2 or 3",
+        );
+    }
 }
 
 fn check_bits(keys: &[&'static str], bits: u8, place: &mut Place<'_>) {

@@ -1,9 +1,12 @@
 //! What sets and reads the current: sense resistor, converters, sensor.
 
 use quantity::{
-    Current, Power, Ratio, Resistance, Span, Temperature, TemperatureCoefficient, Voltage,
+    Current, Power, Ratio, Resistance, Span, Temperature, TemperatureCoefficient, Text, Textual,
+    Voltage,
 };
 use serde::{Deserialize, Serialize};
+
+use crate::uncertainty::Stated;
 
 /// The analogue front end of a sink.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -79,7 +82,7 @@ pub struct Dac {
 }
 
 /// The converter that reads current and voltage.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
 pub struct Adc {
     /// Its resolution in bits.
@@ -94,6 +97,34 @@ pub struct Adc {
     /// times the divider.
     #[serde(with = "quantity::text")]
     pub voltage_full_scale: Voltage,
+    /// Stated error of current readbacks beside the sense resistor's: of the
+    /// amplifier, the converter, its reference. `None`: not stated.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub current_error: Option<ReadError<Current>>,
+    /// Stated error of voltage readbacks: of the divider, the converter, its
+    /// reference. `None`: not stated.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub voltage_error: Option<ReadError<Voltage>>,
+}
+
+/// A bound on the error of a readback, as a data sheet states it: plus or minus
+/// a share of the reading plus a constant.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, bound = "T: Textual")]
+pub struct ReadError<T> {
+    /// This share of the reading...
+    pub of_reading: Text<Ratio>,
+    /// ...plus this.
+    #[serde(with = "quantity::text")]
+    pub constant: T,
+    /// What the bound means; any value within it is as likely unless said
+    /// (JCGM 100:2008, 4.3.7).
+    #[serde(default = "rectangular")]
+    pub stated: Stated,
+}
+
+const fn rectangular() -> Stated {
+    Stated::Rectangular
 }
 
 /// The temperature sensor and how it is read.

@@ -44,13 +44,7 @@ impl<T: Textual + Quantity> ReferenceMeter<T> {
 
     /// Whether the stated figures make sense.
     pub(super) fn is_sound(&self) -> bool {
-        let factor = match self.stated {
-            Stated::Normal { coverage_factor } => {
-                coverage_factor.is_finite() && coverage_factor > 0.0
-            }
-            Stated::Rectangular | Stated::Triangular | Stated::ArcSine => true,
-        };
-        factor
+        self.stated.is_sound()
             && self.of_reading.0.parts_per_million() >= 0
             && self.of_range.0.parts_per_million() >= 0
             && self.range.base_units() > 0

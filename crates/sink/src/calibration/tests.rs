@@ -104,7 +104,7 @@ fn the_errors_of_a_sink_are_found_and_corrected() {
         correction.current_from_readback(Current::from_milliamperes(1_000)),
         1_012_000,
     );
-    let volts = correction.voltage_from_readback(Voltage::from_microvolts(4_012_008));
+    let volts = correction.terminal_voltage(Voltage::from_microvolts(4_012_008));
     assert!((volts.microvolts() - 4_000_000).abs() <= 5, "{volts}");
     assert!(!certificate.current_set.second_order.demanded);
     assert!(certificate.current_set.outliers.is_empty());

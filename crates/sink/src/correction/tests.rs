@@ -23,6 +23,7 @@ fn correction(set: Curve, read: Curve, voltage: Curve) -> Correction {
         current_set: set,
         current_read: read,
         voltage_read: voltage,
+        ..Correction::IDENTITY
     }
 }
 
@@ -130,7 +131,7 @@ fn a_bent_curve_s_sums_are_exact_for_a_steady_current_and_bounded_for_any() {
         span,
     );
     let direct = correction
-        .voltage_from_readback(voltage)
+        .terminal_voltage(voltage)
         .times(through)
         .times(span);
     assert!((energy - direct).abs() <= Energy::from_microjoules(4_000));
@@ -142,6 +143,49 @@ fn a_bent_curve_s_sums_are_exact_for_a_steady_current_and_bounded_for_any() {
         .microcoulombs();
     let bound = read.departure_micro(0, 3_000_000) * 1_000;
     assert_eq!(truth - found, bound);
+}
+
+/// 42 mohm and 500 mA: 21 mV more at the device than at the terminals, and 10.5 mW lost on the
+/// way there.
+#[test]
+fn two_wires_add_the_drop_and_the_loss_of_the_leads() {
+    let correction = Correction::IDENTITY.with_leads(quantity::Resistance::from_milliohms(42));
+    let (voltage, current) = (
+        Voltage::from_millivolts(3_679),
+        Current::from_milliamperes(500),
+    );
+    assert_eq!(
+        correction.voltage_from_readback(voltage, current),
+        Voltage::from_millivolts(3_700)
+    );
+    assert_eq!(correction.terminal_voltage(voltage), voltage);
+    // The power in the sink is that at its terminals.
+    assert_eq!(
+        correction.power_from_readback(voltage, current),
+        voltage.times(current)
+    );
+    let span = Span::from_secs(3_600);
+    let energy = correction.energy_from_counter(
+        voltage.times(current).times(span),
+        current.times(span),
+        voltage,
+        span,
+    );
+    assert_eq!(
+        energy,
+        Voltage::from_millivolts(3_700).times(current).times(span)
+    );
+    let json = serde_json::to_string(&correction).unwrap();
+    assert!(json.contains(r#""leads":"42 mohm""#), "{json}");
+    assert_eq!(
+        serde_json::from_str::<Correction>(&json).unwrap(),
+        correction
+    );
+    assert!(
+        !serde_json::to_string(&Correction::IDENTITY)
+            .unwrap()
+            .contains("leads")
+    );
 }
 
 #[test]
@@ -213,7 +257,7 @@ fn the_energy_of_a_constant_load_is_that_of_its_true_values() {
         span,
     );
     let direct = correction
-        .voltage_from_readback(voltage)
+        .terminal_voltage(voltage)
         .times(correction.current_from_readback(current))
         .times(span);
     assert!((energy - direct).abs() <= Energy::from_microjoules(2_000));

@@ -4,9 +4,9 @@ use expect_test::expect;
 use quantity::{Area, Current, Length, Resistance, Temperature, Voltage};
 
 use super::{
-    gauge_per_metre, loop_resistance, temperature_factor, voltage_at_device, voltage_uncertainty,
+    gauge_per_metre, loop_resistance, temperature_factor, two_wire_resistance, two_wire_uncertainty,
 };
-use crate::bench::{Conductor, Leads, Sensing, Strands};
+use crate::bench::{Bench, Conductor, Sensing, Strands};
 
 const ROOM: Temperature = Temperature::from_whole_degrees_celsius(20);
 
@@ -71,28 +71,23 @@ fn a_cross_section_in_no_table_is_refused_with_those_that_are() {
         .assert_eq(&error.to_string());
 }
 
+/// The right sink of the example bench reads over 42 mohm of measured leads.
 #[test]
 fn only_a_two_wire_reading_is_corrected_and_less_certain() {
-    let resistance = Resistance::from_milliohms(42);
-    let conductor = Conductor::Measured { resistance };
-    let reading = Voltage::from_millivolts(3_279);
-    let current = Current::from_milliamperes(500);
-    let two = Leads {
-        sensing: Sensing::TwoWire,
-        conductor,
-    };
-    let four = Leads {
-        sensing: Sensing::FourWire,
-        conductor,
-    };
+    let bench = Bench::from_toml(include_str!("../bench/weir.toml")).unwrap();
+    let mut two = bench.sink("right").unwrap().clone();
+    assert_eq!(two.leads.sensing, Sensing::TwoWire);
     assert_eq!(
-        voltage_at_device(&two, resistance, reading, current),
-        Voltage::from_millivolts(3_300)
+        two_wire_resistance(&two).unwrap(),
+        Resistance::from_milliohms(42)
     );
-    assert_eq!(
-        voltage_at_device(&four, resistance, reading, current),
-        reading
-    );
-    assert!((voltage_uncertainty(&two, resistance, 0.5) - 0.000_606_2).abs() < 1e-6);
-    assert!(voltage_uncertainty(&four, resistance, 0.5).abs() < 1e-15);
+    let uncertainty = two_wire_uncertainty(&two).unwrap();
+    assert!((uncertainty - 0.042 * 0.05 / 3_f64.sqrt()).abs() < 1e-9);
+    two.leads.conductor = copper(1_500, "1.5 mm2", Strands::Flexible);
+    two.ambient = ROOM;
+    let uncertainty = two_wire_uncertainty(&two).unwrap();
+    assert!((uncertainty - 0.0399 * 0.1 / 3_f64.sqrt()).abs() < 1e-9);
+    two.leads.sensing = Sensing::FourWire;
+    assert_eq!(two_wire_resistance(&two).unwrap(), Resistance::ZERO);
+    assert!(two_wire_uncertainty(&two).unwrap().abs() < 1e-15);
 }

@@ -73,3 +73,26 @@ fn a_rating_falls_in_a_straight_line() {
     assert!((derating(112.5, 70.0, 155.0) - 0.5).abs() < 1e-12);
     assert!(derating(200.0, 70.0, 155.0).abs() < 1e-12);
 }
+
+/// Forty rounds of 10 s with 5 W and 20 s with 1 W, walked one by one and leapt over.
+#[test]
+fn rounds_leapt_over_end_where_rounds_walked_end() {
+    let round = |rise: &mut Rise| {
+        rise.advance(5.0, 10.0);
+        rise.advance(1.0, 20.0);
+    };
+    let mut walked = Rise::at_rest(network());
+    walked.advance(2.0, 1.0);
+    let mut leapt = walked.clone();
+    let before = leapt.clone();
+    round(&mut leapt);
+    leapt.repeat(&before, 30.0, 39.0);
+    for _ in 0..40 {
+        round(&mut walked);
+    }
+    assert!((leapt.kelvins() - walked.kelvins()).abs() < 1e-12);
+    // A round too short for any lag to move leaves things as they are.
+    let still = walked.clone();
+    walked.repeat(&still, 0.0, 1e6);
+    assert_eq!(walked, still);
+}

@@ -7,20 +7,25 @@ use anyhow::Result;
 use daemon::view::{CheckView, Code, Problem};
 use sequence::{Compiled, Refused};
 
-use crate::arguments::SequenceOn;
+use crate::arguments::Check;
 use crate::exit::Exit;
 use crate::output::Output;
+use crate::picture;
 use crate::print;
 use crate::sequence_file::Submission;
 
 /// Points of the planned shape in the JSON answer, as over HTTP.
 const OUTLINE_POINTS: usize = 500;
 
-pub(super) fn carry_out(on: &SequenceOn, output: Output) -> Result<Exit> {
+pub(super) fn carry_out(arguments: &Check, output: Output) -> Result<Exit> {
+    let on = &arguments.on;
     let submission = Submission::load(on)?;
     match submission.compile() {
         Ok(compiled) => {
             let view = check_view(&compiled);
+            if let Some(path) = &arguments.plot {
+                picture::write(path, &picture::plan(&view))?;
+            }
             output.give(&view, |out, view| {
                 if !view.findings.is_empty() {
                     print::findings(out, &on.sequence, &view.findings)?;
