@@ -147,6 +147,7 @@ fn all_six_limits_come_before_anything_else_and_on_the_safe_side() {
         current_set: Curve::IDENTITY,
         current_read: Curve::line(2_000, 10_000_000).unwrap(),
         voltage_read: Curve::line(-3_000, -5_000_000).unwrap(),
+        ..Correction::IDENTITY
     };
     let bench = super::bench::Bench::connected(plan);
     let orders: Vec<Order> = bench
@@ -193,6 +194,7 @@ fn a_power_is_converted_so_that_the_true_power_is_the_one_asked_for() {
         current_set: Curve::line(0, 20_000_000).unwrap(),
         current_read: Curve::IDENTITY,
         voltage_read: Curve::line(0, -10_000_000).unwrap(),
+        ..Correction::IDENTITY
     };
     let limits = Limits::new(&plan);
     let target = Power::from_milliwatts(4_000);
