@@ -51,6 +51,17 @@ pub enum Cell<'a> {
     Text(&'a str),
 }
 
+/// What the cells of a column are, where they are not empty.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Kind {
+    /// [`Cell::Decimal`].
+    Decimal,
+    /// [`Cell::Whole`].
+    Whole,
+    /// [`Cell::Text`].
+    Text,
+}
+
 /// A column of an export.
 #[derive(Debug, Clone, Copy)]
 pub struct Column {
@@ -58,11 +69,14 @@ pub struct Column {
     pub name: &'static str,
     /// What it holds.
     pub meaning: &'static str,
+    /// What its cells are, where they are not empty.
+    pub kind: Kind,
     /// Makes its cell.
     pub cell: for<'a> fn(&Row<'a>) -> Cell<'a>,
 }
 
 const fn column(
+    kind: Kind,
     name: &'static str,
     cell: for<'a> fn(&Row<'a>) -> Cell<'a>,
     meaning: &'static str,
@@ -70,6 +84,7 @@ const fn column(
     Column {
         name,
         meaning,
+        kind,
         cell,
     }
 }
@@ -77,46 +92,55 @@ const fn column(
 /// Every column, in the order of an export.
 pub const COLUMNS: &[Column] = &[
     column(
+        Kind::Decimal,
         "time_s",
         |row| micro(whole(row.elapsed.micros())),
         "Time since the first readback, by the sink's clock.",
     ),
     column(
+        Kind::Decimal,
         "current_a",
         |row| current(row, |r| r.values.current),
         "Mean current.",
     ),
     column(
+        Kind::Decimal,
         "current_min_a",
         |row| current(row, |r| r.values.current_min),
         "Least current.",
     ),
     column(
+        Kind::Decimal,
         "current_max_a",
         |row| current(row, |r| r.values.current_max),
         "Largest current.",
     ),
     column(
+        Kind::Decimal,
         "voltage_v",
         |row| voltage(row, |r| (r.values.voltage, r.values.current)),
         "Mean voltage.",
     ),
     column(
+        Kind::Decimal,
         "voltage_min_v",
         |row| voltage(row, |r| (r.values.voltage_min, r.values.current_min)),
         "Least voltage.",
     ),
     column(
+        Kind::Decimal,
         "voltage_max_v",
         |row| voltage(row, |r| (r.values.voltage_max, r.values.current_max)),
         "Largest voltage.",
     ),
     column(
+        Kind::Decimal,
         "temperature_degc",
         temperature,
         "Heat sink temperature; empty if its sensor fails.",
     ),
     column(
+        Kind::Decimal,
         "charge_ah",
         |row| {
             row.charge
@@ -125,6 +149,7 @@ pub const COLUMNS: &[Column] = &[
         "Charge since the first readback, from the sink's counter.",
     ),
     column(
+        Kind::Decimal,
         "energy_wh",
         |row| {
             row.energy
@@ -132,48 +157,62 @@ pub const COLUMNS: &[Column] = &[
         },
         "Energy since the first readback, from the sink's counter.",
     ),
-    column("label", |row| Cell::Text(row.label), "Label of the step."),
     column(
+        Kind::Text,
+        "label",
+        |row| Cell::Text(row.label),
+        "Label of the step.",
+    ),
+    column(
+        Kind::Text,
         "state",
         |row| Cell::Text(state_name(row.reading.values.state)),
         "The sink's state.",
     ),
     column(
+        Kind::Text,
         "sensor_fault",
         sensor_fault,
         "What is wrong with the temperature sensor, if anything.",
     ),
     column(
+        Kind::Decimal,
         "current_nominal_a",
         |row| micro(row.reading.values.current.microamperes()),
         "Mean current as the sink gave it.",
     ),
     column(
+        Kind::Decimal,
         "current_min_nominal_a",
         |row| micro(row.reading.values.current_min.microamperes()),
         "Least current as the sink gave it.",
     ),
     column(
+        Kind::Decimal,
         "current_max_nominal_a",
         |row| micro(row.reading.values.current_max.microamperes()),
         "Largest current as the sink gave it.",
     ),
     column(
+        Kind::Decimal,
         "voltage_nominal_v",
         |row| micro(row.reading.values.voltage.microvolts()),
         "Mean voltage as the sink gave it.",
     ),
     column(
+        Kind::Decimal,
         "voltage_min_nominal_v",
         |row| micro(row.reading.values.voltage_min.microvolts()),
         "Least voltage as the sink gave it.",
     ),
     column(
+        Kind::Decimal,
         "voltage_max_nominal_v",
         |row| micro(row.reading.values.voltage_max.microvolts()),
         "Largest voltage as the sink gave it.",
     ),
     column(
+        Kind::Decimal,
         "charge_nominal_c",
         |row| {
             row.reading
@@ -183,6 +222,7 @@ pub const COLUMNS: &[Column] = &[
         "The sink's own charge counter.",
     ),
     column(
+        Kind::Decimal,
         "energy_nominal_j",
         |row| {
             row.reading
@@ -192,21 +232,25 @@ pub const COLUMNS: &[Column] = &[
         "The sink's own energy counter.",
     ),
     column(
+        Kind::Whole,
         "sink_time_us",
         |row| Cell::Whole(whole(row.reading.time.micros())),
         "The sink's own clock.",
     ),
     column(
+        Kind::Whole,
         "host_time_us",
         |row| Cell::Whole(row.at.micros()),
         "When it arrived: microseconds since 1970-01-01T00:00:00Z.",
     ),
     column(
+        Kind::Whole,
         "lost",
         |row| Cell::Whole(i64::from(row.reading.lost)),
         "Readbacks lost just before this one.",
     ),
     column(
+        Kind::Whole,
         "entry",
         |row| Cell::Whole(whole(row.number)),
         "The entry's number in the journal.",

@@ -1,7 +1,7 @@
-//! A record as a table: CSV, one row a readback.
+//! A record as a table, one row a readback; the table as CSV.
 //!
 //! Streams segment by segment, so any record fits any machine. What the columns are is in
-//! `columns`; another format takes the same table.
+//! `columns`; another format takes the same rows and columns.
 
 use std::io::Write;
 
@@ -25,24 +25,17 @@ pub struct Progress {
     pub rows: u64,
 }
 
-/// Writes every readback of a record as CSV (RFC 4180), true values by the record's own
-/// correction beside the nominal ones. Returns the number of rows. `progress` is called after
-/// each segment.
+/// Goes through every readback of a record as a row of the table, in order. Returns the number
+/// of rows. `progress` is called after each segment.
 ///
 /// # Errors
-/// [`JournalError::Export`] if the target takes no more; else what is wrong with the record. A
-/// torn end of an unsealed record is no error.
-pub fn export_csv(
+/// What `each` returns; else what is wrong with the record. A torn end of an unsealed record is
+/// no error.
+pub fn for_each_row<E: From<JournalError>>(
     record: &Record,
-    target: &mut dyn Write,
+    mut each: impl FnMut(&Row<'_>) -> Result<(), E>,
     mut progress: impl FnMut(Progress),
-) -> Result<u64, JournalError> {
-    let mut csv = csv::Writer::from_writer(target);
-    // An error of the target keeps its kind, so that a reader who closes the pipe can be told
-    // from a full disk.
-    let refused = |error: csv::Error| JournalError::Export(error.into());
-    csv.write_record(COLUMNS.iter().map(|column| column.name))
-        .map_err(refused)?;
+) -> Result<u64, E> {
     let plan = &record.manifest().plan;
     let mut account = Account::new(plan.correction);
     let mut label = "";
@@ -52,7 +45,6 @@ pub fn export_csv(
         segments,
         rows: 0,
     };
-    let mut text = Vec::new();
     for chunk in record.chunks()? {
         let chunk = chunk?;
         let mut others = chunk.others.iter().peekable();
@@ -67,13 +59,7 @@ pub fn export_csv(
             while let Some(other) = others.next_if(|other| other.number < number) {
                 label = label_after(plan, other).unwrap_or(label);
             }
-            let row = account.row(number, at, &reading, label);
-            for column in COLUMNS {
-                write_cell(&mut text, (column.cell)(&row));
-                csv.write_field(&text).map_err(refused)?;
-                text.clear();
-            }
-            csv.write_record(None::<&[u8]>).map_err(refused)?;
+            each(&account.row(number, at, &reading, label))?;
             state.rows += 1;
         }
         for other in others {
@@ -82,8 +68,39 @@ pub fn export_csv(
         state.segments_done += 1;
         progress(state);
     }
-    csv.flush().map_err(JournalError::Export)?;
     Ok(state.rows)
+}
+
+/// Writes every readback of a record as CSV (RFC 4180), true values by the record's own
+/// correction beside the nominal ones. Returns the number of rows. `progress` is called after
+/// each segment.
+///
+/// # Errors
+/// [`JournalError::Export`] if the target takes no more; else what is wrong with the record. A
+/// torn end of an unsealed record is no error.
+pub fn export_csv(
+    record: &Record,
+    target: &mut dyn Write,
+    progress: impl FnMut(Progress),
+) -> Result<u64, JournalError> {
+    let mut csv = csv::Writer::from_writer(target);
+    // An error of the target keeps its kind, so that a reader who closes the pipe can be told
+    // from a full disk.
+    let refused = |error: csv::Error| JournalError::Export(error.into());
+    csv.write_record(COLUMNS.iter().map(|column| column.name))
+        .map_err(refused)?;
+    let mut text = Vec::new();
+    let write_row = |row: &Row<'_>| {
+        for column in COLUMNS {
+            write_cell(&mut text, (column.cell)(row));
+            csv.write_field(&text).map_err(refused)?;
+            text.clear();
+        }
+        csv.write_record(None::<&[u8]>).map_err(refused)
+    };
+    let rows = for_each_row(record, write_row, progress)?;
+    csv.flush().map_err(JournalError::Export)?;
+    Ok(rows)
 }
 
 /// The label from here on, if the entry says that a step began.

@@ -41,10 +41,10 @@ mod verify;
 mod writer;
 
 pub use chunk::{Chunk, Chunks, Readings};
-pub use columns::{COLUMNS, Cell, Column, Row};
+pub use columns::{COLUMNS, Cell, Column, Kind, Row};
 pub use entry::{Body, ClockAlignment, Entry, Note, Side};
 pub use error::{Damage, Failure, JournalError};
-pub use export::{Progress, export_csv};
+pub use export::{Progress, export_csv, for_each_row};
 pub use line::LineFault;
 pub use manifest::{ClockKind, Ended, Manifest, SequenceText};
 pub use record::{Entries, Record};

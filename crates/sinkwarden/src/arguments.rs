@@ -4,7 +4,7 @@ use std::net::SocketAddr;
 use std::num::NonZeroU32;
 use std::path::PathBuf;
 
-use clap::{Args, Parser, Subcommand};
+use clap::{Args, Parser, Subcommand, ValueEnum};
 use quantity::{Current, Resistance, Span, Voltage};
 
 use crate::exit::CODES;
@@ -102,8 +102,11 @@ pub(crate) enum Command {
     /// Verify that nothing in a record was altered since it was written.
     #[command(after_help = "Example: sinkwarden verify latest")]
     Verify(RecordOf),
-    /// Export a record's readbacks as CSV, with units in the column names.
-    #[command(after_help = "Example: sinkwarden export latest > readings.csv")]
+    /// Export a record's readbacks as CSV or Parquet, with units in the column names.
+    #[command(
+        after_help = "Examples:\n  sinkwarden export latest > readings.csv\n  \
+                      sinkwarden export latest --as parquet --output readings.parquet"
+    )]
     Export(Export),
 }
 
@@ -338,7 +341,19 @@ pub(crate) struct Export {
     /// Of which record.
     #[command(flatten)]
     pub(crate) of: RecordOf,
+    /// As which kind of table.
+    #[arg(long = "as", value_name = "KIND", value_enum, default_value_t = TableKind::Csv)]
+    pub(crate) kind: TableKind,
     /// Write to this file, which must not exist yet, instead of stdout.
     #[arg(long, value_name = "FILE")]
     pub(crate) output: Option<PathBuf>,
+}
+
+/// A kind of table.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+pub(crate) enum TableKind {
+    /// Comma-separated values (RFC 4180): exact decimals.
+    Csv,
+    /// Apache Parquet: doubles and whole numbers by column, for a notebook.
+    Parquet,
 }

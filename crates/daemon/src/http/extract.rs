@@ -86,6 +86,8 @@ pub(super) enum Media {
     Json,
     /// Comma-separated values.
     Csv,
+    /// A Parquet file.
+    Parquet,
 }
 
 /// The best of what a client accepts (RFC 9110, 12.5.1); JSON where it does not say.
@@ -105,6 +107,7 @@ pub(super) fn accepted(headers: &HeaderMap) -> Result<Media, Problem> {
         {
             "application/json" | "application/*" | "*/*" => Media::Json,
             "text/csv" | "text/*" => Media::Csv,
+            columnar::MEDIA_TYPE => Media::Parquet,
             _ => continue,
         };
         let weight = parts
@@ -116,7 +119,10 @@ pub(super) fn accepted(headers: &HeaderMap) -> Result<Media, Problem> {
         }
     }
     best.map(|(_, media)| media).ok_or_else(|| {
-        let detail = format!("`{text}` is accepted; application/json and text/csv can be given");
+        let detail = format!(
+            "`{text}` is accepted; application/json, text/csv and {} can be given",
+            columnar::MEDIA_TYPE
+        );
         Problem::new(Code::NotAcceptable, detail)
     })
 }

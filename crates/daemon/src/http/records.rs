@@ -9,6 +9,7 @@ use axum::body::{Body, Bytes};
 use axum::extract::{Path, State};
 use axum::http::{HeaderMap, header};
 use axum::response::{IntoResponse, Response};
+use columnar::export_parquet;
 use journal::{Bucket, Record, export_csv, thin};
 use quantity::{HostTime, Span};
 use serde::Deserialize;
@@ -125,7 +126,8 @@ pub(super) struct Stretch {
     /// To this time since the start of the run; its end unless said.
     to_s: Option<f64>,
     /// Most points: each keeps the extremes of the readbacks in its stretch of time. 1000 unless
-    /// said. A CSV without `points`, `from_s` and `to_s` is the whole record, one row a readback.
+    /// said. A CSV without `points`, `from_s` and `to_s` is the whole record, one row a readback;
+    /// Parquet always is.
     points: Option<u32>,
 }
 
@@ -134,7 +136,11 @@ pub(super) struct Stretch {
     get, path = "/v1/records/{id}/readings", tag = "records",
     params(("id" = String, Path, description = "The record's id"), Stretch),
     responses(
-        (status = 200, content((ReadingsView = "application/json"), (String = "text/csv"))),
+        (status = 200, content(
+            (ReadingsView = "application/json"),
+            (String = "text/csv"),
+            (Vec<u8> = "application/vnd.apache.parquet"),
+        )),
         (status = 400, body = Problem),
         (status = 404, body = Problem),
         (status = 406, body = Problem),
@@ -148,8 +154,14 @@ pub(super) async fn readings(
 ) -> Result<Response, Problem> {
     let media = accepted(&headers)?;
     let whole = stretch.points.is_none() && stretch.from_s.is_none() && stretch.to_s.is_none();
-    if media == Media::Csv && whole {
-        return export(&app, &id).await;
+    match media {
+        Media::Csv if whole => return export(&app, &id, Table::Csv).await,
+        Media::Parquet if whole => return export(&app, &id, Table::Parquet).await,
+        Media::Parquet => {
+            let detail = "Parquet is given of the whole record: leave out points, from_s and to_s";
+            return Err(Problem::new(Code::QueryUnreadable, detail));
+        }
+        Media::Json | Media::Csv => {}
     }
     let working = Arc::clone(&app);
     let view = with_record(&app, &id, move |record, id| {
@@ -157,7 +169,7 @@ pub(super) async fn readings(
     })
     .await?;
     Ok(match media {
-        Media::Json => Json(view).into_response(),
+        Media::Json | Media::Parquet => Json(view).into_response(),
         Media::Csv => ([(header::CONTENT_TYPE, CSV)], csv_of(&view.curve)).into_response(),
     })
 }
@@ -284,8 +296,32 @@ fn csv_of(curve: &CurveView) -> String {
     text
 }
 
-/// The whole record as CSV, as fast as the client takes it.
-async fn export(app: &Arc<App>, id: &str) -> Result<Response, Problem> {
+/// The forms in which a whole record is given.
+#[derive(Debug, Clone, Copy)]
+enum Table {
+    Csv,
+    Parquet,
+}
+
+impl Table {
+    fn media_type(self) -> &'static str {
+        match self {
+            Self::Csv => CSV,
+            Self::Parquet => columnar::MEDIA_TYPE,
+        }
+    }
+
+    fn write(self, record: &Record, out: &mut Blocks) -> io::Result<()> {
+        match self {
+            Self::Csv => export_csv(record, out, |_| {}).map_err(io::Error::other)?,
+            Self::Parquet => export_parquet(record, &mut *out, |_| {}).map_err(io::Error::other)?,
+        };
+        out.flush()
+    }
+}
+
+/// The whole record as a table, as fast as the client takes it.
+async fn export(app: &Arc<App>, id: &str, table: Table) -> Result<Response, Problem> {
     let (record, permit) = open(app, id).await?;
     let (blocks, taken) = mpsc::channel(EXPORT_BLOCKS);
     let runtime = Handle::current();
@@ -296,16 +332,15 @@ async fn export(app: &Arc<App>, id: &str) -> Result<Response, Problem> {
             client: blocks.clone(),
             runtime,
         };
-        let written = export_csv(&record, &mut out, |_| {});
-        let flushed = written.map_err(io::Error::other).and_then(|_| out.flush());
-        if let Err(error) = flushed {
+        if let Err(error) = table.write(&record, &mut out) {
             tracing::warn!("an export was cut off: {error}");
             // The client sees a body that is cut off, not one that seems whole.
             let _ = blocks.try_send(Err(error));
         }
     });
     let stream = tokio_stream::wrappers::ReceiverStream::new(taken);
-    Ok(([(header::CONTENT_TYPE, CSV)], Body::from_stream(stream)).into_response())
+    let media_type = [(header::CONTENT_TYPE, table.media_type())];
+    Ok((media_type, Body::from_stream(stream)).into_response())
 }
 
 /// Hands an export over in blocks; waits for the client, but not for ever.

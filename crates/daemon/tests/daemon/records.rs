@@ -77,7 +77,7 @@ fn readings_are_thinned_with_their_extremes_kept() {
 }
 
 #[test]
-fn readings_come_as_csv_thinned_or_whole() {
+fn readings_come_as_csv_thinned_or_whole_and_as_parquet() {
     let desk = Desk::open(50);
     let run = desk.start(SHORT);
     desk.wait_for_run(run.id, "the record", |run| run.sealed);
@@ -97,6 +97,17 @@ fn readings_come_as_csv_thinned_or_whole() {
         whole.text
     );
     assert!(whole.text.lines().count() > 50);
+    let parquet = [("Accept", columnar::MEDIA_TYPE)];
+    let url = format!("{}{path}", desk.url);
+    let mut answer = ureq::get(url)
+        .header("Accept", columnar::MEDIA_TYPE)
+        .call()
+        .unwrap();
+    assert_eq!(answer.headers()["content-type"], columnar::MEDIA_TYPE);
+    let table = answer.body_mut().read_to_vec().unwrap();
+    assert!(table.starts_with(b"PAR1") && table.ends_with(b"PAR1"));
+    let part = desk.ask("GET", &format!("{path}?points=5"), &parquet, None);
+    assert_eq!(part.code(), "query-unreadable");
     let html = [("Accept", "text/html")];
     assert_eq!(desk.ask("GET", &path, &html, None).code(), "not-acceptable");
 }

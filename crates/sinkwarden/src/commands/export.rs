@@ -1,14 +1,15 @@
-//! `export`: every readback as CSV.
+//! `export`: every readback as a table.
 
 use std::fs::File;
 use std::io::{self, BufWriter, Write};
 use std::path::Path;
 
 use anyhow::Result;
+use columnar::export_parquet;
 use journal::{JournalError, Record, export_csv};
 use serde_json::json;
 
-use crate::arguments::Export;
+use crate::arguments::{Export, TableKind};
 use crate::exit::{Exit, hinted};
 use crate::output::{Output, tell};
 use crate::print;
@@ -19,11 +20,10 @@ pub(super) fn carry_out(arguments: &Export, output: Output) -> Result<Exit> {
     let record = record_folder::open(&arguments.of)?;
     let Some(path) = &arguments.output else {
         // Here the table itself is the answer, whatever form is asked for.
-        write(&record, &mut BufWriter::new(io::stdout().lock()))?;
+        write(&record, arguments.kind, BufWriter::new(io::stdout()))?;
         return Ok(Exit::Done);
     };
-    let mut file = BufWriter::new(create(path)?);
-    let rows = write(&record, &mut file)?;
+    let rows = write(&record, arguments.kind, BufWriter::new(create(path)?))?;
     if output.is_json() {
         output.give(&json!({ "output": path, "rows": rows }), |_, _| Ok(()))?;
     } else {
@@ -45,9 +45,9 @@ fn create(path: &Path) -> Result<File> {
     })
 }
 
-fn write(record: &Record, target: &mut dyn Write) -> Result<u64> {
+fn write(record: &Record, kind: TableKind, mut target: impl Write + Send) -> Result<u64> {
     let mut progress = Progress::open_ended();
-    let exported = export_csv(record, target, |done| {
+    let shown = |done: journal::Progress| {
         let text = format!(
             "segment {} of {}, {} readbacks",
             done.segments_done,
@@ -55,16 +55,20 @@ fn write(record: &Record, target: &mut dyn Write) -> Result<u64> {
             print::count(done.rows)
         );
         progress.at(done.segments_done, text);
-    });
+    };
+    let exported = match kind {
+        TableKind::Csv => export_csv(record, &mut target, shown).map_err(|error| {
+            // Told apart, so that a reader who has had enough is no error.
+            if let JournalError::Export(error) = error {
+                anyhow::Error::from(error)
+            } else {
+                error.into()
+            }
+        }),
+        TableKind::Parquet => export_parquet(record, &mut target, shown).map_err(Into::into),
+    };
     progress.finish();
-    let rows = exported.map_err(|error| {
-        // Told apart, so that a reader who has had enough is no error.
-        if let JournalError::Export(error) = error {
-            anyhow::Error::from(error)
-        } else {
-            error.into()
-        }
-    })?;
+    let rows = exported?;
     target.flush()?;
     Ok(rows)
 }

@@ -36,6 +36,11 @@ fn a_record_is_intact_replays_and_exports_a_row_a_readback() {
         fs::read_to_string(desk.path("out.csv")).unwrap(),
         export.stdout
     );
+    let table = ["export", "kept", "--as", "parquet", "--output", "out.parquet"];
+    let told = desk.run(&table).with_code(0).stderr;
+    assert!(told.contains("readbacks in out.parquet"), "{told}");
+    let written = fs::read(desk.path("out.parquet")).unwrap();
+    assert!(written.starts_with(b"PAR1") && written.ends_with(b"PAR1"));
     desk.run(&["export", "kept", "--output", "out.csv"])
         .with_code(1);
 }

@@ -17,6 +17,7 @@ fn the_best_of_what_is_accepted_is_given() {
         best("text/csv;q=0.5, application/json;q=0.4"),
         Ok(Media::Csv)
     );
+    assert_eq!(best(columnar::MEDIA_TYPE), Ok(Media::Parquet));
     assert_eq!(best("text/html, */*;q=0.1"), Ok(Media::Json));
     assert_eq!(best("text/html"), Err(Code::NotAcceptable));
     assert_eq!(best("text/csv;q=0"), Err(Code::NotAcceptable));
