@@ -27,7 +27,7 @@ fn the_help_names_every_command_and_every_exit_code() {
           figures   Work out a record's figures, each with its uncertainty and method
           replay    Replay a record: the same readings must give the same orders, bit for bit
           verify    Verify that nothing in a record was altered since it was written
-          export    Export a record's readbacks as CSV, with units in the column names
+          export    Export a record's readbacks as CSV or Parquet, with units in the column names
 
         Options:
               --json     Answer with JSON on stdout instead of text

@@ -36,7 +36,14 @@ fn a_record_is_intact_replays_and_exports_a_row_a_readback() {
         fs::read_to_string(desk.path("out.csv")).unwrap(),
         export.stdout
     );
-    let table = ["export", "kept", "--as", "parquet", "--output", "out.parquet"];
+    let table = [
+        "export",
+        "kept",
+        "--as",
+        "parquet",
+        "--output",
+        "out.parquet",
+    ];
     let told = desk.run(&table).with_code(0).stderr;
     assert!(told.contains("readbacks in out.parquet"), "{told}");
     let written = fs::read(desk.path("out.parquet")).unwrap();
