@@ -15,6 +15,8 @@ fn the_help_names_every_command_and_every_exit_code() {
         Commands:
           bench     Print a bench file to start from: invented, simulated, ready to use
           schema    Print the JSON Schema of a sequence file, for an editor
+          envelope  Show what a sink can do: the largest current at each source voltage, and which limit
+                    binds
           check     Check a sequence against a sink, the device under test and the interlocks
           prove     Prove the firmware on a port: whether it keeps every guarantee of the line protocol
           rehearse  Rehearse a sequence in virtual time, against a simulated source
