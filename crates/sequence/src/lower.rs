@@ -69,6 +69,7 @@ pub(crate) fn lower(
         tick: facts.tick,
         queue: facts.queue,
         isolator: facts.isolator,
+        by_hand: false,
         correction: facts.correction,
     })
 }

@@ -56,6 +56,10 @@ pub struct Plan {
     /// The sink has an isolator relay, which must be closed before the first step.
     #[serde(default)]
     pub isolator: bool,
+    /// The run is driven by hand: its one step is set anew by commands, and whoever gives them
+    /// must go on doing so.
+    #[serde(default, skip_serializing_if = "std::ops::Not::not")]
+    pub by_hand: bool,
     /// Nominal from true values and back.
     pub correction: Correction,
 }

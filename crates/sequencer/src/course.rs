@@ -126,6 +126,11 @@ impl Course {
         self.stragglers.iter().any(|step| step.hold_end <= time)
     }
 
+    /// Goes on from a place in the program after what is queued.
+    pub(crate) fn go_on_from(&mut self, program: &Program, mut cursor: Cursor, start: SinkTime) {
+        self.ahead = program.walk(&mut cursor, start, &mut self.serials);
+    }
+
     /// Sets out from exactly this slot.
     pub(crate) fn set_out_from(&mut self, slot: Slot) {
         self.queue.clear();

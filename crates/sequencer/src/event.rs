@@ -4,7 +4,7 @@
 //! plan and the same events give the same outputs, bit for bit. All electrical values in events
 //! and orders are nominal, as on the wire; the sequencer converts with the plan's correction.
 
-use quantity::{HostTime, SinkTime, Span};
+use quantity::{Current, HostTime, SinkTime, Span};
 use serde::{Deserialize, Serialize};
 use wire::{Cause, Order, OrderId, Reading, ReasonRefused};
 
@@ -94,6 +94,14 @@ pub enum Command {
     Hold,
     /// Go on after a hold.
     Continue,
+    /// In a run by hand: hold this current from now on, but no longer than the interval unless
+    /// asked again. Nothing in any other run.
+    Setpoint {
+        /// The current, true.
+        setpoint: Current,
+        /// How long it holds without being asked for again.
+        interval: Span,
+    },
 }
 
 /// What the sequencer asks to be done.

@@ -15,7 +15,7 @@ mod check;
 use std::sync::Arc;
 
 use quantity::{SinkTime, Span};
-use sequence::plan::{LoopHead, Next, Op, OpIndex, Plan, PlanStep};
+use sequence::plan::{Action, LoopHead, Next, Op, OpIndex, Plan, PlanStep};
 
 use crate::orders::Limits;
 
@@ -72,6 +72,31 @@ impl Program {
 
     pub(crate) fn plan(&self) -> &Plan {
         &self.plan
+    }
+
+    /// Sets what the one step of a run by hand does from now on.
+    ///
+    /// # Errors
+    /// [`PlanError`] for a target or a time that a plan could not have; nothing is changed then.
+    pub(crate) fn set_by_hand(
+        &mut self,
+        limits: &Limits,
+        action: Action,
+        duration: Span,
+    ) -> Result<(), PlanError> {
+        let Some(Op::Step(step)) = self.op(0) else {
+            return Err(PlanError::NoStep);
+        };
+        let step = PlanStep {
+            action,
+            duration,
+            ..step.clone()
+        };
+        check_step(&self.plan, limits, 0, &step)?;
+        if let Some(place) = Arc::make_mut(&mut self.plan).ops.first_mut() {
+            *place = Op::Step(step);
+        }
+        Ok(())
     }
 
     /// The step at `op`; `None` if there is none there.

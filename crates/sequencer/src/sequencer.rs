@@ -1,6 +1,7 @@
 //! The run: one event in, any number of outputs out.
 
 mod burst;
+mod hand;
 mod pause;
 mod progress;
 mod queue;
@@ -76,6 +77,8 @@ pub struct Sequencer {
     /// Readback interval last ordered.
     pub(crate) readback: Span,
     pub(crate) bursts: burst::Bursts,
+    /// What the hand wants and the sink has not been told yet.
+    hand: Option<hand::Wanted>,
     /// A person or a script wants the run held: it is, or will be instead of beginning.
     pub(crate) held: bool,
     /// The sink has started anew while the link was gone.
@@ -113,6 +116,7 @@ impl Sequencer {
             begun_through: SinkTime::ZERO,
             late: 0,
             bursts: burst::Bursts::default(),
+            hand: None,
             held: false,
             rebooted: false,
             now: HostTime::MIN,
@@ -288,6 +292,7 @@ impl Sequencer {
             }
             Command::Hold => self.hold(),
             Command::Continue => self.ask_to_go_on(),
+            Command::Setpoint { setpoint, interval } => self.set_by_hand(*setpoint, *interval),
         }
     }
 

@@ -170,6 +170,10 @@ impl Sequencer {
             Phase::Waiting | Phase::Preparation(_) => {
                 self.program.at_most_from(0, &[], SinkTime::ZERO)
             }
+            Phase::Progress if self.plan().by_hand => {
+                let last = self.course.last_ordered()?;
+                Some(last.slot.end.saturating_since(self.latest))
+            }
             Phase::Progress | Phase::Pause(_) | Phase::Interruption { .. } => {
                 let step = self.course.steps().next()?;
                 let slot = &step.slot;

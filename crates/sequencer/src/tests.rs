@@ -10,6 +10,11 @@ mod course;
     clippy::needless_raw_string_hashes,
     reason = "the form in which expect-test writes its texts"
 )]
+mod hand;
+#[expect(
+    clippy::needless_raw_string_hashes,
+    reason = "the form in which expect-test writes its texts"
+)]
 mod interlock;
 #[expect(
     clippy::needless_raw_string_hashes,

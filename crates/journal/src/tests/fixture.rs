@@ -112,6 +112,7 @@ pub(crate) fn plan() -> Plan {
         tick: Span::from_millis(1),
         queue: 16,
         isolator: false,
+        by_hand: false,
         correction: Correction {
             current_read: Curve::line(2_000, -30_000_000).expect("a gain error of 3 %"),
             ..Correction::IDENTITY

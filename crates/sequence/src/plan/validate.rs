@@ -63,6 +63,9 @@ impl Plan {
         if self.queue == 0 {
             return wrong("queue", "a queue that holds nothing");
         }
+        if self.by_hand && !matches!(self.ops[..], [Op::Step(_)]) {
+            return wrong("ops", "a run by hand has one step and nothing else");
+        }
         if self.dut.voltage_min >= self.dut.voltage_max {
             return wrong("dut", "the least voltage is not below the largest");
         }

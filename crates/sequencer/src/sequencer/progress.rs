@@ -26,6 +26,7 @@ impl Sequencer {
             self.finish_if_over(seen.time);
         }
         if self.phase == Phase::Progress {
+            self.follow_the_hand();
             self.fill();
             self.keep_readback();
         }
@@ -267,6 +268,11 @@ impl Sequencer {
         }
         self.off();
         self.end_running(end);
-        self.end(Ending::Finished);
+        self.end(if self.plan().by_hand {
+            // Nobody asked for the setpoint again in time.
+            Ending::Stopped
+        } else {
+            Ending::Finished
+        });
     }
 }

@@ -203,6 +203,7 @@ impl Sequencer {
         self.late = 0;
         self.begun_through = self.begun_through.max(queued.step.slot.start);
         if self.phase == Phase::Progress {
+            self.follow_the_hand();
             self.fill();
             self.keep_readback();
         }

@@ -69,6 +69,7 @@ pub(super) fn plan(ops: Vec<Op>) -> Plan {
         tick: millis(1),
         queue: 16,
         isolator: false,
+        by_hand: false,
         correction: Correction::IDENTITY,
     }
 }
