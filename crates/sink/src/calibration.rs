@@ -13,7 +13,10 @@
 //! drives no sink.
 
 mod channel;
+mod drift;
 mod meter;
+mod settling;
+mod table;
 mod verify;
 
 use quantity::{Current, Temperature, TemperatureCoefficient, Text, Textual, Voltage};
@@ -23,11 +26,15 @@ use crate::correction::{Correction, Curve, CurveError};
 use crate::regression::RegressionError;
 
 pub use channel::{Channel, ChannelSummary, CurvatureSummary, SecondOrder};
+pub use drift::{Drift, DriftError, drift};
 pub use meter::ReferenceMeter;
+pub use settling::{Unsettled, settled};
+pub use table::{Table, TableError};
 pub use verify::{Verification, VerificationPoint, verify};
 
-/// Fewest points of a channel: below it the residuals say nothing.
-pub const POINTS_MIN: usize = 5;
+/// Fewest points of a channel: two make a line, on the stated word of the meters alone. It takes
+/// a third before anything shows a wrong point, and a fourth before anything shows a bend.
+pub const POINTS_MIN: usize = 2;
 /// The version of the certificate's form.
 pub const FORM: u32 = 1;
 
@@ -70,6 +77,9 @@ pub struct Measurements {
     pub current_meter: ReferenceMeter<Current>,
     /// The meter that measured the voltage.
     pub voltage_meter: ReferenceMeter<Voltage>,
+    /// The record of the run in which the points were taken, if there is one.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub record: Option<String>,
     /// The current points.
     pub current_points: Vec<CurrentPoint>,
     /// The voltage points.
@@ -132,7 +142,10 @@ pub struct Channels {
 #[derive(Debug, Clone, PartialEq, thiserror::Error)]
 pub enum CalibrationError {
     /// Fewer points than a line and its residuals need.
-    #[error("{channel}: {points} points; take at least {POINTS_MIN}, spread over the range")]
+    #[error(
+        "{channel}: {points} points; two make a line, and five or more, spread over the range, \
+         show whether it is one"
+    )]
     TooFewPoints {
         /// Which line.
         channel: &'static str,

@@ -131,7 +131,9 @@ impl Form {
 /// that are no numbers.
 pub fn fit(points: &[Point], form: Form, weights: Weights) -> Result<Fit, RegressionError> {
     let parameters = form.parameters();
-    if points.len() <= parameters {
+    // Known uncertainties need no residual to tell them.
+    let exact = points.len() == parameters && weights == Weights::Known;
+    if points.len() <= parameters && !exact {
         return Err(RegressionError::TooFewPoints {
             points: points.len(),
             parameters,
@@ -181,7 +183,11 @@ pub fn fit(points: &[Point], form: Form, weights: Weights) -> Result<Fit, Regres
         .map(|(point, residual)| (residual * root(point)).powi(2))
         .collect::<Sum>()
         .value();
-    let spread = result.chi_square / count(result.freedom);
+    let spread = if exact {
+        1.0
+    } else {
+        result.chi_square / count(result.freedom)
+    };
     result.covariance *= match weights {
         Weights::Equal | Weights::Relative => spread,
         Weights::Known => spread.max(1.0),
@@ -321,7 +327,8 @@ impl Fit {
         (self.chi_square / count(self.freedom)).sqrt()
     }
 
-    /// Points less parameters.
+    /// Points less parameters; 0 where the points determine the function and nothing is left to
+    /// tell their spread.
     pub fn degrees_of_freedom(&self) -> DegreesOfFreedom {
         DegreesOfFreedom::finite(count(self.freedom))
     }

@@ -90,6 +90,7 @@ pub(crate) fn certificate(errors: &Errors, meter_errors: MeterErrors, seed: u64)
             Voltage::from_millivolts(10_000),
             Voltage::from_microvolts(100),
         ),
+        record: None,
         current_points,
         voltage_points,
     })

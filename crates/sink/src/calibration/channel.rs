@@ -37,6 +37,10 @@ pub struct Channel {
     /// Stated accuracy of the meter: constant part and part of the reading.
     meter: (f64, f64),
     step: f64,
+    /// Standard deviation of one nominal reading and what it was told by.
+    repeatability: (f64, DegreesOfFreedom),
+    /// Degrees of freedom of the fit's covariance.
+    freedom: DegreesOfFreedom,
     /// Relative change with the sense resistor's temperature, half-width.
     drift: f64,
 }
@@ -128,10 +132,12 @@ impl Channel {
             return Err(CalibrationError::NoResolution { channel: name });
         }
         let resolution = of_resolution(step).hypot(meter.resolution_uncertainty());
+        let nominal = pooled_deviation(readings.iter().map(|(nominal, _)| *nominal));
+        let reference = pooled_deviation(readings.iter().map(|(_, reference)| *reference));
         let repeatability = Repeatability {
             resolution,
-            nominal: pooled_deviation(readings.iter().map(|(nominal, _)| *nominal)),
-            reference: pooled_deviation(readings.iter().map(|(_, reference)| *reference)),
+            nominal: nominal.0,
+            reference: reference.0,
         };
         let points = readings
             .iter()
@@ -152,6 +158,12 @@ impl Channel {
         let curve = fit(&points, Form::Polynomial(2), Weights::Known).ok();
         let second_order = SecondOrder::of(&line, curve.as_ref(), range);
         let fit = curve.filter(|_| second_order.demanded).unwrap_or(line);
+        // Where the points leave no residual, the fit is as well known as their own spread is.
+        let freedom = if fit.degrees_of_freedom().number() > 0.0 {
+            fit.degrees_of_freedom()
+        } else {
+            DegreesOfFreedom::finite(nominal.1.number().min(reference.1.number()))
+        };
         Ok(Self {
             name,
             fit,
@@ -163,6 +175,8 @@ impl Channel {
                 meter.accuracy(1e6) - meter.accuracy(0.0),
             ),
             step,
+            repeatability: nominal,
+            freedom,
             drift,
         })
     }
@@ -221,7 +235,7 @@ impl Channel {
                     correlations: [at(0, 2) / (u_offset * u), at(1, 2) / (u_slope * u)],
                 }
             }),
-            degrees_of_freedom: self.fit.degrees_of_freedom(),
+            degrees_of_freedom: self.freedom,
             residuals_micro: residuals,
             outliers,
             range_micro: [self.range.0, self.range.1],
@@ -245,7 +259,7 @@ impl Channel {
                 },
                 Evaluation::TypeA,
                 predicted.standard_uncertainty,
-                predicted.degrees_of_freedom,
+                self.freedom,
             ),
             stated(
                 "reference meter",
@@ -253,6 +267,14 @@ impl Channel {
             ),
             stated("converter's resolution", of_resolution(self.step)),
         ];
+        if self.repeatability.0 > 0.0 {
+            lines.push(Contribution::new(
+                "repeatability of one reading",
+                Evaluation::TypeA,
+                self.repeatability.0,
+                self.repeatability.1,
+            ));
+        }
         if self.drift > 0.0 {
             lines.push(stated(
                 "sense resistor's temperature",
@@ -276,6 +298,11 @@ impl Channel {
             .map(|end| self.fit.slope(end).standard_uncertainty)
             .into_iter()
             .fold(0.0, f64::max)
+    }
+
+    /// Smallest and largest nominal value of the points, micro-units.
+    pub const fn range(&self) -> (f64, f64) {
+        self.range
     }
 
     /// Whether a nominal value lies within the calibrated range.
@@ -330,13 +357,13 @@ struct Repeatability {
 }
 
 /// The standard deviation of one reading, pooled over the points (JCGM 100
-/// 4.2.4); 0 if no point has two readings.
+/// 4.2.4), and its degrees of freedom; 0 and exactly known if no point has two readings.
 ///
 /// Pooled, because weights from the few readings of each point would be so
 /// uncertain themselves that the fit's intervals covered too little.
 fn pooled_deviation<'a, T: Textual + Quantity + 'a>(
     points: impl Iterator<Item = &'a [Text<T>]>,
-) -> f64 {
+) -> (f64, DegreesOfFreedom) {
     let (squares, freedom) = points
         .map(moments)
         .fold((0.0, 0.0), |(squares, freedom), point| {
@@ -349,9 +376,10 @@ fn pooled_deviation<'a, T: Textual + Quantity + 'a>(
             }
         });
     if freedom > 0.0 {
-        f64::sqrt(squares / freedom)
+        let deviation = f64::sqrt(squares / freedom);
+        (deviation, DegreesOfFreedom::finite(freedom))
     } else {
-        0.0
+        (0.0, DegreesOfFreedom::INFINITE)
     }
 }
 

@@ -5,7 +5,7 @@ use quantity::{Current, Quantity, Ratio, Temperature, TemperatureCoefficient, Te
 
 use super::{
     CalibrationError, Certificate, CertificateError, CurrentPoint, Measurements, ReferenceMeter,
-    Validity, VerificationPoint, VoltagePoint, calibrate, micro, verify,
+    Validity, VerificationPoint, VoltagePoint, calibrate, drift, micro, verify,
 };
 use crate::montecarlo::Random;
 use crate::uncertainty::{Stated, coverage_factor};
@@ -77,6 +77,7 @@ fn measurements(bend: f64, noise: f64, seed: u64) -> Measurements {
             Voltage::from_millivolts(10_000),
             Voltage::from_microvolts(100),
         ),
+        record: None,
         current_points,
         voltage_points,
     }
@@ -191,8 +192,9 @@ fn a_budget_names_what_contributes() {
         fit (offset and slope, correlated)  A        9.9568e1     1.0000e0     9.9568e1      10.0
         reference meter                     B        6.7031e2     1.0000e0     6.7031e2  infinite
         converter's resolution              B        2.3267e2     1.0000e0     2.3267e2  infinite
+        repeatability of one reading        A        2.4404e2     1.0000e0     2.4404e2      36.0
         sense resistor's temperature        B        1.1674e3     1.0000e0     1.1674e3  infinite
-        combined                                                               1.3698e3  358185.6"]]
+        combined                                                               1.3913e3   34585.4"]]
     .assert_eq(&budget.to_string());
     // 20 K at 50 ppm/K of 2.022 A, rectangular.
     let drift = budget
@@ -296,7 +298,7 @@ fn what_gives_no_certificate_is_refused_with_the_reason() {
         calibrate(inputs).unwrap_err().to_string()
     };
     let messages = [
-        refused(|inputs| inputs.current_points.truncate(4)),
+        refused(|inputs| inputs.current_points.truncate(1)),
         refused(|inputs| inputs.voltage_points[2].readback.clear()),
         refused(|inputs| inputs.current_meter.range = Current::from_milliamperes(1_000)),
         refused(|inputs| inputs.temperature_spread_k = f64::NAN),
@@ -314,7 +316,7 @@ fn what_gives_no_certificate_is_refused_with_the_reason() {
         }),
     ];
     expect![[r"
-        current set: 4 points; take at least 5, spread over the range
+        current set: 1 points; two make a line, and five or more, spread over the range, show whether it is one
         voltage read: point 3 has no reading; measure it or leave it out
         current set: point 5 reads 1.2135 A, above the meter's range of 1 A; use a higher range
         temperature_spread_k is not a finite number of zero or more; correct it
@@ -357,4 +359,55 @@ fn a_verification_tells_a_sound_sink_from_a_drifted_one() {
     let expected = 1.959_964 * accuracy.hypot(10.0 / 12_f64.sqrt());
     assert!((verdicts[1].reference_expanded_micro - expected).abs() < 0.1);
     assert!(drifted.nominal.0.base_units() > 0);
+}
+
+#[test]
+fn two_points_make_a_line_on_the_stated_word_of_the_meter_alone() {
+    let mut inputs = measurements(0.0, 0.0, 8);
+    inputs.current_points = vec![
+        inputs.current_points[0].clone(),
+        inputs.current_points[11].clone(),
+    ];
+    let certificate = calibrate(inputs).unwrap();
+    let set = &certificate.current_set;
+    assert!((set.slope - 0.97).abs() < 1e-6 && (set.offset_micro - 1_000.0).abs() < 2.0);
+    // Both resolutions at both ends: by hand, u(slope) = sqrt(2) u / (3 A - 0.25 A).
+    let u = (806.0_f64 / 12_f64.sqrt()).hypot(10.0 / 12_f64.sqrt());
+    let by_hand = u * 2_f64.sqrt() / 2.75e6;
+    assert!((set.slope_uncertainty / by_hand - 1.0).abs() < 1e-6);
+    assert!(!set.second_order.demanded);
+    let json = certificate.to_json().unwrap();
+    assert_eq!(Certificate::from_json(&json).unwrap(), certificate);
+}
+
+#[test]
+fn what_has_changed_between_two_certificates_is_put_against_their_uncertainties() {
+    let first = calibrate(measurements(0.0, 300.0, 9)).unwrap();
+    let again = calibrate(measurements(0.0, 300.0, 10)).unwrap();
+    let same = drift(&first, &again).unwrap();
+    assert_eq!(same.len(), 3);
+    assert!(same.iter().all(|drift| !drift.significant), "{same:?}");
+    // The sense resistor has aged: 2 % more current flows at each setpoint, 60 mA at 3 A.
+    let mut aged = measurements(0.0, 300.0, 11);
+    for point in &mut aged.current_points {
+        for reading in &mut point.reference {
+            *reading = current(reading.0.amperes() * 1.02e6);
+        }
+    }
+    aged.current_meter.range = Current::from_milliamperes(4_000);
+    let changes = drift(&first, &calibrate(aged).unwrap()).unwrap();
+    let set = changes
+        .iter()
+        .find(|drift| drift.channel == "current set")
+        .unwrap();
+    assert!(set.significant && set.normalised_change > 5.0, "{set:?}");
+    assert!((set.change_micro - 58_220.0).abs() < 2_000.0, "{set:?}");
+    let other = Certificate {
+        measurements: Measurements {
+            sink: "right".to_owned(),
+            ..first.measurements.clone()
+        },
+        ..first.clone()
+    };
+    assert!(drift(&first, &other).is_err());
 }

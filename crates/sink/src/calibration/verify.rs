@@ -81,7 +81,7 @@ fn stated(name: &str, u: f64) -> Contribution {
 
 /// The expanded uncertainty; without a coverage factor (fewer than one degree
 /// of freedom) it is infinite, and nothing is disproved by it.
-fn expanded(budget: &Budget) -> Result<f64, BudgetError> {
+pub(super) fn expanded(budget: &Budget) -> Result<f64, BudgetError> {
     let combined = budget.combined()?;
     Ok(combined
         .expanded(PROBABILITY)
