@@ -5,6 +5,9 @@ use std::sync::Arc;
 use tokio::sync::{Semaphore, watch};
 use transport::port::HostClock;
 
+use crate::by_hand::Hands;
+use crate::calibrating::Calibrations;
+use crate::certificates::Certificates;
 use crate::config::Tokens;
 use crate::context::Context;
 use crate::keys::Keys;
@@ -34,6 +37,12 @@ pub(crate) struct App {
     pub(crate) records: Records,
     /// The idempotency keys.
     pub(crate) keys: Keys,
+    /// What was asked for when each sink's latest run by hand began.
+    pub(crate) hands: Hands,
+    /// Calibrations under way.
+    pub(crate) calibrations: Calibrations,
+    /// The certificates beside the bench file.
+    pub(crate) certificates: Certificates,
     /// What all share.
     pub(crate) context: Arc<Context>,
     /// The host's clock.

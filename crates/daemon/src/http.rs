@@ -6,9 +6,11 @@
 //!
 //! What it deliberately does not do: touch a sink. It asks workers, and shows what they show.
 
+mod calibrations;
 mod events;
 mod extract;
 mod guard;
+mod hand;
 mod openapi;
 mod page;
 mod problem;
@@ -24,6 +26,8 @@ use std::sync::Arc;
 use axum::Router;
 use axum::http::Uri;
 use axum::middleware;
+
+pub(crate) use problem::aside;
 
 use crate::app::App;
 use crate::view::{Code, Problem};

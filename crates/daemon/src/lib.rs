@@ -18,7 +18,10 @@
 //! compute a figure from its own memory.
 
 mod app;
+mod by_hand;
+mod calibrating;
 mod calibration;
+mod certificates;
 mod config;
 mod context;
 mod error;
@@ -39,6 +42,7 @@ mod supervise;
 pub mod view;
 mod worker;
 
+pub use certificates::{Certificates, CertificatesError};
 pub use config::{Config, Scope, Tokens, TokensError};
 pub use error::DaemonError;
 pub use supervise::{Daemon, host_name, serve};

@@ -4,10 +4,11 @@ use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, AtomicI64, Ordering};
 use std::time::Duration;
 
-use quantity::HostTime;
+use quantity::{HostTime, Span};
 use sequence::Facts;
 use serde_json::Value;
 use sink::bench::SinkEntry;
+use sink::calibration::{Certificate, Validity};
 use sink::correction::Correction;
 use tokio::sync::{oneshot, watch};
 use tokio::time::timeout;
@@ -29,6 +30,8 @@ pub(crate) struct SinkHandle {
     pub(crate) correction: Correction,
     /// Its certificate, for the record.
     pub(crate) certificate: Option<Value>,
+    /// The same.
+    pub(crate) certified: Option<Arc<Certificate>>,
     /// The way to its worker.
     pub(crate) commands: Commands<Ask>,
     /// What its worker shows.
@@ -73,6 +76,17 @@ impl SinkHandle {
             Some(description) => with_own_words(facts, &description),
             None => facts,
         }
+    }
+
+    /// How long its certificate still holds, zero if it does not; `None` without one.
+    pub(crate) fn certificate_valid_for(&self) -> Option<Span> {
+        let certificate = self.certified.as_ref()?;
+        let now = self.now().micros().div_euclid(1_000_000);
+        let left = match certificate.validity(now) {
+            Validity::Valid => certificate.measurements.valid_until_unix_s - now,
+            Validity::NotYet | Validity::Expired => 0,
+        };
+        Some(Span::from_secs(u64::try_from(left).unwrap_or(0)))
     }
 
     /// Waits until a session stands, but no longer than that.

@@ -16,10 +16,11 @@ use tokio::sync::oneshot;
 use uuid::Uuid;
 
 use crate::app::App;
+use crate::by_hand;
 use crate::records::folder_name;
 use crate::sinks::SinkHandle;
-use crate::view::{Code, Problem, RunView, SequenceRequest, rfc3339};
-use crate::worker::{Answer, Ask, Begin};
+use crate::view::{Code, HandRequest, Problem, RunView, SequenceRequest, rfc3339};
+use crate::worker::{Answer, Ask, Begin, Reservation};
 
 /// Compiles a sequence for a sink as it is now.
 ///
@@ -32,9 +33,7 @@ pub(crate) fn check(
 ) -> Result<Compiled, Problem> {
     let options = sequence::Options {
         dut_label: request.dut.clone(),
-        correction: sink.correction,
-        disk_free_bytes: free_bytes(app),
-        ..sequence::Options::default()
+        ..options(app, sink)
     };
     compile_with(&request.sequence.0, &sink.facts(), &request.files, &options).map_err(|refused| {
         let (errors, warnings) = refused.0.count();
@@ -44,6 +43,16 @@ pub(crate) fn check(
         );
         Problem::new(Code::SequenceRefused, detail).with_findings(refused.0.list)
     })
+}
+
+/// What the compiler must know beside the sequence and the sink.
+pub(crate) fn options(app: &App, sink: &SinkHandle) -> sequence::Options {
+    sequence::Options {
+        correction: sink.correction,
+        certificate_valid_for: sink.certificate_valid_for(),
+        disk_free_bytes: free_bytes(app),
+        ..sequence::Options::default()
+    }
 }
 
 /// Free space for records; `None` where the platform cannot say.
@@ -82,12 +91,49 @@ pub(crate) fn start(
     request: &SequenceRequest,
     id: Uuid,
 ) -> Result<oneshot::Receiver<Result<RunView, String>>, Problem> {
-    let name = sink.name();
-    let Some(reservation) = sink.reserve() else {
-        let detail = format!("a run is in progress on sink `{name}`; stop it, or wait for its end");
-        return Err(Problem::new(Code::SinkBusy, detail));
-    };
+    let reservation = reserve(sink)?;
     let compiled = check(app, sink, request)?;
+    let text = journal::SequenceText {
+        text: request.sequence.0.clone(),
+        files: request.files.clone(),
+    };
+    launch(app, sink, reservation, compiled, text, id)
+}
+
+/// Starts a run by hand under an id, as [`start`] does.
+///
+/// # Errors
+/// As [`start`].
+pub(crate) fn start_by_hand(
+    app: &App,
+    sink: &SinkHandle,
+    request: &HandRequest,
+    id: Uuid,
+) -> Result<oneshot::Receiver<Result<RunView, String>>, Problem> {
+    let reservation = reserve(sink)?;
+    let (compiled, text) = by_hand::check(app, sink, request, request.setpoint.0)?;
+    let files = std::collections::BTreeMap::new();
+    let text = journal::SequenceText { text, files };
+    launch(app, sink, reservation, compiled, text, id)
+}
+
+fn reserve(sink: &SinkHandle) -> Result<Reservation, Problem> {
+    sink.reserve().ok_or_else(|| {
+        let name = sink.name();
+        let detail = format!("a run is in progress on sink `{name}`; stop it, or wait for its end");
+        Problem::new(Code::SinkBusy, detail)
+    })
+}
+
+fn launch(
+    app: &App,
+    sink: &SinkHandle,
+    reservation: Reservation,
+    compiled: Compiled,
+    text: journal::SequenceText,
+    id: Uuid,
+) -> Result<oneshot::Receiver<Result<RunView, String>>, Problem> {
+    let name = sink.name();
     let plan = Arc::new(compiled.plan);
     let sequencer = Sequencer::new(Arc::clone(&plan)).map_err(|error| {
         Problem::new(
@@ -96,7 +142,7 @@ pub(crate) fn start(
         )
     })?;
     let folder = folder_name(app.clock.now(), name, &plan.dut.label, id);
-    let manifest = manifest(app, sink, request, &plan, id);
+    let manifest = manifest(app, sink, text, &plan, id);
     let path = app.records.path(&folder);
     let writer =
         Writer::create(&path, manifest, Options::default()).map_err(|error| not_begun(&error))?;
@@ -147,7 +193,7 @@ fn with_warnings(
 fn manifest(
     app: &App,
     sink: &SinkHandle,
-    request: &SequenceRequest,
+    sequence: journal::SequenceText,
     plan: &sequence::plan::Plan,
     id: Uuid,
 ) -> Manifest {
@@ -165,10 +211,7 @@ fn manifest(
         sink: sink.name().to_owned(),
         clock,
         bench: serde_json::to_value(&sink.entry).unwrap_or_default(),
-        sequence: journal::SequenceText {
-            text: request.sequence.0.clone(),
-            files: request.files.clone(),
-        },
+        sequence,
         plan: plan.clone(),
         certificate: sink.certificate.clone(),
         description: sink.snapshot.borrow().description,

@@ -22,7 +22,10 @@ use tokio::sync::watch;
 use transport::port::HostClock;
 
 use crate::app::{App, Bounds};
-use crate::calibration;
+use crate::by_hand::Hands;
+use crate::calibrating::Calibrations;
+use crate::calibration::{self, Calibration};
+use crate::certificates::Certificates;
 use crate::config::Config;
 use crate::context::Context;
 use crate::error::DaemonError;
@@ -121,6 +124,9 @@ impl Daemon {
             sinks,
             records,
             keys,
+            hands: Hands::default(),
+            calibrations: Calibrations::default(),
+            certificates: Certificates::beside(&config.bench_path),
             context,
             clock,
             tokens: config.tokens,
@@ -235,7 +241,11 @@ fn start_sink(
     resumption: Option<Resumption>,
     tripped_by: Option<Interlock>,
 ) -> Result<(SinkHandle, JoinHandle<()>), DaemonError> {
-    let (correction, certificate) = calibration::load(entry, &config.bench_path)?;
+    let Calibration {
+        correction,
+        value: certificate,
+        certificate: certified,
+    } = calibration::load(entry, &config.bench_path)?;
     // Leads in no table are told by the check of every sequence.
     let leads = two_wire_resistance(entry).unwrap_or_default();
     let correction = correction.with_leads(leads);
@@ -257,6 +267,7 @@ fn start_sink(
         entry: entry.clone(),
         correction,
         certificate,
+        certified,
         commands: link.commands.clone(),
         snapshot,
         reserved,

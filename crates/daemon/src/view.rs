@@ -6,7 +6,9 @@
 //! What it deliberately does not do: name a field two ways. The command line, the page and the
 //! OpenAPI document all use these types.
 
+mod calibration;
 mod event;
+mod hand;
 mod margin;
 mod problem;
 mod reading;
@@ -15,7 +17,12 @@ mod run;
 mod sequence;
 mod sink;
 
+pub use calibration::{
+    CalibrationOutcome, CalibrationRequest, CalibrationState, CalibrationView, CertificateList,
+    CertificateSummary, LineView, MeterReading, NominalView, VerificationView, VerifiedPoint,
+};
 pub use event::{Event, EventBody, GoneEvent, LinkEvent, RunEvent, RunNews};
+pub use hand::{HandRequest, SetpointRequest};
 pub use margin::MarginView;
 pub use problem::{Code, Problem};
 pub use reading::{ReadingView, StateWord};
@@ -23,7 +30,8 @@ pub use record::{
     DamageView, FiguresView, ReadingsView, RecordList, RecordSummary, RecordView, VerifyView,
 };
 pub use run::{
-    ClockWord, CrossingView, EndingView, EndingWord, LoopView, RunList, RunState, RunView, StepView,
+    ClockWord, CrossingView, EndingView, EndingWord, HandView, LoopView, RunList, RunState,
+    RunView, StepView,
 };
 pub use sequence::{
     CheckView, CurveView, ForecastView, OutlineView, RehearsalView, RehearseRequest,

@@ -13,6 +13,7 @@
 //! What it deliberately does not do: decide anything about a run. That is the keeper's.
 
 mod finish;
+mod hand;
 mod link;
 mod publish;
 mod record;
@@ -21,7 +22,7 @@ use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, AtomicI64, Ordering};
 
 use journal::{Body, Entry, Note, Writer};
-use quantity::{HostTime, Span};
+use quantity::{Current, HostTime, Span};
 use run::keeper::{Effect, Keeper};
 use sequence::plan::Plan;
 use sequencer::Sequencer;
@@ -37,6 +38,7 @@ use crate::metrics::SinkMetrics;
 use crate::view::{LinkState, RunView};
 
 pub(crate) use finish::ended;
+pub(crate) use hand::Readbacks;
 pub(crate) use link::{LinkParts, open};
 pub(crate) use publish::{Face, RunFacts, Snapshot, ending_text, ending_view};
 
@@ -67,6 +69,24 @@ pub(crate) enum Ask {
         command: Command,
         /// The run after it, or `None` if this run is not in progress.
         answer: Answer<Option<RunView>>,
+    },
+    /// A setpoint for the run by hand in progress, or the same again.
+    Setpoint {
+        /// Which run is meant.
+        id: Uuid,
+        /// The true current; `None`: as before.
+        setpoint: Option<Current>,
+        /// For how long; `None`: as before.
+        interval: Option<Span>,
+        /// The run after it, or `None` if this run is not in progress.
+        answer: Answer<Option<RunView>>,
+    },
+    /// What has been read back since the setpoint of the run by hand was last changed.
+    Readbacks {
+        /// Which run is meant.
+        id: Uuid,
+        /// The readbacks, or `None` if this run is not in progress.
+        answer: Answer<Option<Readbacks>>,
     },
     /// Clear the latch.
     Reset(Answer<Result<(), NotReset>>),
@@ -274,6 +294,16 @@ impl Worker {
                 command,
                 answer,
             } => self.command(id, command, answer, now),
+            Ask::Setpoint {
+                id,
+                setpoint,
+                interval,
+                answer,
+            } => self.set_by_hand(id, setpoint, interval, answer, now),
+            Ask::Readbacks { id, answer } => {
+                // Whoever asked may be gone.
+                let _ = answer.send(self.readbacks(id));
+            }
             Ask::Reset(answer) => self.reset(answer, now),
             Ask::Journal => self.journal_news(now),
             Ask::End => {

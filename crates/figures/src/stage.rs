@@ -1,11 +1,13 @@
 //! The steps of a run as they were carried out, from the findings in its record.
 
+use std::borrow::Cow;
 use std::collections::BTreeMap;
 
 use journal::{Body, Entry};
-use quantity::{SinkTime, Span, Voltage};
+use quantity::{Current, SinkTime, Span, Voltage};
 use sequence::plan::{Action, Condition, Op, Plan, PlanStep};
-use sequencer::event::{Finding, StepEnd};
+use sequencer::event::{Finding, Happening, StepEnd};
+use wire::{Mode, Order, OrderId};
 
 /// Of a label that is carried out more often than this, only the first have figures of their own.
 pub(crate) const EACH_MAX: u32 = 100;
@@ -13,8 +15,8 @@ pub(crate) const EACH_MAX: u32 = 100;
 /// One step as it was carried out.
 #[derive(Debug, Clone)]
 pub(crate) struct Stage<'a> {
-    /// The step of the plan.
-    pub(crate) step: &'a PlanStep,
+    /// The step of the plan; in a run by hand, with what was set.
+    pub(crate) step: Cow<'a, PlanStep>,
     /// Its label.
     pub(crate) label: Option<&'a str>,
     /// Which of the steps with this label it is, from 1; `None` if it is the only one.
@@ -83,16 +85,38 @@ impl Stage<'_> {
 /// The stages in the order of time. The last one runs to `last` if the record breaks off in it.
 pub(crate) fn stages<'a>(plan: &'a Plan, others: &[Entry], last: SinkTime) -> Vec<Stage<'a>> {
     let mut stages: Vec<Stage<'a>> = Vec::new();
+    let mut hand = Hand::default();
     for entry in others {
+        if plan.by_hand {
+            hand.take(&entry.body);
+        }
         let Body::Finding(finding) = &entry.body else {
             continue;
         };
         if let Finding::StepBegan { op, time } = finding
             && let Some(step) = step_at(plan, *op)
         {
+            let set = hand.set_at(plan, *time);
+            // The same setpoint asked for again goes on with the same stage.
+            if let (Some(action), Some(before)) = (set, stages.last_mut())
+                && before.step.action == action
+                && time.saturating_since(before.end) <= plan.tick
+            {
+                before.end = last;
+                before.ended_by = None;
+                continue;
+            }
+            let label = label_of(plan, step);
+            let step = match set {
+                Some(action) => Cow::Owned(PlanStep {
+                    action,
+                    ..step.clone()
+                }),
+                None => Cow::Borrowed(step),
+            };
             stages.push(Stage {
                 step,
-                label: label_of(plan, step),
+                label,
                 occurrence: None,
                 begin: *time,
                 end: last,
@@ -108,6 +132,49 @@ pub(crate) fn stages<'a>(plan: &'a Plan, others: &[Entry], last: SinkTime) -> Ve
     }
     count_occurrences(&mut stages);
     stages
+}
+
+/// What a run by hand has ordered, and when it began.
+#[derive(Debug, Default)]
+struct Hand {
+    ordered: BTreeMap<OrderId, Mode>,
+    /// By the sink's own word.
+    began: BTreeMap<SinkTime, OrderId>,
+}
+
+impl Hand {
+    fn take(&mut self, body: &Body) {
+        match body {
+            Body::Order {
+                id,
+                order: Order::Step(step),
+            } => {
+                self.ordered.insert(*id, step.mode);
+            }
+            Body::Event(Happening::Edge { time, order }) => {
+                self.began.insert(*time, *order);
+            }
+            Body::Event(_)
+            | Body::Order { .. }
+            | Body::Off
+            | Body::Finding(_)
+            | Body::Ended(_)
+            | Body::Note(_) => {}
+        }
+    }
+
+    /// What the step holds that began at this time; `None` in a run that is not by hand, or where
+    /// the sink's word was lost.
+    fn set_at(&self, plan: &Plan, time: SinkTime) -> Option<Action> {
+        match self.ordered.get(self.began.get(&time)?)? {
+            Mode::Current(nominal) if *nominal == Current::ZERO => Some(Action::Rest),
+            Mode::Current(nominal) => Some(Action::Current {
+                target: plan.correction.current_from_setpoint(*nominal),
+                ramp: Span::ZERO,
+            }),
+            Mode::Power(_) | Mode::Resistance(_) => None,
+        }
+    }
 }
 
 fn count_occurrences(stages: &mut [Stage<'_>]) {

@@ -16,6 +16,7 @@ mod channel;
 mod drift;
 mod meter;
 mod settling;
+mod statement;
 mod table;
 mod verify;
 
@@ -29,6 +30,7 @@ pub use channel::{Channel, ChannelSummary, CurvatureSummary, SecondOrder};
 pub use drift::{Drift, DriftError, drift};
 pub use meter::ReferenceMeter;
 pub use settling::{Unsettled, settled};
+pub use statement::{Identity, Statement, StatementError, current_step};
 pub use table::{Table, TableError};
 pub use verify::{Verification, VerificationPoint, verify};
 

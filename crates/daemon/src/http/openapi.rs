@@ -9,7 +9,7 @@ use utoipa::openapi::OpenApi as Document;
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
-use super::{events, records, runs, sequences, sinks, state};
+use super::{calibrations, events, hand, records, runs, sequences, sinks, state};
 use crate::app::App;
 use crate::view::{Code, GoneEvent, LinkEvent, Problem, RunEvent};
 
@@ -35,10 +35,19 @@ pub(super) fn parts() -> (Router<Arc<App>>, Document) {
         .routes(routes!(sequences::rehearse))
         .routes(routes!(sequences::schema))
         .routes(routes!(runs::list, runs::start))
+        .routes(routes!(hand::begin))
+        .routes(routes!(hand::setpoint))
+        .routes(routes!(hand::renew))
         .routes(routes!(runs::one))
         .routes(routes!(runs::stop))
         .routes(routes!(runs::hold))
         .routes(routes!(runs::go_on))
+        .routes(routes!(calibrations::begin))
+        .routes(routes!(calibrations::one))
+        .routes(routes!(calibrations::reading))
+        .routes(routes!(calibrations::finish))
+        .routes(routes!(calibrations::certificates))
+        .routes(routes!(calibrations::certificate))
         .routes(routes!(records::list))
         .routes(routes!(records::one))
         .routes(routes!(records::readings))

@@ -30,7 +30,7 @@ impl IntoResponse for Problem {
 }
 
 /// Runs something slow on a thread of its own.
-pub(super) async fn aside<T: Send + 'static>(
+pub(crate) async fn aside<T: Send + 'static>(
     work: impl FnOnce() -> Result<T, Problem> + Send + 'static,
 ) -> Result<T, Problem> {
     tokio::task::spawn_blocking(work)

@@ -4,22 +4,26 @@ use std::sync::Arc;
 use std::time::Duration;
 
 use axum::Json;
+use axum::body::Bytes;
 use axum::extract::{Path, State};
 use axum::http::{HeaderMap, StatusCode, header};
 use axum::response::{IntoResponse, Response};
 use sequencer::event::Command;
+use serde::Serialize;
 use tokio::sync::oneshot;
 use uuid::Uuid;
 
 use super::extract::{JsonBytes, id_of};
 use super::problem::aside;
 use crate::app::App;
-use crate::keys::{Claim, Held, is_key};
+use crate::keys::{Claim, is_key};
 use crate::sinks::SinkHandle;
 use crate::starting;
 use crate::view::{Code, Problem, RunList, RunState, RunView, SequenceRequest};
 use crate::worker::Ask;
 
+/// Where runs are.
+pub(super) const RUNS: &str = "/v1/runs";
 /// How long a new run waits for the sink's session: a daemon that has just been started.
 const SESSION_WAIT: Duration = Duration::from_secs(3);
 
@@ -44,23 +48,42 @@ pub(super) async fn start(
     headers: HeaderMap,
     body: JsonBytes,
 ) -> Result<Response, Problem> {
+    let bytes = body.0.clone();
+    let request: SequenceRequest = aside(move || body.parse()).await?;
+    let working = Arc::clone(&app);
+    once(&app, &headers, bytes, RUNS, |id| async move {
+        try_begin(&working, request, id).await
+    })
+    .await
+}
+
+/// Begins a run once, however often the same request with the same key comes; `kind` is the path
+/// under which the answer names it.
+pub(super) async fn once<T, F>(
+    app: &Arc<App>,
+    headers: &HeaderMap,
+    bytes: Bytes,
+    kind: &'static str,
+    begin: impl FnOnce(Uuid) -> F,
+) -> Result<Response, Problem>
+where
+    T: Serialize + Send + 'static,
+    F: Future<Output = Result<T, Problem>> + Send + 'static,
+{
     if *app.ending.borrow() {
         return Err(Problem::new(
             Code::ShuttingDown,
             "nothing is started any more",
         ));
     }
-    let key = key_of(&headers)?;
-    let bytes = body.0.clone();
-    let request: SequenceRequest = aside(move || body.parse()).await?;
-    let claimed = match key {
-        Some(key) => Some(claim(&app, key, bytes).await?),
+    let claimed = match key_of(headers)? {
+        Some(key) => Some(claim(app, key, bytes).await?),
         None => None,
     };
     let (id, held) = match claimed {
         None => (Uuid::now_v7(), None),
         Some(Claim::Start(id, held)) => (id, Some(held)),
-        Some(Claim::Repeated(id)) => return Ok(repeated(&app, id)),
+        Some(Claim::Repeated(id)) => return Ok(repeated(app, kind, id)),
         Some(Claim::Reused) => {
             let detail = "the key was used for another request; take a new one for a new run";
             return Err(Problem::new(Code::KeyReused, detail));
@@ -71,12 +94,21 @@ pub(super) async fn start(
         }
     };
     // A client that leaves now must not leave half a run behind: this goes on without it.
-    let started = tokio::spawn(begin(app, request, id, held));
+    let beginning = begin(id);
+    let app = Arc::clone(app);
+    let started = tokio::spawn(async move {
+        let result = beginning.await;
+        if let (Err(_), Some(held)) = (&result, &held) {
+            // A key whose request started nothing is free again.
+            app.keys.forget(held);
+        }
+        result
+    });
     let run = started.await.unwrap_or_else(|error| {
         tracing::error!("starting a run has failed: {error}");
         Err(Problem::new(Code::Internal, "the daemon's log says more"))
     })?;
-    let location = format!("/v1/runs/{id}");
+    let location = format!("{kind}/{id}");
     Ok((
         StatusCode::CREATED,
         [(header::LOCATION, location)],
@@ -98,7 +130,7 @@ fn key_of(headers: &HeaderMap) -> Result<Option<String>, Problem> {
     }
 }
 
-async fn claim(app: &Arc<App>, key: String, body: axum::body::Bytes) -> Result<Claim, Problem> {
+async fn claim(app: &Arc<App>, key: String, body: Bytes) -> Result<Claim, Problem> {
     let app = Arc::clone(app);
     aside(move || {
         let is_started = |id| in_progress(&app, id).is_some() || app.records.has(id);
@@ -113,9 +145,12 @@ async fn claim(app: &Arc<App>, key: String, body: axum::body::Bytes) -> Result<C
 }
 
 /// The answer to a request whose run was started before.
-fn repeated(app: &App, id: Uuid) -> Response {
+fn repeated(app: &App, kind: &str, id: Uuid) -> Response {
+    let location = format!("{kind}/{id}");
+    if kind != RUNS {
+        return (StatusCode::SEE_OTHER, [(header::LOCATION, location)]).into_response();
+    }
     if let Some(run) = run_of(app, id) {
-        let location = format!("/v1/runs/{id}");
         return ([(header::LOCATION, location)], Json(run)).into_response();
     }
     // It has ended before this daemon was started: its record is all there is.
@@ -123,30 +158,28 @@ fn repeated(app: &App, id: Uuid) -> Response {
     (StatusCode::SEE_OTHER, [(header::LOCATION, location)]).into_response()
 }
 
-/// Begins a run. A key whose request started nothing is free again.
-async fn begin(
-    app: Arc<App>,
-    request: SequenceRequest,
-    id: Uuid,
-    held: Option<Held>,
-) -> Result<RunView, Problem> {
-    let result = try_begin(&app, request, id).await;
-    if let (Err(_), Some(held)) = (&result, &held) {
-        app.keys.forget(held);
-    }
-    result
+async fn try_begin(app: &Arc<App>, request: SequenceRequest, id: Uuid) -> Result<RunView, Problem> {
+    let name = request.sink.clone();
+    begun(app, &name, move |app, sink| {
+        starting::start(app, sink, &request, id)
+    })
+    .await
 }
 
-async fn try_begin(app: &Arc<App>, request: SequenceRequest, id: Uuid) -> Result<RunView, Problem> {
-    let sink = app.sink(&request.sink)?;
+/// The way to a run's first view, or why it could not begin.
+type Beginning = oneshot::Receiver<Result<RunView, String>>;
+
+/// Begins a run on a sink that is ready for one.
+pub(super) async fn begun(
+    app: &Arc<App>,
+    name: &str,
+    start: impl FnOnce(&App, &SinkHandle) -> Result<Beginning, Problem> + Send + 'static,
+) -> Result<RunView, Problem> {
+    let sink = app.sink(name)?;
     sink.wait_for_session(SESSION_WAIT).await;
     starting::is_ready(sink)?;
-    let working = Arc::clone(app);
-    let answered = aside(move || {
-        let sink = working.sink(&request.sink)?;
-        starting::start(&working, sink, &request, id)
-    })
-    .await?;
+    let (working, name) = (Arc::clone(app), name.to_owned());
+    let answered = aside(move || start(&working, working.sink(&name)?)).await?;
     match answered.await {
         Ok(Ok(run)) => Ok(run),
         Ok(Err(why)) => Err(Problem::new(Code::RecordNotBegun, why)),
@@ -239,6 +272,10 @@ async fn command(
             None => no_such_run(id),
         });
     };
+    if !states.is_empty() && run.by_hand.is_some() {
+        let detail = format!("run {id} is driven by hand; set 0 A instead, or stop it");
+        return Err(Problem::new(Code::NotRunning, detail));
+    }
     if !states.is_empty() && !states.contains(&run.state) {
         let detail = format!(
             "run {id} is {}; only one that is {} can do that",
@@ -266,7 +303,7 @@ async fn command(
     }
 }
 
-fn in_progress(app: &App, id: Uuid) -> Option<(&SinkHandle, RunView)> {
+pub(super) fn in_progress(app: &App, id: Uuid) -> Option<(&SinkHandle, RunView)> {
     app.sinks.iter().find_map(|sink| {
         let run = sink.view().run.filter(|run| run.id == id)?;
         Some((sink, run))
@@ -280,7 +317,7 @@ fn run_of(app: &App, id: Uuid) -> Option<RunView> {
     app.context.ended.get(id).or(running)
 }
 
-fn no_such_run(id: Uuid) -> Problem {
+pub(super) fn no_such_run(id: Uuid) -> Problem {
     let detail = format!("no run {id}; its record, if there is one, is /v1/records/{id}");
     Problem::new(Code::NoSuchRun, detail)
 }

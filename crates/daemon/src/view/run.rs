@@ -152,6 +152,15 @@ pub struct LoopView {
     pub times: Option<u64>,
 }
 
+/// What is set by hand.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct HandView {
+    /// The current that was asked for last.
+    pub setpoint_a: f64,
+    /// How long it holds unless it is asked for again.
+    pub interval_s: f64,
+}
+
 /// A run.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
 pub struct RunView {
@@ -192,6 +201,9 @@ pub struct RunView {
     pub margins: Vec<MarginView>,
     /// Interlocks that crossed.
     pub crossings: Vec<CrossingView>,
+    /// What is set by hand, if it is a run by hand.
+    #[serde(default)]
+    pub by_hand: Option<HandView>,
     /// How it ended, if it has.
     pub ending: Option<EndingView>,
     /// The record's folder in the records folder.

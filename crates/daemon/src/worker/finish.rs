@@ -8,6 +8,7 @@ use quantity::HostTime;
 use sequencer::event::{Crossing, Ending};
 use sequencer::status::Status;
 
+use super::hand::Hand;
 use super::publish::reason_of;
 use super::record::RunRecord;
 use super::{Begin, RunInProgress, Worker};
@@ -31,6 +32,7 @@ impl Worker {
         if let Err(busy) = self.keeper.begin(begin.sequencer, recorded, now) {
             return refuse(answer, busy.to_string());
         }
+        let hand = Hand::of(&begin.plan);
         self.run = Some(RunInProgress {
             id: begin.id,
             folder: begin.folder,
@@ -39,6 +41,7 @@ impl Worker {
             plan: begin.plan,
             record,
             crossings: Vec::new(),
+            hand,
             stopped_by: None,
             ending: None,
             reservation: begin.reservation,

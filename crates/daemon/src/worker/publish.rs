@@ -13,6 +13,7 @@ use sink::bench::SinkEntry;
 use uuid::Uuid;
 use wire::{Description, SinkState};
 
+use super::hand::{Hand, NOT_ASKED_FOR_AGAIN};
 use super::record::RunRecord;
 use super::{Reservation, Worker};
 use crate::metrics::word;
@@ -83,6 +84,8 @@ pub(crate) struct RunInProgress {
     pub(crate) expected: Span,
     pub(crate) record: RunRecord,
     pub(crate) crossings: Vec<Crossing>,
+    /// What is set and read back, in a run by hand.
+    pub(crate) hand: Option<Hand>,
     /// Who or what stopped it, if anyone did.
     pub(crate) stopped_by: Option<&'static str>,
     pub(crate) ending: Option<EndingView>,
@@ -120,7 +123,11 @@ impl RunFacts<'_> {
             clock: self.clock,
             started: self.started.to_owned(),
             elapsed_s: status.elapsed.seconds(),
-            expected_s: self.expected.seconds(),
+            expected_s: match status.left_at_most {
+                // Nobody knows how long a hand goes on; this long if it does not.
+                Some(left) if self.plan.by_hand => status.elapsed.saturating_add(left).seconds(),
+                Some(_) | None => self.expected.seconds(),
+            },
             left_at_most_s: status.left_at_most.map(Span::seconds),
             step,
             repeats: repeats.collect(),
@@ -131,6 +138,7 @@ impl RunFacts<'_> {
             margins: MarginView::nearest_first(&status.margins),
             crossings: self.crossings.iter().map(CrossingView::new).collect(),
             ending: None,
+            by_hand: None,
             record: self.folder.to_owned(),
             sealed: false,
         }
@@ -211,6 +219,7 @@ impl Worker {
         RunView {
             reading: self.reading_view(),
             ending: run.ending.clone(),
+            by_hand: run.hand.as_ref().map(Hand::view),
             ..facts.view(status)
         }
     }
@@ -263,11 +272,22 @@ impl Worker {
             if reading.lost > 0 {
                 self.metrics.readbacks_lost.inc_by(u64::from(reading.lost));
             }
+            if let Some(hand) = self.run.as_mut().and_then(|run| run.hand.as_mut()) {
+                hand.read(reading);
+            }
         }
     }
 
     pub(super) fn tell_finding(&mut self, finding: &Finding, at: HostTime) {
         let (message, news) = match finding {
+            Finding::StepBegan { time, .. } if self.is_by_hand() => {
+                let Some(setpoint) = self.hand_began(*time) else {
+                    // The same once more.
+                    return;
+                };
+                let news = RunNews::Step { op: 0, label: None };
+                (format!("{setpoint} is held, set by hand"), news)
+            }
             Finding::StepBegan { op, .. } => {
                 let now = self.clock.now();
                 if now.saturating_since(self.last_step_told) < STEP_EVERY {
@@ -318,6 +338,9 @@ impl Worker {
         let Some(run) = &mut self.run else { return };
         if let Ending::Tripped(interlock) = ending {
             self.tripped_by = Some(*interlock);
+        }
+        if run.hand.is_some() && *ending == Ending::Stopped {
+            run.stopped_by.get_or_insert(NOT_ASKED_FOR_AGAIN);
         }
         let view = ending_view(ending, &run.crossings, run.stopped_by, at);
         let message = ending_text(&view);

@@ -30,6 +30,24 @@ fn run(desk: &Desk, program: &str, example_name: &str) -> Output {
     output
 }
 
+#[test]
+fn the_python_example_drives_by_hand() {
+    let desk = Desk::open(1);
+    let output = Command::new("python3")
+        .arg(example("drive_by_hand.py"))
+        .args([&desk.url, "left", "0.1 A", "500 mA"])
+        .output()
+        .unwrap();
+    let said = String::from_utf8_lossy(&output.stdout);
+    let wrong = String::from_utf8_lossy(&output.stderr);
+    assert!(output.status.success(), "{said}\n{wrong}");
+    assert!(
+        said.contains("500 mA: 0.4") || said.contains("500 mA: 0.5"),
+        "{said}"
+    );
+    assert!(said.contains("stopped: off was asked for"), "{said}");
+}
+
 fn is_one_finished_run_of(desk: &Desk) {
     let records = desk.get("/v1/records?dut=K-01&ending=finished").json();
     assert_eq!(records["records"].as_array().unwrap().len(), 1, "{records}");

@@ -7,10 +7,12 @@
     reason = "a test that does not get what it waits for within a time is to fail"
 )]
 
+mod calibrations;
 mod desk;
 mod events;
 mod examples;
 mod guard;
+mod hand;
 mod notify;
 mod off;
 mod records;

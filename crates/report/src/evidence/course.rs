@@ -3,8 +3,8 @@
 //! What it deliberately does not do: judge. Findings are told as the record has them.
 
 use journal::{Body, Entry, Note};
-use quantity::{HostTime, SinkTime, Span};
-use sequence::plan::{Op, Plan, PlanStep};
+use quantity::{Current, HostTime, SinkTime, Span};
+use sequence::plan::{Action, Op, Plan, PlanStep};
 use sequencer::event::{Command, Crossing, Ending, Finding, Happening, StepEnd};
 use serde::Serialize;
 
@@ -67,6 +67,25 @@ impl Course {
         }
     }
 
+    /// A setpoint by hand; the same asked for again is no news.
+    fn set_by_hand(&mut self, entry: &Entry, setpoint: Current) {
+        let Some(Op::Step(step)) = self.plan.ops.first_mut() else {
+            return;
+        };
+        let action = if setpoint == Current::ZERO {
+            Action::Rest
+        } else {
+            Action::Current {
+                target: setpoint,
+                ramp: Span::ZERO,
+            }
+        };
+        if step.action != action {
+            step.action = action;
+            self.mark(entry, None, format!("{setpoint} was set by hand"));
+        }
+    }
+
     pub(super) fn take(&mut self, entry: &Entry) {
         match &entry.body {
             Body::Event(what) => self.happened(entry, what),
@@ -118,6 +137,10 @@ impl Course {
                 Command::Stop => "a person or a script asked for the run to be stopped",
                 Command::Hold => "a person or a script asked for a hold",
                 Command::Continue => "a person or a script asked to go on",
+                Command::Setpoint { setpoint, .. } => {
+                    self.set_by_hand(entry, *setpoint);
+                    return;
+                }
             };
             self.mark(entry, None, sentence);
         } else if let Happening::Connected { .. } = what {

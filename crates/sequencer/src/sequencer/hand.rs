@@ -8,7 +8,7 @@
 use quantity::{Current, SinkTime, Span};
 use sequence::plan::Action;
 
-use super::{REACTION, Sequencer};
+use super::Sequencer;
 use crate::event::Interlock;
 use crate::phase::Phase;
 use crate::program::Cursor;
@@ -50,7 +50,7 @@ impl Sequencer {
         let Some(Wanted { setpoint, until }) = self.hand.take() else {
             return;
         };
-        let start = self.sink_now().saturating_add(REACTION);
+        let start = self.sink_now().saturating_add(self.reaction());
         let left = until.saturating_since(start);
         if left < self.plan().tick {
             // Over before it could begin.

@@ -87,7 +87,12 @@ impl Sequencer {
         let by = start.saturating_since(slot.start);
         self.find(Finding::Rescheduled { op: slot.op, by });
         self.bursts.forget_wanted();
-        self.course.set_out_from(moved(&slot, start));
+        let mut later = moved(&slot, start);
+        if self.plan().by_hand {
+            // The interval counts from the command, however late the order came.
+            later.end = slot.end.max(start.saturating_add(self.plan().tick));
+        }
+        self.course.set_out_from(later);
         if let Some((slot, last)) = self.course.take(&self.program) {
             self.queue_step(slot, last, late.carried);
         }
