@@ -142,7 +142,10 @@ pub(crate) async fn set(
     match answered.await {
         Ok(Some(run)) => Ok(run),
         Ok(None) => {
-            let detail = format!("run {id} has ended");
+            let run = sink.view().run.filter(|run| run.id == id);
+            let why = run.and_then(|run| run.ending?.reason);
+            let why = why.map_or_else(String::new, |why| format!(": {why}"));
+            let detail = format!("run {id} has ended{why}");
             Err(Problem::new(Code::NotRunning, detail))
         }
         Err(_) => {

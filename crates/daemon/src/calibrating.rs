@@ -353,7 +353,10 @@ pub(crate) async fn take(
         return Err(refused(detail));
     }
     let Some(back) = readbacks(sink, id).await? else {
-        let why = app.context.ended.get(id).and_then(|run| run.ending?.reason);
+        let run = sink.view().run.filter(|run| run.id == id);
+        let ending = run.and_then(|run| run.ending);
+        let ended = app.context.ended.get(id).and_then(|run| run.ending);
+        let why = ending.or(ended).and_then(|ending| ending.reason);
         let why = why.map_or_else(String::new, |why| format!(": {why}"));
         let detail = format!("the run of calibration {id} has ended{why}");
         return Err(Problem::new(Code::NotRunning, detail));

@@ -11,6 +11,7 @@ use sequencer::event::Command;
 use uuid::Uuid;
 use wire::Reading;
 
+use super::publish::RunInProgress;
 use super::{Answer, Worker};
 use crate::view::{HandView, RunView};
 
@@ -125,7 +126,11 @@ impl Worker {
         answer: Answer<Option<RunView>>,
         now: HostTime,
     ) {
-        let meant = self.run.as_mut().filter(|run| run.id == id);
+        // A run that is ending is over, whatever of it is still awaited.
+        let meant = self
+            .run
+            .as_mut()
+            .filter(|run| run.id == id && run.ending.is_none());
         let Some(hand) = meant.and_then(|run| run.hand.as_mut()) else {
             // Whoever asked may be gone.
             let _ = answer.send(None);
@@ -151,7 +156,8 @@ impl Worker {
 
     /// What was read back in the run by hand that is meant.
     pub(super) fn readbacks(&self, id: Uuid) -> Option<Readbacks> {
-        let run = self.run.as_ref().filter(|run| run.id == id)?;
+        let in_progress = |run: &&RunInProgress| run.id == id && run.ending.is_none();
+        let run = self.run.as_ref().filter(in_progress)?;
         Some(run.hand.as_ref()?.readbacks())
     }
 }
