@@ -32,22 +32,9 @@ fn prove_process(program: &Path) -> Report {
     prove_behind(Far::Local(port), &options())
 }
 
-/// A machine that has more to do than it can holds lines back for seconds, and a sound sink then
-/// looks deaf. Such a run is told and repeated; a fault in the firmware fails every time.
-fn holds_in_one_of_three(mut prove: impl FnMut() -> Report) -> Report {
-    for _ in 0..2 {
-        let report = prove();
-        if report.holds() {
-            return report;
-        }
-        eprintln!("once more, after:\n{report}");
-    }
-    prove()
-}
-
 #[test]
 fn the_sound_firmware_holds_everything_on_a_pseudo_terminal() {
-    let report = holds_in_one_of_three(|| prove_process(&program(None)));
+    let report = prove_process(&program(None));
     assert!(report.holds(), "{report}");
     let (holds, _, not_shown) = report.counts();
     assert_eq!(not_shown, 1, "only what needs a reset: {report}");
@@ -60,25 +47,17 @@ fn a_sink_with_nothing_connected_is_proven_without_a_current() {
         source: None,
         ..options()
     };
-    let report = holds_in_one_of_three(|| {
-        let (_process, port) = Process::start(&program(None), &["--source", "none"]);
-        prove_behind(Far::Local(port), &without)
-    });
+    let (_process, port) = Process::start(&program(None), &["--source", "none"]);
+    let report = prove_behind(Far::Local(port), &without);
     assert!(report.holds(), "{report}");
 }
 
 #[test]
 fn the_sound_firmware_holds_everything_on_the_emulated_board() {
-    let Some(mut board) = Board::start("proving the emulated board") else {
+    let Some(board) = Board::start("proving the emulated board") else {
         return;
     };
-    let mut first = true;
-    let report = holds_in_one_of_three(|| {
-        if !std::mem::take(&mut first) {
-            board.restart();
-        }
-        prove_behind(Far::Local(board.port()), &options())
-    });
+    let report = prove_behind(Far::Local(board.port()), &options());
     assert!(report.holds(), "{report}");
     assert_eq!(report.counts().2, 1, "{report}");
 }

@@ -11,6 +11,7 @@
 )]
 
 mod bench;
+mod unanswered;
 
 use quantity::{HostTime, SinkTime, Span};
 use wire::{Description, LINE_BYTES_MAX, Line as _, ReasonRefused, SinkLine, Token, checksum};
@@ -20,6 +21,7 @@ use crate::port::{Port, PortError};
 use crate::run::Options;
 
 pub(crate) use bench::{Edge, Pair, Trip, cannot};
+use unanswered::Unanswered;
 
 /// How often a waiting host says something: well within the shortest untold deadman.
 const KEEP_QUIET: Span = Span::from_millis(400);
@@ -94,6 +96,8 @@ pub(crate) struct Probe<'p> {
     heard: Vec<SinkLine>,
     evidence: Vec<Exchange>,
     damage: bool,
+    unanswered: Unanswered,
+    held_up: Span,
     session: u32,
     token: Token,
     number: u16,
@@ -117,6 +121,8 @@ impl<'p> Probe<'p> {
             heard: Vec::new(),
             evidence: Vec::new(),
             damage: false,
+            unanswered: Unanswered::default(),
+            held_up: Span::ZERO,
             session,
             token: 0,
             number: 1,
@@ -131,6 +137,8 @@ impl<'p> Probe<'p> {
         self.deadline = self.port.now().saturating_add(longest);
         self.heard.clear();
         self.damage = false;
+        self.unanswered = Unanswered::default();
+        self.held_up = Span::ZERO;
         self.silent = false;
     }
 
@@ -149,6 +157,11 @@ impl<'p> Probe<'p> {
     /// Whether a line from the sink arrived damaged in this check.
     pub(crate) const fn heard_damage(&self) -> bool {
         self.damage
+    }
+
+    /// The longest time in this check from a line to its answer.
+    pub(crate) const fn held_up(&self) -> Span {
+        self.held_up
     }
 
     pub(crate) fn take_evidence(&mut self) -> Vec<Exchange> {
@@ -196,6 +209,7 @@ impl<'p> Probe<'p> {
 
     /// Sends a line with its checksum.
     pub(crate) fn say(&mut self, text: &str) -> Result<(), Stop> {
+        self.unanswered.said(text, self.port.now());
         self.say_bytes(&sound_line(text))
     }
 
@@ -294,6 +308,10 @@ impl<'p> Probe<'p> {
         match SinkLine::decode(line) {
             Ok(sound) => {
                 self.keep(Direction::Received, line, None);
+                if let Some(said_at) = self.unanswered.answered(&sound) {
+                    let took = self.port.now().saturating_since(said_at);
+                    self.held_up = self.held_up.max(took);
+                }
                 self.heard.push(sound);
             }
             Err(error) => {

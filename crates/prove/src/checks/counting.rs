@@ -17,8 +17,7 @@ fn pairs(probe: &mut Probe<'_>, many: usize) -> Result<Vec<Pair>, Stop> {
     while let Some(last) = pairs.last()
         && pairs.len() < many
     {
-        let (mark, after) = (probe.mark(), last.counters.time);
-        let next = probe.pair(mark, after)?;
+        let next = probe.pair_after(&last.counters)?;
         pairs.push(next);
     }
     Ok(pairs)

@@ -86,8 +86,7 @@ pub(crate) fn charge(probe: &mut Probe<'_>) -> Outcome {
     let mut energy_most: i128 = 0;
     let mut pairs = 0_i64;
     while last.counters.time.saturating_since(first.counters.time) < Span::from_secs(3) {
-        let (mark, after) = (probe.mark(), last.counters.time);
-        let next = probe.pair(mark, after)?;
+        let next = probe.pair_after(&last.counters)?;
         let mean = next.values;
         if next.count != last.count.checked_add(1).unwrap_or(1) {
             // A readback was lost, and with it its mean: begin again.
@@ -95,7 +94,12 @@ pub(crate) fn charge(probe: &mut Probe<'_>) -> Outcome {
             (expected_pc, energy_least, energy_most, pairs) = (0, 0, 0, 0);
             continue;
         }
-        let passed = i128::from(next.counters.time.saturating_since(after).micros());
+        let passed = i128::from(
+            next.counters
+                .time
+                .saturating_since(last.counters.time)
+                .micros(),
+        );
         let current = i128::from(mean.current.microamperes());
         expected_pc += current * passed;
         energy_least += current * passed * i128::from(mean.voltage_min.microvolts());
@@ -202,9 +206,10 @@ pub(crate) fn ramp(probe: &mut Probe<'_>) -> Outcome {
     let mut worst = 0_i64;
     let full = described.sense_current.microamperes();
     loop {
-        let (mark, after) = (probe.mark(), before.counters.time);
-        let next = probe.pair(mark, after)?;
-        let middle = after
+        let next = probe.pair_after(&before.counters)?;
+        let middle = before
+            .counters
+            .time
             .saturating_since(begun)
             .micros()
             .midpoint(next.counters.time.saturating_since(begun).micros());

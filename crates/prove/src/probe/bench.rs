@@ -301,8 +301,14 @@ impl Probe<'_> {
         self.pair(mark, now)
     }
 
+    /// The pair that followed another. It may have been heard in one piece with that one, so it is
+    /// looked for in all that was heard.
+    pub(crate) fn pair_after(&mut self, last: &Counters) -> Result<Pair, Stop> {
+        self.pair(Mark(0), last.time)
+    }
+
     /// The first whole pair since a mark with a time after `after`.
-    pub(crate) fn pair(&mut self, mark: Mark, after: SinkTime) -> Result<Pair, Stop> {
+    fn pair(&mut self, mark: Mark, after: SinkTime) -> Result<Pair, Stop> {
         let interval = READBACK.max(
             self.description
                 .map_or(READBACK, |description| description.fastest_readback),

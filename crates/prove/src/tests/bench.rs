@@ -127,6 +127,99 @@ impl VirtualDevice for Tampered {
     }
 }
 
+/// A device before which the port holds lines back, each for so long, from a certain line on and
+/// as often as said.
+pub(crate) struct HeldBack {
+    pub(crate) device: SimulatedSink,
+    pub(crate) from: &'static str,
+    pub(crate) for_span: Span,
+    pub(crate) times: u32,
+    held: Vec<u8>,
+    until: Span,
+}
+
+impl HeldBack {
+    pub(crate) fn new(
+        device: SimulatedSink,
+        from: &'static str,
+        for_span: Span,
+        times: u32,
+    ) -> Self {
+        Self {
+            device,
+            from,
+            for_span,
+            times,
+            held: Vec::new(),
+            until: Span::ZERO,
+        }
+    }
+
+    fn let_go(&mut self) {
+        let held = std::mem::take(&mut self.held);
+        self.device.receive(&held);
+    }
+}
+
+impl VirtualDevice for HeldBack {
+    fn now(&self) -> Span {
+        self.device.now()
+    }
+
+    fn advance(&mut self, until: Span, out: &mut Vec<u8>) {
+        if !self.held.is_empty() && self.until <= until {
+            VirtualDevice::advance(&mut self.device, self.until, out);
+            self.let_go();
+        }
+        VirtualDevice::advance(&mut self.device, until, out);
+    }
+
+    fn receive(&mut self, bytes: &[u8]) {
+        let begins = self.times > 0 && bytes.starts_with(self.from.as_bytes());
+        if begins && self.held.is_empty() {
+            self.times -= 1;
+            self.until = self.device.now() + self.for_span;
+        }
+        self.held.extend_from_slice(bytes);
+        if self.until <= self.device.now() {
+            self.let_go();
+        }
+    }
+}
+
+/// A device before which a port sends what it has in lumps: at every whole multiple of a time.
+pub(crate) struct Lumped {
+    pub(crate) device: SimulatedSink,
+    pub(crate) every: Span,
+    pub(crate) waiting: Vec<u8>,
+}
+
+impl VirtualDevice for Lumped {
+    fn now(&self) -> Span {
+        self.device.now()
+    }
+
+    fn advance(&mut self, until: Span, out: &mut Vec<u8>) {
+        let every = self.every.micros();
+        loop {
+            let passed = self.device.now().micros() / every;
+            let lump = Span::from_micros((passed + 1) * every);
+            // The device comes back as soon as it has said something.
+            VirtualDevice::advance(&mut self.device, lump.min(until), &mut self.waiting);
+            if self.device.now() == lump {
+                out.append(&mut self.waiting);
+            }
+            if !out.is_empty() || self.device.now() >= until {
+                return;
+            }
+        }
+    }
+
+    fn receive(&mut self, bytes: &[u8]) {
+        self.device.receive(bytes);
+    }
+}
+
 pub(crate) fn prove(device: impl VirtualDevice, options: &Options) -> Report {
     let (link, _commands) = VirtualLink::new(device, Pace::Unbounded, HostClock::start());
     let mut port = LinkPort::new(link);

@@ -1,6 +1,7 @@
+use quantity::Span;
 use wire::Reset;
 
-use super::bench::{Lent, figures, prove, sink, with_source};
+use super::bench::{HeldBack, Lent, Lumped, figures, prove, sink, with_source};
 use crate::{Options, Report, Verdict, time_at_most};
 
 fn not_shown(report: &Report) -> Vec<&'static str> {
@@ -62,6 +63,40 @@ fn a_sink_with_other_abilities_holds_as_well() {
     other.queue = 40;
     let report = prove(sink(other, Reset::Pin), &Options::default());
     assert!(report.holds(), "{report}");
+}
+
+#[test]
+fn a_port_that_sends_in_lumps_loses_no_readback() {
+    let lumped = Lumped {
+        device: sink(figures(), Reset::Power),
+        every: Span::from_millis(60),
+        waiting: Vec::new(),
+    };
+    let report = prove(lumped, &with_source());
+    assert!(report.holds(), "{report}");
+}
+
+#[test]
+fn a_port_that_held_lines_back_once_does_not_fail_a_sound_sink() {
+    let sink = sink(figures(), Reset::Power);
+    // The answer to the first `limit` comes after the check's patience is over.
+    let once = HeldBack::new(sink, "limit ", Span::from_millis(1_500), 1);
+    let report = prove(once, &Options::default());
+    assert!(report.holds(), "{report}");
+}
+
+#[test]
+fn a_port_that_always_holds_lines_back_is_named_beside_what_fails() {
+    let sink = sink(figures(), Reset::Power);
+    let always = HeldBack::new(sink, "clock ", Span::from_millis(700), u32::MAX);
+    let report = prove(always, &Options::default());
+    assert!(!report.holds());
+    for (name, wrong) in report.failed() {
+        assert!(
+            wrong.contains("meanwhile an answer took"),
+            "{name}: {wrong}"
+        );
+    }
 }
 
 #[test]
