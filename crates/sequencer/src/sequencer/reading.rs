@@ -46,11 +46,12 @@ impl Sequencer {
             self.guard
                 .judge_total(Interlock::Silence, micros(silent), silence, &mut crossings);
         }
-        let gave_up = self.judge_following(&seen, &expected, &mut crossings);
         let latched = match seen.state {
             SinkState::Latched(cause) => Some(cause),
             SinkState::Off | SinkState::On | SinkState::Saturated => None,
         };
+        // A sink that has turned itself off follows nothing: what it latched for names the trip.
+        let gave_up = latched.is_none() && self.judge_following(&seen, &expected, &mut crossings);
         if let (Some(cause), true) = (latched, self.phase.is_under_way()) {
             crossings.add(self.crossed_by_sink(cause, &seen));
             if cause == Cause::Sensor && seen.current_at_stop {
