@@ -28,6 +28,8 @@ use std::time::{Duration, Instant};
 
 use serialport::{SerialPort, TTYPort};
 
+use crate::pty;
+
 /// How long a pump waits for bytes before it looks whether it should end.
 const GLANCE: Duration = Duration::from_millis(20);
 
@@ -202,7 +204,7 @@ impl Bridge {
     /// The operating system's, if it gives no pseudo-terminal.
     pub fn plug(&mut self) -> io::Result<()> {
         self.rest();
-        let (mut master, slave) = TTYPort::pair().map_err(io::Error::other)?;
+        let (mut master, slave) = pty::pair()?;
         master.set_timeout(GLANCE).map_err(io::Error::other)?;
         let name = slave
             .name()

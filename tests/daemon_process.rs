@@ -7,6 +7,8 @@ use std::time::{Duration, Instant};
 
 use serde_json::Value;
 
+use crate::pty;
+
 /// A daemon process. Dropping it kills it.
 pub struct Daemon {
     child: Child,
@@ -56,7 +58,9 @@ impl Daemon {
             .arg(records)
             .args(["--listen", "127.0.0.1:0"])
             .stdout(Stdio::piped());
+        let alone = pty::alone();
         let mut child = command.spawn().unwrap();
+        drop(alone);
         let mut line = String::new();
         BufReader::new(child.stdout.take().unwrap())
             .read_line(&mut line)
@@ -72,6 +76,35 @@ impl Daemon {
     /// The process's number.
     pub fn process_id(&self) -> u32 {
         self.child.id()
+    }
+
+    /// Suspends the process, as a host that goes to sleep does to all of its own.
+    pub fn suspend(&self) {
+        self.signal("-STOP");
+    }
+
+    /// Wakes it again.
+    pub fn wake(&self) {
+        self.signal("-CONT");
+    }
+
+    /// Memory that it has in the machine, kilobyte.
+    ///
+    /// # Panics
+    /// If the process is gone.
+    #[expect(clippy::unwrap_used, reason = "a test whose daemon is gone has failed")]
+    pub fn resident_kb(&self) -> u64 {
+        let status = std::fs::read_to_string(format!("/proc/{}/status", self.child.id())).unwrap();
+        let line = status.lines().find(|line| line.starts_with("VmRSS:"));
+        let number = line.and_then(|line| line.split_whitespace().nth(1));
+        number.unwrap().parse().unwrap()
+    }
+
+    fn signal(&self, signal: &str) {
+        let done = Command::new("kill")
+            .args([signal, &self.child.id().to_string()])
+            .status();
+        assert!(done.is_ok_and(|status| status.success()), "kill {signal}");
     }
 
     /// Kills the daemon as a power cut would: it gets no chance to do anything.
@@ -112,6 +145,26 @@ impl Daemon {
         let text = answer.body_mut().read_to_string().unwrap();
         assert!(status.is_success(), "{path}: {status}: {text}");
         serde_json::from_str(&text).unwrap()
+    }
+
+    /// Asks for a run that the daemon must refuse; its answer.
+    ///
+    /// # Panics
+    /// If it does not refuse.
+    #[expect(
+        clippy::unwrap_used,
+        reason = "a test whose daemon does not answer has failed"
+    )]
+    pub fn post_refused(&self, path: &str, sequence: &str, sink: &str) -> String {
+        let mut answer = ureq::post(format!("{}{path}", self.url))
+            .config()
+            .http_status_as_error(false)
+            .build()
+            .send_json(serde_json::json!({ "sequence": sequence, "sink": sink }))
+            .unwrap();
+        let text = answer.body_mut().read_to_string().unwrap();
+        assert!(!answer.status().is_success(), "not refused: {text}");
+        text
     }
 
     /// `POST` without a body.

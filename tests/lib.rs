@@ -5,5 +5,6 @@
 
 pub mod bridge;
 pub mod daemon_process;
+pub mod pty;
 pub mod pty_sink;
 pub mod sequences;

@@ -11,6 +11,8 @@ use quantity::Span;
 use serialport::{SerialPort as _, TTYPort};
 use simulator::device::{SimulatedSink, SinkParts};
 
+use crate::pty;
+
 /// How long the sink's thread waits for bytes before it moves time on.
 const STRIDE: Duration = Duration::from_millis(1);
 
@@ -38,7 +40,7 @@ impl PtySink {
         reason = "a test that cannot set up its sink has failed"
     )]
     pub fn start(parts: SinkParts) -> Self {
-        let (mut master, slave) = TTYPort::pair().unwrap();
+        let (mut master, slave) = pty::pair().unwrap();
         let path = PathBuf::from(slave.name().unwrap());
         drop(slave);
         master.set_timeout(STRIDE).unwrap();

@@ -54,6 +54,32 @@ pub fn bench_of(sinks: usize) -> String {
     bench.replace("free_space_mb = 500", "free_space_mb = 0")
 }
 
+/// The bench file with `left` described as the reference firmware's ports describe themselves, on
+/// a serial port.
+///
+/// # Panics
+/// If the bench file has changed so that its front end cannot be found.
+pub fn bench_on_reference(port: &Path, serial_number: u32) -> String {
+    let number = format!("serial_number = {serial_number}");
+    [
+        ("serial_number = 1", number.as_str()),
+        ("full_scale = \"330 mV\"", "full_scale = \"409.6 mV\""),
+        (
+            "current_full_scale = \"3.3 A\"",
+            "current_full_scale = \"4.096 A\"",
+        ),
+        (
+            "voltage_full_scale = \"9.9 V\"",
+            "voltage_full_scale = \"20.48 V\"",
+        ),
+    ]
+    .iter()
+    .fold(bench_on(port), |text, (from, to)| {
+        assert!(text.contains(from), "the bench file has no {from:?}");
+        text.replace(from, to)
+    })
+}
+
 /// The sink `left` as the bench file has it.
 ///
 /// # Panics

@@ -110,20 +110,29 @@ impl Host {
 
     /// Gives an order and waits until it is executed.
     pub(crate) fn must(&mut self, order: Order) -> OrderId {
+        let (id, outcome) = self.outcome(order);
+        assert!(
+            matches!(outcome, Heard::Acknowledged { .. }),
+            "{order}: {outcome:?}"
+        );
+        id
+    }
+
+    /// Gives an order and waits for what becomes of it.
+    pub(crate) fn outcome(&mut self, order: Order) -> (OrderId, Heard) {
         let id = self.order(order);
-        let done = self.until(&format!("the answer to {order}"), |heard| match heard {
-            Heard::Acknowledged { order } if *order == id => Some(true),
-            Heard::Refused { order, .. }
+        let outcome = self.until(&format!("the answer to {order}"), |heard| match heard {
+            Heard::Acknowledged { order }
+            | Heard::Refused { order, .. }
             | Heard::Abandoned { order }
             | Heard::Withdrawn { order }
                 if *order == id =>
             {
-                Some(false)
+                Some(heard.clone())
             }
             _ => None,
         });
-        assert!(done, "{order}: {:?}", self.heard.last());
-        id
+        (id, outcome)
     }
 
     pub(crate) fn off(&mut self) {

@@ -12,8 +12,10 @@
 
 mod board;
 mod faults;
+mod five_minutes;
 mod host;
 mod hostile;
+mod mishaps;
 mod process;
 mod proving;
 mod reboot;

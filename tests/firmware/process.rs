@@ -6,6 +6,8 @@ use std::path::{Path, PathBuf};
 use std::process::{Child, Command, Stdio};
 use std::sync::Mutex;
 
+use system_tests::pty;
+
 /// Two builds of the same file would get in each other's way.
 static BUILDING: Mutex<()> = Mutex::new(());
 
@@ -56,6 +58,7 @@ impl Process {
     /// Starts it; what comes back is the far end of its port.
     pub(crate) fn start(program: &Path, arguments: &[&str]) -> (Self, UnixStream) {
         let (near, far) = UnixStream::pair().unwrap();
+        let _alone = pty::alone();
         let child = Command::new(program)
             .args(["--fd", "0"])
             .args(arguments)

@@ -29,6 +29,12 @@
 #define UART_CLEAR_RECEIVE 2u
 #define UART_BAUD 115200u
 
+/* CMSDK UART 1: nothing of the sink's own is on it. */
+#define LEDGER_DATA REGISTER(0x40005000u)
+#define LEDGER_STATE REGISTER(0x40005004u)
+#define LEDGER_CONTROL REGISTER(0x40005008u)
+#define LEDGER_DIVIDER REGISTER(0x40005010u)
+
 /* CMSDK watchdog: its first expiry raises the non-maskable interrupt, the
  * second, if the first was not answered, resets. */
 #define WATCHDOG_LOAD REGISTER(0x40008000u)
