@@ -2,11 +2,13 @@
 //!
 //! - `demo` runs the main job on the simulator, with nothing to configure;
 //! - `test` runs everything the project can check about itself;
+//! - `coverage` finds branches of the firmware's core that no test takes;
 //! - `bench` measures what must be fast, on release builds;
 //! - `docs` rewrites the generated documents.
 
 mod bench;
 mod command;
+mod coverage;
 mod demo;
 mod parts;
 mod test;
@@ -27,6 +29,8 @@ enum Chore {
     Demo,
     /// Run every check and test; install nothing, name what is missing.
     Test(test::Options),
+    /// Find branches of the firmware's core that no test takes (a part of `test`).
+    Coverage,
     /// Measure what must be fast, on release builds.
     Bench(bench::Options),
     /// Rewrite the documents that are generated from the code.
@@ -37,6 +41,7 @@ fn main() -> Result<()> {
     match Arguments::parse().chore {
         Chore::Demo => demo::run_through(),
         Chore::Test(options) => test::run_everything(&options),
+        Chore::Coverage => coverage::hold(),
         Chore::Bench(options) => bench::measure(&options),
         Chore::Docs => test::rewrite_documents(),
     }

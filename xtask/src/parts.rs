@@ -30,6 +30,12 @@ pub(crate) const PARTS: &[Part] = &[
         install: "apt-get install gcc",
     },
     Part {
+        program: "gcov",
+        unpacked: None,
+        purpose: "finding branches of the reference firmware that no test takes",
+        install: "apt-get install gcc",
+    },
+    Part {
         program: "make",
         unpacked: None,
         purpose: "building the reference firmware's ports",

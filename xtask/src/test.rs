@@ -6,8 +6,8 @@ use std::process::Stdio;
 use anyhow::{Context as _, Result, bail};
 use clap::Args;
 
-use crate::command::{cargo, run, show};
-use crate::parts;
+use crate::command::{answers, cargo, run, show};
+use crate::{coverage, parts};
 
 /// How much to test.
 #[derive(Args)]
@@ -76,11 +76,16 @@ pub(crate) fn run_everything(options: &Options) -> Result<()> {
         ]))?;
     }
     let tests = cargo_tests(&mut tally);
+    let covered = if answers("gcov") {
+        coverage::hold()
+    } else {
+        Ok(())
+    };
     println!(
         "{} passed, {} failed, {} skipped",
         tally.passed, tally.failed, tally.skipped
     );
-    tests
+    tests.and(covered)
 }
 
 /// Builds the command line first, since the system tests start it, then runs every test.

@@ -8,6 +8,7 @@
 )]
 
 mod bench;
+mod branches;
 mod burst;
 mod counters;
 mod limits;
