@@ -12,6 +12,11 @@ use wire::{Mode, Order, OrderId};
 /// Of a label that is carried out more often than this, only the first have figures of their own.
 pub(crate) const EACH_MAX: u32 = 100;
 
+/// How long after a step's time the next may begin for the current to have gone on: a step that
+/// is followed is held for so much longer than its time (`sequencer::orders`), and a run that was
+/// held or interrupted takes longer to go on.
+const AT_THE_NEXT_TICK: Span = Span::from_millis(50);
+
 /// One step as it was carried out.
 #[derive(Debug, Clone)]
 pub(crate) struct Stage<'a> {
@@ -53,9 +58,14 @@ impl Stage<'_> {
         self.end.saturating_since(self.begin)
     }
 
-    /// Whether it began where the other ended.
+    /// Whether it began where the other ended, and the sink was not off in between.
+    ///
+    /// A step ends on paper when its time is over, and the next begins at the sink's first tick
+    /// from then on: a little later, with the current before it still flowing.
     pub(crate) fn follows(&self, before: &Self) -> bool {
-        self.begin == before.end
+        self.begin
+            .checked_since(before.end)
+            .is_some_and(|late| late <= AT_THE_NEXT_TICK)
     }
 
     /// Whether it is the first of its label.
