@@ -145,6 +145,14 @@ impl Record {
         self.chunks_of(0..self.segments().len())
     }
 
+    /// As [`Record::chunks`], from a segment on, counted from 0.
+    ///
+    /// # Errors
+    /// As [`Record::chunks`].
+    pub fn chunks_from(&self, segment: usize) -> Result<Chunks, JournalError> {
+        self.chunks_of(segment..self.segments().len())
+    }
+
     /// As [`Record::chunks`], for some of the segments.
     pub(crate) fn chunks_of(&self, range: Range<usize>) -> Result<Chunks, JournalError> {
         let last = self.segments().last().copied();

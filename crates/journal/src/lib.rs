@@ -19,6 +19,7 @@
 //! reads no calendar clock (times come in; only [`WriterThread`] measures how long an entry has
 //! waited), and knows neither transport nor daemon.
 
+mod account;
 mod checked;
 mod checksum;
 mod chunk;
@@ -27,6 +28,7 @@ mod compact;
 mod entry;
 mod error;
 mod export;
+mod grain;
 mod layout;
 mod line;
 mod manifest;
@@ -45,6 +47,7 @@ pub use columns::{COLUMNS, Cell, Column, Kind, Row};
 pub use entry::{Body, ClockAlignment, Entry, Note, Side};
 pub use error::{Damage, Failure, JournalError};
 pub use export::{Progress, export_csv, for_each_row};
+pub use grain::{GRAIN, Grain, Grains, gather};
 pub use line::LineFault;
 pub use manifest::{ClockKind, Ended, Manifest, SequenceText};
 pub use record::{Entries, Record};

@@ -80,6 +80,12 @@ impl Record {
         }
     }
 
+    /// How many segments nothing will be added to any more.
+    pub fn segments_complete(&self) -> usize {
+        let open = usize::from(!self.sealed);
+        self.segments.len().saturating_sub(open)
+    }
+
     /// The segments' numbers.
     pub(crate) fn segments(&self) -> &[u32] {
         &self.segments

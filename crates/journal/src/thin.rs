@@ -7,7 +7,8 @@
 use std::ops::Range;
 
 use quantity::{Current, HostTime, SinkTime, Temperature, Voltage};
-use wire::TemperatureReading;
+use sink::correction::Correction;
+use wire::{Reading, TemperatureReading};
 
 use crate::{JournalError, Record, layout, segment};
 
@@ -43,6 +44,14 @@ pub struct Extremes<T> {
     pub max: T,
 }
 
+impl<T: Ord + Copy> Extremes<T> {
+    /// Takes further extremes in; the mean stays.
+    pub(crate) fn widen(&mut self, other: &Self) {
+        self.min = self.min.min(other.min);
+        self.max = self.max.max(other.max);
+    }
+}
+
 /// Thins the readbacks that arrived in a stretch of host time (its end not in it) to at most so
 /// many buckets; empty ones are left out. True values, by the record's own correction.
 ///
@@ -73,27 +82,7 @@ pub fn thin(
                 break;
             };
             let place = at.saturating_since(stretch.start).micros() / width;
-            let values = &reading.values;
-            let point = Point {
-                at,
-                time: reading.time,
-                current: [values.current_min, values.current, values.current_max]
-                    .map(|nominal| correction.current_from_readback(nominal).microamperes()),
-                voltage: [
-                    (values.voltage_min, values.current_min),
-                    (values.voltage, values.current),
-                    (values.voltage_max, values.current_max),
-                ]
-                .map(|(voltage, current)| {
-                    correction
-                        .voltage_from_readback(voltage, current)
-                        .microvolts()
-                }),
-                temperature: match values.temperature {
-                    TemperatureReading::Value(value) => Some(value.millidegrees_celsius()),
-                    TemperatureReading::Open | TemperatureReading::Short => None,
-                },
-            };
+            let point = Point::new(at, &reading, &correction);
             match &mut filling {
                 Some((open, bucket)) if *open == place => bucket.take(&point),
                 _ => {
@@ -125,7 +114,7 @@ fn touched(record: &Record, stretch: &Range<HostTime>) -> Result<Range<usize>, J
 }
 
 /// One readback, true: least, mean and largest, in micro-units (thousandths for temperature).
-struct Point {
+pub(crate) struct Point {
     at: HostTime,
     time: SinkTime,
     current: [i64; 3],
@@ -133,8 +122,35 @@ struct Point {
     temperature: Option<i64>,
 }
 
+impl Point {
+    pub(crate) fn new(at: HostTime, reading: &Reading, correction: &Correction) -> Self {
+        let values = &reading.values;
+        Self {
+            at,
+            time: reading.time,
+            current: [values.current_min, values.current, values.current_max]
+                .map(|nominal| correction.current_from_readback(nominal).microamperes()),
+            voltage: [
+                (values.voltage_min, values.current_min),
+                (values.voltage, values.current),
+                (values.voltage_max, values.current_max),
+            ]
+            .map(|(voltage, current)| {
+                correction
+                    .voltage_from_readback(voltage, current)
+                    .microvolts()
+            }),
+            temperature: match values.temperature {
+                TemperatureReading::Value(value) => Some(value.millidegrees_celsius()),
+                TemperatureReading::Open | TemperatureReading::Short => None,
+            },
+        }
+    }
+}
+
 /// A bucket that is being filled.
-struct Filling {
+#[derive(Debug, Clone)]
+pub(crate) struct Filling {
     first: (HostTime, SinkTime),
     last: (HostTime, SinkTime),
     current: Sum,
@@ -143,7 +159,7 @@ struct Filling {
 }
 
 impl Filling {
-    fn new(point: &Point) -> Self {
+    pub(crate) fn new(point: &Point) -> Self {
         Self {
             first: (point.at, point.time),
             last: (point.at, point.time),
@@ -153,7 +169,7 @@ impl Filling {
         }
     }
 
-    fn take(&mut self, point: &Point) {
+    pub(crate) fn take(&mut self, point: &Point) {
         self.last = (point.at, point.time);
         self.current.add(point.current);
         self.voltage.add(point.voltage);
@@ -164,7 +180,11 @@ impl Filling {
         }
     }
 
-    fn bucket(&self) -> Bucket {
+    pub(crate) fn count(&self) -> u64 {
+        self.current.count
+    }
+
+    pub(crate) fn bucket(&self) -> Bucket {
         Bucket {
             first_at: self.first.0,
             last_at: self.last.0,
@@ -182,6 +202,7 @@ impl Filling {
 }
 
 /// Extremes and an exact sum.
+#[derive(Debug, Clone)]
 struct Sum {
     min: i64,
     max: i64,
