@@ -13,6 +13,7 @@ use crate::context::Context;
 use crate::keys::Keys;
 use crate::records::Records;
 use crate::sinks::SinkHandle;
+use crate::sketch::Sketches;
 use crate::view::{Code, Problem};
 
 /// Rehearsals at once: one of two cores stays free for the sinks.
@@ -35,6 +36,8 @@ pub(crate) struct App {
     pub(crate) sinks: Vec<SinkHandle>,
     /// The records folder.
     pub(crate) records: Records,
+    /// Sketches of records, for plots.
+    pub(crate) sketches: Sketches,
     /// The idempotency keys.
     pub(crate) keys: Keys,
     /// What was asked for when each sink's latest run by hand began.

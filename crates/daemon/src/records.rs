@@ -166,6 +166,17 @@ fn last_change(path: &Path) -> Option<SystemTime> {
     of(path).max(of(&path.join("manifest.json")))
 }
 
+/// When a run was started, on its own clock.
+pub(crate) fn started(record: &Record) -> HostTime {
+    time_of(&record.manifest().created).unwrap_or(HostTime::ZERO)
+}
+
+/// An instant from RFC 3339 text.
+pub(crate) fn time_of(text: &str) -> Option<HostTime> {
+    let stamp: jiff::Timestamp = text.parse().ok()?;
+    Some(HostTime::from_micros(stamp.as_microsecond()))
+}
+
 /// A record in short.
 pub(crate) fn summary_of(name: &str, record: &Record) -> RecordSummary {
     let manifest: &Manifest = record.manifest();

@@ -4,7 +4,7 @@
 use std::time::Duration;
 
 use journal::{Body, Entry};
-use quantity::{Current, HostTime, Span, Voltage};
+use quantity::{Charge, Current, HostTime, Span, Voltage};
 use run::KeeperConfig;
 use run::rehearse::{Observer, RehearseError, rehearse};
 use sequence::Compiled;
@@ -14,7 +14,7 @@ use simulator::device::SimulatedSink;
 use sink::bench::{Link, SinkEntry};
 use sink::correction::Correction;
 use transport::port::HostClock;
-use wire::{Reading, TemperatureReading};
+use wire::{Counters, Reading, TemperatureReading};
 
 use crate::sinks::SinkHandle;
 use crate::view::{
@@ -189,6 +189,9 @@ struct Curve {
     start: Option<HostTime>,
     width: Span,
     points: Vec<Stretch>,
+    /// Counters of the first readback, from which charge is counted.
+    base: Option<Counters>,
+    charge: Charge,
 }
 
 /// All readbacks of a stretch of time, nominal.
@@ -196,6 +199,8 @@ struct Curve {
 struct Stretch {
     place: u64,
     first: Span,
+    /// True, when the first readback came.
+    charge: Charge,
     count: u64,
     /// Least, sum of means, largest.
     current: [i64; 3],
@@ -212,6 +217,8 @@ impl Curve {
             start: None,
             width: Span::from_millis(1),
             points: Vec::new(),
+            base: None,
+            charge: Charge::ZERO,
         }
     }
 
@@ -219,7 +226,15 @@ impl Curve {
         let start = *self.start.get_or_insert(at);
         let first = at.saturating_since(start);
         let values = &reading.values;
+        if let Some(counters) = reading.counters {
+            let base = self.base.get_or_insert(counters);
+            self.charge = self.correction.charge_from_counter(
+                counters.charge.saturating_sub(base.charge),
+                counters.time.saturating_since(base.time),
+            );
+        }
         let mut new = Stretch {
+            charge: self.charge,
             place: first.micros() / self.width.micros(),
             first,
             count: 1,
@@ -318,6 +333,7 @@ impl Stretch {
         let with = [least, mean(sum, self.count).unwrap_or(least), largest];
         view.time_s.push(self.first.seconds());
         view.readbacks.push(self.count);
+        view.charge_ah.push(Some(self.charge.ampere_hours()));
         view.current_min_a.push(current(least));
         view.current_a
             .push(current(mean(sum, self.count).unwrap_or(least)));

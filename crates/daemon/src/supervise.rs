@@ -36,6 +36,7 @@ use crate::notify::Notifier;
 use crate::records::Records;
 use crate::recovery::{Resumption, recover};
 use crate::sinks::SinkHandle;
+use crate::sketch::Sketches;
 use crate::worker::{self, Ask, Begin, Face, Snapshot, Worker, WorkerParts};
 
 /// How long workers may take to end.
@@ -123,6 +124,7 @@ impl Daemon {
             software: format!("sinkwarden {}", env!("CARGO_PKG_VERSION")),
             sinks,
             records,
+            sketches: Sketches::default(),
             keys,
             hands: Hands::default(),
             calibrations: Calibrations::default(),

@@ -27,7 +27,8 @@ pub use margin::MarginView;
 pub use problem::{Code, Problem};
 pub use reading::{ReadingView, StateWord};
 pub use record::{
-    DamageView, FiguresView, ReadingsView, RecordList, RecordSummary, RecordView, VerifyView,
+    CourseView, DamageView, FiguresView, HappeningView, ReadingsView, RecordList, RecordSummary,
+    RecordView, StretchView, VerifyView,
 };
 pub use run::{
     ClockWord, CrossingView, EndingView, EndingWord, HandView, LoopView, RunList, RunState,

@@ -40,7 +40,7 @@ use crate::view::{LinkState, RunView};
 pub(crate) use finish::ended;
 pub(crate) use hand::Readbacks;
 pub(crate) use link::{LinkParts, open};
-pub(crate) use publish::{Face, RunFacts, Snapshot, ending_text, ending_view};
+pub(crate) use publish::{Face, RunFacts, Snapshot, crossing_text, ending_text, ending_view};
 
 use publish::RunInProgress;
 

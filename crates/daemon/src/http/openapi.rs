@@ -51,6 +51,7 @@ pub(super) fn parts() -> (Router<Arc<App>>, Document) {
         .routes(routes!(records::list))
         .routes(routes!(records::one))
         .routes(routes!(records::readings))
+        .routes(routes!(records::course))
         .routes(routes!(records::figures))
         .routes(routes!(records::verify))
         .routes(routes!(events::stream))

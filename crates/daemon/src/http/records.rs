@@ -10,7 +10,7 @@ use axum::extract::{Path, State};
 use axum::http::{HeaderMap, header};
 use axum::response::{IntoResponse, Response};
 use columnar::export_parquet;
-use journal::{Bucket, Record, export_csv, thin};
+use journal::{Grain, Record, export_csv, thin};
 use quantity::{HostTime, Span};
 use serde::Deserialize;
 use tokio::runtime::Handle;
@@ -23,9 +23,10 @@ use super::extract::{Media, Params, accepted, id_of};
 use super::problem::aside;
 use crate::app::App;
 use crate::figures_file;
+use crate::records::started;
 use crate::view::{
-    Code, CurveView, EndingWord, FiguresView, Problem, ReadingsView, RecordList, RecordSummary,
-    RecordView, VerifyView,
+    Code, CourseView, CurveView, EndingWord, FiguresView, Problem, ReadingsView, RecordList,
+    RecordSummary, RecordView, VerifyView,
 };
 
 /// Points unless said.
@@ -174,6 +175,30 @@ pub(super) async fn readings(
     })
 }
 
+/// How a run went: its steps by their labels, and what happened. Works on a record that is being
+/// written.
+#[utoipa::path(
+    get, path = "/v1/records/{id}/course", tag = "records",
+    params(("id" = String, Path, description = "The record's id")),
+    responses((status = 200, body = CourseView), (status = 404, body = Problem)),
+)]
+pub(super) async fn course(
+    State(app): State<Arc<App>>,
+    Path(id): Path<String>,
+) -> Result<Json<CourseView>, Problem> {
+    let working = Arc::clone(&app);
+    with_record(&app, &id, move |record, id| {
+        let course = working
+            .sketches
+            .with(record, |sketch| sketch.course().clone());
+        let unreadable = |error: journal::JournalError| {
+            Problem::new(Code::RecordUnreadable, format!("record {id}: {error}"))
+        };
+        course.map(Json).map_err(unreadable)
+    })
+    .await
+}
+
 const CSV: &str = "text/csv; charset=utf-8; header=present";
 
 fn thinned(
@@ -185,52 +210,46 @@ fn thinned(
     let unreadable = |error: journal::JournalError| {
         Problem::new(Code::RecordUnreadable, format!("record {id}: {error}"))
     };
-    let running = app
-        .sinks
-        .iter()
-        .find(|sink| sink.view().run.is_some_and(|run| run.id == id));
-    let start = started(record);
-    let end = match (running, &record.manifest().ended) {
-        (Some(sink), _) => sink.now().saturating_add(Span::from_micros(1)),
-        (None, Some(ended)) => time_of(&ended.at).unwrap_or(start),
-        (None, None) => last_reading(record).map_err(unreadable)?.unwrap_or(start),
-    };
-    let end = end.saturating_add(Span::from_micros(1));
-    let from = stretch
-        .from_s
-        .map_or(Ok(start), |from| after(start, from))?;
-    let to = stretch.to_s.map_or(Ok(end), |to| after(start, to))?;
     let points = stretch.points.unwrap_or(POINTS_USUAL);
     if !(1..=POINTS_MAX).contains(&points) {
         let detail = format!("points={points}; 1 to {POINTS_MAX} can be asked for");
         return Err(Problem::new(Code::QueryUnreadable, detail));
     }
-    let buckets = thin(record, from..to, points).map_err(unreadable)?;
+    let start = started(record);
+    let from = stretch.from_s.map(|from| after(start, from)).transpose()?;
+    let to = stretch.to_s.map(|to| after(start, to)).transpose()?;
+    let running = app
+        .sinks
+        .iter()
+        .any(|sink| sink.view().run.is_some_and(|run| run.id == id));
+    let found = app.sketches.with(record, |sketch| {
+        let end = sketch
+            .last_at()
+            .unwrap_or(start)
+            .saturating_add(Span::from_micros(1));
+        let stretch = from.unwrap_or(start)..to.unwrap_or(end);
+        let length_s = end.saturating_since(start).seconds();
+        // Grains are fine enough while each point has two; where they are not, the stretch is
+        // short, and the record itself is read.
+        if sketch.grains_in(&stretch) as u64 >= u64::from(points) * 2 {
+            let grains = sketch.gather(&stretch, points);
+            return Ok((length_s, curve_of(&grains, start)));
+        }
+        let buckets = thin(record, stretch, points)?;
+        let charged = buckets.iter().map(|bucket| Grain {
+            bucket: *bucket,
+            charge: sketch.charge_at(bucket.first_at).unwrap_or_default(),
+        });
+        let grains: Vec<Grain> = charged.collect();
+        Ok((length_s, curve_of(&grains, start)))
+    });
+    let (length_s, curve) = found.and_then(|found| found).map_err(unreadable)?;
     Ok(ReadingsView {
         id,
-        in_progress: running.is_some(),
-        length_s: end.saturating_since(start).seconds(),
-        curve: curve_of(&buckets, start),
+        in_progress: running,
+        length_s,
+        curve,
     })
-}
-
-/// When a run was started, on its own clock.
-fn started(record: &Record) -> HostTime {
-    time_of(&record.manifest().created).unwrap_or(HostTime::ZERO)
-}
-
-fn time_of(text: &str) -> Option<HostTime> {
-    let stamp: jiff::Timestamp = text.parse().ok()?;
-    Some(HostTime::from_micros(stamp.as_microsecond()))
-}
-
-/// The last readback of a record that was cut off.
-fn last_reading(record: &Record) -> Result<Option<HostTime>, journal::JournalError> {
-    let mut last = None;
-    for chunk in record.chunks()? {
-        last = chunk?.readings.at.last().copied().or(last);
-    }
-    Ok(last)
 }
 
 fn after(start: HostTime, seconds: f64) -> Result<HostTime, Problem> {
@@ -239,9 +258,10 @@ fn after(start: HostTime, seconds: f64) -> Result<HostTime, Problem> {
         .map_err(|error| Problem::new(Code::QueryUnreadable, error.to_string()))
 }
 
-fn curve_of(buckets: &[Bucket], start: HostTime) -> CurveView {
+fn curve_of(grains: &[Grain], start: HostTime) -> CurveView {
     let mut view = CurveView::default();
-    for bucket in buckets {
+    for Grain { bucket, charge } in grains {
+        view.charge_ah.push(Some(charge.ampere_hours()));
         view.time_s
             .push(bucket.first_at.saturating_since(start).seconds());
         view.readbacks.push(bucket.count);
@@ -268,7 +288,7 @@ fn csv_of(curve: &CurveView) -> String {
             .map(|value| value.map_or_else(String::new, |value| value.to_string()))
             .collect()
     };
-    let columns: [(&str, Vec<String>); 10] = [
+    let columns: [(&str, Vec<String>); 11] = [
         ("time_s", numbers(&curve.time_s)),
         (
             "readbacks",
@@ -282,6 +302,7 @@ fn csv_of(curve: &CurveView) -> String {
         ("voltage_max_v", numbers(&curve.voltage_max_v)),
         ("temperature_degc", gaps(&curve.temperature_degc)),
         ("temperature_max_degc", gaps(&curve.temperature_max_degc)),
+        ("charge_ah", gaps(&curve.charge_ah)),
     ];
     let names: Vec<&str> = columns.iter().map(|(name, _)| *name).collect();
     let mut text = names.join(",") + "\r\n";

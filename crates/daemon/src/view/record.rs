@@ -76,6 +76,42 @@ pub struct ReadingsView {
     pub curve: CurveView,
 }
 
+/// How a run went, or how it goes: which label held when, and what happened.
+#[derive(Debug, Clone, Default, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct CourseView {
+    /// The steps in order; steps of one label after each other are one stretch.
+    pub stretches: Vec<StretchView>,
+    /// What a person would write down, in order.
+    pub happenings: Vec<HappeningView>,
+    /// How much of either is left out because there is too much of it; the record has all.
+    pub left_out: u64,
+}
+
+/// A stretch of a run under one label.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct StretchView {
+    /// Its beginning, since the start of the run; as the host learned of it.
+    pub from_s: f64,
+    /// Its end.
+    pub to_s: f64,
+    /// The label, if its steps have one.
+    pub label: Option<String>,
+    /// How many steps.
+    pub steps: u64,
+}
+
+/// Something that happened in a run.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct HappeningView {
+    /// When, since the start of the run.
+    pub at_s: f64,
+    /// Of which kind: `crossed`, `held`, `continued`, `readbacks_lost`, `rescheduled`,
+    /// `burst_missed`, `link_lost`, `link_back`, `resumed`, `tripped`, `ended`.
+    pub kind: String,
+    /// What, for people.
+    pub message: String,
+}
+
 /// Whether a record is as it was written.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
 pub struct VerifyView {

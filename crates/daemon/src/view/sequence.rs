@@ -202,6 +202,8 @@ pub struct CurveView {
     pub time_s: Vec<f64>,
     /// Readbacks in the stretch.
     pub readbacks: Vec<u64>,
+    /// Charge delivered when the first readback of the stretch came, since the first of the run.
+    pub charge_ah: Vec<Option<f64>>,
     /// Mean current.
     pub current_a: Vec<f64>,
     /// Least current.

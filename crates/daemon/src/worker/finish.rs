@@ -14,6 +14,7 @@ use super::record::RunRecord;
 use super::{Begin, RunInProgress, Worker};
 use crate::context::Context;
 use crate::figures_file;
+use crate::sketch::keep_sketch;
 use crate::view::{RunEvent, RunNews, RunState, RunView, rfc3339};
 
 impl Worker {
@@ -142,6 +143,9 @@ fn complete_record(thread: WriterThread, ended: Ended, run: RunView, context: &C
     };
     if sealed && let Err(why) = figures_file::write(&folder) {
         tracing::warn!(run = %run.id, "no figures: {why}");
+    }
+    if sealed && let Err(why) = keep_sketch(&folder) {
+        tracing::warn!(run = %run.id, "no sketch for plots: {why}");
     }
     let at = run
         .ending

@@ -439,7 +439,8 @@ pub(crate) fn reason_of(
     }
 }
 
-fn crossing_text(crossing: &Crossing) -> String {
+/// A crossing in a few words.
+pub(crate) fn crossing_text(crossing: &Crossing) -> String {
     let view = CrossingView::new(crossing);
     let name = word(&crossing.interlock).replace('_', " ");
     let by = if view.by_sink {

@@ -101,12 +101,13 @@ impl Keeping {
         Ok(())
     }
 
-    /// Ends the record and puts it under its seal.
+    /// Ends the record, puts it under its seal, and leaves a sketch beside it as the daemon does.
     ///
     /// # Errors
     /// What the disk says.
     pub(super) fn seal(mut self, how: &Ending, view: &EndingView) -> Result<()> {
         let description = self.description;
+        let folder = self.writer.folder().to_path_buf();
         self.writer
             .update_manifest(|manifest| manifest.description = description)?;
         self.writer.seal(Ended {
@@ -114,7 +115,7 @@ impl Keeping {
             at: view.at.clone(),
             reason: view.reason.clone(),
         })?;
-        Ok(())
+        daemon::keep_sketch(&folder).map_err(|why| anyhow::anyhow!("no sketch for plots: {why}"))
     }
 }
 
