@@ -11,6 +11,7 @@ use std::process::{Child, Command, Stdio};
 use anyhow::{Context as _, Result, bail};
 
 use crate::command::{cargo, root, run, show};
+use crate::page;
 
 /// The invented scenario: an overnight capacity test of cell K-01 on the sink `left`.
 const SINK: &str = "left";
@@ -26,6 +27,7 @@ const TIME_FACTOR: &str = "1000";
 )]
 pub(crate) fn run_through() -> Result<()> {
     println!("Building (a minute or two the first time) ...");
+    page::build_if_possible()?;
     run(&mut cargo(&["build", "--quiet", "--package", "sinkwarden"]))?;
     let program = program();
     let folder = root().join("target").join("demo");

@@ -3,6 +3,7 @@
 //! - `demo` runs the main job on the simulator, with nothing to configure;
 //! - `test` runs everything the project can check about itself;
 //! - `coverage` finds branches of the firmware's core that no test takes;
+//! - `page` builds the live page into the folder that the daemon takes it from;
 //! - `bench` measures what must be fast, on release builds;
 //! - `docs` rewrites the generated documents.
 
@@ -10,6 +11,7 @@ mod bench;
 mod command;
 mod coverage;
 mod demo;
+mod page;
 mod parts;
 mod test;
 
@@ -31,6 +33,8 @@ enum Chore {
     Test(test::Options),
     /// Find branches of the firmware's core that no test takes (a part of `test`).
     Coverage,
+    /// Build the live page (needs Node.js); the next build of the daemon takes it in.
+    Page,
     /// Measure what must be fast, on release builds.
     Bench(bench::Options),
     /// Rewrite the documents that are generated from the code.
@@ -42,6 +46,7 @@ fn main() -> Result<()> {
         Chore::Demo => demo::run_through(),
         Chore::Test(options) => test::run_everything(&options),
         Chore::Coverage => coverage::hold(),
+        Chore::Page => page::build(),
         Chore::Bench(options) => bench::measure(&options),
         Chore::Docs => test::rewrite_documents(),
     }

@@ -16,6 +16,9 @@ pub(crate) struct Part {
 
 impl Part {
     fn is_there(&self) -> bool {
+        if self.program == BROWSER {
+            return browser_is_there();
+        }
         let unpacked = self.unpacked.map(|path| root().join(path));
         answers(self.program) || unpacked.is_some_and(|path| path.to_str().is_some_and(answers))
     }
@@ -62,7 +65,52 @@ pub(crate) const PARTS: &[Part] = &[
     },
 ];
 
-/// The parts that are not there, in the order of the list.
+/// What building the page needs.
+pub(crate) const PAGE_BUILD: &[Part] = &[
+    Part {
+        program: "node",
+        unpacked: None,
+        purpose: "building and testing the live page",
+        install: "apt-get install nodejs npm (20 or later)",
+    },
+    Part {
+        program: "npm",
+        unpacked: None,
+        purpose: "fetching what the live page is built with",
+        install: "apt-get install npm",
+    },
+];
+
+const BROWSER: &str = "chromium";
+
+/// What testing the page needs beside.
+const PAGE_TEST: &[Part] = &[Part {
+    program: BROWSER,
+    unpacked: None,
+    purpose: "testing the live page in a real browser",
+    install: "apt-get install --no-install-recommends chromium",
+}];
+
+/// Whether a browser for the page's tests is where they look for it.
+pub(crate) fn browser_is_there() -> bool {
+    let named = std::env::var("CHROMIUM").ok();
+    let usual = [
+        "/usr/bin/chromium",
+        "/usr/bin/chromium-browser",
+        "/usr/bin/google-chrome",
+    ];
+    named
+        .as_deref()
+        .into_iter()
+        .chain(usual)
+        .any(|path| std::path::Path::new(path).exists())
+}
+
+/// The parts that are not there, in the order of the lists.
 pub(crate) fn missing() -> Vec<&'static Part> {
-    PARTS.iter().filter(|part| !part.is_there()).collect()
+    [PARTS, PAGE_BUILD, PAGE_TEST]
+        .into_iter()
+        .flatten()
+        .filter(|part| !part.is_there())
+        .collect()
 }

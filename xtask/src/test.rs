@@ -7,7 +7,7 @@ use anyhow::{Context as _, Result, bail};
 use clap::Args;
 
 use crate::command::{answers, cargo, run, show};
-use crate::{coverage, parts};
+use crate::{coverage, page, parts};
 
 /// How much to test.
 #[derive(Args)]
@@ -63,6 +63,7 @@ pub(crate) fn run_everything(options: &Options) -> Result<()> {
             part.program, part.purpose, part.install
         );
     }
+    let has_page = page::build_if_possible()?;
     if !options.tests_only {
         run(&mut cargo(&["fmt", "--all", "--check"]))?;
         run(&mut cargo(&[
@@ -81,11 +82,21 @@ pub(crate) fn run_everything(options: &Options) -> Result<()> {
     } else {
         Ok(())
     };
+    if has_page {
+        let counts = page::test()?;
+        tally.passed += counts.passed;
+        tally.failed += counts.failed;
+    }
     println!(
         "{} passed, {} failed, {} skipped",
         tally.passed, tally.failed, tally.skipped
     );
-    tests.and(covered)
+    tests?;
+    covered?;
+    if tally.failed > 0 {
+        bail!("tests failed: see above");
+    }
+    Ok(())
 }
 
 /// Builds the command line first, since the system tests start it, then runs every test.

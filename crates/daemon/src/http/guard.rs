@@ -19,6 +19,7 @@ use axum::middleware::Next;
 use axum::response::Response;
 use tokio::time::timeout;
 
+use super::page;
 use crate::app::App;
 use crate::config::Scope;
 use crate::view::{Code, Problem};
@@ -120,7 +121,8 @@ fn has_token(app: &App, request: &Request) -> Result<(), Problem> {
     let Some(tokens) = &app.tokens else {
         return Ok(());
     };
-    if matches!(request.uri().path(), "/" | "/health") {
+    let path = request.uri().path();
+    if page::is_page(path) || path == "/health" {
         return Ok(());
     }
     let token = request

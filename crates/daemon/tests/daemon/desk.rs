@@ -94,6 +94,12 @@ impl Desk {
         self.ask("GET", path, &[], None)
     }
 
+    /// The status of what need not be text.
+    pub(crate) fn get_bytes(&self, path: &str) -> u16 {
+        let answer = ureq::get(format!("{}{path}", self.url)).call().unwrap();
+        answer.status().as_u16()
+    }
+
     pub(crate) fn post(&self, path: &str) -> Answer {
         self.ask("POST", path, &[], None)
     }

@@ -1,29 +1,3 @@
-<!doctype html>
-<html lang="en">
-<head>
-<meta charset="utf-8">
-<meta name="viewport" content="width=device-width, initial-scale=1">
-<title>Bench</title>
-<style>
-:root { color-scheme: light dark; --ink: #1d1c1a; --paper: #fbf9f3; --rule: #b9b2a1; --accent: #7a2e1d; }
-@media (prefers-color-scheme: dark) { :root { --ink: #e9e4d8; --paper: #1c1b19; --rule: #55504a; --accent: #e0836c; } }
-body { margin: 0 auto; max-width: 60rem; padding: 1rem; color: var(--ink); background: var(--paper); font: 1rem/1.5 system-ui, sans-serif; font-variant-numeric: tabular-nums; }
-h1 { font: 1.6rem/1.2 Georgia, serif; border-bottom: 1px solid var(--rule); padding-bottom: .4rem; }
-table { width: 100%; border-collapse: collapse; }
-th, td { text-align: left; padding: .4rem .6rem .4rem 0; border-bottom: 1px solid var(--rule); vertical-align: top; }
-button { font: inherit; padding: .5rem 1.2rem; color: var(--paper); background: var(--accent); border: 0; border-radius: .2rem; }
-#said { min-height: 1.5em; }
-</style>
-</head>
-<body>
-<h1>Bench <span id="bench"></span></h1>
-<p><button id="all" type="button">Off, every sink</button> <span id="said" role="status"></span></p>
-<table>
-<thead><tr><th>Sink</th><th>Link</th><th>Voltage</th><th>Current</th><th>Heat sink</th><th>Run</th><th>Nearest interlock</th><th></th></tr></thead>
-<tbody id="sinks"></tbody>
-</table>
-<p>Everything on this page is in <a href="/v1/openapi.json">the HTTP interface</a>. In danger, cut the circuit by hand.</p>
-<script>
 "use strict";
 const byId = (id) => document.getElementById(id);
 const say = (text) => { byId("said").textContent = text; };
@@ -84,6 +58,3 @@ async function refresh() {
 }
 byId("all").onclick = () => off("/v1/off");
 refresh();
-</script>
-</body>
-</html>
