@@ -1,0 +1,266 @@
+// What the daemon says over HTTP, as far as the page reads it. The full description is the
+// daemon's own, at /v1/openapi.json; names carry their units.
+
+export type LinkState = "lost" | "greeting" | "connected" | "refused";
+
+export interface Link {
+  kind: "serial" | "tcp" | "simulated";
+  port: string;
+  state: LinkState;
+  reason: string | null;
+  time_factor: number | null;
+}
+
+export interface Reading {
+  at: string;
+  voltage_v: number;
+  voltage_min_v: number;
+  voltage_max_v: number;
+  current_a: number;
+  current_min_a: number;
+  current_max_a: number;
+  power_w: number;
+  temperature_degc: number | null;
+  sensor_fault: string | null;
+  state: "off" | "on" | "saturated" | "latched";
+  latched_by: string | null;
+}
+
+export interface Margin {
+  interlock: string;
+  unit: string;
+  value: number;
+  worst_value: number;
+  threshold: number;
+  nearness: number;
+  worst_nearness: number;
+}
+
+export interface Crossing {
+  interlock: string;
+  unit: string;
+  value: number;
+  threshold: number;
+  by_sink: boolean;
+}
+
+export type EndingWord = "finished" | "stopped" | "tripped" | "interrupted";
+
+export interface Ending {
+  how: EndingWord;
+  interlock: string | null;
+  at: string;
+  reason: string | null;
+}
+
+export interface Step {
+  op: number;
+  label: string | null;
+  since_s: number;
+  charge_ah: number | null;
+}
+
+export interface Round {
+  label: string | null;
+  round: number;
+  times: number | null;
+}
+
+export type RunState = "starting" | "running" | "held" | "interrupted" | "ending" | "ended";
+export type Clock = "real" | "time_lapse" | "virtual";
+
+export interface Run {
+  id: string;
+  sink: string;
+  dut: string;
+  title: string;
+  state: RunState;
+  clock: Clock;
+  started: string;
+  elapsed_s: number;
+  expected_s: number;
+  left_at_most_s: number | null;
+  step: Step | null;
+  repeats: Round[];
+  setpoint_a: number | null;
+  charge_ah: number;
+  energy_wh: number;
+  reading: Reading | null;
+  margins: Margin[];
+  crossings: Crossing[];
+  ending: Ending | null;
+  record: string;
+  sealed: boolean;
+}
+
+export interface Sink {
+  name: string;
+  at: string;
+  link: Link;
+  limits: { current_a: number; power_w: number; voltage_v: number; temperature_degc: number };
+  calibrated: boolean;
+  reading: Reading | null;
+  latched_by: string | null;
+  run: Run | null;
+}
+
+export interface SinkList {
+  bench: string;
+  sinks: Sink[];
+}
+
+export interface RunEvent {
+  run: string;
+  sink: string;
+  dut: string;
+  at: string;
+  message: string;
+  calls_for_person: boolean;
+  news: string | Record<string, unknown>;
+}
+
+export interface LinkEvent {
+  sink: string;
+  at: string;
+  state: LinkState;
+  reason: string | null;
+}
+
+export interface Off {
+  sink: string;
+  acknowledged: boolean;
+  took_s: number;
+  detail: string | null;
+}
+
+export interface Place {
+  line: number;
+  column: number;
+  excerpt: string;
+  caret: number;
+  width: number;
+}
+
+export interface Finding {
+  severity: "error" | "warning";
+  rule: string;
+  message: string;
+  hint: string;
+  pointer: string;
+  place?: Place;
+}
+
+export interface Problem {
+  title: string;
+  status: number;
+  detail: string;
+  code: string;
+  findings?: Finding[];
+}
+
+export interface Outline {
+  time_s: number[];
+  current_a: number[];
+  bands: [number, number, number, number][];
+}
+
+export interface Check {
+  findings: Finding[];
+  title: string;
+  sink: string;
+  dut: string;
+  labels: string[];
+  duration_at_most_s: number;
+  readbacks_at_most: number;
+  forecast: { duration_s: number; charge_ah: number; energy_wh: number };
+  outline: Outline;
+}
+
+/** Thinned readbacks, one array a column; the same index belongs to the same stretch of time. */
+export interface Curve {
+  time_s: number[];
+  readbacks: number[];
+  charge_ah: (number | null)[];
+  current_a: number[];
+  current_min_a: number[];
+  current_max_a: number[];
+  voltage_v: number[];
+  voltage_min_v: number[];
+  voltage_max_v: number[];
+  temperature_degc: (number | null)[];
+  temperature_max_degc: (number | null)[];
+}
+
+export interface Rehearsal {
+  check: Check;
+  ending: Ending;
+  duration_s: number;
+  charge_ah: number;
+  energy_wh: number;
+  peak_temperature_degc: number | null;
+  margins: Margin[];
+  readbacks: number;
+  curve: Curve;
+  took_s: number;
+}
+
+export interface Readings {
+  id: string;
+  in_progress: boolean;
+  length_s: number;
+  curve: Curve;
+}
+
+/** A stretch of a run under one label. */
+export interface Stretch {
+  from_s: number;
+  to_s: number;
+  label: string | null;
+  steps: number;
+}
+
+export interface Happening {
+  at_s: number;
+  kind: string;
+  message: string;
+}
+
+export interface Course {
+  stretches: Stretch[];
+  happenings: Happening[];
+  left_out: number;
+}
+
+export interface RecordSummary {
+  id: string;
+  folder: string;
+  sink: string;
+  dut: string;
+  title: string;
+  started: string;
+  clock: Clock;
+  labels: string[];
+  ending: Ending | null;
+  sealed: boolean;
+  resumed: string[];
+}
+
+export interface RecordList {
+  records: RecordSummary[];
+  unreadable: { folder: string; reason: string }[];
+}
+
+export interface RecordOne {
+  summary: RecordSummary;
+  manifest: { sequence: { text: string; files: Record<string, string> }; [key: string]: unknown };
+}
+
+export interface Figure {
+  name: string;
+  label: string | null;
+  occurrence?: number | null;
+  value: number;
+  unit: string;
+  expanded: { half_width: number; coverage_factor: number; probability: number } | null;
+  method: { how: string; source: string };
+}
