@@ -80,6 +80,23 @@ pub fn bench_on_reference(port: &Path, serial_number: u32) -> String {
     })
 }
 
+/// The same bench, patient with a machine that has other tests to run: silence is borne for so
+/// many seconds by the host, and by the sink for as long as its protocol allows.
+///
+/// # Panics
+/// If the bench file has changed so that its silence cannot be found.
+pub fn patient(bench: &str, silence_s: u32) -> String {
+    let silence = format!("silence = {{ for = \"{silence_s} s\" }}");
+    let deadman = format!("deadman = \"{} s\"", silence_s.min(10));
+    let usual = ["silence = { for = \"2 s\" }", "deadman = \"2 s\""];
+    for text in usual {
+        assert!(bench.contains(text), "the bench file has no {text}");
+    }
+    bench
+        .replace(usual[0], &silence)
+        .replace(usual[1], &deadman)
+}
+
 /// The sink `left` as the bench file has it.
 ///
 /// # Panics

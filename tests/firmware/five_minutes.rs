@@ -15,7 +15,7 @@ use sequencer::event::{Ending, Finding, Happening};
 use serde_json::Value;
 use system_tests::bridge::{Bridge, Far, Faults};
 use system_tests::daemon_process::{Daemon, program};
-use system_tests::sequences::bench_on_reference;
+use system_tests::sequences::{bench_on_reference, patient};
 use wire::{Mode, Order, OrderId};
 
 use crate::board::Board;
@@ -61,7 +61,8 @@ fn five_minutes_on_the_emulated_board_are_as_rehearsed_and_lose_no_charge() {
     let mut bridge = Bridge::new(&port, 115_200, Faults::default(), 1).unwrap();
     bridge.attach(Far::Local(board.port())).unwrap();
     let bench = folder.path().join("bench.toml");
-    std::fs::write(&bench, bench_on_reference(&port, SERIAL)).unwrap();
+    let text = patient(&bench_on_reference(&port, SERIAL), 10);
+    std::fs::write(&bench, text).unwrap();
     let rehearsed = rehearse(folder.path(), &bench);
 
     let daemon = Daemon::start(&bench, &folder.path().join("records"));

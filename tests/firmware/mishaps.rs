@@ -9,7 +9,7 @@ use sequencer::event::Happening;
 use serde_json::Value;
 use system_tests::bridge::{Bridge, Far, Faults};
 use system_tests::daemon_process::Daemon;
-use system_tests::sequences::{bench_on_reference, discharge};
+use system_tests::sequences::{bench_on_reference, discharge, patient};
 use tempfile::TempDir;
 
 use crate::board::{Board, pause};
@@ -31,20 +31,16 @@ struct Night {
 impl Night {
     /// With the bench's usual silence of 2 s, like the deadman.
     fn begin(far: Far, serial: u32) -> Self {
-        Self::begin_with_silence(far, serial, "2 s")
+        Self::begin_with(far, serial, str::to_owned)
     }
 
-    fn begin_with_silence(far: Far, serial: u32, silence: &str) -> Self {
+    fn begin_with(far: Far, serial: u32, change: impl Fn(&str) -> String) -> Self {
         let folder = tempfile::tempdir().unwrap();
         let port = folder.path().join("sink");
         let mut bridge = Bridge::new(&port, 115_200, Faults::default(), 1).unwrap();
         bridge.attach(far).unwrap();
         let bench = folder.path().join("bench.toml");
-        let usual = "silence = { for = \"2 s\" }";
-        let text = bench_on_reference(&port, serial);
-        assert!(text.contains(usual));
-        let text = text.replace(usual, &format!("silence = {{ for = \"{silence}\" }}"));
-        std::fs::write(&bench, text).unwrap();
+        std::fs::write(&bench, change(&bench_on_reference(&port, serial))).unwrap();
         let daemon = Daemon::start(&bench, &folder.path().join("records"));
         let night = Self {
             daemon,
@@ -115,6 +111,14 @@ impl Night {
     }
 }
 
+/// The host bears more than the sink's deadman.
+fn longer_silence(bench: &str) -> String {
+    bench.replace(
+        "silence = { for = \"2 s\" }",
+        "silence = { for = \"30 s\" }",
+    )
+}
+
 fn process() -> (Process, Far) {
     let (process, port) = Process::start(&program(None), &["--source", "cell"]);
     (process, Far::Local(port))
@@ -129,7 +133,7 @@ fn assert_drawn(charge: Charge, planned: i64, within: i64) {
 #[test]
 fn a_cable_out_for_less_than_the_deadman_costs_a_run_neither_its_time_nor_its_charge() {
     let (_process, far) = process();
-    let mut night = Night::begin(far, SERIAL_PROCESS);
+    let mut night = Night::begin_with(far, SERIAL_PROCESS, |bench| patient(bench, 10));
     let id = night.drawing(8, "end");
     night.bridge.unplug();
     pause(Duration::from_millis(400));
@@ -154,7 +158,7 @@ fn a_cable_out_for_longer_than_the_silence_borne_trips() {
 #[test]
 fn a_cable_out_for_longer_than_the_deadman_trips_it_and_the_sink_is_off() {
     let (_process, far) = process();
-    let mut night = Night::begin_with_silence(far, SERIAL_PROCESS, "30 s");
+    let mut night = Night::begin_with(far, SERIAL_PROCESS, longer_silence);
     let id = night.drawing(60, "end");
     night.bridge.unplug();
     pause(Duration::from_secs(4));
@@ -168,7 +172,7 @@ fn a_cable_out_for_longer_than_the_deadman_trips_it_and_the_sink_is_off() {
 #[test]
 fn a_cable_out_for_longer_is_made_up_for_if_the_sequence_says_so() {
     let (_process, far) = process();
-    let mut night = Night::begin_with_silence(far, SERIAL_PROCESS, "30 s");
+    let mut night = Night::begin_with(far, SERIAL_PROCESS, longer_silence);
     let id = night.drawing(8, "resume");
     night.bridge.unplug();
     pause(Duration::from_secs(4));

@@ -58,14 +58,19 @@ impl Process {
     /// Starts it; what comes back is the far end of its port.
     pub(crate) fn start(program: &Path, arguments: &[&str]) -> (Self, UnixStream) {
         let (near, far) = UnixStream::pair().unwrap();
+        (Self::start_on(program, arguments, OwnedFd::from(far)), near)
+    }
+
+    /// Starts it on a port that is open already.
+    pub(crate) fn start_on(program: &Path, arguments: &[&str], port: OwnedFd) -> Self {
         let _alone = pty::alone();
         let child = Command::new(program)
             .args(["--fd", "0"])
             .args(arguments)
-            .stdin(Stdio::from(OwnedFd::from(far)))
+            .stdin(Stdio::from(port))
             .spawn()
             .unwrap();
-        (Self(child), near)
+        Self(child)
     }
 
     pub(crate) fn kill(&mut self) {

@@ -1,5 +1,7 @@
 //! `prove` on the firmware itself: sound builds pass, and each broken one is found out.
 
+use std::net::TcpListener;
+use std::os::fd::OwnedFd;
 use std::path::Path;
 
 use prove::{Options, Report};
@@ -39,6 +41,19 @@ fn the_sound_firmware_holds_everything_on_a_pseudo_terminal() {
     let (holds, _, not_shown) = report.counts();
     assert_eq!(not_shown, 1, "only what needs a reset: {report}");
     assert_eq!(holds + not_shown, prove::guarantees().count());
+}
+
+#[test]
+fn the_sound_firmware_holds_everything_behind_a_network_port() {
+    let listener = TcpListener::bind("127.0.0.1:0").unwrap();
+    let address = listener.local_addr().unwrap().to_string();
+    let mut port = prove::open(&address, 115_200).unwrap();
+    let (stream, _) = listener.accept().unwrap();
+    stream.set_nodelay(true).unwrap();
+    let _process = Process::start_on(&program(None), &["--source", "cell"], OwnedFd::from(stream));
+    let report = prove::run(port.as_mut(), &options(), &mut |_| {}).unwrap();
+    assert!(report.holds(), "{report}");
+    assert_eq!(report.counts().2, 1, "{report}");
 }
 
 #[test]

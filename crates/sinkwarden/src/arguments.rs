@@ -184,6 +184,10 @@ pub(crate) struct Prove {
     /// The serial port's rate, bits a second.
     #[arg(long, value_name = "N", default_value_t = transport::port::BAUD_DEFAULT)]
     pub(crate) baud: u32,
+    /// How much later than one tick the sink may act. A microcontroller needs no more than the
+    /// 2 ms it is given; a process or an emulator on a busy machine may need "500 ms".
+    #[arg(long, value_name = "TIME", default_value = "2 ms")]
+    pub(crate) late: Span,
 }
 
 /// `rehearse`.

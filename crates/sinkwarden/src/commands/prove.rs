@@ -19,6 +19,7 @@ pub(super) fn carry_out(arguments: &Prove, output: Output) -> Result<Exit> {
     }
     let options = prove::Options {
         source: arguments.with_source,
+        late: arguments.late,
         ..prove::Options::default()
     };
     let mut port = prove::open(&arguments.port, arguments.baud)?;
