@@ -102,7 +102,16 @@ pub(crate) fn run_everything(options: &Options) -> Result<()> {
 /// Builds the command line first, since the system tests start it, then runs every test.
 fn cargo_tests(tally: &mut Tally) -> Result<()> {
     run(&mut cargo(&["build", "--quiet", "--package", "sinkwarden"]))?;
-    let mut command = cargo(&["test", "--workspace", "--no-fail-fast"]);
+    let crates = cargo_test(&["--workspace", "--exclude", "system-tests"], tally);
+    // The whole-system tests wait for real time most of theirs, one of them for five minutes.
+    let system = ["--package", "system-tests", "--", "--test-threads", "4"];
+    crates.and(cargo_test(&system, tally))
+}
+
+/// Runs `cargo test` with these arguments, passes on what it says, and adds up its counts.
+fn cargo_test(arguments: &[&str], tally: &mut Tally) -> Result<()> {
+    let mut command = cargo(&["test", "--no-fail-fast"]);
+    command.args(arguments);
     command.stdout(Stdio::piped());
     let mut child = command
         .spawn()
