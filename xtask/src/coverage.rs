@@ -113,9 +113,9 @@ impl Branches {
         let answer: Value = serde_json::from_slice(&output.stdout)
             .with_context(|| format!("`gcov` said of {}", counted.display()))?;
         for file in list(&answer, "files") {
-            let path = file.get("file").and_then(Value::as_str).unwrap_or_default();
-            if path.ends_with(".c") {
-                self.add_file(Path::new(path), file)?;
+            let path = Path::new(file.get("file").and_then(Value::as_str).unwrap_or_default());
+            if path.extension().is_some_and(|end| end == "c") {
+                self.add_file(path, file)?;
             }
         }
         Ok(())
