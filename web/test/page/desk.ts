@@ -70,6 +70,14 @@ export class Daemon {
     await ended;
   }
 
+  /** Seconds of processor time that the daemon has taken so far; what it does counts the same
+   * however loaded the machine is. */
+  processor_s(): number {
+    const stat = readFileSync(`/proc/${this.#child?.pid ?? 0}/stat`, "utf8");
+    const fields = stat.slice(stat.lastIndexOf(")") + 2).split(" ");
+    return (Number(fields[11]) + Number(fields[12])) / 100;
+  }
+
   /** Rehearses a sequence on the sink `left` and keeps its record among the daemon's. */
   async keepRehearsal(sequence: string, folder: string): Promise<void> {
     const file = join(this.folder, `${folder}.json`);

@@ -87,7 +87,7 @@ test("a trip is told with its reason and its number, and is reset", async () => 
   const left = row(page, "left");
   const told = left.getByText(/^Tripped: undervoltage, 3\.\d+.V where 4\.000\d*.V is the limit/);
   await told.waitFor({ timeout: 90_000 });
-  await page.getByRole("alert").getByText(/undervoltage/).waitFor();
+  await page.getByRole("alert").getByText(/undervoltage/).first().waitFor();
   await left.getByText("tripped: undervoltage", { exact: true }).waitFor();
   await picture(page, "bench-tripped");
   assert.deepEqual(await violations(page), []);
