@@ -28,12 +28,13 @@ after(async () => {
 });
 
 /** The whole night stands on the page. */
-const DRAWN = 'figure[aria-label*="to 12"]';
+const DRAWN = 'figure[aria-label$="min"]';
 /** How long it takes in the page until something is so, from an action on. */
 const timed = (page: Page, act: string, isSo: string): Promise<number> =>
   page.evaluate(
     ([act, isSo]) =>
-      new Promise<number>((resolve) => {
+      new Promise<number>((resolve, reject) => {
+        setTimeout(() => reject(new Error(`waited 60 s for ${isSo}`)), 60_000);
         const begun = performance.now();
         (document.querySelector<HTMLElement>(act) as HTMLElement).click();
         const look = (): void => {
