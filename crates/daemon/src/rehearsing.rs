@@ -53,7 +53,7 @@ pub(crate) fn run(
     let mut device =
         simulator::simulated_sink(&entry).map_err(|error| refused(error.to_string()))?;
     let config = KeeperConfig::for_sink(&entry).map_err(|error| refused(error.to_string()))?;
-    let check = CheckView::new(&compiled.plan, compiled.warnings.list, OUTLINE_POINTS);
+    let check = CheckView::new(&compiled, OUTLINE_POINTS);
     let longest = compiled.plan.duration_at_most();
     let at_most = longest.saturating_add(BEYOND_PLAN).min(UNBOUNDED_MAX);
     let points = request.points.unwrap_or(POINTS_USUAL).clamp(2, POINTS_MAX);

@@ -10,6 +10,7 @@ mod calibration;
 mod event;
 mod hand;
 mod margin;
+mod plan;
 mod problem;
 mod reading;
 mod record;
@@ -24,6 +25,7 @@ pub use calibration::{
 pub use event::{Event, EventBody, GoneEvent, LinkEvent, RunEvent, RunNews};
 pub use hand::{HandRequest, SetpointRequest};
 pub use margin::MarginView;
+pub use plan::{PlanStepView, PlannedMarginView, TemperaturesView};
 pub use problem::{Code, Problem};
 pub use reading::{ReadingView, StateWord};
 pub use record::{

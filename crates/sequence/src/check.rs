@@ -6,6 +6,7 @@
 //! table.
 
 mod burst;
+mod calibration;
 mod dut;
 mod envelope;
 mod flow;
@@ -98,7 +99,9 @@ const PLAN_RULES: &[PlanRule] = &[
     record::charge_within_rated,
     record::limits_within_reach,
     record::limits_leave_room,
-    record::certificate_valid,
+    calibration::there,
+    calibration::valid,
+    calibration::covers,
 ];
 
 /// Every finding of the rules on the draft.

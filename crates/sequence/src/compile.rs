@@ -1,10 +1,10 @@
 //! From text to plan: the stages in their order, and what the caller gets.
 
-use quantity::Span;
 use sink::bench::SinkEntry;
 use sink::correction::Correction;
 
 use crate::Files;
+use crate::calibration::Calibration;
 use crate::check::{self, PlanScene, Scene};
 use crate::draft;
 use crate::facts::Facts;
@@ -12,7 +12,7 @@ use crate::finding::{Finding, Findings};
 use crate::format::SEQUENCE;
 use crate::json::{self, Node, Source, Value};
 use crate::lower::lower;
-use crate::plan::Plan;
+use crate::plan::{Foresight, Plan};
 use crate::rule::Rule;
 use crate::shape::{Shape, judge};
 
@@ -28,9 +28,8 @@ pub struct Options {
     pub dut_label: Option<String>,
     /// The sink's calibration; identity for an uncalibrated sink.
     pub correction: Correction,
-    /// How long the sink's certificate is still valid when the run begins, zero if it is not;
-    /// `None` for a sink without one, whose figures say so themselves.
-    pub certificate_valid_for: Option<Span>,
+    /// What stands behind the sink's readings when the run begins.
+    pub calibration: Calibration,
     /// Free bytes on the disk that takes the record; `None`: not judged.
     pub disk_free_bytes: Option<u64>,
     /// Bytes that a readback takes in the record.
@@ -42,7 +41,7 @@ impl Default for Options {
         Self {
             dut_label: None,
             correction: Correction::IDENTITY,
-            certificate_valid_for: None,
+            calibration: Calibration::NotJudged,
             disk_free_bytes: None,
             // A line of JSON with two readback lines' worth of numbers, uncompressed.
             bytes_per_readback: 400,
@@ -57,6 +56,8 @@ pub struct Compiled {
     pub plan: Plan,
     /// Warnings that stand on the record.
     pub warnings: Findings,
+    /// What the plan will come to.
+    pub foresight: Foresight,
 }
 
 /// A sequence that is refused, with every finding.
@@ -106,6 +107,7 @@ pub fn compile_with(
     findings.settle(&source, root.as_ref());
     match plan {
         Some(plan) if !findings.refuse() => Ok(Compiled {
+            foresight: plan.foresight(facts.envelope.as_ref().ok()),
             plan,
             warnings: findings,
         }),

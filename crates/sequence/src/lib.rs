@@ -16,6 +16,7 @@
 //! What this crate deliberately does not do: it opens no file (profiles are handed in as text),
 //! knows no wire and no clock, and starts nothing.
 
+mod calibration;
 mod check;
 mod compile;
 mod draft;
@@ -32,6 +33,7 @@ mod shape;
 
 use std::collections::BTreeMap;
 
+pub use calibration::Calibration;
 pub use compile::{Compiled, Options, Refused, compile, compile_with, files_wanted};
 pub use facts::{Facts, Thresholds};
 pub use finding::{Finding, Findings, Place};

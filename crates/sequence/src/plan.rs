@@ -13,6 +13,7 @@
 
 mod estimate;
 mod forecast;
+mod foresight;
 mod validate;
 
 use quantity::{Charge, Current, Energy, Power, Resistance, Span, Temperature, Voltage};
@@ -20,6 +21,7 @@ use serde::{Deserialize, Serialize};
 use sink::correction::Correction;
 
 pub use forecast::{Band, Forecast, Outline, OutlinePoint};
+pub use foresight::{Foresight, Peak};
 pub use validate::PlanError;
 
 /// A place in [`Plan::ops`].

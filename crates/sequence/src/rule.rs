@@ -207,8 +207,12 @@ rules! {
         "A limit on the time of the run is within what the run can take."
     LimitBeforeEnd "limit-before-end" Warning
         "The interlocks on charge, energy and time leave room for what the run will probably take."
+    CertificateAbsent "certificate-absent" Warning
+        "The sink has a certificate; without one every figure is nominal, uncalibrated."
     CertificateExpires "certificate-expires" Warning
         "The sink's certificate is valid for the whole of the longest possible run."
+    BeyondCalibration "beyond-calibration" Warning
+        "The currents drawn, and the DUT's voltages, lie within what the sink's certificate was calibrated over."
     DiskSpace "disk-space" Error
         "The record of the longest possible run fits the disk."
     RecordLarge "record-large" Warning

@@ -5,8 +5,9 @@ use std::path::Path;
 
 use anyhow::Result;
 use journal::{Disk, Storage as _};
-use sequence::{Compiled, Files, Options, Refused, compile, files_wanted};
+use sequence::{Calibration, Compiled, Files, Options, Refused, compile, files_wanted};
 use sink::bench::SinkEntry;
+use sink::calibration::Certificate;
 use sink::correction::Correction;
 
 use crate::arguments::SequenceOn;
@@ -88,7 +89,14 @@ impl Submission {
     /// # Errors
     /// [`Refused`] with every finding.
     pub(crate) fn compile(&self) -> Result<Compiled, Refused> {
+        // The file was computed again from its points when it was read.
+        let certificate = self
+            .certificate
+            .as_ref()
+            .and_then(|value| Certificate::from_json(&value.to_string()).ok());
+        let now_unix_s = jiff::Timestamp::now().as_second();
         let options = Options {
+            calibration: Calibration::of(certificate.as_ref(), now_unix_s),
             dut_label: self.dut.clone(),
             correction: self.correction,
             disk_free_bytes: self.disk_free_bytes,

@@ -30,12 +30,7 @@ pub(super) async fn check(
         let request: SequenceRequest = body.parse()?;
         let sink = app.sink(&request.sink)?;
         let compiled = starting::check(&app, sink, &request)?;
-        let findings = compiled.warnings.list;
-        Ok(Json(CheckView::new(
-            &compiled.plan,
-            findings,
-            OUTLINE_POINTS,
-        )))
+        Ok(Json(CheckView::new(&compiled, OUTLINE_POINTS)))
     })
     .await
 }

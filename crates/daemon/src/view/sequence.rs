@@ -2,13 +2,14 @@
 
 use std::collections::BTreeMap;
 
-use sequence::Finding;
-use sequence::plan::Plan;
+use sequence::{Compiled, Finding};
 use serde::{Deserialize, Deserializer, Serialize, Serializer};
 use serde_json::value::RawValue;
 use utoipa::ToSchema;
 
-use super::{CrossingView, EndingView, MarginView};
+use super::{
+    CrossingView, EndingView, MarginView, PlanStepView, PlannedMarginView, TemperaturesView,
+};
 
 /// The text of a sequence file: in a request either as text or as the JSON itself, whose places
 /// in findings then count from its opening brace.
@@ -95,8 +96,14 @@ pub struct CheckView {
     pub duration_at_most_s: f64,
     /// The most readbacks it can give.
     pub readbacks_at_most: u64,
+    /// Its steps, in the order of the sequence; the first of them if they are many.
+    pub steps: Vec<PlanStepView>,
     /// What it will probably do.
     pub forecast: ForecastView,
+    /// How hot the sink gets, at most; null where that cannot be worked out.
+    pub temperatures: Option<TemperaturesView>,
+    /// How near each interlock is to come, the nearest first; of those that can be foreseen.
+    pub margins: Vec<PlannedMarginView>,
     /// Its planned shape.
     pub outline: OutlineView,
 }
@@ -124,9 +131,10 @@ pub struct OutlineView {
 }
 
 impl CheckView {
-    /// What the check says of a plan.
-    pub fn new(plan: &Plan, findings: Vec<Finding>, points_max: usize) -> Self {
-        let forecast = plan.forecast();
+    /// What the check says of a sequence that may run.
+    pub fn new(compiled: &Compiled, points_max: usize) -> Self {
+        let plan = &compiled.plan;
+        let forecast = compiled.foresight.forecast;
         let outline = plan.outline(points_max);
         let bands = outline.bands.iter().map(|band| {
             [
@@ -137,7 +145,7 @@ impl CheckView {
             ]
         });
         Self {
-            findings,
+            findings: compiled.warnings.list.clone(),
             title: plan.title.clone(),
             sink: plan.sink.clone(),
             dut: plan.dut.label.clone(),
@@ -145,6 +153,9 @@ impl CheckView {
             labels: plan.labels.clone(),
             duration_at_most_s: plan.duration_at_most().seconds(),
             readbacks_at_most: plan.readbacks_at_most(),
+            steps: super::plan::steps(plan),
+            temperatures: compiled.foresight.peak.as_ref().map(TemperaturesView::new),
+            margins: super::plan::margins(plan, &compiled.foresight),
             forecast: ForecastView {
                 duration_s: forecast.duration.seconds(),
                 charge_ah: forecast.charge.ampere_hours(),

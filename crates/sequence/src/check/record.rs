@@ -1,5 +1,4 @@
-//! Rules on the whole run: its record fits the disk, its charge the cell, its limits and its
-//! certificate the run.
+//! Rules on the whole run: its record fits the disk, its charge the cell, its limits the run.
 
 use std::fmt;
 
@@ -129,24 +128,4 @@ pub(super) fn limits_leave_room(scene: &PlanScene<'_>, findings: &mut Findings) 
     room("charge", forecast.charge, interlocks.charge, findings);
     room("energy", forecast.energy, interlocks.energy, findings);
     room("time", forecast.duration, interlocks.time, findings);
-}
-
-pub(super) fn certificate_valid(scene: &PlanScene<'_>, findings: &mut Findings) {
-    let longest = scene.plan.duration_at_most();
-    let valid = scene.options.certificate_valid_for;
-    if let Some(valid) = valid.filter(|&valid| valid < longest) {
-        findings.push(
-            Finding::new(
-                Rule::CertificateExpires,
-                "",
-                format!(
-                    "the certificate of the sink `{}` is valid for another {valid}, the run may \
-                     take {longest}",
-                    scene.facts.name
-                ),
-                "calibrate the sink before, or accept figures with an expired certificate",
-            )
-            .numbers(valid, longest),
-        );
-    }
 }

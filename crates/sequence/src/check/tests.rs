@@ -5,6 +5,7 @@ use serde_json::{Value, json};
 use sink::bench::Bench;
 use sink::envelope::{Duration, Envelope};
 
+use crate::calibration::Calibration;
 use crate::compile::{Options, compile_with};
 use crate::facts::Facts;
 use crate::finding::Findings;
@@ -53,6 +54,15 @@ impl Bed {
 
     fn dut(&mut self, key: &str, value: Value) {
         self.sequence["dut"][key] = value;
+    }
+
+    /// With a certificate: seconds it still holds, microamperes and microvolts it covers.
+    fn calibrated(&mut self, seconds: u64, current: [i64; 2], voltage: [i64; 2]) {
+        self.options.calibration = Calibration::Certificate {
+            valid_for: Span::from_secs(seconds),
+            current: current.map(Current::from_microamperes),
+            voltage: voltage.map(Voltage::from_microvolts),
+        };
     }
 
     fn until(&mut self, until: &Value) {
@@ -779,8 +789,24 @@ const RUN: &[Case] = &[
     ),
     case(
         Rule::CertificateExpires,
-        |bed| bed.options.certificate_valid_for = Some(Span::from_secs(431 * 60 - 1)),
-        |bed| bed.options.certificate_valid_for = Some(Span::from_secs(431 * 60)),
+        |bed| bed.calibrated(431 * 60 - 1, [1, 3_000_000], [1_000_000, 5_000_000]),
+        |bed| bed.calibrated(431 * 60, [1, 3_000_000], [1_000_000, 5_000_000]),
+    ),
+    case(
+        Rule::CertificateAbsent,
+        |bed| bed.options.calibration = Calibration::Absent,
+        |bed| bed.calibrated(431 * 60, [1, 3_000_000], [1_000_000, 5_000_000]),
+    ),
+    case(
+        // 0,2 It of 3.2 Ah is 640 mA.
+        Rule::BeyondCalibration,
+        |bed| bed.calibrated(431 * 60, [1, 639_999], [1_000_000, 5_000_000]),
+        |bed| bed.calibrated(431 * 60, [640_000, 640_000], [1_000_000, 5_000_000]),
+    ),
+    case(
+        Rule::BeyondCalibration,
+        |bed| bed.calibrated(431 * 60, [1, 3_000_000], [2_500_001, 5_000_000]),
+        |bed| bed.calibrated(431 * 60, [1, 3_000_000], [2_500_000, 4_200_000]),
     ),
     case(
         // 431 min of five readbacks a second, 400 bytes each: 51.72 MB.

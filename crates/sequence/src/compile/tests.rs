@@ -6,6 +6,8 @@ use expect_test::{Expect, expect};
 use serde_json::json;
 use sink::bench::Bench;
 
+use quantity::Span;
+
 use super::*;
 use crate::plan::{Action, Next, Op};
 

@@ -7,9 +7,12 @@
 //! Repeats are gone through once and then multiplied, so a month of ten-second cycles costs no
 //! more than one.
 
+use std::ops::Range;
+
 use quantity::{Charge, Current, Energy, Quantity, Span, Voltage};
 use serde::{Deserialize, Serialize};
 
+use super::foresight::Heat;
 use super::{Action, Condition, LoopHead, Next, Op, OpIndex, Plan, PlanStep, Until};
 
 /// What a plan will probably do.
@@ -61,8 +64,15 @@ pub struct Band {
 impl Plan {
     /// What the plan will probably do.
     pub fn forecast(&self) -> Forecast {
+        self.forecast_with(&mut None)
+    }
+
+    /// The same, and how hot the sink gets on the way.
+    pub(super) fn forecast_with(&self, heat: &mut Option<Heat<'_>>) -> Forecast {
         let mut walk = Walk::new(self, 0);
+        walk.heat = heat.take();
         walk.block(0, self.ops.len());
+        *heat = walk.heat.take();
         let voltage = walk.voltage;
         let charge = charge(walk.drawn);
         Forecast {
@@ -130,7 +140,8 @@ enum Bound {
     Inside,
 }
 
-struct Walk<'a> {
+#[derive(Clone)]
+struct Walk<'a, 'h> {
     plan: &'a Plan,
     voltage: Voltage,
     /// Microseconds since the beginning.
@@ -141,9 +152,10 @@ struct Walk<'a> {
     capacity: Option<i128>,
     points_max: usize,
     outline: Outline,
+    heat: Option<Heat<'h>>,
 }
 
-impl<'a> Walk<'a> {
+impl<'a, 'h> Walk<'a, 'h> {
     fn new(plan: &'a Plan, points_max: usize) -> Self {
         let dut = &plan.dut;
         let sum = dut.voltage_min.microvolts() / 2 + dut.voltage_max.microvolts() / 2;
@@ -157,6 +169,7 @@ impl<'a> Walk<'a> {
                 .map(|rated| rated.base_units() * PICO_PER_MICRO),
             points_max,
             outline: Outline::default(),
+            heat: None,
         }
     }
 
@@ -216,6 +229,9 @@ impl<'a> Walk<'a> {
             .last()
             .map_or(Current::ZERO, |point| point.current);
         let from = if ramp > 0 { before } else { target };
+        if let Some(heat) = &mut self.heat {
+            heat.step(step.action, from, target, span(lasts).seconds());
+        }
         self.draw(from, target, lasts);
         way
     }
@@ -297,6 +313,7 @@ impl<'a> Walk<'a> {
     /// All rounds of a repeat, the last one whole.
     fn rounds(&mut self, head: &LoopHead, began: Round, body: usize, foot: usize) -> Way {
         let first_point = self.outline.points.len();
+        let mut cold = self.heat.clone();
         let way = self.block(body, foot);
         if way != Way::On {
             return way;
@@ -312,12 +329,14 @@ impl<'a> Walk<'a> {
             if rounds == 0 {
                 break;
             }
+            cold.clone_from(&self.heat);
             let way = self.block(body, foot);
             if way != Way::On {
                 return way;
             }
             rounds -= 1;
         }
+        self.warm(rounds, round, cold.as_ref(), body..foot);
         self.leap(rounds, round, first_point);
         match bound {
             Bound::Spent => Way::On,
@@ -377,6 +396,25 @@ impl<'a> Walk<'a> {
                 .find(|condition| matches!(condition, Condition::VoltageBelow(_))),
             Op::LoopBegin(_) | Op::LoopEnd { .. } => None,
         })
+    }
+
+    /// The heat of whole rounds that are not walked: all but the last at once, and the last, which
+    /// is the hottest or the coldest, step by step beside the walk.
+    fn warm(&mut self, rounds: u128, round: Round, before: Option<&Heat<'h>>, body: Range<usize>) {
+        let (Some(heat), Some(before), Some(skipped)) =
+            (&mut self.heat, before, rounds.checked_sub(1))
+        else {
+            return;
+        };
+        let times = span(skipped).seconds() * 1e6;
+        heat.repeat(before, span(round.time).seconds(), times);
+        let mut last = Walk {
+            outline: Outline::default(),
+            points_max: 0,
+            ..self.clone()
+        };
+        last.block(body.start, body.end);
+        self.heat = last.heat;
     }
 
     /// Goes over whole rounds without walking them; a band stands for them.

@@ -47,11 +47,7 @@ pub(super) fn carry_out(arguments: &Check, output: Output) -> Result<Exit> {
 
 /// What the check says of a plan.
 pub(super) fn check_view(compiled: &Compiled) -> CheckView {
-    CheckView::new(
-        &compiled.plan,
-        compiled.warnings.list.clone(),
-        OUTLINE_POINTS,
-    )
+    CheckView::new(compiled, OUTLINE_POINTS)
 }
 
 /// A refusal in the form that it has over HTTP.
