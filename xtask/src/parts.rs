@@ -57,6 +57,12 @@ pub(crate) const PARTS: &[Part] = &[
         install: "apt-get install --no-install-recommends gcc-arm-none-eabi",
     },
     Part {
+        program: "ngspice",
+        unpacked: None,
+        purpose: "holding the envelope against a circuit simulator as it runs",
+        install: "apt-get install --no-install-recommends ngspice",
+    },
+    Part {
         program: "qemu-system-arm",
         unpacked: Some("target/qemu/usr/bin/qemu-system-arm"),
         purpose: "running the reference firmware on an emulated microcontroller",

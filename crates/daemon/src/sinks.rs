@@ -4,11 +4,11 @@ use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, AtomicI64, Ordering};
 use std::time::Duration;
 
-use quantity::{HostTime, Span};
-use sequence::Facts;
+use quantity::HostTime;
+use sequence::{Calibration, Facts};
 use serde_json::Value;
 use sink::bench::SinkEntry;
-use sink::calibration::{Certificate, Validity};
+use sink::calibration::Certificate;
 use sink::correction::Correction;
 use tokio::sync::{oneshot, watch};
 use tokio::time::timeout;
@@ -78,15 +78,10 @@ impl SinkHandle {
         }
     }
 
-    /// How long its certificate still holds, zero if it does not; `None` without one.
-    pub(crate) fn certificate_valid_for(&self) -> Option<Span> {
-        let certificate = self.certified.as_ref()?;
-        let now = self.now().micros().div_euclid(1_000_000);
-        let left = match certificate.validity(now) {
-            Validity::Valid => certificate.measurements.valid_until_unix_s - now,
-            Validity::NotYet | Validity::Expired => 0,
-        };
-        Some(Span::from_secs(u64::try_from(left).unwrap_or(0)))
+    /// What stands behind its readings now.
+    pub(crate) fn calibration(&self) -> Calibration {
+        let now_unix_s = self.now().micros().div_euclid(1_000_000);
+        Calibration::of(self.certified.as_deref(), now_unix_s)
     }
 
     /// Waits until a session stands, but no longer than that.

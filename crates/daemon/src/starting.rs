@@ -10,9 +10,8 @@ use journal::{
     Writer,
 };
 use quantity::HostTime;
-use sequence::{Calibration, Compiled, Findings, compile_with};
+use sequence::{Compiled, Findings, compile_with};
 use sequencer::Sequencer;
-use sink::calibration::Certificate;
 use tokio::sync::oneshot;
 use uuid::Uuid;
 
@@ -32,14 +31,7 @@ pub(crate) fn check(
     sink: &SinkHandle,
     request: &SequenceRequest,
 ) -> Result<Compiled, Problem> {
-    // A sink's certificate was computed again from its points when the daemon took it up.
-    let certificate = sink
-        .certificate
-        .as_ref()
-        .and_then(|value| Certificate::from_json(&value.to_string()).ok());
-    let now_unix_s = sink.now().micros().div_euclid(1_000_000);
     let options = sequence::Options {
-        calibration: Calibration::of(certificate.as_ref(), now_unix_s),
         dut_label: request.dut.clone(),
         ..options(app, sink)
     };
@@ -57,7 +49,7 @@ pub(crate) fn check(
 pub(crate) fn options(app: &App, sink: &SinkHandle) -> sequence::Options {
     sequence::Options {
         correction: sink.correction,
-        certificate_valid_for: sink.certificate_valid_for(),
+        calibration: sink.calibration(),
         disk_free_bytes: free_bytes(app),
         ..sequence::Options::default()
     }

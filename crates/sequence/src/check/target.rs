@@ -11,6 +11,7 @@ use quantity::{Current, Power, Quantity, Resistance, Voltage};
 use super::Scene;
 use super::flow::currents;
 use crate::draft::{ActionDraft, StepDraft};
+use crate::facts::Facts;
 use crate::finding::{Finding, Findings};
 use crate::rule::Rule;
 
@@ -236,12 +237,32 @@ pub(super) fn above_floor(scene: &Scene<'_>, findings: &mut Findings) {
                 action_key(step),
                 format!("{current} is below the floor of the sink `{sink}`, {floor}"),
                 format!(
-                    "draw 0 A or at least {floor}, or take a sink with a larger sense resistor"
+                    "draw 0 A or at least {floor}, or take a sink with a larger sense resistor; {}",
+                    in_codes(scene.facts, current)
                 ),
             )
             .numbers(current, floor),
         );
     });
+}
+
+/// What a small current is in codes: whoever takes the one for the other measures several times
+/// the current meant, and looks for a circuit error that is not there.
+fn in_codes(facts: &Facts, current: Current) -> String {
+    /// A code that is easily taken for a small current.
+    const TAKEN: u32 = 16;
+    let converter = &facts.converter;
+    let code = converter.nearest_code(facts.correction.to_nominal_setpoint(current));
+    let nominal = converter.current_of(code);
+    let told = format!("its code is {code} ({nominal} nominal)");
+    if code == TAKEN || TAKEN > converter.last_code() {
+        return told;
+    }
+    format!(
+        "{told}; a code counts the converter's steps and is no current: code {TAKEN}, say, draws \
+         {}, and that is no error of the circuit",
+        converter.current_of(TAKEN)
+    )
 }
 
 pub(super) fn fine_enough(scene: &Scene<'_>, findings: &mut Findings) {
@@ -262,7 +283,10 @@ pub(super) fn fine_enough(scene: &Scene<'_>, findings: &mut Findings) {
                         "{current} is set in steps of {resolution} by the sink `{sink}`: \
                          off by up to half a step"
                     ),
-                    "take a sink with a larger sense resistor where this current matters",
+                    format!(
+                        "take a sink with a larger sense resistor where this current matters; {}",
+                        in_codes(scene.facts, current)
+                    ),
                 )
                 .numbers(current, resolution),
             );

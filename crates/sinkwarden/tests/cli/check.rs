@@ -145,3 +145,99 @@ fn the_plan_as_json_is_in_plain_numbers_with_units_in_their_names() {
     assert_eq!(view["sink"], "left");
     assert_eq!(view["duration_at_most_s"], 30.0);
 }
+
+/// Common practice, no source: a builder who took code 16 for 2 mA measured 11 mA. Code 16 of 10
+/// bits over 3.3 V and 5 ohm is 10.3 mA, and 2 mA would be code 3.
+#[test]
+fn a_code_taken_for_a_current_is_told_in_words_a_builder_understands() {
+    let desk = Desk::new();
+    let bench = desk.read("bench.toml");
+    // The right sink as that builder has it: 10 bits, 3.3 V, 5 ohm, and a buffer that reaches 0 V.
+    let (left, right) = bench.split_at(bench.rfind("[[sink]]").unwrap());
+    let right = right
+        .replacen("bits = 12", "bits = 10", 1)
+        .replacen("resistance = \"1 ohm\"", "resistance = \"5 ohm\"", 1)
+        .replacen("full_scale = \"600 mV\"", "full_scale = \"3.3 V\"", 1)
+        .replacen("rating = \"1 W\"", "rating = \"5 W\"", 1);
+    desk.write("bench.toml", &format!("{left}{right}"));
+    desk.write("two.json", TWO_MILLIAMPERES);
+    let answer = desk.run(&["check", "two.json", "--sink", "right"]);
+    expect![[""]].assert_eq(&answer.stdout);
+}
+
+/// 2 mA from a sink whose floor is above.
+const TWO_MILLIAMPERES: &str = r#"{
+  "sequence": 1,
+  "title": "Two milliamperes (invented)",
+  "dut": {
+    "label": "PSU",
+    "kind": "supply",
+    "voltage_min": "2.5 V",
+    "voltage_max": "4.2 V",
+    "current_max": "100 mA"
+  },
+  "interlocks": { "undervoltage": { "below": "2.5 V", "for": "0 s" } },
+  "steps": [{ "draw": "2 mA", "for": "1 min" }]
+}
+"#;
+
+#[test]
+fn a_plan_and_an_envelope_are_drawn_into_files_that_stand_alone() {
+    let desk = Desk::new();
+    desk.run(&[
+        "check",
+        "short.json",
+        "--sink",
+        "left",
+        "--plot",
+        "plan.svg",
+    ])
+    .with_code(0);
+    desk.run(&["envelope", "--sink", "right", "--plot", "right.svg"])
+        .with_code(0);
+    for (file, word) in [("plan.svg", "mA"), ("right.svg", "stated current")] {
+        let drawn = desk.read(file);
+        assert!(drawn.starts_with("<svg xmlns"), "{file}");
+        assert!(drawn.contains(word), "{file} says nothing of {word}");
+        assert!(!drawn.contains("NaN") && !drawn.contains("href"), "{file}");
+    }
+    let answer = desk
+        .run(&["envelope", "--sink", "left", "--plot", "nowhere/left.svg"])
+        .with_code(1);
+    assert!(
+        answer
+            .stderr
+            .contains("cannot write the picture nowhere/left.svg")
+    );
+    assert!(answer.stderr.contains("hint: "));
+}
+
+#[test]
+fn an_envelope_names_every_limit_and_warns_where_the_data_sheet_says_nothing() {
+    let desk = Desk::new();
+    let answer = desk
+        .run(&["envelope", "--sink", "right", "--voltage", "4.2 V"])
+        .with_code(0);
+    expect![[""]].assert_eq(&answer.stdout);
+    let view = desk
+        .run(&[
+            "envelope",
+            "--sink",
+            "right",
+            "--voltage",
+            "500 mV",
+            "--for",
+            "10 ms",
+            "--json",
+        ])
+        .with_code(0)
+        .json();
+    let ceiling = &view["voltages"][0]["ceilings"][0];
+    assert_eq!(ceiling["binding"], "source");
+    assert_eq!(ceiling["for_s"], 0.01);
+    assert_eq!(ceiling["limits"].as_array().unwrap().len(), 10);
+    let refused = desk
+        .run(&["envelope", "--sink", "right", "--voltage", "-1 V"])
+        .with_code(2);
+    assert!(!refused.stderr.is_empty());
+}

@@ -102,6 +102,11 @@ impl Desk {
     }
 
     /// The program in this folder.
+    /// The text of a file on the desk.
+    pub(crate) fn read(&self, name: &str) -> String {
+        std::fs::read_to_string(self.path(name)).unwrap()
+    }
+
     pub(crate) fn command(&self, words: &[&str]) -> Command {
         let mut command = sinkwarden();
         command.current_dir(self.folder.path()).args(words);
