@@ -122,13 +122,35 @@ fn a_sequence_that_may_run_says_what_it_will_take() {
         .run(&["check", "short.json", "--sink", "left", "--dut", "K-02"])
         .with_code(0);
     expect![[r#"
+        short.json:1:1: warning[certificate-absent]: the sink `left` has no certificate: every figure of this run will be nominal, uncalibrated
+          1 | {
+            | ^
+            hint: calibrate the sink before a run whose figures are to decide something
+
+        0 errors, 1 warning
+
         ok: "Half a minute (invented)" may run on `left` with K-02
 
-          instructions  3: discharge
-          duration      about 30.00 s, at most 30.00 s
-          charge        about 3.556 mAh
-          energy        about 11.91 mWh
-          readbacks     at most 300
+          rest for 5 s
+          draw 640 mA for 20 s  (discharge)
+          rest for 5 s
+
+          duration   about 30.00 s, at most 30.00 s
+          charge     about 3.556 mAh
+          energy     about 11.91 mWh
+          heat sink  at most 30.36 degC, of 80.00 degC
+          junction   at most 34.32 degC, of 150.0 degC
+          readbacks  at most 300
+
+          interlock         planned     limit           how near
+          over voltage      4.200 V     4.300 V         98 %
+          over temperature  30.36 degC  75.00 degC      40 %
+          over current      640.0 mA    3.000 A         21 %
+          over power        2.688 W     14.00 W         19 %
+          silence           100.0 ms    2.000 s         5 %
+          charge            3.556 mAh   4.000 Ah        0 %
+          energy            11.91 mWh   16.00 Wh        0 %
+          time              30.00 s     1 d 16 h 0 min  0 %
 
         "About" is reckoned from the data sheet's values alone; `rehearse` knows better.
     "#]]
@@ -162,7 +184,40 @@ fn a_code_taken_for_a_current_is_told_in_words_a_builder_understands() {
     desk.write("bench.toml", &format!("{left}{right}"));
     desk.write("two.json", TWO_MILLIAMPERES);
     let answer = desk.run(&["check", "two.json", "--sink", "right"]);
-    expect![[""]].assert_eq(&answer.stdout);
+    expect![[r#"
+        two.json:1:1: warning[certificate-absent]: the sink `right` has no certificate: every figure of this run will be nominal, uncalibrated
+          1 | {
+            | ^
+            hint: calibrate the sink before a run whose figures are to decide something
+
+        two.json:12:23: warning[coarse-step]: 2 mA is set in steps of 645 uA by the sink `right`: off by up to half a step
+          12 |   "steps": [{ "draw": "2 mA", "for": "1 min" }]
+             |                       ^^^^^^
+             at /steps/0/draw
+             hint: take a sink with a larger sense resistor where this current matters; its code is 3 (1.934 mA nominal); a code counts the converter's steps and is no current: code 16, say, draws 10.313 mA, and that is no error of the circuit
+
+        0 errors, 2 warnings
+
+        ok: "Two milliamperes (invented)" may run on `right` with PSU
+
+          draw 2 mA for 1 min
+
+          duration   about 1 min 0 s, at most 1 min 0 s
+          charge     about 33.33 uAh
+          energy     about 111.7 uWh
+          heat sink  at most 30.02 degC, of 80.00 degC
+          junction   at most 30.04 degC, of 150.0 degC
+          readbacks  at most 300
+
+          interlock         planned     limit       how near
+          over voltage      4.200 V     6.000 V     70 %
+          over temperature  30.02 degC  75.00 degC  40 %
+          silence           200.0 ms    2.000 s     10 %
+          over current      2.000 mA    500.0 mA    0 %
+          over power        8.400 mW    4.500 W     0 %
+
+        "About" is reckoned from the data sheet's values alone; `rehearse` knows better.
+    "#]].assert_eq(&answer.stdout);
 }
 
 /// 2 mA from a sink whose floor is above.
@@ -218,7 +273,38 @@ fn an_envelope_names_every_limit_and_warns_where_the_data_sheet_says_nothing() {
     let answer = desk
         .run(&["envelope", "--sink", "right", "--voltage", "4.2 V"])
         .with_code(0);
-    expect![[""]].assert_eq(&answer.stdout);
+    expect![[r#"
+        the largest current of `right`, and the limit that binds:
+
+          source   for ever                 for 10 ms                for 1 s                  for 10 s                 for 5 min
+          4.200 V  500.0 mA stated current  500.0 mA stated current  500.0 mA stated current  500.0 mA stated current  500.0 mA stated current
+
+        every limit at 4.200 V, were it alone:
+
+          limit           for ever  for 10 ms  for 1 s   for 10 s  for 5 min
+          stated current  500.0 mA  500.0 mA   500.0 mA  500.0 mA  500.0 mA
+          converter       599.8 mA  599.8 mA   599.8 mA  599.8 mA  599.8 mA
+          sense resistor  997.5 mA  997.5 mA   997.5 mA  997.5 mA  997.5 mA
+          stated power    1.190 A   1.190 A    1.190 A   1.190 A   1.190 A
+          source          3.802 A   3.802 A    3.802 A   3.802 A   3.802 A
+          MOSFET current  10.000 A  10.000 A   10.000 A  10.000 A  10.000 A
+          voltage         -         -          -         -         -
+          junction        -         -          -         -         -
+          heat sink       -         -          -         -         -
+          no d.c. line    -         -          -         -         -
+
+          floor              400.0 uA
+          step               147.0 uA
+          ambient            30.00 degC
+          source resistance  0 ohm
+
+        warning: the MOSFET has no d.c. line in its safe operating area: such a part is made for switching and may fail in linear operation well inside its power rating; a quarter of its rated power is allowed, less at high voltage (common practice, no source); give soa_dc from a data sheet that has one, or use another part
+
+        warning: the MOSFET has no Foster network: pulses are allowed no more heat in the junction than a steady current; give foster from the data sheet's transient thermal impedance
+
+        Currents are rounded down. "For" a time is once, out of rest at ambient temperature; repeated pulses
+        must fit "for ever" with their mean power, too. It is no protection: it says what a sink in order can do.
+    "#]].assert_eq(&answer.stdout);
     let view = desk
         .run(&[
             "envelope",

@@ -27,7 +27,14 @@ fn a_rehearsal_that_finishes_ends_with_code_0_and_its_margins() {
             answer.stdout
         );
     }
-    assert_eq!(answer.stderr, "", "no bar where stderr is no terminal");
+    // The check's warnings, and no bar where stderr is no terminal.
+    let (findings, rest) = answer.stderr.split_once("0 errors, 1 warning\n").unwrap();
+    assert!(
+        findings.contains("warning[certificate-absent]"),
+        "{findings}"
+    );
+    assert_eq!(rest, "");
+    assert!(!answer.stderr.contains('\r'), "{:?}", answer.stderr);
 }
 
 #[test]
