@@ -1,5 +1,7 @@
 //! The flags as they are given; each command makes one validated value of its own.
 
+mod calibrate;
+
 use std::net::SocketAddr;
 use std::num::NonZeroU32;
 use std::path::PathBuf;
@@ -8,6 +10,8 @@ use clap::{Args, Parser, Subcommand, ValueEnum};
 use quantity::{Current, Resistance, Span, Voltage};
 
 use crate::exit::CODES;
+
+pub(crate) use calibrate::{Calibrate, CertificatesOf, ResetOf};
 
 /// Runs home-built DC current sinks through timed sequences, and says what they measured.
 ///
@@ -51,6 +55,22 @@ pub(crate) enum Command {
         after_help = "Example: sinkwarden envelope --sink left --voltage \"4.2 V\" --plot left.svg"
     )]
     Envelope(EnvelopeOf),
+    /// Calibrate a sink against reference meters, point by point, or from a table of points.
+    ///
+    /// At the prompt the daemon holds one setpoint after the other, waits until it has settled,
+    /// and asks what the meters read; Ctrl-C turns the sink off. The certificate is written beside
+    /// the bench file and is in use once the bench file names it. With --verify, points are
+    /// measured against a certificate instead.
+    ///
+    /// The current meter goes in series: mind its range, its fuse and its own voltage drop, never
+    /// connect it across a cell, and cut the circuit before you move a lead. The sink gets hot.
+    #[command(
+        after_help = "Examples:\n  sinkwarden calibrate --meters-example > meters.toml\n  sinkwarden calibrate --sink left --meters meters.toml --voltage-min \"2.5 V\" --voltage-max \"4.2 V\"\n  sinkwarden calibrate --sink left --meters meters.toml --from points.csv\n  sinkwarden calibrate --sink left --meters meters.toml --verify weir-left-2026-12-01 --setpoint \"500 mA\" --voltage-min \"2.5 V\" --voltage-max \"4.2 V\""
+    )]
+    Calibrate(Calibrate),
+    /// List the certificates beside a bench file: what holds, what has drifted, what was verified.
+    #[command(after_help = "Example: sinkwarden certificates --sink left")]
+    Certificates(CertificatesOf),
     /// Check a sequence against a sink, the device under test and the interlocks.
     ///
     /// Names every mistake at once, each with its place and its mend, or says what the plan will
@@ -84,6 +104,11 @@ pub(crate) enum Command {
     /// Turn a sink off, or every sink; a run in progress ends as stopped.
     #[command(after_help = "Example: sinkwarden off left")]
     Off(SinkOf),
+    /// Reset a sink that has latched after a trip, once its cause is gone.
+    ///
+    /// Look at the sink and the device under test first: a latch is there so that somebody does.
+    #[command(after_help = "Example: sinkwarden reset left")]
+    Reset(ResetOf),
     /// Show every sink of the daemon, or one, as it is now.
     #[command(after_help = "Example: sinkwarden status")]
     Status(SinkOf),

@@ -1,6 +1,8 @@
 //! What each command does: flags to one validated value, the crates' or the daemon's answer, its
 //! print.
 
+mod calibrate;
+mod certificates;
 mod check;
 mod envelope;
 mod export;
@@ -13,6 +15,7 @@ mod prove;
 mod records;
 mod rehearse;
 mod replay;
+mod reset;
 mod run;
 mod serve;
 mod status;
@@ -26,6 +29,7 @@ use crate::bench_file::STARTING;
 use crate::exit::Exit;
 use crate::output::{Output, give_text};
 
+pub(crate) use calibrate::Certified;
 pub(crate) use envelope::EnvelopeAnswer;
 pub(crate) use rehearse::RehearsalAnswer;
 pub(crate) use replay::ReplayAnswer;
@@ -45,12 +49,15 @@ pub(crate) fn carry_out(command: Command, output: Output) -> Result<Exit> {
             Ok(Exit::Done)
         }
         Command::Envelope(arguments) => envelope::carry_out(&arguments, output),
+        Command::Calibrate(arguments) => calibrate::carry_out(&arguments, output),
+        Command::Certificates(of) => certificates::carry_out(&of, output),
         Command::Check(arguments) => check::carry_out(&arguments, output),
         Command::Prove(arguments) => prove::carry_out(&arguments, output),
         Command::Rehearse(arguments) => rehearse::carry_out(&arguments, output),
         Command::Serve(arguments) => serve::carry_out(arguments, output),
         Command::Run(arguments) => run::carry_out(&arguments, output),
         Command::Off(of) => off::carry_out(&of, output),
+        Command::Reset(of) => reset::carry_out(&of, output),
         Command::Status(of) => status::carry_out(&of, output),
         Command::Watch(of) => watch::carry_out(&of, output),
         Command::Records(arguments) => records::carry_out(&arguments, output),

@@ -19,7 +19,8 @@ Exit codes:
   5  the run was tripped by an interlock
   6  the run was interrupted: the host or the link died
   7  the record was altered, or a replay differs from it
-  8  the firmware fails a guarantee of the protocol";
+  8  the firmware fails a guarantee of the protocol
+  9  a verified certificate does not hold";
 
 /// In which of the ways the program ends.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -40,6 +41,8 @@ pub(crate) enum Exit {
     Altered,
     /// The firmware fails a guarantee.
     Unproven,
+    /// A certificate does not hold.
+    Unverified,
 }
 
 impl Exit {
@@ -54,6 +57,7 @@ impl Exit {
             Self::Interrupted => 6,
             Self::Altered => 7,
             Self::Unproven => 8,
+            Self::Unverified => 9,
         }
     }
 }

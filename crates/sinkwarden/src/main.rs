@@ -5,7 +5,7 @@
 //!                                                             │
 //!                         bench, envelope, check, rehearse, …─┤ the crates, no daemon
 //!                         prove ──────────────────────────────┤ a port, no daemon
-//!                         run, off, watch, status ────────────┘ client ─► the daemon
+//!                         run, off, reset, watch, status ─────┘ client ─► the daemon
 //! ```
 //!
 //! Invariants:

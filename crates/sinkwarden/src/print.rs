@@ -1,6 +1,7 @@
 //! Text for people: plain lines and tables, no colour, units on every number.
 
 mod bench_state;
+mod calibration;
 mod check;
 mod ending;
 mod envelope;
@@ -15,6 +16,7 @@ mod unit;
 mod verify;
 
 pub(crate) use bench_state::{off, sinks};
+pub(crate) use calibration::{certificates, certified, verification};
 pub(crate) use check::check;
 pub(crate) use ending::{ended_run, started_run};
 pub(crate) use envelope::envelope;
@@ -24,5 +26,5 @@ pub(crate) use line::{progress_of, sink_line};
 pub(crate) use records::records;
 pub(crate) use rehearsal::rehearsal;
 pub(crate) use replay::replay;
-pub(crate) use unit::{count, duration, words};
+pub(crate) use unit::{count, duration, quantity, words};
 pub(crate) use verify::verify;

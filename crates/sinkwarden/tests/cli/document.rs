@@ -28,6 +28,7 @@ A script can tell the ways to end apart by the exit code:
 | 6 | the run was interrupted: the host or the link died |
 | 7 | `verify`: the record was altered; `replay`: it differs from what the sequencer gives |
 | 8 | `prove`: the firmware fails a guarantee of the protocol |
+| 9 | `calibrate --verify`: the certificate does not hold |
 
 `off` ends with 1 if a sink has not said that it is off: then use the switch in series with the
 device under test by hand.
