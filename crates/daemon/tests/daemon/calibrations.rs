@@ -337,6 +337,39 @@ fn all_is_corrected(desk: &Desk, certificate: &Certificate) {
 }
 
 #[test]
+fn the_python_example_calibrates_with_a_program_that_reads_the_meters() {
+    let desk = open(tempfile::tempdir().unwrap(), None);
+    let folder = desk.folder.path();
+    let mut body = request(&["50 mA", "1 A", "2.5 A"]);
+    body.as_object_mut().unwrap().remove("sink");
+    std::fs::write(folder.join("calibration.json"), body.to_string()).unwrap();
+    let reader = format!(
+        "import json, sys\nstep = 3.3 / 4096\ncurrent = round(float(sys.argv[1]) / step) * step * {} + {SET_OFFSET_A}\nprint(json.dumps({{'current': f'{{current:.5f}} A', 'voltage': f'{{4.3 - 0.5 * current:.4f}} V'}}))\n",
+        1.0 + SET_GAIN
+    );
+    std::fs::write(folder.join("reader.py"), reader).unwrap();
+    let example = Path::new(env!("CARGO_MANIFEST_DIR")).join("../../docs/examples/calibrate.py");
+    let output = std::process::Command::new("python3")
+        .arg(example)
+        .args([
+            &desk.url,
+            "left",
+            "calibration.json",
+            "python3",
+            "reader.py",
+        ])
+        .current_dir(folder)
+        .output()
+        .unwrap();
+    let said = String::from_utf8_lossy(&output.stdout);
+    let wrong = String::from_utf8_lossy(&output.stderr);
+    assert!(output.status.success(), "{said}\n{wrong}");
+    assert!(said.contains("current set: +0.00"), "{said}");
+    assert!(said.contains("certificates/weir-left-1.json"), "{said}");
+    assert!(desk.get("/v1/certificates/weir-left-1").status == 200);
+}
+
+#[test]
 fn without_a_certificate_a_record_says_that_it_is_nominal() {
     let desk = open(tempfile::tempdir().unwrap(), None);
     let hand = json!({ "sink": "left", "dut": source(), "interval": "2 s", "setpoint": "1 A",

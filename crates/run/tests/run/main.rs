@@ -9,6 +9,7 @@
 )]
 
 mod bench;
+mod calibrated;
 mod crash;
 mod edges;
 mod history;

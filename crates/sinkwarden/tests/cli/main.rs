@@ -5,6 +5,7 @@
     reason = "a test that meets what it does not expect has failed; expected texts are written so"
 )]
 
+mod calibrate;
 mod check;
 mod document;
 mod flags;

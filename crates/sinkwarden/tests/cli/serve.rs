@@ -6,13 +6,13 @@ use std::process::{Child, Stdio};
 use crate::program::{Answer, Desk, SHORT};
 
 /// A daemon that ends with the test, however the test ends.
-struct Daemon {
+pub(crate) struct Daemon {
     child: Child,
-    url: String,
+    pub(crate) url: String,
 }
 
 impl Daemon {
-    fn start(desk: &Desk, factor: &str) -> Self {
+    pub(crate) fn start(desk: &Desk, factor: &str) -> Self {
         let mut child = desk
             .command(&["serve", "--listen", "127.0.0.1:0", "--time-factor", factor])
             .args(["--log", "error"])
@@ -31,7 +31,7 @@ impl Daemon {
         Self { child, url }
     }
 
-    fn ask(&self, desk: &Desk, words: &[&str]) -> Answer {
+    pub(crate) fn ask(&self, desk: &Desk, words: &[&str]) -> Answer {
         desk.run(&[words, &["--daemon", &self.url]].concat())
     }
 }

@@ -54,7 +54,7 @@ pub(super) fn off_on_interrupt(client: &Client, sink: &str) -> Result<()> {
 pub(super) fn turn_off(client: &Client, sink: &str, code: i32) -> i32 {
     match client.post::<OffView>(&format!("/v1/sinks/{sink}/off")) {
         Ok(off) if off.acknowledged => {
-            tell(format_args!("\n{sink} is off; no certificate was written"));
+            tell(format_args!("\n{sink} is off; nothing was written"));
             code
         }
         Ok(off) => {
