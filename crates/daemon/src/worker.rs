@@ -196,6 +196,8 @@ pub(crate) struct Worker {
     reset: Option<Answer<Result<(), NotReset>>>,
     /// The interlock that tripped the last run; latched until reset.
     tripped_by: Option<Interlock>,
+    /// When the sink was last reset: what it had said before of a latch holds no more.
+    reset_at: Option<HostTime>,
     /// When an ending daemon stops waiting for the sink, on the host's own clock.
     ending: Option<HostTime>,
     off_acknowledged: bool,
@@ -229,6 +231,7 @@ impl Worker {
             outbound: Vec::with_capacity(4096),
             offs: Vec::new(),
             reset: None,
+            reset_at: None,
             tripped_by: parts.tripped_by,
             ending: None,
             off_acknowledged: false,
@@ -412,7 +415,10 @@ impl Worker {
             Effect::Reset(result) => {
                 if result.is_ok() {
                     self.tripped_by = None;
+                    self.reset_at = Some(self.link.now());
                     self.newsworthy = true;
+                    // Shown before it is answered: whoever starts a run next may.
+                    self.publish();
                 }
                 if let Some(answer) = self.reset.take() {
                     let _ = answer.send(result.map_err(NotReset::Refused));

@@ -187,7 +187,11 @@ impl Worker {
         if let Some(interlock) = &self.tripped_by {
             return Some(word(interlock));
         }
-        match self.keeper.presence().reading?.1.values.state {
+        let (at, reading) = self.keeper.presence().reading?;
+        if self.reset_at.is_some_and(|reset| at <= reset) {
+            return None;
+        }
+        match reading.values.state {
             SinkState::Latched(cause) => Some(word(&cause)),
             SinkState::Off | SinkState::On | SinkState::Saturated => None,
         }

@@ -13,23 +13,27 @@ fn the_help_names_every_command_and_every_exit_code() {
         Usage: sinkwarden [OPTIONS] <COMMAND>
 
         Commands:
-          bench     Print a bench file to start from: invented, simulated, ready to use
-          schema    Print the JSON Schema of a sequence file, for an editor
-          envelope  Show what a sink can do: the largest current at each source voltage, and which limit
-                    binds
-          check     Check a sequence against a sink, the device under test and the interlocks
-          prove     Prove the firmware on a port: whether it keeps every guarantee of the line protocol
-          rehearse  Rehearse a sequence in virtual time, against a simulated source
-          serve     Serve a bench: the daemon that holds the sinks, runs sequences and writes records
-          run       Run a sequence on a sink of the daemon and follow it to its end
-          off       Turn a sink off, or every sink; a run in progress ends as stopped
-          status    Show every sink of the daemon, or one, as it is now
-          watch     Watch a sink, or every sink, line by line until interrupted
-          records   List the records of a folder, the latest last
-          figures   Work out a record's figures, each with its uncertainty and method
-          replay    Replay a record: the same readings must give the same orders, bit for bit
-          verify    Verify that nothing in a record was altered since it was written
-          export    Export a record's readbacks as CSV or Parquet, with units in the column names
+          bench         Print a bench file to start from: invented, simulated, ready to use
+          schema        Print the JSON Schema of a sequence file, for an editor
+          envelope      Show what a sink can do: the largest current at each source voltage, and which limit
+                        binds
+          calibrate     Calibrate a sink against reference meters, point by point, or from a table of points
+          certificates  List the certificates beside a bench file: what holds, what has drifted, what was
+                        verified
+          check         Check a sequence against a sink, the device under test and the interlocks
+          prove         Prove the firmware on a port: whether it keeps every guarantee of the line protocol
+          rehearse      Rehearse a sequence in virtual time, against a simulated source
+          serve         Serve a bench: the daemon that holds the sinks, runs sequences and writes records
+          run           Run a sequence on a sink of the daemon and follow it to its end
+          off           Turn a sink off, or every sink; a run in progress ends as stopped
+          reset         Reset a sink that has latched after a trip, once its cause is gone
+          status        Show every sink of the daemon, or one, as it is now
+          watch         Watch a sink, or every sink, line by line until interrupted
+          records       List the records of a folder, the latest last
+          figures       Work out a record's figures, each with its uncertainty and method
+          replay        Replay a record: the same readings must give the same orders, bit for bit
+          verify        Verify that nothing in a record was altered since it was written
+          export        Export a record's readbacks as CSV or Parquet, with units in the column names
 
         Options:
               --json     Answer with JSON on stdout instead of text
@@ -46,6 +50,7 @@ fn the_help_names_every_command_and_every_exit_code() {
           6  the run was interrupted: the host or the link died
           7  the record was altered, or a replay differs from it
           8  the firmware fails a guarantee of the protocol
+          9  a verified certificate does not hold
     "#]].assert_eq(&answer.stdout);
 }
 

@@ -7,7 +7,7 @@ use std::time::Duration;
 use anyhow::Result;
 use daemon::view::{
     CalibrationOutcome, CalibrationRequest, CalibrationState, CalibrationView, MeterReading,
-    SinkView,
+    RunState, RunView, SinkView,
 };
 use quantity::{Current, Text, Textual};
 use serde_json::json;
@@ -24,6 +24,9 @@ use crate::print;
 
 /// Pause between two looks at a setpoint that settles.
 const LOOK: Duration = Duration::from_millis(200);
+
+/// How often it is looked whether the run is over.
+const LOOKS_AT_THE_END: u32 = 20;
 
 const BEFORE: &str = "\
 Before you begin: the current meter in series on a range above the largest setpoint, with its fuse
@@ -61,7 +64,9 @@ pub(super) fn hold(
         Ok(true) => finish(&client, begun.id),
         Ok(false) => {
             drop(guard);
-            return Ok(if turn_off(&client, sink, 4) == 4 {
+            let code = turn_off(&client, sink, 4);
+            see_the_end(&client, begun.id);
+            return Ok(if code == 4 {
                 Exit::Stopped
             } else {
                 Exit::Failed
@@ -70,6 +75,9 @@ pub(super) fn hold(
         Err(error) => Err(error),
     };
     drop(guard);
+    if outcome.is_ok() {
+        see_the_end(&client, begun.id);
+    }
     match outcome {
         Ok((outcome, certificate)) => give(outcome, certificate.as_ref(), output),
         Err(error) => {
@@ -242,6 +250,17 @@ fn ask(prompt: &str) -> Result<Option<String>> {
         return Ok(None);
     }
     Ok(Some(line.trim().to_owned()))
+}
+
+/// Waits until the run's last counters are in, so that the sink is free for what comes next; for
+/// no longer than that usually takes.
+fn see_the_end(client: &Client, id: Uuid) {
+    for _ in 0..LOOKS_AT_THE_END {
+        match client.get::<RunView>(&format!("/v1/runs/{id}")) {
+            Ok(run) if run.state != RunState::Ended => thread::sleep(LOOK),
+            Ok(_) | Err(_) => return,
+        }
+    }
 }
 
 fn finish(client: &Client, id: Uuid) -> Result<(CalibrationOutcome, Option<Certificate>)> {
