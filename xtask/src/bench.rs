@@ -43,6 +43,12 @@ const BENCHMARKS: &[Benchmark] = &[
         example: "throughput",
         arguments: &["1000000"],
     },
+    // All figures of a record of so many readbacks, beside pandas and numpy.
+    Benchmark {
+        package: "figures",
+        example: "ten_million",
+        arguments: &["10000000"],
+    },
     // A measured current of so many rows into the fewest steps.
     Benchmark {
         package: "sequence",
@@ -119,6 +125,10 @@ fn say(line: &str, as_json: bool) -> Result<()> {
     let number = |name: &str| value.get(name).and_then(Value::as_f64).unwrap_or(f64::NAN);
     let (took, reference) = (number("seconds"), number("reference_seconds"));
     println!("{}", text("measured"));
+    if reference.is_nan() {
+        println!("    {}; reference {}", seconds(took), text("reference"));
+        return Ok(());
+    }
     println!(
         "    {} = {:.2} times {} ({})",
         seconds(took),

@@ -8,9 +8,9 @@
 //! - Nothing is said of states of charge that were not seen: beyond the pulses the tables are
 //!   carried on, and a note says from where.
 
-use quantity::{Charge, Temperature, Text, Voltage};
+use quantity::{Temperature, Text};
 use serde::{Deserialize, Serialize};
-use serde_json::{Value, json};
+use serde_json::Value;
 
 use crate::cell_fit::{Mean, Pulse, put_together};
 use crate::charge::Amount;
@@ -20,9 +20,6 @@ use crate::look::is_model_pulse;
 use crate::resistance::ended;
 use crate::walk::Sample;
 use crate::work::Workbench;
-
-/// What stands under `format` in a cell model file.
-const FORMAT: &str = "sinkwarden cell model 1";
 
 /// A second pair is told if one pair alone is less probable than this.
 const LEVEL: f64 = 0.01;
@@ -43,6 +40,10 @@ const SLOPE_TRUST: f64 = 0.5;
 pub struct CellModel {
     /// What was fitted at each pulse, from full to empty.
     pub points: Vec<CellPoint>,
+    /// The open-circuit voltage between the pulses and beyond them, from full to empty: what was
+    /// read in long steps of constant current, plus the current times what the pulses tell.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub open_circuit: Vec<OpenCircuit>,
     /// Charge from full to empty that the states of charge stand on, ampere hour.
     pub capacity_ah: f64,
     /// Its standard uncertainty; of a rated capacity none is known, and it is zero.
@@ -51,7 +52,8 @@ pub struct CellModel {
     pub capacity_from: String,
     /// Root of the mean squared residual of all pulses, volt.
     pub residual_rms_v: f64,
-    /// The model's file, for a rehearsal.
+    /// The model's tables, for a rehearsal; [`CellModel::to_file`] makes the whole file of them.
+    #[serde(default, skip_serializing_if = "Value::is_null")]
     pub file: Value,
     /// What a reader must know before trusting it.
     pub notes: Vec<String>,
@@ -82,6 +84,16 @@ pub struct CellPoint {
     pub no_second_pair: Option<String>,
     /// The readbacks it came from.
     pub rows: Rows,
+}
+
+/// The open-circuit voltage at a state of charge that no pulse was at.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct OpenCircuit {
+    /// State of charge, 1 full.
+    pub state_of_charge: f64,
+    /// The voltage, volt.
+    pub voltage_v: Known,
 }
 
 /// A value with its standard uncertainty.
@@ -169,17 +181,20 @@ impl Workbench<'_> {
             .iter()
             .map(|point| point.residual_rms_v.powi(2))
             .sum();
-        let file = self.file(record, &points, capacity_ah, &mut notes);
-        Some(CellModel {
+        let mut model = CellModel {
             residual_rms_v: (squares / number(points.len())).sqrt(),
             points,
+            open_circuit: Vec::new(),
             capacity_ah,
             capacity_standard_uncertainty_ah: capacity_u,
             capacity_from: capacity_from.to_owned(),
-            file,
+            file: Value::Null,
             notes,
             method: METHOD.to_owned(),
-        })
+        };
+        model.open_circuit = self.open_circuit(&model);
+        model.file = self.tables(record, &mut model);
+        Some(model)
     }
 
     fn model_pulses(&self) -> Vec<Found> {
@@ -192,7 +207,8 @@ impl Workbench<'_> {
                 let (pulse, relaxation) = (self.walked.get(index)?, self.walked.get(index + 1)?);
                 let until =
                     Amount::between(start?, pulse.begin?, &self.plan.correction, self.time_base);
-                let (_, rest_v) = self.true_values(&ended(rest)?);
+                let before = self.stages.get(index.checked_sub(1)?)?;
+                let (_, rest_v) = self.true_values(&ended(before, rest)?.0);
                 let curve = pulse.looked.curve.as_ref()?;
                 let after = relaxation.looked.curve.as_ref()?;
                 let length_s = stage.length().seconds() * self.time_base.factor;
@@ -372,84 +388,9 @@ impl Workbench<'_> {
         }
     }
 
-    /// The model's file: the tables from empty to full, carried on level to both ends.
-    fn file(
-        &self,
-        record: &str,
-        points: &[CellPoint],
-        capacity_ah: f64,
-        notes: &mut Vec<String>,
-    ) -> Value {
-        let mut rising: Vec<&CellPoint> = points.iter().rev().collect();
-        rising.dedup_by(|later, earlier| later.state_of_charge <= earlier.state_of_charge);
-        let inside: Vec<&CellPoint> = rising
-            .into_iter()
-            .filter(|point| point.state_of_charge > 0.0 && point.state_of_charge <= 1.0)
-            .collect();
-        let table = |value: &dyn Fn(&CellPoint) -> f64| {
-            let inner: Vec<f64> = inside.iter().map(|point| value(point)).collect();
-            ends(&inside, &inner, false)
-        };
-        let mut states = table(&|point| point.state_of_charge);
-        let voltages: Vec<f64> = inside
-            .iter()
-            .map(|point| point.open_circuit_voltage_v.value)
-            .collect();
-        let mut voltages = ends(&inside, &voltages, true);
-        let mut floor = 0.0_f64;
-        for voltage in &mut voltages {
-            floor = floor.max(*voltage);
-            *voltage = floor;
-        }
-        if let Some(first) = states.first_mut() {
-            *first = 0.0;
-        }
-        if let Some(last) = states.last_mut() {
-            *last = 1.0;
-        }
-        if let (Some(first), Some(last)) = (inside.first(), inside.last()) {
-            notes.push(format!(
-                "seen from a state of charge of {:.3} to {:.3}; beyond, resistances are those of \
-                 the nearest pulse and the open-circuit voltage goes on in a straight line",
-                first.state_of_charge, last.state_of_charge
-            ));
-        }
-        let count = points.first().map_or(0, |point| point.pairs.len());
-        let pairs: Vec<Value> = (0..count)
-            .map(|pair| {
-                let of = |value: fn(&PairPoint) -> f64| {
-                    table(&|point: &CellPoint| point.pairs.get(pair).map_or(f64::NAN, value))
-                };
-                json!({
-                    "resistance_ohm": of(|pair| pair.resistance_ohm.value.max(0.0)),
-                    "time_constant_s": of(|pair| pair.time_constant_s.value),
-                })
-            })
-            .collect();
-        let charge =
-            |ah: f64| Text(Charge::from_coulombs(ah * 3600.0).unwrap_or(Charge::ZERO)).to_string();
-        let dut = &self.plan.dut;
-        json!({
-            "format": FORMAT,
-            "name": dut.label,
-            "origin": format!("fitted to the pulses of record {record}"),
-            "rated_capacity": dut
-                .rated_capacity
-                .map_or_else(|| charge(capacity_ah), |rated| Text(rated).to_string()),
-            "capacity": charge(capacity_ah),
-            "largest_voltage": Text::<Voltage>(dut.voltage_max).to_string(),
-            "cut_off_voltage": Text::<Voltage>(dut.voltage_min).to_string(),
-            "reference_temperature": self.reference_temperature(),
-            "state_of_charge": states,
-            "open_circuit_voltage_v": voltages,
-            "series_resistance_ohm": table(&|point| point.series_resistance_ohm.value.max(0.0)),
-            "pairs": pairs,
-        })
-    }
-
     /// The heat sink's at the beginning: where nothing has been drawn yet, it and the cell are as
     /// warm as the air.
-    fn reference_temperature(&self) -> String {
+    pub(crate) fn reference_temperature(&self) -> String {
         let at_first = self
             .walked
             .iter()
@@ -457,36 +398,6 @@ impl Workbench<'_> {
             .unwrap_or(Temperature::from_millidegrees_celsius(23_000));
         Text(at_first).to_string()
     }
-}
-
-/// A table with an entry for empty before, and one for full behind where no pulse was there: the
-/// nearest again, or the straight line through the two nearest, but not below zero.
-fn ends(points: &[&CellPoint], values: &[f64], straight: bool) -> Vec<f64> {
-    let line = |near: usize, next: usize, to: f64| {
-        let at = |index: usize| {
-            let point = points.get(index)?;
-            Some((point.state_of_charge, *values.get(index)?))
-        };
-        let (x, y) = at(near)?;
-        let value = match at(next) {
-            Some((other_x, other_y)) if straight => y + (to - x) * (other_y - y) / (other_x - x),
-            Some(_) | None => y,
-        };
-        Some(value.max(0.0))
-    };
-    let last = points.len().saturating_sub(1);
-    let full = points
-        .last()
-        .is_some_and(|point| point.state_of_charge >= 1.0 - 1e-6);
-    let first = line(0, 1, 0.0);
-    let behind = (!full)
-        .then(|| line(last, last.wrapping_sub(1), 1.0))
-        .flatten();
-    first
-        .into_iter()
-        .chain(values.iter().copied())
-        .chain(behind)
-        .collect()
 }
 
 fn fit(found: Found) -> Result<FittedPulse, String> {

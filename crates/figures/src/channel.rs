@@ -18,8 +18,10 @@ use sink::calibration::{
     CalibrationError, Certificate, Channel as Fitted, ChannelSummary, ReferenceMeter,
 };
 use sink::uncertainty::{
-    Budget, Contribution, DegreesOfFreedom, Evaluation, Stated, of_resolution,
+    Budget, Contribution, DegreesOfFreedom, Evaluation, Shape, Stated, of_resolution,
 };
+
+use crate::noise::Noise;
 
 /// The temperature at which a sense resistor has its nominal value, degrees Celsius.
 const REFERENCE_DEGC: f64 = 25.0;
@@ -36,6 +38,8 @@ struct Source {
     law: Law,
     /// Whether it differs from reading to reading instead of being common to all.
     fresh: bool,
+    /// Its distribution.
+    shape: Shape,
 }
 
 /// How a source's error depends on the value.
@@ -60,6 +64,7 @@ pub(crate) struct Channel {
     sources: Vec<Source>,
     /// One step of the converter that reads, ampere or volt.
     pub(crate) step: f64,
+    resolution: f64,
     /// Smallest and largest true value that is vouched for; `None`: no certificate says.
     pub(crate) range: Option<(f64, f64)>,
 }
@@ -101,8 +106,14 @@ impl Instrument {
         );
         let current_step = adc.current_full_scale.amperes() / steps;
         let voltage_step = adc.voltage_full_scale.volts() / steps;
-        current.push(Source::step("converter step, current", current_step));
-        voltage.push(Source::step("converter step, voltage", voltage_step));
+        current.push(Source::step(
+            "converter step and noise, current",
+            current_step,
+        ));
+        voltage.push(Source::step(
+            "converter step and noise, voltage",
+            voltage_step,
+        ));
         Self {
             current: Channel::new(current, current_step),
             voltage: Channel::new(voltage, voltage_step),
@@ -135,7 +146,10 @@ impl Instrument {
             * measurements.temperature_spread_k;
         current.push(Source::stated_gain("sense resistor, temperature", drift));
         let current_step = measurements.current_step.amperes();
-        current.push(Source::step("converter step, current", current_step));
+        current.push(Source::step(
+            "converter step and noise, current",
+            current_step,
+        ));
         let mut voltage = vec![
             fitted(
                 [
@@ -148,7 +162,10 @@ impl Instrument {
             of_meter("reference meter, voltage", &measurements.voltage_meter),
         ];
         let voltage_step = measurements.voltage_step.volts();
-        voltage.push(Source::step("converter step, voltage", voltage_step));
+        voltage.push(Source::step(
+            "converter step and noise, voltage",
+            voltage_step,
+        ));
         Ok(Self {
             current: Channel {
                 range: Some(true_range(&certificate.current_read)),
@@ -163,11 +180,23 @@ impl Instrument {
     }
 }
 
+impl Instrument {
+    /// The same, the converters' steps as far as the noise of the readbacks leaves them.
+    pub(crate) fn with_noise(self, (current, voltage): (Noise, Noise)) -> Self {
+        Self {
+            current: self.current.with_noise(current),
+            voltage: self.voltage.with_noise(voltage),
+            ..self
+        }
+    }
+}
+
 impl Channel {
     fn new(sources: Vec<Source>, step: f64) -> Self {
         Self {
             sources,
             step,
+            resolution: of_resolution(step),
             range: None,
         }
     }
@@ -211,8 +240,24 @@ impl Channel {
     }
 
     /// Standard uncertainty of what differs from reading to reading.
-    pub(crate) fn resolution(&self) -> f64 {
-        of_resolution(self.step)
+    pub(crate) const fn resolution(&self) -> f64 {
+        self.resolution
+    }
+
+    /// The same channel, its steps as far as the noise of the readbacks leaves them.
+    fn with_noise(mut self, noise: Noise) -> Self {
+        self.resolution = noise.of_mean(self.step);
+        for source in self.sources.iter_mut().filter(|source| source.fresh) {
+            source.law = Law::Straight {
+                offset: self.resolution,
+                gain: 0.0,
+                correlation: 0.0,
+            };
+            if self.resolution < of_resolution(self.step) {
+                source.shape = Shape::Normal;
+            }
+        }
+        self
     }
 
     fn contributions(&self, share: impl Fn(&Source) -> f64) -> Vec<Contribution> {
@@ -220,7 +265,11 @@ impl Channel {
             .iter()
             .map(|source| {
                 let share = share(source);
-                Contribution::new(source.name, source.evaluation, share, source.freedom)
+                let line = Contribution::new(source.name, source.evaluation, share, source.freedom);
+                match source.shape {
+                    Shape::Normal => line,
+                    Shape::Rectangular => line.rectangular(),
+                }
             })
             .filter(|line| line.standard_uncertainty > 0.0)
             .collect()
@@ -263,6 +312,7 @@ impl Source {
                 correlation: 0.0,
             },
             fresh: false,
+            shape: Shape::Rectangular,
         }
     }
 
@@ -303,6 +353,7 @@ fn fitted([straight, bent]: [&'static str; 2], summary: &ChannelSummary, fit: Fi
             evaluation: Evaluation::TypeA,
             freedom: summary.degrees_of_freedom,
             law: Law::Bent(Box::new(fit)),
+            shape: Shape::Normal,
             ..Source::type_b(bent, 0.0, 0.0)
         };
     }
@@ -336,6 +387,7 @@ fn fitted([straight, bent]: [&'static str; 2], summary: &ChannelSummary, fit: Fi
             gain,
             correlation,
         },
+        shape: Shape::Normal,
         ..Source::type_b(straight, 0.0, 0.0)
     }
 }
@@ -359,6 +411,10 @@ fn of_meter<T: Textual + Quantity>(name: &'static str, meter: &ReferenceMeter<T>
             offset: constant,
             gain: of_reading,
             correlation: 1.0,
+        },
+        shape: match meter.stated {
+            Stated::Rectangular => Shape::Rectangular,
+            Stated::Triangular | Stated::ArcSine | Stated::Normal { .. } => Shape::Normal,
         },
         ..Source::type_b(name, 0.0, 0.0)
     }

@@ -15,24 +15,42 @@ pub(crate) struct Conditions {
     pub(crate) per_ampere: f64,
     /// How much of the figure's unit a steady volt would have added; `None` for a charge.
     pub(crate) per_volt: Option<f64>,
-    /// Uncertainty of the end, in the figure's unit: the cut-off instant.
+    /// Uncertainty of the end, in the figure's unit: the cut-off instant, where the voltage
+    /// enters by it alone.
     pub(crate) cut_off: f64,
+    /// The cut-off where the voltage enters by more.
+    pub(crate) end: End,
     /// What a bent correction may hide, at most, in the figure's unit.
     pub(crate) hidden: f64,
+}
+
+/// What a cut-off does to an energy.
+#[derive(Debug, Clone, Copy, Default)]
+pub(crate) struct End {
+    /// The cut-off voltage, volt.
+    pub(crate) volts: f64,
+    /// How much more of the figure's unit a volt read too high lets through before the cut-off.
+    pub(crate) per_volt: f64,
 }
 
 /// The budget of a charge, `Q = a T + b Q_nominal`, or of an energy.
 pub(crate) fn of_delivery(instrument: &Instrument, time_base: TimeBase, of: &Conditions) -> Budget {
     let mut lines = instrument.current.over(of.per_ampere, of.value);
     if let Some(per_volt) = of.per_volt {
-        lines.extend(instrument.voltage.over(per_volt, of.value));
+        // A voltage read too high counts too much energy, and ends too late as well.
+        let end = of.end;
+        lines.extend(
+            instrument
+                .voltage
+                .over(per_volt + end.per_volt, of.value + end.volts * end.per_volt),
+        );
         if of.per_ampere > 0.0 {
             // A steady ohm would have added the mean current times the charge.
             let amperes = of.value / of.per_ampere;
             lines.extend(of_leads(instrument, amperes * per_volt));
         }
     }
-    lines.push(stated("clocks", (of.value * time_base.uncertainty).abs()));
+    lines.push(clocks((of.value * time_base.uncertainty).abs()));
     if of.cut_off > 0.0 {
         lines.push(stated("cut-off instant", of.cut_off));
     }
@@ -44,10 +62,6 @@ pub(crate) fn of_delivery(instrument: &Instrument, time_base: TimeBase, of: &Con
 
 /// How often the steps of two readings count in their difference.
 pub(crate) const ONE_EACH: f64 = SQRT_2;
-
-/// The same for two readings that are each carried on by half an interval: 1.5 times one
-/// reading less half the one before.
-pub(crate) const CARRIED_ON: f64 = 2.236_067_977_499_79;
 
 /// The budget of a difference of voltages over a difference of currents, in ohms. `weight` says
 /// how often the voltage's steps count.
@@ -77,6 +91,11 @@ pub(crate) fn of_leads(instrument: &Instrument, per_ohm: f64) -> Option<Contribu
     (standard > 0.0).then(|| stated("leads", standard))
 }
 
+/// The line of the clocks: a host's clock is somewhere within its bound, and stays there.
+pub(crate) fn clocks(standard: f64) -> Contribution {
+    stated("clocks", standard).rectangular()
+}
+
 /// A line whose standard uncertainty is stated.
 pub(crate) fn stated(name: impl Into<String>, standard: f64) -> Contribution {
     Contribution::new(
@@ -89,7 +108,7 @@ pub(crate) fn stated(name: impl Into<String>, standard: f64) -> Contribution {
 
 /// A line of which only a bound is known (JCGM 100:2008, 4.3.7).
 pub(crate) fn bounded(name: impl Into<String>, bound: f64) -> Contribution {
-    stated(name, Stated::Rectangular.standard_uncertainty(bound))
+    stated(name, Stated::Rectangular.standard_uncertainty(bound)).rectangular()
 }
 
 /// A line evaluated from the spread of what was read.

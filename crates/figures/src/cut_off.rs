@@ -3,6 +3,7 @@
 use sequence::plan::DutKind;
 
 use crate::charge::Amount;
+use crate::contribution::End;
 use crate::figure::{Figure, Figures, Missing, Name, Unit};
 use crate::walk::Sample;
 use crate::work::Workbench;
@@ -16,7 +17,7 @@ const SOURCE: &str = "IEC 61960-3, discharge performance (from memory): time to 
 struct CutOff {
     amount: Amount,
     uncertainty_ah: f64,
-    uncertainty_wh: f64,
+    end: End,
 }
 
 impl Workbench<'_> {
@@ -59,7 +60,7 @@ impl Workbench<'_> {
             Name::Energy,
             None,
             (together.amount.energy_wh, Unit::WattHour),
-            self.energy_budget(&together, cut_off.uncertainty_wh),
+            self.energy_budget(&together, cut_off.end),
             method,
             rows,
         ));
@@ -101,15 +102,19 @@ impl Workbench<'_> {
         let standard = self.instrument.voltage.standard(limit.volts()).hypot(leads);
         let instant_s = standard / slope.abs();
         let power = current * limit.volts();
+        let beyond_v = limit.volts() - 0.5 * slope * beyond_s;
         Some(CutOff {
             amount: Amount {
                 charge_ah: whole.charge_ah - current * beyond_s / 3600.0,
-                energy_wh: whole.energy_wh - power * beyond_s / 3600.0,
+                energy_wh: whole.energy_wh - current * beyond_v * beyond_s / 3600.0,
                 seconds: whole.seconds - beyond_s,
                 ..whole
             },
             uncertainty_ah: current * instant_s / 3600.0,
-            uncertainty_wh: power * instant_s / 3600.0,
+            end: End {
+                volts: limit.volts(),
+                per_volt: power / slope.abs() / 3600.0,
+            },
         })
     }
 }

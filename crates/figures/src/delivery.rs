@@ -4,7 +4,7 @@ use quantity::{Charge, Span};
 use sink::uncertainty::Budget;
 
 use crate::charge::Amount;
-use crate::contribution::{Conditions, of_delivery, of_leads, stated};
+use crate::contribution::{Conditions, End, clocks, of_delivery, of_leads, stated};
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
 use crate::stage::Stage;
 use crate::walk::Delivered;
@@ -88,7 +88,7 @@ impl Workbench<'_> {
             Name::DeliveredEnergy,
             label.clone(),
             (amount.energy_wh, Unit::WattHour),
-            self.energy_budget(together, 0.0),
+            self.energy_budget(together, End::default()),
             method,
             rows,
         ));
@@ -189,12 +189,13 @@ impl Workbench<'_> {
             per_ampere: together.amount.seconds / 3600.0,
             per_volt: None,
             cut_off: cut_off_ah,
+            end: End::default(),
             hidden: together.amount.hidden_ah,
         };
         of_delivery(self.instrument, self.time_base, &conditions)
     }
 
-    pub(crate) fn energy_budget(&self, together: &Together, cut_off_wh: f64) -> Budget {
+    pub(crate) fn energy_budget(&self, together: &Together, end: End) -> Budget {
         let amount = together.amount;
         let mean_voltage = if amount.charge_ah > 0.0 {
             amount.energy_wh / amount.charge_ah
@@ -205,15 +206,15 @@ impl Workbench<'_> {
             value: amount.energy_wh,
             per_ampere: mean_voltage * amount.seconds / 3600.0,
             per_volt: Some(amount.charge_ah),
-            cut_off: cut_off_wh,
+            cut_off: 0.0,
+            end,
             hidden: amount.hidden_wh,
         };
         of_delivery(self.instrument, self.time_base, &conditions)
     }
 
     fn clock_budget(&self, seconds: f64) -> Budget {
-        let clocks = seconds * self.time_base.uncertainty;
-        Budget::new(vec![stated("clocks", clocks)])
+        Budget::new(vec![clocks(seconds * self.time_base.uncertainty)])
     }
 }
 

@@ -97,6 +97,8 @@ pub enum Name {
     JunctionMargin,
     /// Hottest heat sink.
     PeakTemperature,
+    /// Power delivered to the sink over power taken in.
+    Efficiency,
 }
 
 /// A figure's unit.
@@ -235,7 +237,7 @@ impl Figure {
             value,
             unit,
             uncertainty: combined,
-            expanded: combined.and_then(|combined| combined.expanded(PROBABILITY)),
+            expanded: combined.and_then(|_| budget.expanded(PROBABILITY)),
             dominated_by: budget.dominant().map(|line| line.name.clone()),
             budget,
             method: Method {

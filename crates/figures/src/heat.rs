@@ -9,14 +9,14 @@
 use quantity::Resistance;
 use sink::bench::{Sensing, SinkEntry};
 use sink::leads::loop_resistance;
-use sink::uncertainty::Budget;
+use sink::uncertainty::{Budget, DegreesOfFreedom};
 
 use crate::charge::Amount;
 use crate::contribution::{bounded, observed, stated};
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
 use crate::least_squares::{Fitted, least_squares};
 use crate::stage::Stage;
-use crate::track::TrackPoint;
+use crate::track::Track;
 use crate::walk::Delivered;
 use crate::work::Workbench;
 
@@ -42,15 +42,51 @@ const MARGIN: &str = "largest junction temperature of the bench file less the se
                       heat sink";
 const FIT_SOURCE: &str = "first-order response; Levenberg-Marquardt least squares";
 
+/// A mean of the heat sink's temperature and of the power.
+#[derive(Debug, Clone, Copy)]
+struct HeatPoint {
+    seconds: f64,
+    degc: f64,
+    /// Nominal.
+    watts: f64,
+}
+
+fn heat_points(track: &Track) -> Vec<HeatPoint> {
+    let points = track.points().into_iter();
+    points
+        .map(|point| {
+            let [degc, watts] = point.values;
+            HeatPoint {
+                seconds: point.seconds,
+                degc,
+                watts,
+            }
+        })
+        .collect()
+}
+
 /// The fitted end of a soak.
 struct Soak {
     settled_degc: f64,
     time_constant_s: f64,
     budget: Budget,
     standard_k: f64,
+    /// Standard deviation of one mean of the temperature about the fit.
+    residual_k: f64,
+    residual_freedom: DegreesOfFreedom,
     watts: f64,
     relative_watts: f64,
     rows: Rows,
+}
+
+impl Soak {
+    fn freedom(&self) -> DegreesOfFreedom {
+        self.budget
+            .combined()
+            .map_or(DegreesOfFreedom::INFINITE, |combined| {
+                combined.degrees_of_freedom
+            })
+    }
 }
 
 impl Workbench<'_> {
@@ -60,7 +96,7 @@ impl Workbench<'_> {
             let Some(track) = &delivered.looked.heat else {
                 continue;
             };
-            let points = track.points();
+            let points = heat_points(track);
             if !is_steady(&points) {
                 continue;
             }
@@ -94,7 +130,7 @@ impl Workbench<'_> {
 
     fn soak(
         &self,
-        points: &[TrackPoint],
+        points: &[HeatPoint],
         delivered: &Delivered,
         entry: &SinkEntry,
     ) -> Result<Soak, String> {
@@ -139,6 +175,8 @@ impl Workbench<'_> {
             time_constant_s,
             budget,
             standard_k,
+            residual_k: fitted.residual_rms(),
+            residual_freedom: fitted.degrees_of_freedom(),
             watts,
             relative_watts,
             rows: Rows { first, last },
@@ -192,7 +230,16 @@ impl Workbench<'_> {
 fn resistance(stage: &Stage<'_>, soak: &Soak, ambient_degc: f64) -> Figure {
     let value = (soak.settled_degc - ambient_degc) / soak.watts;
     let lines = vec![
-        stated("settled temperature", soak.standard_k / soak.watts),
+        observed(
+            "settled temperature",
+            soak.standard_k / soak.watts,
+            soak.freedom(),
+        ),
+        observed(
+            "air temperature, noise of one readback",
+            soak.residual_k / soak.watts,
+            soak.residual_freedom,
+        ),
         stated("power", (value * soak.relative_watts).abs()),
     ];
     Figure::of_stage(
@@ -211,7 +258,7 @@ fn margin(stage: &Stage<'_>, soak: &Soak, entry: &SinkEntry) -> Figure {
     let limit = entry.mosfet.junction_max.degrees_celsius();
     let value = limit - soak.settled_degc - soak.watts * inner;
     let lines = vec![
-        stated("settled temperature", soak.standard_k),
+        observed("settled temperature", soak.standard_k, soak.freedom()),
         stated("power", soak.watts * inner * soak.relative_watts),
     ];
     Figure::of_stage(
@@ -224,7 +271,7 @@ fn margin(stage: &Stage<'_>, soak: &Soak, entry: &SinkEntry) -> Figure {
     )
 }
 
-fn is_steady(points: &[TrackPoint]) -> bool {
+fn is_steady(points: &[HeatPoint]) -> bool {
     let watts = points.iter().map(|point| point.watts);
     let (least, most) = watts.fold(
         (f64::INFINITY, f64::NEG_INFINITY),
@@ -236,7 +283,7 @@ fn is_steady(points: &[TrackPoint]) -> bool {
 }
 
 /// `T = settled + a exp(-t / tau)`, with the logarithm of tau as the third parameter.
-fn exponential(points: &[TrackPoint]) -> Result<Fitted, String> {
+fn exponential(points: &[HeatPoint]) -> Result<Fitted, String> {
     let (Some(first), Some(last)) = (points.first(), points.last()) else {
         return Err("there are too few temperatures".to_owned());
     };

@@ -9,18 +9,20 @@ use sink::uncertainty::Budget;
 
 use crate::contribution::bounded;
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
+use crate::least_squares::number;
 use crate::stage::Stage;
 use crate::walk::Sample;
 use crate::work::Workbench;
 
-/// The voltage has given way where it is below this share of what it was at the knee.
+/// The voltage has given way where it is below this share of what it was one readback before.
 const GIVEN_WAY: f64 = 0.9;
 
 /// A limit folds back if beyond the knee less than this share of the knee's current flows.
 const FOLDS: f64 = 0.95;
 
-const KNEE: &str = "largest mean current of a readback before the voltage fell below 90 % of \
-                    what it was there (its smallest sample), in a step that raises the current";
+const KNEE: &str = "largest mean current of a readback up to the one in which the voltage (its \
+                    smallest sample) fell below 90 % of the mean of the readback before, in a \
+                    step that raises the current";
 const FOLD: &str = "smallest sample of the current beyond the knee, the sink still asking for \
                     more; below 95 % of the knee the limit folds back";
 
@@ -72,8 +74,16 @@ impl Workbench<'_> {
         let (Some(first), Some(last)) = (points.first(), points.last()) else {
             return;
         };
+        // Gradual falls are the supply's output resistance; giving way is sudden.
+        let fallen = points
+            .iter()
+            .zip(points.iter().skip(1))
+            .position(|(before, seen)| seen.least_volts < GIVEN_WAY * before.volts)
+            .map(|place| place + 1);
+        let up_to = fallen.unwrap_or(points.len() - 1);
         let top = points
             .iter()
+            .take(up_to + 1)
             .enumerate()
             .max_by(|(_, one), (_, other)| one.amperes.total_cmp(&other.amperes));
         let Some((place, &Seen { amperes: knee, .. })) = top else {
@@ -83,15 +93,7 @@ impl Workbench<'_> {
         if knee - first.amperes <= 3.0 * self.instrument.current.step {
             return;
         }
-        // The voltage may give way within the readback of the knee itself.
-        let before = place.saturating_sub(1);
-        let up_to_it = points.iter().skip(before).take(place - before + 1);
-        let level = up_to_it.map(|seen| seen.volts).fold(0.0, f64::max);
-        let beyond: Vec<&Seen> = points
-            .iter()
-            .skip(place)
-            .filter(|seen| seen.least_volts < GIVEN_WAY * level)
-            .collect();
+        let beyond = fallen.map_or(&[][..], |fallen| points.split_at(fallen).1);
         let rows = Rows {
             first: first.row,
             last: last.row,
@@ -104,9 +106,20 @@ impl Workbench<'_> {
             return;
         }
         let before = place.checked_sub(1).and_then(|before| points.get(before));
-        let climb = before.map_or(0.0, |before| (knee - before.amperes).abs());
+        // By the whole ramp: a difference of two readbacks is noisy, and the limit may cut the last
+        // one short.
+        let climb = before.map_or(0.0, |before| {
+            (before.amperes - first.amperes).abs() / number(place.max(2) - 1)
+        });
+        // A readback is a mean over a rise. Where the one in which the voltage gave way is the
+        // largest, the limit was reached in it, at an instant as likely as any: at most half a rise
+        // above its mean, and in 95 % of cases within the interval about 0.22 of one. Else it was
+        // reached right after the largest one: from half a rise to one and a half above.
+        let within = fallen == Some(place);
+        let (on, bound) = if within { (0.22, 0.25) } else { (1.0, 0.5) };
+        let knee = knee + on * climb;
         let mut lines = self.instrument.current.of_reading(knee);
-        lines.push(bounded("rise of the current in a readback", climb));
+        lines.push(bounded("rise of the current in a readback", bound * climb));
         figures.figures.push(Figure::of_stage(
             Name::CurrentLimitKnee,
             stage,

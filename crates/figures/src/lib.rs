@@ -12,21 +12,28 @@
 //! What it deliberately does not do: print tables (the command line and the report do), judge
 //! whether a cell is good.
 
+mod against;
 mod capture;
 mod cell;
+mod cell_file;
 mod cell_fit;
+mod cell_tables;
 mod channel;
 mod charge;
 mod compare;
 mod contribution;
 mod cut_off;
 mod delivery;
+mod draw;
 mod droop;
+mod efficiency;
 mod figure;
 mod heat;
 mod knee;
 mod least_squares;
+mod load;
 mod look;
+mod noise;
 mod number;
 mod peukert;
 mod predict;
@@ -41,13 +48,17 @@ mod trust;
 mod walk;
 mod work;
 
-pub use cell::{CellModel, CellPoint, Known, PairPoint};
+pub use against::{Against, LabelDifference, against};
+pub use cell::{CellModel, CellPoint, Known, OpenCircuit, PairPoint};
+pub use cell_file::CellFileError;
 pub use compare::{Compared, Comparison, Difference, Group, compare};
+pub use efficiency::{InputError, InputMeter, InputReading};
 pub use figure::{Figure, Figures, Method, Missing, Name, Rows, Standing, Unit};
+pub use load::LoadError;
 pub use number::with_uncertainty;
 pub use peukert::{Peukert, PeukertError, peukert};
-pub use predict::{CellSpread, Load, LoadStep, PredictError, RunTime, predict};
-pub use work::{FiguresError, work_out};
+pub use predict::{CellSpread, Load, LoadStep, PredictError, RunTime, Terms, Warmth, predict};
+pub use work::{FiguresError, work_out, work_out_with_input};
 
 #[cfg(test)]
 mod tests;

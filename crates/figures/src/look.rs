@@ -33,6 +33,7 @@ pub(crate) fn look(plan: &Plan, stages: &[Stage<'_>], index: usize) -> Look {
             around: false,
             curve: stage.step.may_give_up.then_some(SWEEP),
             heat: is_soak(stage),
+            discharge: false,
         };
     }
     let of_model = is_model_pulse(stages, index)
@@ -43,11 +44,20 @@ pub(crate) fn look(plan: &Plan, stages: &[Stage<'_>], index: usize) -> Look {
         around: before.is_some_and(|before| is_pulse(before, stage)),
         curve: of_model.then_some(RELAXATION),
         heat: is_soak(stage),
+        discharge: is_discharge(stage),
     }
 }
 
 fn is_soak(stage: &Stage<'_>) -> bool {
     stage.draws() && stage.length() >= HEAT_LEAST && !stage.is_beyond_counting()
+}
+
+/// Whether a stage is a discharge at a constant current that the open-circuit voltage can be told
+/// from, given the resistances.
+fn is_discharge(stage: &Stage<'_>) -> bool {
+    stage.held_current().is_some_and(|held| held > 0.0)
+        && stage.length() > PULSE_MOST
+        && !stage.is_beyond_counting()
 }
 
 /// Whether a stage is a pulse between a rest and a relaxation.

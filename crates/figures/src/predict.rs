@@ -6,20 +6,23 @@
 //!
 //! The interval is JCGM 101's: many trials, each with a model drawn from the covariance of every
 //! pulse's fit, an error of the voltages common to all, and a cell that differs from the one
-//! measured by the spread between cells.
+//! measured by the spread between cells. What dominates is told by trials in which one cause
+//! alone is drawn.
 //!
-//! What it deliberately does not do: temperature, ageing, self-discharge, rates beyond those that
-//! were measured. A load whose sleep current is a leak of the cell's own size runs shorter.
+//! What it deliberately does not do: ageing, self-discharge, rates beyond those that were
+//! measured. A load whose sleep current is a leak of the cell's own size runs shorter.
 
-use nalgebra::{DMatrix, DVector};
 use serde::{Deserialize, Serialize};
+use sink::accumulate::Moments;
 use sink::montecarlo::{Outcome, OutcomeError, Random};
+use sink::uncertainty::{Budget, Contribution, DegreesOfFreedom, Evaluation};
 
-use crate::cell::{CellModel, CellPoint, PairPoint};
+use crate::cell::CellModel;
+use crate::draw::{Causes, Factors};
 use crate::figure::PROBABILITY;
 
-/// Halvings of the interval in which the end lies.
-const HALVINGS: u32 = 40;
+/// Trials in which one cause alone is drawn, at most.
+const TRIALS_ALONE: usize = 2_000;
 
 /// A step of the load's cycle.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
@@ -31,7 +34,8 @@ pub struct LoadStep {
     pub amperes: f64,
 }
 
-/// How cells differ from the one measured, each as a share, standard deviation.
+/// How the cell that will run differs from the one that was measured, each as a share, standard
+/// deviation.
 #[derive(Debug, Clone, Copy, PartialEq, Default, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
 pub struct CellSpread {
@@ -39,6 +43,33 @@ pub struct CellSpread {
     pub capacity: f64,
     /// Of all resistances together.
     pub resistance: f64,
+    /// Degrees of freedom behind both, where they come from a few cells; `None`: well known.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub degrees_of_freedom: Option<u32>,
+}
+
+impl CellSpread {
+    /// From cells measured alike, of which one was fitted: the next cell differs from that one by
+    /// the root of two standard deviations. Student's distribution with one degree of freedom
+    /// less than cells (JCGM 101:2008, 6.4.9).
+    pub fn of_cells(capacity: f64, resistance: f64, cells: u32) -> Self {
+        let two = 2_f64.sqrt();
+        Self {
+            capacity: two * capacity,
+            resistance: two * resistance,
+            degrees_of_freedom: Some(cells.saturating_sub(1).max(1)),
+        }
+    }
+}
+
+/// How warm the cell will be.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Warmth {
+    /// Expected, degrees Celsius.
+    pub degc: f64,
+    /// Standard deviation, kelvin.
+    pub standard_k: f64,
 }
 
 /// What is asked of a prediction.
@@ -51,6 +82,39 @@ pub struct Load {
     pub cut_off_v: f64,
 }
 
+/// On which cells, how warm, and how hard to try.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Terms {
+    /// How cells differ.
+    pub spread: CellSpread,
+    /// How warm the cell will be; `None`: as warm as when it was measured.
+    pub warmth: Option<Warmth>,
+    /// Trials.
+    pub trials: usize,
+    /// Seed of the trials.
+    pub seed: u64,
+}
+
+impl Terms {
+    /// The very cell that was measured, as warm as it was then.
+    pub const EXPECTED: Self = Self {
+        spread: CellSpread {
+            capacity: 0.0,
+            resistance: 0.0,
+            degrees_of_freedom: None,
+        },
+        warmth: None,
+        trials: 10_000,
+        seed: 1,
+    };
+
+    /// The same with the spread between cells taken as well known.
+    const fn well_known(mut self) -> Self {
+        self.spread.degrees_of_freedom = None;
+        self
+    }
+}
+
 /// A run-time.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
@@ -61,6 +125,10 @@ pub struct RunTime {
     pub state_of_charge: f64,
     /// Mean, standard uncertainty and intervals of the trials, hour.
     pub outcome: Outcome,
+    /// Each cause's standard deviation of the run-time by itself, hour.
+    pub budget: Budget,
+    /// The largest of them.
+    pub dominated_by: Option<String>,
     /// What a reader must know before trusting it.
     pub notes: Vec<String>,
     /// How it was worked out.
@@ -76,6 +144,17 @@ pub enum PredictError {
     /// A model without points.
     #[error("the cell model has no pulse; fit one to a record with pulses between rests")]
     Model,
+    /// A full cell that does not carry the cycle.
+    #[error(
+        "a full cell's voltage falls to {lowest_v:.3} V in the cycle, below the cut-off of \
+         {cut_off_v:.3} V: it never runs"
+    )]
+    NeverRuns {
+        /// The lowest voltage of a full cell in the cycle.
+        lowest_v: f64,
+        /// The cut-off.
+        cut_off_v: f64,
+    },
     /// The trials tell nothing.
     #[error(transparent)]
     Trials(#[from] OutcomeError),
@@ -84,14 +163,9 @@ pub enum PredictError {
 /// Predicts how long a load runs on a cell, from full to its cut-off.
 ///
 /// # Errors
-/// [`PredictError`] for a cycle that draws nothing, a model without pulses, or too few trials.
-pub fn predict(
-    model: &CellModel,
-    load: &Load,
-    spread: CellSpread,
-    trials: usize,
-    seed: u64,
-) -> Result<RunTime, PredictError> {
+/// [`PredictError`] for a cycle that draws nothing, a model without pulses, a cell that does not
+/// carry the load, or too few trials.
+pub fn predict(model: &CellModel, load: &Load, terms: Terms) -> Result<RunTime, PredictError> {
     let sound = |step: &LoadStep| {
         step.seconds.is_finite() && step.seconds > 0.0 && step.amperes.is_finite()
     };
@@ -103,241 +177,100 @@ pub fn predict(
     if !load.cycle.iter().all(sound) || charge.is_nan() || charge <= 0.0 {
         return Err(PredictError::Cycle);
     }
-    let best = Drawn::best(model).ok_or(PredictError::Model)?;
+    let factors = Factors::of(model, terms);
+    let best = factors.expected().ok_or(PredictError::Model)?;
+    let lowest_v = best.lowest(1.0, &load.cycle);
+    if lowest_v < load.cut_off_v {
+        return Err(PredictError::NeverRuns {
+            lowest_v,
+            cut_off_v: load.cut_off_v,
+        });
+    }
     let (hours, state_of_charge) = best.run(load);
-    let factors: Vec<DMatrix<f64>> = model.points.iter().map(factor).collect();
-    let mut random = Random::from_seed(seed);
-    let values = (0..trials)
-        .map(|_| {
-            let drawn = Drawn::at_random(model, &best, &factors, spread, &mut random);
-            drawn.run(load).0
+    let trials = |causes: Causes, count: usize, seed: u64| -> Vec<f64> {
+        let mut random = Random::from_seed(seed);
+        (0..count)
+            .map(|_| factors.draw(causes, &mut random).run(load).0)
+            .collect()
+    };
+    let outcome = Outcome::from_trials(trials(Causes::ALL, terms.trials, terms.seed), PROBABILITY)?;
+    let alone = terms.trials.min(TRIALS_ALONE);
+    // Student's distribution of few degrees of freedom has no standard deviation to compare.
+    let factors = Factors::of(model, terms.well_known());
+    let trials = |causes: Causes, count: usize, seed: u64| -> Moments {
+        let mut random = Random::from_seed(seed);
+        (0..count)
+            .map(|_| factors.draw(causes, &mut random).run(load).0)
+            .collect()
+    };
+    let lines = Causes::EACH
+        .iter()
+        .filter_map(|&(name, causes)| {
+            let moments = trials(causes, alone, terms.seed);
+            let standard = moments.standard_deviation().filter(|u| *u > 1e-9 * hours)?;
+            let infinite = DegreesOfFreedom::INFINITE;
+            Some(Contribution::new(
+                name,
+                Evaluation::TypeB,
+                standard,
+                infinite,
+            ))
         })
         .collect();
-    let mut notes = Vec::new();
+    let budget = Budget::new(lines);
+    Ok(RunTime {
+        hours,
+        state_of_charge,
+        outcome,
+        dominated_by: budget.dominant().map(|line| line.name.clone()),
+        budget,
+        notes: notes(model, &factors, state_of_charge),
+        method: "the load's lowest voltage in a steady cycle meets the cut-off, on the fitted \
+                 model; interval by the Monte Carlo method, JCGM 101:2008, over the covariance of \
+                 the fit, the voltage channel, the capacity, the spread between cells and the \
+                 temperature"
+            .to_owned(),
+    })
+}
+
+fn notes(model: &CellModel, factors: &Factors<'_>, end: f64) -> Vec<String> {
+    let mut notes = model.notes.clone();
     let lowest = model
         .points
         .iter()
         .map(|point| point.state_of_charge)
         .fold(f64::INFINITY, f64::min);
-    if state_of_charge < lowest {
+    if end < lowest {
         notes.push(format!(
-            "the end lies at a state of charge of {state_of_charge:.3}, below the lowest pulse at \
+            "the end lies at a state of charge of {end:.3}, below the lowest pulse at \
              {lowest:.3}: the model is only carried on there"
         ));
     }
-    Ok(RunTime {
-        hours,
-        state_of_charge,
-        outcome: Outcome::from_trials(values, PROBABILITY)?,
-        notes,
-        method: "the load's lowest voltage in a steady cycle meets the cut-off, on the fitted \
-                 model; interval by the Monte Carlo method, JCGM 101:2008, over the covariance of \
-                 the fit and the spread between cells"
-            .to_owned(),
-    })
-}
-
-/// A model with numbers only, from empty to full.
-struct Drawn {
-    capacity_ah: f64,
-    nodes: Vec<Node>,
-}
-
-#[derive(Clone)]
-struct Node {
-    state: f64,
-    volts: f64,
-    series: f64,
-    /// Resistance and time constant.
-    pairs: Vec<(f64, f64)>,
-}
-
-impl Drawn {
-    fn best(model: &CellModel) -> Option<Self> {
-        let node = |point: &CellPoint| Node {
-            state: point.state_of_charge,
-            volts: point.open_circuit_voltage_v.value,
-            series: point.series_resistance_ohm.value,
-            pairs: point.pairs.iter().map(values).collect(),
-        };
-        let mut nodes: Vec<Node> = model.points.iter().map(node).collect();
-        nodes.sort_by(|one, other| one.state.total_cmp(&other.state));
-        (!nodes.is_empty()).then_some(Self {
-            capacity_ah: model.capacity_ah,
-            nodes,
-        })
+    if factors.terms.spread == CellSpread::default() {
+        notes.push(
+            "no spread between cells was given: this is the run-time of the very cell that was \
+             measured"
+                .to_owned(),
+        );
     }
-
-    fn at_random(
-        model: &CellModel,
-        best: &Self,
-        factors: &[DMatrix<f64>],
-        spread: CellSpread,
-        random: &mut Random,
-    ) -> Self {
-        let capacity = model.capacity_standard_uncertainty_ah / model.capacity_ah;
-        let capacity = 1.0 + capacity.hypot(spread.capacity) * random.normal();
-        let resistance = 1.0 + spread.resistance * random.normal();
-        // The voltages were all read by one channel.
-        let common = random.normal();
-        let mut nodes: Vec<Node> = model
-            .points
-            .iter()
-            .zip(factors)
-            .map(|(point, factor)| node(point, factor, (common, resistance), random))
-            .collect();
-        nodes.sort_by(|one, other| one.state.total_cmp(&other.state));
-        Self {
-            capacity_ah: best.capacity_ah * capacity,
-            nodes,
-        }
+    if factors
+        .terms
+        .spread
+        .degrees_of_freedom
+        .is_some_and(|few| few < 3)
+    {
+        notes.push(
+            "the spread stands on so few cells that the run-time has no standard uncertainty to \
+             speak of: go by the interval"
+                .to_owned(),
+        );
     }
-
-    /// Hours to the cut-off, and the state of charge there.
-    fn run(&self, load: &Load) -> (f64, f64) {
-        let lasts = |state: f64| self.lowest(state, &load.cycle) >= load.cut_off_v;
-        let seconds: f64 = load.cycle.iter().map(|step| step.seconds).sum();
-        let charge: f64 = load
-            .cycle
-            .iter()
-            .map(|step| step.seconds * step.amperes)
-            .sum();
-        let end = if lasts(1.0) {
-            let (mut below, mut above) = (0.0, 1.0);
-            for _ in 0..HALVINGS {
-                let middle = f64::midpoint(below, above);
-                if lasts(middle) {
-                    above = middle;
-                } else {
-                    below = middle;
-                }
-            }
-            above
-        } else {
-            1.0
-        };
-        (self.capacity_ah * (1.0 - end) * seconds / charge, end)
+    if factors.terms.warmth.is_some() && !factors.knows_temperature() {
+        notes.push(
+            "the cell model knows no effect of temperature, so the temperature given changes \
+             nothing: measure the cell at that temperature"
+                .to_owned(),
+        );
     }
-
-    /// The lowest voltage of a cycle that has gone on for long.
-    fn lowest(&self, state: f64, cycle: &[LoadStep]) -> f64 {
-        let Some(node) = self.at(state) else {
-            return f64::NAN;
-        };
-        let mut over: Vec<f64> = node
-            .pairs
-            .iter()
-            .map(|&(resistance, tau)| {
-                let whole: f64 = cycle.iter().map(|step| step.seconds).sum();
-                let end = cycle
-                    .iter()
-                    .fold(0.0, |volts, step| after(volts, step, resistance, tau));
-                end / -(-whole / tau).exp_m1()
-            })
-            .collect();
-        let mut lowest = f64::INFINITY;
-        for step in cycle {
-            let level = node.volts - step.amperes * node.series;
-            lowest = lowest.min(level - over.iter().sum::<f64>());
-            for (volts, &(resistance, tau)) in over.iter_mut().zip(&node.pairs) {
-                *volts = after(*volts, step, resistance, tau);
-            }
-            lowest = lowest.min(level - over.iter().sum::<f64>());
-        }
-        lowest
-    }
-
-    /// Straight between pulses; beyond them resistances stay and the voltage goes straight on.
-    fn at(&self, state: f64) -> Option<Node> {
-        let above = self.nodes.partition_point(|node| node.state < state);
-        let last = self.nodes.len().checked_sub(1)?;
-        let (low, high) = match above {
-            0 => (0, 1.min(last)),
-            above if above > last => (last.saturating_sub(1), last),
-            above => (above - 1, above),
-        };
-        let (low, high) = (self.nodes.get(low)?, self.nodes.get(high)?);
-        let apart = high.state - low.state;
-        let share = if apart > 0.0 {
-            (state - low.state) / apart
-        } else {
-            0.0
-        };
-        let held = share.clamp(0.0, 1.0);
-        let between = |one: f64, other: f64, share: f64| one + share * (other - one);
-        Some(Node {
-            state,
-            volts: between(low.volts, high.volts, share),
-            series: between(low.series, high.series, held),
-            pairs: low
-                .pairs
-                .iter()
-                .zip(&high.pairs)
-                .map(|(one, other)| (between(one.0, other.0, held), between(one.1, other.1, held)))
-                .collect(),
-        })
-    }
-}
-
-/// A pair's voltage after a step.
-fn after(volts: f64, step: &LoadStep, resistance: f64, tau: f64) -> f64 {
-    let settled = step.amperes * resistance;
-    settled + (volts - settled) * (-step.seconds / tau).exp()
-}
-
-fn values(pair: &PairPoint) -> (f64, f64) {
-    (pair.resistance_ohm.value, pair.time_constant_s.value)
-}
-
-/// A root of the correlations of a pulse's parameters.
-fn factor(point: &CellPoint) -> DMatrix<f64> {
-    let size = point.correlations.len();
-    if size == 0 {
-        // A model stated without uncertainty, not fitted: nothing is drawn.
-        return DMatrix::zeros(0, 0);
-    }
-    let correlation = DMatrix::from_fn(size, size, |row, column| {
-        let found = point.correlations.get(row).and_then(|row| row.get(column));
-        found
-            .copied()
-            .filter(|value| value.is_finite())
-            .unwrap_or(if row == column { 1.0 } else { 0.0 })
-    });
-    // Eigenvectors, since parameters that hang together wholly leave a singular matrix.
-    let eigen = correlation.symmetric_eigen();
-    let roots = eigen.eigenvalues.map(|value| value.max(0.0).sqrt());
-    eigen.eigenvectors * DMatrix::from_diagonal(&roots)
-}
-
-/// A pulse's parameters, drawn.
-fn node(
-    point: &CellPoint,
-    factor: &DMatrix<f64>,
-    (common, resistances): (f64, f64),
-    random: &mut Random,
-) -> Node {
-    let normals = DVector::from_fn(factor.ncols(), |_, _| random.normal());
-    let drawn = factor * normals;
-    let by = |index: usize| drawn.get(index).copied().unwrap_or(0.0);
-    let series = point.series_resistance_ohm;
-    let voltage = point.open_circuit_voltage_v;
-    let pairs = point
-        .pairs
-        .iter()
-        .zip((1..).step_by(2))
-        .map(|(pair, index)| {
-            let (resistance, tau) = (pair.resistance_ohm, pair.time_constant_s);
-            let ohms = resistance.value + resistance.standard_uncertainty * by(index);
-            // A time constant is fitted as its logarithm.
-            let log = tau.standard_uncertainty / tau.value * by(index + 1);
-            ((ohms * resistances).max(0.0), tau.value * log.exp())
-        })
-        .collect();
-    let ohms = series.value + series.standard_uncertainty * by(0);
-    Node {
-        state: point.state_of_charge,
-        volts: voltage.value + voltage.standard_uncertainty * common,
-        series: (ohms * resistances).max(0.0),
-        pairs,
-    }
+    notes
 }

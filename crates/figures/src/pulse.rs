@@ -8,7 +8,7 @@ use quantity::{Current, SinkTime, Span, Voltage};
 use sequence::plan::DutKind;
 
 use crate::capture::{Capture, of_stage};
-use crate::contribution::{CARRIED_ON, of_resistance};
+use crate::contribution::of_resistance;
 use crate::figure::{Figure, Figures, Missing, Name, Rows, Unit};
 use crate::resistance::{LEAST_RISE, ended};
 use crate::stage::{EACH_MAX, Stage};
@@ -53,16 +53,22 @@ impl Workbench<'_> {
             if !is_pulse(before, stage) {
                 continue;
             }
-            let Some(start) = ended(from) else { continue };
+            let Some((start, weight)) = ended(before, from) else {
+                continue;
+            };
+            let rested = before.held_current().is_some_and(|held| held <= 0.0);
             let capture = of_stage(self.captures, stage, self.plan.tick);
             for (index, (delay, name)) in DELAYS.into_iter().zip(NAMES).enumerate() {
                 if delay > stage.length() {
                     continue;
                 }
                 match self.after(index, delay, stage, delivered, capture) {
-                    Some(seen) => figures
-                        .figures
-                        .extend(self.pulse(name, stage, start, &seen)),
+                    Some(seen) => figures.figures.extend(self.pulse(
+                        name,
+                        stage,
+                        (start, weight, rested),
+                        &seen,
+                    )),
                     None if stage.is_first() => {
                         figures
                             .missing
@@ -80,18 +86,37 @@ impl Workbench<'_> {
         }
     }
 
-    fn pulse(&self, name: Name, stage: &Stage<'_>, start: Sample, seen: &Seen) -> Option<Figure> {
-        let (low_a, low_v) = self.true_values(&start);
+    /// In a rest no current flows, whatever a converter that ends at zero makes of its offset.
+    fn pulse(
+        &self,
+        name: Name,
+        stage: &Stage<'_>,
+        (start, weight, rested): (Sample, f64, bool),
+        seen: &Seen,
+    ) -> Option<Figure> {
+        let (read_a, low_v) = self.true_values(&start);
+        let low_a = if rested { 0.0 } else { read_a };
         let rise = seen.amperes - low_a;
         if rise <= LEAST_RISE * self.instrument.current.step {
             return None;
         }
         let resistance = (low_v - seen.volts) / rise;
+        let mut budget = of_resistance(self.instrument, resistance, rise, weight.hypot(1.0));
+        if rested {
+            // The one current that was read errs by its offset, too.
+            let of_current = self.instrument.current.of_reading(rise);
+            for line in &mut budget.contributions {
+                let read = of_current.iter().find(|read| read.name == line.name);
+                if let Some(read) = read {
+                    *line = read.clone().scaled(resistance / rise);
+                }
+            }
+        }
         Some(Figure::of_stage(
             name,
             stage,
             (resistance, Unit::Ohm),
-            of_resistance(self.instrument, resistance, rise, CARRIED_ON),
+            budget,
             (seen.how, SOURCE),
             Rows {
                 first: start.row,
@@ -163,6 +188,13 @@ impl Workbench<'_> {
     }
 
     /// Ampere and volt of a readback, corrected.
+    /// The true values of nominal means, ampere and volt.
+    pub(crate) fn true_means(&self, amperes: f64, volts: f64) -> (f64, f64) {
+        let current = Current::from_amperes(amperes).unwrap_or(Current::ZERO);
+        let voltage = Voltage::from_volts(volts).unwrap_or(Voltage::ZERO);
+        self.true_pair(current, voltage)
+    }
+
     pub(crate) fn true_values(&self, sample: &Sample) -> (f64, f64) {
         self.true_pair(sample.current, sample.voltage)
     }

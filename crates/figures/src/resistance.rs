@@ -4,11 +4,11 @@
 //! its end. IEC 61960-3 has 0,2 It for 10 s and then 1,0 It for 1 s; other currents and times
 //! give a resistance as well, which the label of the second step then names.
 
-use quantity::Voltage;
+use quantity::{Span, Voltage};
 use sequence::plan::Plan;
 
 use crate::channel::Instrument;
-use crate::contribution::{CARRIED_ON, of_resistance};
+use crate::contribution::of_resistance;
 use crate::figure::{Figure, Name, Rows, Unit};
 use crate::stage::Stage;
 use crate::walk::{Delivered, Sample};
@@ -17,7 +17,7 @@ use crate::walk::{Delivered, Sample};
 pub(crate) const LEAST_RISE: f64 = 2.0;
 
 const HOW: &str = "(U1 - U2) / (I2 - I1), each at the end of its step: the last readback wholly \
-                   within it, its voltage carried on in a straight line to the readback's end; \
+                   within it, its voltage carried on in a straight line to the step's end; \
                    the second step right after the first and at a larger current";
 const SOURCE: &str = "IEC 61960-3, d.c. internal resistance by two currents (from memory)";
 
@@ -36,33 +36,40 @@ pub(crate) fn resistances(
             if one <= 0.0 || other <= one || !second.follows(first) || second.is_beyond_counting() {
                 return None;
             }
-            figure(plan, second, ended(before)?, ended(after)?, instrument)
+            let (low, high) = (ended(first, before)?, ended(second, after)?);
+            figure(plan, second, low, high, instrument)
         })
         .collect()
 }
 
 /// The last readback of a step, its voltage carried on from the middle of its interval to the
-/// end, along the straight line through it and the readback before.
-pub(crate) fn ended(delivered: &Delivered) -> Option<Sample> {
+/// end of the step, along the straight line through it and the readback before; `None` where the
+/// step holds fewer than two readbacks, so that nothing tells which way the voltage went. Beside it
+/// how often the errors of single readings count in it.
+pub(crate) fn ended(stage: &Stage<'_>, delivered: &Delivered) -> Option<(Sample, f64)> {
     let last = delivered.last.1?;
-    let Some(before) = delivered.last.0 else {
-        return Some(last);
-    };
+    let before = delivered.last.0?;
     let apart = last.middle().saturating_since(before.middle()).seconds();
-    let on = last.time.saturating_since(last.middle()).seconds();
+    let on = stage.end.min(last.time.saturating_add(interval(&last)));
+    let on = on.saturating_since(last.middle()).seconds();
     if apart <= 0.0 {
-        return Some(last);
+        return None;
     }
     let rise = last.voltage.volts() - before.voltage.volts();
     let voltage = Voltage::from_volts(last.voltage.volts() + rise * on / apart).ok()?;
-    Some(Sample { voltage, ..last })
+    let beyond = on / apart;
+    Some((Sample { voltage, ..last }, (1.0 + beyond).hypot(beyond)))
+}
+
+fn interval(sample: &Sample) -> Span {
+    sample.time.saturating_since(sample.from)
 }
 
 fn figure(
     plan: &Plan,
     stage: &Stage<'_>,
-    low: Sample,
-    high: Sample,
+    (low, low_weight): (Sample, f64),
+    (high, high_weight): (Sample, f64),
     instrument: &Instrument,
 ) -> Option<Figure> {
     let current = |sample: &Sample| {
@@ -84,7 +91,7 @@ fn figure(
         Name::DcResistance,
         stage,
         (resistance, Unit::Ohm),
-        of_resistance(instrument, resistance, rise, CARRIED_ON),
+        of_resistance(instrument, resistance, rise, low_weight.hypot(high_weight)),
         (HOW, SOURCE),
         Rows {
             first: low.row,

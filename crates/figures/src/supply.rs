@@ -5,7 +5,7 @@
 
 use sequence::plan::DutKind;
 use sink::regression::{Form, Point, Weights, fit};
-use sink::uncertainty::Budget;
+use sink::uncertainty::{Budget, DegreesOfFreedom};
 
 use crate::contribution::{ONE_EACH, observed, of_leads};
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
@@ -95,7 +95,9 @@ impl Workbench<'_> {
             .filter_map(|(stage, delivered)| {
                 let held = stage.held_current()?;
                 let last: Sample = delivered.last.1?;
-                let (amperes, volts) = self.true_values(&last);
+                let (read, volts) = self.true_values(&last);
+                // In a rest none flows, whatever a converter that ends at zero makes of it.
+                let amperes = if held > 0.0 { read } else { 0.0 };
                 let tolerance = (SHORT * held).max(3.0 * self.instrument.current.step);
                 (held - amperes <= tolerance).then_some(Settled {
                     amperes,
@@ -124,7 +126,7 @@ impl Workbench<'_> {
         let mut lines = vec![observed(
             "fit of the line",
             standard,
-            line.degrees_of_freedom(),
+            DegreesOfFreedom::INFINITE,
         )];
         lines.extend(self.instrument.voltage.of_gain(slope));
         lines.extend(self.instrument.current.of_gain(slope));

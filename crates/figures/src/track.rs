@@ -1,4 +1,4 @@
-//! The course of a temperature in a bounded number of means, however long it is watched.
+//! The course of two values in a bounded number of means, however long they are watched.
 
 /// Means at most. When there would be more, neighbours are put together.
 const BINS: usize = 512;
@@ -6,7 +6,7 @@ const BINS: usize = 512;
 /// Length of a mean at first, seconds.
 const WIDTH_S: f64 = 1.0;
 
-/// Temperature and power over time, in means of equal length.
+/// Two values over time, in means of equal length.
 #[derive(Debug, Clone)]
 pub(crate) struct Track {
     width_s: f64,
@@ -17,8 +17,7 @@ pub(crate) struct Track {
 struct Bin {
     count: f64,
     seconds: f64,
-    degc: f64,
-    watts: f64,
+    values: [f64; 2],
 }
 
 /// A mean of the track.
@@ -26,9 +25,8 @@ struct Bin {
 pub(crate) struct TrackPoint {
     /// Since the beginning.
     pub(crate) seconds: f64,
-    pub(crate) degc: f64,
-    /// Nominal.
-    pub(crate) watts: f64,
+    /// As they were added.
+    pub(crate) values: [f64; 2],
 }
 
 impl Default for Track {
@@ -41,7 +39,7 @@ impl Default for Track {
 }
 
 impl Track {
-    pub(crate) fn add(&mut self, seconds: f64, degc: f64, watts: f64) {
+    pub(crate) fn add(&mut self, seconds: f64, values: [f64; 2]) {
         while self.place(seconds) >= BINS {
             self.halve();
         }
@@ -52,8 +50,9 @@ impl Track {
         if let Some(bin) = self.bins.get_mut(place) {
             bin.count += 1.0;
             bin.seconds += seconds;
-            bin.degc += degc;
-            bin.watts += watts;
+            for (sum, value) in bin.values.iter_mut().zip(values) {
+                *sum += value;
+            }
         }
     }
 
@@ -63,9 +62,24 @@ impl Track {
         filled
             .map(|bin| TrackPoint {
                 seconds: bin.seconds / bin.count,
-                degc: bin.degc / bin.count,
-                watts: bin.watts / bin.count,
+                values: bin.values.map(|sum| sum / bin.count),
             })
+            .collect()
+    }
+
+    /// First values of the other less those of the one, where both have a mean at the same time.
+    pub(crate) fn differences(one: &Self, other: &Self) -> Vec<f64> {
+        let (mut one, mut other) = (one.clone(), other.clone());
+        while one.width_s < other.width_s {
+            one.halve();
+        }
+        while other.width_s < one.width_s {
+            other.halve();
+        }
+        let mean = |bin: &Bin| (bin.count > 0.0).then(|| bin.values[0] / bin.count);
+        let pairs = one.bins.iter().zip(&other.bins);
+        pairs
+            .filter_map(|(one, other)| Some(mean(other)? - mean(one)?))
             .collect()
     }
 
@@ -87,10 +101,13 @@ impl Track {
                 pair.iter().fold(Bin::default(), |sum, bin| Bin {
                     count: sum.count + bin.count,
                     seconds: sum.seconds + bin.seconds,
-                    degc: sum.degc + bin.degc,
-                    watts: sum.watts + bin.watts,
+                    values: add(sum.values, bin.values),
                 })
             })
             .collect();
     }
+}
+
+fn add([a, b]: [f64; 2], [c, d]: [f64; 2]) -> [f64; 2] {
+    [a + c, b + d]
 }

@@ -12,6 +12,7 @@ use quantity::{Charge, Current, Energy, SinkTime, Span, Temperature, Voltage};
 use sink::accumulate::Sum;
 use wire::{Counters, TemperatureReading};
 
+use crate::noise::Ranges;
 use crate::spread::Spread;
 use crate::track::Track;
 
@@ -83,6 +84,8 @@ pub(crate) struct Delivered {
     pub(crate) trapezoid_doubt: Sum,
     /// How far the current and the voltage went to and fro, nominal.
     pub(crate) current_spread: Spread,
+    /// Ranges of the readbacks wholly in it, for the noise.
+    pub(crate) ranges: Ranges,
     pub(crate) voltage_spread: Spread,
     /// The latest heat sink temperature.
     pub(crate) latest_temperature: Option<Temperature>,
@@ -97,8 +100,10 @@ pub(crate) struct Looked {
     pub(crate) around: Option<Box<[Around; DELAYS.len()]>>,
     /// All readbacks that lie wholly in it, as far as they were kept.
     pub(crate) curve: Option<Vec<Sample>>,
-    /// Its temperature.
+    /// Its temperature and power.
     pub(crate) heat: Option<Box<Track>>,
+    /// Its voltage and current.
+    pub(crate) discharge: Option<Box<Track>>,
 }
 
 /// The two readbacks whose middles lie around an instant.
@@ -125,6 +130,8 @@ pub(crate) struct Look {
     pub(crate) curve: Option<Span>,
     /// At the temperature.
     pub(crate) heat: bool,
+    /// At voltage and current, in means.
+    pub(crate) discharge: bool,
 }
 
 /// Readbacks kept for curves, all stretches together: beyond that a curve breaks off.
@@ -261,6 +268,7 @@ impl Delivered {
             around: look.around.then(Box::default),
             curve: look.curve.map(|_| Vec::new()),
             heat: look.heat.then(Box::default),
+            discharge: look.discharge.then(Box::default),
         };
         Self {
             looked,
@@ -297,7 +305,11 @@ impl Delivered {
             (&mut self.looked.heat, temperature)
         {
             let watts = sample.voltage.volts() * sample.current.amperes();
-            track.add(since.seconds(), value.degrees_celsius(), watts);
+            track.add(since.seconds(), [value.degrees_celsius(), watts]);
+        }
+        if let Some(track) = &mut self.looked.discharge {
+            let values = [sample.voltage.volts(), sample.current.amperes()];
+            track.add(since.seconds(), values);
         }
     }
 
@@ -331,6 +343,11 @@ impl Delivered {
         let wholly = sample.from >= stretch.time.start && sample.time <= stretch.time.end;
         if wholly && sample.from < sample.time {
             self.last = (self.last.1, Some(*sample));
+            self.ranges.add(
+                sample.time.saturating_since(sample.from).seconds(),
+                sample.current_max.amperes() - sample.current_min.amperes(),
+                sample.voltage_max.volts() - sample.voltage_min.volts(),
+            );
         }
         let Some(previous) = previous else { return };
         self.add_spreads(stretch, sample);
@@ -361,14 +378,20 @@ impl Delivered {
     }
 
     /// The mean current of each readback is taken to hold at the end of its interval, and to
-    /// change in a straight line between two ends. Half the jump of current times the interval
-    /// is what that may be wrong by.
+    /// change in a straight line between two ends; at the beginning of a step the current is an
+    /// edge, and held from there. Half the jump of current times the interval is what that may be
+    /// wrong by.
     fn add_trapezoid(&mut self, stretch: &Stretch, previous: Previous, sample: &Sample) {
         let from = sample.from.max(stretch.time.start);
         let until = sample.time.min(stretch.time.end);
         let seconds = until.saturating_since(from).seconds();
         let (before, now) = (previous.current.amperes(), sample.current.amperes());
-        self.trapezoid.add(0.5 * (before + now) * seconds);
+        let held = if sample.from <= stretch.time.start {
+            now
+        } else {
+            0.5 * (before + now)
+        };
+        self.trapezoid.add(held * seconds);
         self.trapezoid_doubt
             .add((0.5 * (now - before) * seconds).powi(2));
     }

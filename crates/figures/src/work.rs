@@ -10,8 +10,10 @@ use sink::correction::Bound;
 use crate::capture::{Capture, captures};
 use crate::channel::Instrument;
 use crate::charge::Amount;
+use crate::efficiency::InputMeter;
 use crate::figure::{Figures, Standing};
 use crate::look::look;
+use crate::noise::noise;
 use crate::resistance::resistances;
 use crate::stage::{Stage, stages};
 use crate::time_base::TimeBase;
@@ -39,6 +41,17 @@ pub enum FiguresError {
 /// # Errors
 /// [`FiguresError`] if the record cannot be read or holds no readback.
 pub fn work_out(record: &Record) -> Result<Figures, FiguresError> {
+    work_out_with_input(record, None)
+}
+
+/// The same, with an input meter's readings beside the record, for efficiencies.
+///
+/// # Errors
+/// As [`work_out`].
+pub fn work_out_with_input(
+    record: &Record,
+    input: Option<&InputMeter>,
+) -> Result<Figures, FiguresError> {
     let manifest = record.manifest();
     let entry = SinkEntry::deserialize(&manifest.bench).map_err(FiguresError::Bench)?;
     let others = record
@@ -49,11 +62,15 @@ pub fn work_out(record: &Record) -> Result<Figures, FiguresError> {
     let walked = walk(record, &stages)?;
     let hottest = hottest(&walked);
     let trust = Trust::of(manifest, &entry, &others, hottest);
+    let instrument = match noise(&stages, &walked, plan.tick.seconds()) {
+        Some(noise) => trust.instrument.with_noise(noise),
+        None => trust.instrument,
+    };
     let captures = captures(&others);
     let bench = Workbench {
         plan,
         captures: &captures,
-        instrument: &trust.instrument,
+        instrument: &instrument,
         time_base: TimeBase::of(&others),
         stages: &stages,
         walked: &walked,
@@ -77,6 +94,7 @@ pub fn work_out(record: &Record) -> Result<Figures, FiguresError> {
     bench.droops(&mut figures);
     bench.supply(&mut figures);
     bench.knees(&mut figures);
+    bench.efficiency(&mut figures, input);
     bench.heat(&mut figures, &entry);
     if plan.dut.kind != DutKind::Supply {
         figures.cell_model = bench.cell_model(&manifest.record);
@@ -86,7 +104,7 @@ pub fn work_out(record: &Record) -> Result<Figures, FiguresError> {
 }
 
 /// Walks the readbacks once, a stretch for every stage.
-fn walk(record: &Record, stages: &[Stage<'_>]) -> Result<Vec<Delivered>, FiguresError> {
+pub(crate) fn walk(record: &Record, stages: &[Stage<'_>]) -> Result<Vec<Delivered>, FiguresError> {
     let plan = &record.manifest().plan;
     let correction = &plan.correction;
     let stretches = stages

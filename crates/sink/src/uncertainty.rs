@@ -17,7 +17,7 @@ use serde::{Deserialize, Serialize};
 
 use crate::accumulate::{Moments, count};
 
-pub use budget::{Budget, BudgetError, Combined, Contribution, Evaluation, Expanded};
+pub use budget::{Budget, BudgetError, Combined, Contribution, Evaluation, Expanded, Shape};
 pub use coverage::coverage_factor;
 pub use propagate::{PropagateError, Propagated, propagate, second_order_variance};
 

@@ -7,7 +7,7 @@ use std::num::NonZeroU32;
 use std::path::PathBuf;
 
 use clap::{Args, Parser, Subcommand, ValueEnum};
-use quantity::{Current, Resistance, Span, Voltage};
+use quantity::{Current, Ratio, Resistance, Span, Temperature, Voltage};
 
 use crate::exit::CODES;
 
@@ -122,8 +122,28 @@ pub(crate) enum Command {
     #[command(after_help = "Example: sinkwarden figures latest --budget")]
     Figures(Figures),
     /// Replay a record: the same readings must give the same orders, bit for bit.
-    #[command(after_help = "Example: sinkwarden replay latest")]
-    Replay(RecordOf),
+    ///
+    /// With --against the recorded sequence is rehearsed on a simulated source instead, and what
+    /// that gives is laid beside the record: by label, how it ended, how near each interlock came.
+    #[command(after_help = "Example: sinkwarden replay latest --against K-02")]
+    Replay(Replay),
+    /// Compare groups of records: means, spreads, differences, fit for three of each.
+    ///
+    /// A group is NAME=RECORD,RECORD,... Outliers are named and stay in. Where the discharges of
+    /// a group are at different rates, Peukert's exponent is given, too.
+    #[command(
+        after_help = "Example: sinkwarden compare K=night-1,night-2,night-3 M=night-4,night-5,night-6"
+    )]
+    Compare(Compare),
+    /// Predict how long a load runs on a cell, with an interval and what dominates it.
+    ///
+    /// The load is the repeat of a sequence that goes on until a voltage, or its constant
+    /// current. Temperature enters where the cell model knows it; ageing and self-discharge do
+    /// not.
+    #[command(
+        after_help = "Example: sinkwarden predict --model K.json --profile sequences/logger-profile-to-cut-off.json --sink right --spread-capacity \"1.5 %\""
+    )]
+    Predict(Predict),
     /// Verify that nothing in a record was altered since it was written.
     #[command(after_help = "Example: sinkwarden verify latest")]
     Verify(RecordOf),
@@ -133,6 +153,11 @@ pub(crate) enum Command {
                       sinkwarden export latest --as parquet --output readings.parquet"
     )]
     Export(Export),
+    /// Make the report of a record: one HTML page to read, to print, to keep.
+    ///
+    /// Nothing in it is fetched from anywhere. Works on a record that is still being written.
+    #[command(after_help = "Example: sinkwarden report latest -o K-01.html")]
+    Report(Report),
 }
 
 /// A sequence for a sink of a bench file.
@@ -221,8 +246,9 @@ pub(crate) struct Rehearse {
     /// What to rehearse.
     #[command(flatten)]
     pub(crate) on: SequenceOn,
-    /// The simulated source: a cell by its label (K-01 to M-03, K, M), or a JSON file with a
-    /// source in the words of the bench file. Without it: the sink's own, or the cell of --dut.
+    /// The simulated source: a cell by its label (K-01 to M-03, K, M), a cell model's file, or a
+    /// JSON file with a source in the words of the bench file. Without it: the sink's own, or the
+    /// cell of --dut.
     #[arg(long, value_name = "LABEL|FILE")]
     pub(crate) source: Option<String>,
     /// Keep a record of the rehearsal in this folder, which must not exist yet.
@@ -362,6 +388,118 @@ pub(crate) struct Figures {
     /// Show what contributes to each uncertainty, too.
     #[arg(long)]
     pub(crate) budget: bool,
+    /// Write the fitted cell model to this file: for `predict`, and as a --source to rehearse on.
+    #[arg(long, value_name = "FILE")]
+    pub(crate) model: Option<PathBuf>,
+    /// An input meter's readings, for efficiencies: a CSV file with the columns
+    /// label,input_voltage_v,input_current_a.
+    #[arg(long, value_name = "FILE", requires = "input_accuracy")]
+    pub(crate) input_meter: Option<PathBuf>,
+    /// Bound of the input meter's error of a power, voltage and current together.
+    #[arg(long, value_name = "SHARE", requires = "input_meter")]
+    pub(crate) input_accuracy: Option<Ratio>,
+}
+
+/// `replay`.
+#[derive(Debug, Args)]
+pub(crate) struct Replay {
+    /// Of which record.
+    #[command(flatten)]
+    pub(crate) of: RecordOf,
+    /// Rehearse the recorded sequence on this source instead: a cell by its label, a cell model's
+    /// file, a source in the words of the bench file, or `fitted` for a model fitted to the record.
+    #[arg(long, value_name = "LABEL|FILE|fitted")]
+    pub(crate) against: Option<String>,
+}
+
+/// `compare`.
+#[derive(Debug, Args)]
+pub(crate) struct Compare {
+    /// A group: its name, `=`, and its records (folders, or beginnings of names or ids).
+    #[arg(value_name = "NAME=RECORD,...", required = true)]
+    pub(crate) groups: Vec<String>,
+    /// The folder in which a name or id is looked up.
+    #[arg(
+        long,
+        value_name = "FOLDER",
+        env = "SINKWARDEN_RECORDS",
+        default_value = "records"
+    )]
+    pub(crate) records: PathBuf,
+    /// Only figures of this name, such as capacity; may be repeated.
+    #[arg(long = "figure", value_name = "NAME")]
+    pub(crate) figures: Vec<String>,
+}
+
+/// `predict`.
+#[derive(Debug, Args)]
+pub(crate) struct Predict {
+    /// The cell: a file that `figures --model` wrote, a simulated cell's label, or a record with
+    /// pulses between rests.
+    #[arg(long, value_name = "FILE|LABEL|RECORD")]
+    pub(crate) model: String,
+    /// The sequence with the load.
+    #[arg(long = "profile", id = "profile", value_name = "SEQUENCE")]
+    pub(crate) sequence: PathBuf,
+    /// The bench file.
+    #[arg(
+        long,
+        value_name = "FILE",
+        env = "SINKWARDEN_BENCH",
+        default_value = "bench.toml"
+    )]
+    pub(crate) bench: PathBuf,
+    /// The sink whose envelope the sequence is checked against.
+    #[arg(long, value_name = "NAME")]
+    pub(crate) sink: String,
+    /// The voltage below which the load runs no longer; without it, the sequence's own.
+    #[arg(long, value_name = "VOLTAGE")]
+    pub(crate) cut_off: Option<Voltage>,
+    /// Standard deviation of the capacity between cells.
+    #[arg(long, value_name = "SHARE")]
+    pub(crate) spread_capacity: Option<Ratio>,
+    /// Standard deviation of the resistances between cells.
+    #[arg(long, value_name = "SHARE")]
+    pub(crate) spread_resistance: Option<Ratio>,
+    /// From how many cells that spread was taken; without it, it is taken as well known.
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u32).range(2..))]
+    pub(crate) spread_from: Option<u32>,
+    /// How warm the cell will be.
+    #[arg(long, value_name = "TEMPERATURE")]
+    pub(crate) temperature: Option<Temperature>,
+    /// Standard deviation of that temperature, kelvins.
+    #[arg(
+        long,
+        value_name = "KELVINS",
+        default_value_t = 0.0,
+        requires = "temperature"
+    )]
+    pub(crate) temperature_spread: f64,
+    /// Trials for the interval.
+    #[arg(long, value_name = "N", default_value_t = 10_000, value_parser = clap::value_parser!(u32).range(200..=1_000_000))]
+    pub(crate) trials: u32,
+    /// Seed of the trials.
+    #[arg(long, value_name = "N", default_value_t = 1)]
+    pub(crate) seed: u64,
+    /// The folder in which a record is looked up.
+    #[arg(
+        long,
+        value_name = "FOLDER",
+        env = "SINKWARDEN_RECORDS",
+        default_value = "records"
+    )]
+    pub(crate) records: PathBuf,
+}
+
+/// `report`.
+#[derive(Debug, Args)]
+pub(crate) struct Report {
+    /// Of which record.
+    #[command(flatten)]
+    pub(crate) of: RecordOf,
+    /// Write to this file instead of stdout; one that is there is replaced.
+    #[arg(short, long, value_name = "FILE")]
+    pub(crate) output: Option<PathBuf>,
 }
 
 /// `export`.

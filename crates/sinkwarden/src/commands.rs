@@ -1,9 +1,11 @@
 //! What each command does: flags to one validated value, the crates' or the daemon's answer, its
 //! print.
 
+mod against;
 mod calibrate;
 mod certificates;
 mod check;
+mod compare;
 mod envelope;
 mod export;
 mod figures;
@@ -11,10 +13,12 @@ mod follow;
 mod interrupt;
 mod keeping;
 mod off;
+mod predict;
 mod prove;
 mod records;
 mod rehearse;
 mod replay;
+mod report;
 mod reset;
 mod run;
 mod serve;
@@ -29,8 +33,11 @@ use crate::bench_file::STARTING;
 use crate::exit::Exit;
 use crate::output::{Output, give_text};
 
+pub(crate) use against::{AgainstAnswer, Side};
 pub(crate) use calibrate::Certified;
+pub(crate) use compare::ComparisonAnswer;
 pub(crate) use envelope::EnvelopeAnswer;
+pub(crate) use predict::PredictionAnswer;
 pub(crate) use rehearse::RehearsalAnswer;
 pub(crate) use replay::ReplayAnswer;
 
@@ -62,8 +69,11 @@ pub(crate) fn carry_out(command: Command, output: Output) -> Result<Exit> {
         Command::Watch(of) => watch::carry_out(&of, output),
         Command::Records(arguments) => records::carry_out(&arguments, output),
         Command::Figures(arguments) => figures::carry_out(&arguments, output),
-        Command::Replay(of) => replay::carry_out(&of, output),
+        Command::Replay(arguments) => replay::carry_out(&arguments, output),
+        Command::Compare(arguments) => compare::carry_out(&arguments, output),
+        Command::Predict(arguments) => predict::carry_out(&arguments, output),
         Command::Verify(of) => verify::carry_out(&of, output),
         Command::Export(arguments) => export::carry_out(&arguments, output),
+        Command::Report(arguments) => report::carry_out(&arguments, output),
     }
 }

@@ -6,7 +6,7 @@ use std::path::Path;
 
 use anyhow::Result;
 use serde_json::{Map, Value, json};
-use simulator::cell::{specimen, specimens};
+use simulator::cell::{MODEL_FORMAT, specimen, specimens};
 use sink::bench::{Link, SinkEntry};
 
 use crate::exit::hinted;
@@ -45,7 +45,11 @@ pub(crate) fn simulated(
     Ok(entry)
 }
 
-fn asked_for(source: &str, own: Option<&Value>) -> Result<Value> {
+/// The source that a label or a file names.
+///
+/// # Errors
+/// A label no simulated cell has and a file that cannot be read.
+pub(crate) fn asked_for(source: &str, own: Option<&Value>) -> Result<Value> {
     if specimen(source).is_ok() {
         return Ok(with_cell(own, source));
     }
@@ -59,12 +63,32 @@ fn asked_for(source: &str, own: Option<&Value>) -> Result<Value> {
             ),
         )
     })?;
-    serde_json::from_str(&text).map_err(|error| {
+    let found: Value = serde_json::from_str(&text).map_err(|error| {
         hinted(
             format!("{}: {error}", path.display()),
             "a source is a JSON object in the words of the bench file, such as {\"cell\": \"K-01\"}",
         )
+    })?;
+    Ok(if is_cell_model(&found) {
+        with_model(own, found)
+    } else {
+        found
     })
+}
+
+/// Whether this is a cell model's file, and no source.
+fn is_cell_model(value: &Value) -> bool {
+    value.get("format").and_then(Value::as_str) == Some(MODEL_FORMAT)
+}
+
+/// The sink's own source with a cell model in it.
+pub(crate) fn with_model(own: Option<&Value>, model: Value) -> Value {
+    let mut source = with_cell(own, "");
+    if let Some(source) = source.as_object_mut() {
+        source.remove("cell");
+        source.insert("model".to_owned(), model);
+    }
+    source
 }
 
 /// The sink's own source with another cell in it, so that its errors and temperature stay.

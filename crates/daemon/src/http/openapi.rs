@@ -53,6 +53,8 @@ pub(super) fn parts() -> (Router<Arc<App>>, Document) {
         .routes(routes!(records::readings))
         .routes(routes!(records::course))
         .routes(routes!(records::figures))
+        .routes(routes!(records::report))
+        .routes(routes!(records::comparison))
         .routes(routes!(records::verify))
         .routes(routes!(events::stream))
         .routes(routes!(state::health))

@@ -25,8 +25,8 @@ use crate::app::App;
 use crate::figures_file;
 use crate::records::started;
 use crate::view::{
-    Code, CourseView, CurveView, EndingWord, FiguresView, Problem, ReadingsView, RecordList,
-    RecordSummary, RecordView, VerifyView,
+    Code, ComparisonView, CourseView, CurveView, EndingWord, FiguresView, Problem, ReadingsView,
+    RecordList, RecordSummary, RecordView, VerifyView,
 };
 
 /// Points unless said.
@@ -410,6 +410,84 @@ pub(super) async fn figures(
         Ok(Json(FiguresView { id, figures }))
     })
     .await
+}
+
+/// The report of a record: one HTML page that fetches nothing. Works on a record that is being
+/// written.
+#[utoipa::path(
+    get, path = "/v1/records/{id}/report", tag = "records",
+    params(("id" = String, Path, description = "The record's id")),
+    responses((status = 200, content((String = "text/html"))), (status = 404, body = Problem), (status = 409, body = Problem)),
+)]
+pub(super) async fn report(
+    State(app): State<Arc<App>>,
+    Path(id): Path<String>,
+) -> Result<Response, Problem> {
+    let page = with_record(&app, &id, |record, id| {
+        // A record without a readback has a report, too: it says so.
+        let figures =
+            figures_file::read(record).unwrap_or_else(|reason| report::no_figures(record, &reason));
+        let options = report::Options {
+            made: Some(jiff::Timestamp::now().to_string()),
+        };
+        report::render(record, &figures, &options)
+            .map_err(|why| Problem::new(Code::RecordUnreadable, format!("record {id}: {why}")))
+    })
+    .await?;
+    Ok(([(header::CONTENT_TYPE, "text/html; charset=utf-8")], page).into_response())
+}
+
+/// Which records to compare.
+#[derive(Debug, Deserialize, IntoParams)]
+#[serde(deny_unknown_fields)]
+#[into_params(parameter_in = Query)]
+pub(super) struct Groups {
+    /// The groups: `NAME:ID,ID,...`, several of them apart by `;`.
+    groups: String,
+}
+
+/// Most records in one comparison.
+const COMPARED_MAX: usize = 64;
+
+/// Groups of records compared, figure by figure: means, spreads, differences.
+#[utoipa::path(
+    get, path = "/v1/comparison", tag = "records", params(Groups),
+    responses((status = 200, body = ComparisonView), (status = 400, body = Problem), (status = 404, body = Problem), (status = 409, body = Problem)),
+)]
+pub(super) async fn comparison(
+    State(app): State<Arc<App>>,
+    Params(asked): Params<Groups>,
+) -> Result<Json<ComparisonView>, Problem> {
+    let unreadable = |part: &str| {
+        let detail = format!("`{part}` is no group; write NAME:ID,ID,... and `;` between groups");
+        Problem::new(Code::QueryUnreadable, detail)
+    };
+    let mut groups = Vec::new();
+    let mut count = 0;
+    for part in asked.groups.split(';').filter(|part| !part.is_empty()) {
+        let (name, ids) = part.split_once(':').ok_or_else(|| unreadable(part))?;
+        let mut records = Vec::new();
+        for id in ids.split(',').filter(|id| !id.is_empty()) {
+            count += 1;
+            if count > COMPARED_MAX {
+                let detail = format!("more than {COMPARED_MAX} records cannot be compared at once");
+                return Err(Problem::new(Code::QueryUnreadable, detail));
+            }
+            let figures = with_record(&app, id, |record, id| {
+                figures_file::read(record).map_err(|why| {
+                    Problem::new(Code::FiguresUnavailable, format!("record {id}: {why}"))
+                })
+            });
+            records.push(figures.await?);
+        }
+        if name.is_empty() || records.is_empty() {
+            return Err(unreadable(part));
+        }
+        groups.push((name, records));
+    }
+    Ok(Json(ComparisonView {
+        comparison: figures::compare(&groups),
+    }))
 }
 
 /// Whether anything in a record was altered, and where.

@@ -122,6 +122,14 @@ pub struct VerifyView {
     pub report: serde_json::Value,
 }
 
+/// Groups of records compared.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct ComparisonView {
+    /// Figure by figure: what the groups show, and their differences.
+    #[schema(value_type = Object)]
+    pub comparison: figures::Comparison,
+}
+
 /// Figures of a record.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
 pub struct FiguresView {

@@ -41,8 +41,9 @@ fn the_model_of_a_night_is_the_one_it_was_simulated_on() {
     for point in &found.points {
         let state = 1.0 - point.delivered_ah / capacity_ah;
         let voltage = at(&model.open_circuit_voltage_v, &model, state);
+        // The rests end when the voltage moves less than 1 mV in ten minutes.
         assert!(
-            (point.open_circuit_voltage_v.value - voltage).abs() < 0.5e-3,
+            (point.open_circuit_voltage_v.value - voltage).abs() < 1e-3,
             "at {state}: {} V, truth {voltage} V",
             point.open_circuit_voltage_v.value
         );
@@ -78,7 +79,8 @@ fn the_models_file_can_be_rehearsed_on_and_fits_to_itself() {
     let text = found.file.to_string();
     let loaded = Model::from_json(&text).unwrap();
     assert_eq!(loaded.pairs.len(), 2);
-    assert_eq!(loaded.state_of_charge.len(), 11);
+    // Between and beyond the pulses stands what the slow discharges told.
+    assert!(loaded.state_of_charge.len() > 100);
     let again = fitted(&loaded);
     for (one, other) in found.points.iter().zip(&again.points) {
         let (before, after) = (

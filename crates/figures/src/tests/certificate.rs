@@ -44,7 +44,9 @@ pub(crate) fn certificate(errors: &Errors, meter_errors: MeterErrors, seed: u64)
         .map(|step| {
             let flowing = 0.24 * f64::from(step);
             let shown = flowing + meter_errors.current * (500e-6 * flowing + 50e-6 * 3.0);
-            let read = flowing * (1.0 + errors.current_gain) + errors.current_offset_a;
+            // Each point lies somewhere between two codes of the converter.
+            let code = 806e-6 * (random.unit() - 0.5);
+            let read = flowing * (1.0 + errors.current_gain) + errors.current_offset_a + code;
             CurrentPoint {
                 setpoint: amperes(flowing).0,
                 reference: (0..4)
@@ -60,7 +62,8 @@ pub(crate) fn certificate(errors: &Errors, meter_errors: MeterErrors, seed: u64)
         .map(|step| {
             let there = 0.5 * f64::from(step);
             let shown = there + meter_errors.voltage * (500e-6 * there + 50e-6 * 10.0);
-            let read = there * (1.0 + errors.voltage_gain) + errors.voltage_offset_v;
+            let code = 2417e-6 * (random.unit() - 0.5);
+            let read = there * (1.0 + errors.voltage_gain) + errors.voltage_offset_v + code;
             VoltagePoint {
                 reference: vec![volts(shown)],
                 readback: (0..4)

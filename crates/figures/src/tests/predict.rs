@@ -5,7 +5,7 @@ use simulator::cell::Model;
 
 use super::bench::{Setup, exact};
 use crate::figure::Rows;
-use crate::{CellModel, CellPoint, CellSpread, Known, Load, LoadStep, PairPoint, predict};
+use crate::{CellModel, CellPoint, CellSpread, Known, Load, LoadStep, PairPoint, Terms, predict};
 
 const CELL: &str = r#"{
   "format": "sinkwarden cell model 1", "name": "slope", "origin": "a worked case, not a cell",
@@ -55,6 +55,7 @@ fn model(share: f64) -> CellModel {
             point(1.0, 4.1, 0.05, [(0.02, 1.0), (0.03, 30.0)]),
             point(0.0, 2.6, 0.1, [(0.06, 2.0), (0.04, 40.0)]),
         ],
+        open_circuit: Vec::new(),
         capacity_ah: 0.5,
         capacity_standard_uncertainty_ah: 0.0,
         capacity_from: "stated".to_owned(),
@@ -62,6 +63,15 @@ fn model(share: f64) -> CellModel {
         file: Value::Null,
         notes: Vec::new(),
         method: "stated".to_owned(),
+    }
+}
+
+fn terms(spread: CellSpread, trials: usize, seed: u64) -> Terms {
+    Terms {
+        spread,
+        warmth: None,
+        trials,
+        seed,
     }
 }
 
@@ -83,7 +93,7 @@ fn a_rehearsal_on_the_same_cell_ends_when_predicted() {
     let night = setup.night();
     let crossed_s = night.device.crossings().first().unwrap().at_s.unwrap();
     let ran_s = crossed_s - night.step_began_s(2);
-    let found = predict(&model(0.0), &load(), CellSpread::default(), 1000, 1).unwrap();
+    let found = predict(&model(0.0), &load(), terms(CellSpread::default(), 1000, 1)).unwrap();
     assert!(
         (found.hours * 3600.0 - ran_s).abs() < 10.0,
         "{} s, ran {ran_s} s",
@@ -97,8 +107,9 @@ fn the_spread_of_capacities_is_that_of_the_run_times() {
     let spread = CellSpread {
         capacity: 0.02,
         resistance: 0.0,
+        degrees_of_freedom: None,
     };
-    let found = predict(&model(0.0), &load(), spread, 20_000, 5).unwrap();
+    let found = predict(&model(0.0), &load(), terms(spread, 20_000, 5)).unwrap();
     let expected = 0.02 * found.hours;
     assert!((found.outcome.standard_uncertainty / expected - 1.0).abs() < 0.03);
     let [low, high] = found.outcome.symmetric;
@@ -112,8 +123,9 @@ fn the_spread_of_resistances_moves_the_end() {
     let spread = CellSpread {
         capacity: 0.0,
         resistance: 0.1,
+        degrees_of_freedom: None,
     };
-    let found = predict(&model(0.0), &load(), spread, 20_000, 5).unwrap();
+    let found = predict(&model(0.0), &load(), terms(spread, 20_000, 5)).unwrap();
     let mut more = model(0.0);
     for point in &mut more.points {
         point.series_resistance_ohm.value *= 1.1;
@@ -121,7 +133,7 @@ fn the_spread_of_resistances_moves_the_end() {
             pair.resistance_ohm.value *= 1.1;
         }
     }
-    let moved = predict(&more, &load(), CellSpread::default(), 1000, 1).unwrap();
+    let moved = predict(&more, &load(), terms(CellSpread::default(), 1000, 1)).unwrap();
     let expected = found.hours - moved.hours;
     assert!(expected > 0.0);
     assert!((found.outcome.standard_uncertainty / expected - 1.0).abs() < 0.05);
@@ -132,6 +144,6 @@ fn a_load_that_draws_nothing_is_refused() {
     let mut load = load();
     load.cycle.truncate(1);
     load.cycle[0].amperes = 0.0;
-    let refused = predict(&model(0.0), &load, CellSpread::default(), 1000, 1).unwrap_err();
+    let refused = predict(&model(0.0), &load, terms(CellSpread::default(), 1000, 1)).unwrap_err();
     assert!(refused.to_string().contains("draws"));
 }

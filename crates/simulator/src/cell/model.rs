@@ -25,7 +25,8 @@
 //! Temperature acts as `R(T) = R * exp(activation * (1 / T - 1 / T_reference))` with T in kelvin
 //! (Arrhenius; the activation is `E_a / R_gas`, in kelvin), and as a fraction of `capacity`,
 //! straight between its entries and level beyond them. `temperature_effect`, `heat`, `pairs` and
-//! `specimens` may be left out: no effect, no self-heating, no pairs, no named specimens.
+//! `specimens` may be left out: no effect, no self-heating, no pairs, no named specimens. Under
+//! `fit` may stand whatever the tables were fitted from; nothing here reads it.
 
 use std::collections::BTreeMap;
 
@@ -80,6 +81,10 @@ pub struct Model {
     /// Named specimens, each a little off the type.
     #[serde(default)]
     pub specimens: BTreeMap<String, Spread>,
+    /// What the tables were fitted from, with its uncertainties, as the one who fitted them wrote
+    /// it down; the simulation makes no use of it.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub fit: Option<serde_json::Value>,
 }
 
 /// A resistor-capacitor pair over the state of charge.

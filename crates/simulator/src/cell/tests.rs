@@ -29,6 +29,7 @@ fn plain(voltage_v: f64, series_ohm: f64, pairs: &[(f64, f64)], capacity_ah: f64
         temperature_effect: TemperatureEffect::default(),
         heat: Heat::default(),
         specimens: std::collections::BTreeMap::new(),
+        fit: None,
     }
 }
 

@@ -3,6 +3,7 @@
 use std::fmt;
 
 use serde::{Deserialize, Serialize};
+use statrs::distribution::{Continuous, ContinuousCDF, Normal};
 
 use super::{DegreesOfFreedom, coverage_factor};
 use crate::accumulate::Sum;
@@ -16,6 +17,28 @@ pub enum Evaluation {
     /// By other means: a data sheet, a certificate, experience.
     #[serde(rename = "B")]
     TypeB,
+}
+
+/// How likely the values of an input are over the reach of its uncertainty.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Shape {
+    /// A normal distribution, or one that is near enough.
+    #[default]
+    Normal,
+    /// All values within a bound are as likely, and none beyond (JCGM 100 4.3.7).
+    Rectangular,
+}
+
+impl Shape {
+    // Serde asks for a reference.
+    #[expect(
+        clippy::trivially_copy_pass_by_ref,
+        reason = "the signature serde calls"
+    )]
+    fn is_normal(&self) -> bool {
+        *self == Self::Normal
+    }
 }
 
 /// One line of a budget.
@@ -32,6 +55,9 @@ pub struct Contribution {
     pub sensitivity: f64,
     /// The degrees of freedom of its standard uncertainty.
     pub degrees_of_freedom: DegreesOfFreedom,
+    /// Its distribution.
+    #[serde(default, skip_serializing_if = "Shape::is_normal")]
+    pub shape: Shape,
 }
 
 impl Contribution {
@@ -48,7 +74,22 @@ impl Contribution {
             standard_uncertainty,
             sensitivity: 1.0,
             degrees_of_freedom,
+            shape: Shape::Normal,
         }
+    }
+
+    /// The same line, of which only a bound is known.
+    #[must_use]
+    pub const fn rectangular(mut self) -> Self {
+        self.shape = Shape::Rectangular;
+        self
+    }
+
+    /// The same line, its effect on the result times a factor.
+    #[must_use]
+    pub fn scaled(mut self, factor: f64) -> Self {
+        self.sensitivity *= factor;
+        self
     }
 
     /// Its share of the result's standard uncertainty, |c| u.
@@ -174,6 +215,44 @@ impl Budget {
         }
     }
 
+    /// The expanded uncertainty for a probability; `None` where no coverage factor can be stated.
+    ///
+    /// A normal distribution with the combined standard uncertainty reaches too far where one
+    /// rectangular line dominates: nothing lies beyond its bound. The largest rectangular line is
+    /// therefore convolved with all others, which are taken together as one normal distribution
+    /// (with Student's factor where their degrees of freedom are few): the central limit that
+    /// JCGM 100 G.2 leans on, without asking it of the one line it fails for. JCGM 101 by closed
+    /// form; where all lines are normal it is [`Combined::expanded`].
+    ///
+    /// # Errors
+    /// None; a budget that cannot be combined gives `None`.
+    pub fn expanded(&self, probability: f64) -> Option<Expanded> {
+        let combined = self.combined().ok()?;
+        let place = self
+            .contributions
+            .iter()
+            .enumerate()
+            .filter(|(_, line)| line.shape == Shape::Rectangular)
+            .max_by(|(_, one), (_, other)| one.share().total_cmp(&other.share()))
+            .map(|(place, _)| place);
+        let (Some(place), true) = (place, self.correlations.is_empty()) else {
+            return combined.expanded(probability);
+        };
+        let mut others = self.clone();
+        let line = others.contributions.remove(place);
+        let bound = line.share() * 3_f64.sqrt();
+        let rest = others.combined().ok()?;
+        let student = coverage_factor(probability, rest.degrees_of_freedom)?;
+        let normal = coverage_factor(probability, DegreesOfFreedom::INFINITE)?;
+        let sigma = rest.standard_uncertainty * student / normal;
+        let half_width = rectangle_and_normal(probability, bound, sigma);
+        (combined.standard_uncertainty > 0.0).then(|| Expanded {
+            half_width,
+            coverage_factor: half_width / combined.standard_uncertainty,
+            probability,
+        })
+    }
+
     /// The line with the largest share; `None` for an empty budget.
     pub fn dominant(&self) -> Option<&Contribution> {
         self.contributions
@@ -193,6 +272,34 @@ impl Combined {
             probability,
         })
     }
+}
+
+/// The half-width that covers a probability of the sum of a rectangular distribution of this
+/// half-width and a normal one.
+fn rectangle_and_normal(probability: f64, bound: f64, sigma: f64) -> f64 {
+    if sigma <= 0.0 {
+        return probability * bound;
+    }
+    if bound <= 1e-6 * sigma {
+        return sigma * Normal::standard().inverse_cdf(f64::midpoint(1.0, probability));
+    }
+    let normal = Normal::standard();
+    // The integral of the normal distribution function.
+    let integral = |z: f64| z * normal.cdf(z) + normal.pdf(z);
+    let covered = |half: f64| {
+        let (above, below) = ((half + bound) / sigma, (half - bound) / sigma);
+        sigma / bound * (integral(above) - integral(below)) - 1.0
+    };
+    let (mut low, mut high) = (0.0, bound + 10.0 * sigma);
+    for _ in 0..60 {
+        let middle = f64::midpoint(low, high);
+        if covered(middle) < probability {
+            low = middle;
+        } else {
+            high = middle;
+        }
+    }
+    f64::midpoint(low, high)
 }
 
 /// A table, one line a contribution, with the combination below.

@@ -299,3 +299,41 @@ fn infinite_degrees_of_freedom_survive_a_file() {
     assert_eq!(serde_json::from_str::<Estimate>(&json).unwrap(), estimate);
     assert!(serde_json::from_str::<DegreesOfFreedom>("-1.0").is_err());
 }
+
+/// EA-4/02 M:2022, S9.14 (from memory): where one rectangular contribution dominates, the
+/// expanded uncertainty at 95 % is 1.65 times the standard uncertainty.
+#[test]
+fn a_dominant_rectangle_is_covered_without_reaching_beyond_its_bound() {
+    let alone = Budget::new(vec![line(1.0, f64::INFINITY).rectangular()]);
+    let expanded = alone.expanded(0.95).unwrap();
+    assert!((expanded.coverage_factor - 0.95 * 3_f64.sqrt()).abs() < 1e-9);
+    assert!((expanded.coverage_factor - 1.65).abs() < 0.005);
+}
+
+/// Against trials of the sum itself (JCGM 101).
+#[test]
+fn a_rectangle_with_others_is_covered_as_trials_say() {
+    for sigma in [0.1, 0.5, 1.0, 3.0] {
+        let lines = vec![
+            line(1.0, f64::INFINITY).rectangular(),
+            line(sigma, f64::INFINITY),
+        ];
+        let expanded = Budget::new(lines).expanded(0.95).unwrap();
+        let mut random = crate::montecarlo::Random::from_seed(7);
+        let mut covered = 0_u32;
+        for _ in 0..200_000 {
+            let rectangle = 3_f64.sqrt() * (2.0 * random.unit() - 1.0);
+            let error = rectangle + sigma * random.normal();
+            covered += u32::from(error.abs() <= expanded.half_width);
+        }
+        let share = f64::from(covered) / 200_000.0;
+        assert!((share - 0.95).abs() < 0.002, "sigma {sigma}: {share}");
+    }
+}
+
+#[test]
+fn without_a_rectangle_the_expanded_uncertainty_is_students() {
+    let budget = Budget::new(vec![line(1.0, 5.0), line(0.5, f64::INFINITY)]);
+    let combined = budget.combined().unwrap();
+    assert_eq!(budget.expanded(0.95), combined.expanded(0.95));
+}

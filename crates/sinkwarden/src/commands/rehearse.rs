@@ -218,7 +218,7 @@ impl Observer for Watcher {
     }
 }
 
-fn ending_view(ending: &Ending, crossings: &[Crossing], at: HostTime) -> EndingView {
+pub(super) fn ending_view(ending: &Ending, crossings: &[Crossing], at: HostTime) -> EndingView {
     let tripped = match ending {
         Ending::Tripped(interlock) => Some(*interlock),
         Ending::Finished | Ending::Stopped | Ending::Interrupted => None,

@@ -7,7 +7,8 @@ use journal::{JournalError, Record};
 use sequencer::replay::{Recorded, ReplayError, ReplaySummary, replay};
 use serde::Serialize;
 
-use crate::arguments::RecordOf;
+use super::against;
+use crate::arguments::Replay;
 use crate::exit::{Exit, hinted};
 use crate::output::Output;
 use crate::print;
@@ -34,8 +35,11 @@ pub(crate) enum ReplayAnswer {
     },
 }
 
-pub(super) fn carry_out(of: &RecordOf, output: Output) -> Result<Exit> {
-    let record = record_folder::open(of)?;
+pub(super) fn carry_out(arguments: &Replay, output: Output) -> Result<Exit> {
+    let record = record_folder::open(&arguments.of)?;
+    if let Some(source) = &arguments.against {
+        return against::carry_out(&record, source, output);
+    }
     let answer = replayed(&record)?;
     output.give(&answer, print::replay)?;
     Ok(match answer {

@@ -7,6 +7,7 @@
 
 mod calibrate;
 mod check;
+mod deciding;
 mod document;
 mod flags;
 mod program;
