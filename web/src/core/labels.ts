@@ -22,17 +22,26 @@ export function spread(wanted: readonly number[], height: number, top: number, b
 export function timeTick(seconds: number, distance: number): string {
   const sign = seconds < 0 ? "\u2212" : "";
   const total = Math.abs(seconds);
-  if (distance < 1) return `${sign}${total.toFixed(distance < 0.01 ? 3 : distance < 0.1 ? 2 : 1)} s`;
+  if (distance < 1) {
+    // Parts of a second beside whole hours, as in 6:50:23.4 h.
+    const digits = distance < 0.01 ? 3 : distance < 0.1 ? 2 : 1;
+    if (total < 600) return `${sign}${total.toFixed(digits)} s`;
+    const whole = Math.floor(total + 1e-9);
+    const part = Math.min(total - whole, 1 - 10 ** -digits).toFixed(digits).slice(1);
+    return timeTick(seconds < 0 ? -whole : whole, 1).replace(/ (min|h)$/, `${part} $1`);
+  }
   const rounded = Math.round(total);
+  const two = (value: number): string => String(value).padStart(2, "0");
   if (distance < 60) {
-    const minutes = Math.floor(rounded / 60);
     if (rounded < 600) return `${sign}${rounded} s`;
-    return `${sign}${minutes}:${String(rounded % 60).padStart(2, "0")} min`;
+    const [minutes, rest] = [Math.floor(rounded / 60), two(rounded % 60)];
+    if (rounded < 3600) return `${sign}${minutes}:${rest} min`;
+    return `${sign}${Math.floor(minutes / 60)}:${two(minutes % 60)}:${rest} h`;
   }
   if (distance < 3600) {
     const hours = Math.floor(rounded / 3600);
     if (hours === 0) return `${sign}${Math.round(rounded / 60)} min`;
-    return `${sign}${hours}:${String(Math.floor((rounded % 3600) / 60)).padStart(2, "0")} h`;
+    return `${sign}${hours}:${two(Math.floor((rounded % 3600) / 60))} h`;
   }
   if (distance < 86_400 || rounded < 172_800) return `${sign}${Math.round(rounded / 3600)} h`;
   return `${sign}${Math.round(rounded / 86_400)} d`;

@@ -2,6 +2,7 @@
 
 import { type Quantity, type Range, type Trace, nearest, scaled, shifted, whole } from "../core/curve.ts";
 import { ampereHours, amperes, degrees, duration, volts } from "../core/format.ts";
+import { timeTick } from "../core/labels.ts";
 import { attribute, h, write } from "../dom.ts";
 import { inkOf, onInkChange } from "./ink.ts";
 import { type Drawing, NOTHING, Panel, type PanelSpec } from "./panel.ts";
@@ -144,7 +145,8 @@ export class Figure {
     this.#slider.value = String(Math.round(((x - from) / (to - from)) * POSITIONS));
     const read = this.#drawing.traces.map((trace) => valuesAt(trace, x, this.quantities)).filter((text) => text !== "");
     const against = this.#drawing.against;
-    const place = against === "time" ? duration(x) : ampereHours(x);
+    // As fine as the slider's own steps.
+    const place = against === "time" ? timeTick(x, (to - from) / POSITIONS) : ampereHours(x);
     write(this.#readOff, read.length === 0 ? "" : `${place}: ${read.join(" · ")}`);
     attribute(this.#slider, "aria-valuetext", this.#readOff.textContent || place);
     const plot = this.#panels[0]?.plot;

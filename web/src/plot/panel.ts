@@ -50,7 +50,8 @@ export interface PanelSpec {
 
 /** Line styles of several records: ink only, told apart by their dashes. */
 const DASHES: readonly (readonly number[])[] = [[], [7, 3], [2, 3], [9, 3, 2, 3], [12, 4], [4, 2, 1, 2]];
-const TEXT_PX = 12.5;
+/** A whole number: uPlot scales no other to the screen. */
+const TEXT_PX = 13;
 const LINE_PX = 15;
 /** A line that ends so far before the right edge has its name inside the plot. */
 const INSIDE_PX = 80;

@@ -48,7 +48,7 @@ test("labels keep their distance and stay between the ends", () => {
 });
 
 test("ticks of time are in the unit a person counts in", () => {
-  const cases: [number, number, string][] = [[0.05, 0.01, "0.05 s"], [90, 15, "90 s"], [1800, 600, "30 min"], [5400, 1800, "1:30 h"], [21_600, 7200, "6 h"]];
+  const cases: [number, number, string][] = [[0.05, 0.01, "0.05 s"], [90, 15, "90 s"], [1800, 600, "30 min"], [5400, 1800, "1:30 h"], [21_600, 7200, "6 h"], [24_620, 10, "6:50:20 h"], [24_620.25, 0.05, "6:50:20.25 h"], [1230, 10, "20:30 min"]];
   for (const [seconds, distance, text] of cases) assert.equal(timeTick(seconds, distance), text);
 });
 

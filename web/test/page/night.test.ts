@@ -20,7 +20,7 @@ before(async () => {
     const [head, left] = text.split("[[sink]]");
     const rest = (left ?? "").replaceAll('"200 ms"', '"1 s"');
     const sinks = Array.from({ length: SINKS }, (_, index) =>
-      rest.replace('name = "left"', `name = "sink ${index + 1}"`).replace("serial_number = 1", `serial_number = ${index + 1}`).replace("seed = 1", `seed = ${index + 1}`),
+      rest.replace('name = "left"', `name = "sink-${index + 1}"`).replace("serial_number = 1", `serial_number = ${index + 1}`).replace("seed = 1", `seed = ${index + 1}`),
     );
     return [head, ...sinks].join("[[sink]]");
   });
@@ -68,7 +68,7 @@ test("eight sinks over a night leave the page as small as it was", { timeout: 40
   const sequence = CAPACITY.replaceAll("0.2 It", "0.08 It").replace('"readback": "200 ms"', '"readback": "1 s"').replace('"at_most": "7 h"', '"at_most": "16 h"').replace('"charge": "3.84 Ah"', '"charge": "3.9 Ah"');
   const runs: Run[] = [];
   for (let sink = 1; sink <= SINKS; sink += 1) {
-    runs.push(await daemon.post<Run>("/v1/runs", { sequence, sink: `sink ${sink}`, dut: `K-0${sink}` }));
+    runs.push(await daemon.post<Run>("/v1/runs", { sequence, sink: `sink-${sink}`, dut: `K-0${sink}` }));
   }
   const { context, page, complaints } = await sit(daemon, { size: PHONE });
   const cdp = await context.newCDPSession(page);
