@@ -104,15 +104,17 @@ impl Certificates {
     pub fn load(&self, identity: &str) -> Result<Certificate, CertificatesError> {
         Identity::check(identity)?;
         let path = self.path(identity);
-        let text = fs::read_to_string(&path).map_err(|source| match source.kind() {
-            io::ErrorKind::NotFound => CertificatesError::Missing {
-                identity: identity.to_owned(),
-                folder: self.folder.clone(),
-            },
-            _ => CertificatesError::Disk {
+        let text = fs::read_to_string(&path).map_err(|source| {
+            if source.kind() == io::ErrorKind::NotFound {
+                return CertificatesError::Missing {
+                    identity: identity.to_owned(),
+                    folder: self.folder.clone(),
+                };
+            }
+            CertificatesError::Disk {
                 path: path.clone(),
                 source,
-            },
+            }
         })?;
         Certificate::from_json(&text).map_err(|error| CertificatesError::Unsound {
             path,

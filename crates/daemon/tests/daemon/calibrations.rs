@@ -111,8 +111,8 @@ impl Meters {
 
     fn read(&mut self, nominal_a: f64, heat_sink_degc: f64) -> Value {
         let (current, voltage) = Self::truth(nominal_a, heat_sink_degc);
-        let current_accuracy = (0.0005 * current + 0.0001 * 3.0) / 2.0;
-        let voltage_accuracy = (0.0005 * voltage + 0.0001 * 10.0) / 2.0;
+        let current_accuracy = 0.000_25 * current + 0.000_05 * 3.0;
+        let voltage_accuracy = 0.000_25 * voltage + 0.000_05 * 10.0;
         let mut shown = |true_value: f64, accuracy: f64, common: f64, step: f64| {
             let value = true_value + common * accuracy + step * self.random.normal();
             (value / step).round() * step
@@ -296,7 +296,12 @@ fn all_is_corrected(desk: &Desk, certificate: &Certificate) {
                 ..
             } => steps.push(step.mode),
             Body::Event(Happening::Reading(reading)) => last = Some(reading),
-            _ => {}
+            Body::Event(_)
+            | Body::Order { .. }
+            | Body::Off
+            | Body::Finding(_)
+            | Body::Ended(_)
+            | Body::Note(_) => {}
         }
     }
     let nominal_current =

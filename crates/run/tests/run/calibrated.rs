@@ -196,13 +196,13 @@ fn calibrated(entry: &SinkEntry, random: &mut Random, seed: u64) -> (Errors, Cer
     let mut current_points = Vec::new();
     let mut voltage_points = Vec::new();
     for (nominal, held) in nominal.iter().zip(&held) {
-        let accuracy = (0.0005 * held.true_a + 0.0001 * 3.0) / 2.0;
+        let accuracy = 0.000_25 * held.true_a + 0.000_05 * 3.0;
         current_points.push(CurrentPoint {
             setpoint: Current::from_amperes(*nominal).unwrap(),
             reference: vec![amperes(held.true_a + accuracy * current_error)],
             readback: held.readings.iter().map(|one| Text(one.current)).collect(),
         });
-        let accuracy = (0.0005 * held.true_v() + 0.0001 * 10.0) / 2.0;
+        let accuracy = 0.000_25 * held.true_v() + 0.000_05 * 10.0;
         voltage_points.push(VoltagePoint {
             reference: vec![volts(held.true_v() + accuracy * voltage_error)],
             readback: held.readings.iter().map(|one| Text(one.voltage)).collect(),

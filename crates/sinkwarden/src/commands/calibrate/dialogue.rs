@@ -139,7 +139,7 @@ fn take_points(client: &Client, id: Uuid) -> Result<bool> {
                     tell(format_args!("settling: {waits}"));
                 }
                 told = Some(waits);
-                thread::sleep(LOOK);
+                pause();
             }
             CalibrationState::Settled => {
                 told = None;
@@ -257,10 +257,18 @@ fn ask(prompt: &str) -> Result<Option<String>> {
 fn see_the_end(client: &Client, id: Uuid) {
     for _ in 0..LOOKS_AT_THE_END {
         match client.get::<RunView>(&format!("/v1/runs/{id}")) {
-            Ok(run) if run.state != RunState::Ended => thread::sleep(LOOK),
+            Ok(run) if run.state != RunState::Ended => pause(),
             Ok(_) | Err(_) => return,
         }
     }
+}
+
+#[expect(
+    clippy::disallowed_methods,
+    reason = "the command line waits for a sink to settle and has nothing else to do"
+)]
+fn pause() {
+    thread::sleep(LOOK);
 }
 
 fn finish(client: &Client, id: Uuid) -> Result<(CalibrationOutcome, Option<Certificate>)> {
