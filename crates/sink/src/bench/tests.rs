@@ -4,6 +4,7 @@ use expect_test::{Expect, expect};
 use quantity::{Current, Resistance, Span, Temperature};
 
 use super::{Bench, Link, Sensing};
+use crate::uncertainty::Stated;
 
 const WEIR: &str = include_str!("weir.toml");
 
@@ -190,4 +191,44 @@ fn a_bench_without_a_sink_is_refused() {
         "name = \"weir\"\nrecords = \"records\"\n",
         expect!["line 1, column 1: missing field `sink`"],
     );
+}
+
+/// A converter that states its errors, in the words of docs/bench-file.md.
+#[test]
+fn stated_readback_errors_are_read_and_judged() {
+    let stated = |error: &str| {
+        weir_with(
+            "current_full_scale = \"3.3 A\"",
+            &format!("current_full_scale = \"3.3 A\"\n{error}"),
+        )
+    };
+    let text = stated(r#"current_error = { of_reading = "0.5 %", constant = "2 mA" }"#);
+    let bench = Bench::from_toml(&text).unwrap_or_else(|error| panic!("{error}"));
+    let adc = bench.sink("left").unwrap().front_end.adc;
+    let error = adc.current_error.unwrap();
+    assert_eq!(error.constant, Current::from_milliamperes(2));
+    assert_eq!(error.stated, Stated::Rectangular);
+    assert_eq!(adc.voltage_error, None);
+    let text = stated(
+        r#"voltage_error = { of_reading = "0 %", constant = "20 mV", stated = { normal = { coverage_factor = 2.0 } } }"#,
+    );
+    let bench = Bench::from_toml(&text).unwrap_or_else(|error| panic!("{error}"));
+    assert!(
+        bench
+            .sink("left")
+            .unwrap()
+            .front_end
+            .adc
+            .voltage_error
+            .is_some()
+    );
+    let text = stated(r#"current_error = { of_reading = "-1 %", constant = "-2 mA" }"#);
+    let refused = Bench::from_toml(&text).unwrap_err().to_string();
+    for part in [
+        "adc.current_error.of_reading",
+        "adc.current_error.constant",
+        "give its magnitude",
+    ] {
+        assert!(refused.contains(part), "no `{part}` in {refused}");
+    }
 }
