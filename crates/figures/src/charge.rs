@@ -51,7 +51,7 @@ impl Amount {
     pub(crate) fn hiding(self, delivered: &Delivered, correction: &Correction) -> Self {
         let hours = |seconds: f64| seconds / HOUR_S;
         let hidden_ah = hours(delivered.current_spread.hides(correction.current_read));
-        let hidden_vh = hours(delivered.voltage_spread.hides(correction.voltage_read));
+        let volt_hours = hours(delivered.voltage_spread.hides(correction.voltage_read));
         let leads = correction.leads.ohms();
         let hidden_leads_wh = hours(leads * delivered.current_spread.squares());
         if self.seconds <= 0.0 {
@@ -65,7 +65,7 @@ impl Amount {
         };
         Self {
             hidden_ah,
-            hidden_wh: hidden_ah * mean_voltage + hidden_vh * mean_current + hidden_leads_wh,
+            hidden_wh: hidden_ah * mean_voltage + volt_hours * mean_current + hidden_leads_wh,
             ..self
         }
     }

@@ -5,6 +5,12 @@
 //! not installed the test says so; `cargo xtask test` counts that as skipped. A sweep that was
 //! stored beside the tests holds the circuit everywhere.
 
+#![expect(
+    clippy::unwrap_used,
+    clippy::print_stderr,
+    reason = "a test may panic, and says what it skips"
+)]
+
 use std::fmt::Write as _;
 use std::fs;
 use std::process::Command;

@@ -37,8 +37,9 @@ impl SequenceFile {
         let files = files_wanted(&text)
             .into_iter()
             .filter_map(|name| {
-                let text = fs::read_to_string(folder.join(&name)).ok()?;
-                Some((name, text))
+                // What is no text is left to the check, too: it says what it cannot read.
+                let bytes = fs::read(folder.join(&name)).ok()?;
+                Some((name, String::from_utf8_lossy(&bytes).into_owned()))
             })
             .collect();
         Ok(Self { text, files })

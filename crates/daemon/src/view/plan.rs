@@ -1,6 +1,8 @@
 //! A plan before it runs: its steps in words, how hot the sink gets, how near each interlock is to
 //! come.
 
+use std::fmt::Write as _;
+
 use quantity::{Current, Span};
 use sequence::plan::{
     Action, Condition, Foresight, LoopHead, Next, Op, Peak, Plan, PlanStep, Until,
@@ -105,6 +107,7 @@ fn label_of(plan: &Plan, label: Option<u32>) -> Option<String> {
     plan.labels.get(usize::try_from(label?).ok()?).cloned()
 }
 
+// Writing to a text cannot fail.
 fn step_text(plan: &Plan, step: &PlanStep) -> String {
     let mut text = match step.action {
         Action::Rest => "rest".to_owned(),
@@ -114,22 +117,23 @@ fn step_text(plan: &Plan, step: &PlanStep) -> String {
         Action::Resistance { target } => format!("draw as {target}"),
     };
     if step.until.is_empty() {
-        text.push_str(&format!(" for {}", step.duration));
+        let _ = write!(text, " for {}", step.duration);
     } else {
         text.push_str(&untils(&step.until));
-        text.push_str(&format!(", at most {}", step.duration));
+        let _ = write!(text, ", at most {}", step.duration);
     }
     if step.may_give_up {
         text.push_str(", or until the source gives up");
     }
     if let Some(interval) = step.readback.filter(|interval| *interval != plan.readback) {
-        text.push_str(&format!(", read back every {interval}"));
+        let _ = write!(text, ", read back every {interval}");
     }
     if let Some(burst) = step.burst {
-        text.push_str(&format!(
+        let _ = write!(
+            text,
             ", captured from {} before to {} after its edge",
             burst.before, burst.after
-        ));
+        );
     }
     text
 }
@@ -137,11 +141,11 @@ fn step_text(plan: &Plan, step: &PlanStep) -> String {
 fn loop_text(head: &LoopHead) -> String {
     let mut text = "repeat".to_owned();
     if let Some(times) = head.times {
-        text.push_str(&format!(" {times} times"));
+        let _ = write!(text, " {times} times");
     }
     text.push_str(&untils(&head.until));
     if let Some(at_most) = head.at_most {
-        text.push_str(&format!(", at most {at_most}"));
+        let _ = write!(text, ", at most {at_most}");
     }
     text
 }
@@ -172,7 +176,7 @@ fn until_text(until: &Until) -> String {
         }
     };
     if until.persistence > Span::ZERO {
-        text.push_str(&format!(" for {}", until.persistence));
+        let _ = write!(text, " for {}", until.persistence);
     }
     match until.then {
         Next::GoOn => {}

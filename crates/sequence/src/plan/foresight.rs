@@ -106,9 +106,9 @@ pub(super) struct Heat<'a> {
     envelope: &'a Envelope,
     volts: f64,
     junction: Rise,
-    heat_sink: Rise,
+    fins: Rise,
     hottest_junction: f64,
-    hottest_heat_sink: f64,
+    hottest_fins: f64,
 }
 
 impl<'a> Heat<'a> {
@@ -118,9 +118,9 @@ impl<'a> Heat<'a> {
             envelope,
             volts: voltage.volts(),
             junction: Rise::at_rest(junction),
-            heat_sink: Rise::at_rest(heat_sink),
+            fins: Rise::at_rest(heat_sink),
             hottest_junction: 0.0,
-            hottest_heat_sink: 0.0,
+            hottest_fins: 0.0,
         }
     }
 
@@ -146,7 +146,7 @@ impl<'a> Heat<'a> {
             let power = watts(amperes);
             let lasts = (until - done) * seconds;
             self.junction.advance(power, lasts);
-            self.heat_sink.advance(power, lasts);
+            self.fins.advance(power, lasts);
             self.look();
             done = until;
         }
@@ -155,13 +155,13 @@ impl<'a> Heat<'a> {
     /// Repeats what led here from an earlier state, in so many seconds, so many times more.
     pub(super) fn repeat(&mut self, before: &Self, seconds: f64, times: f64) {
         self.junction.repeat(&before.junction, seconds, times);
-        self.heat_sink.repeat(&before.heat_sink, seconds, times);
+        self.fins.repeat(&before.fins, seconds, times);
         self.look();
     }
 
     fn look(&mut self) {
-        let heat_sink = self.heat_sink.kelvins();
-        self.hottest_heat_sink = self.hottest_heat_sink.max(heat_sink);
+        let heat_sink = self.fins.kelvins();
+        self.hottest_fins = self.hottest_fins.max(heat_sink);
         self.hottest_junction = self
             .hottest_junction
             .max(heat_sink + self.junction.kelvins());
@@ -174,7 +174,7 @@ impl<'a> Heat<'a> {
             Temperature::from_degrees_celsius(degrees).unwrap_or(Temperature::MAX)
         };
         Peak {
-            heat_sink: at(self.hottest_heat_sink),
+            heat_sink: at(self.hottest_fins),
             heat_sink_max: self.envelope.heat_sink_max(),
             junction: at(self.hottest_junction),
             junction_max: self.envelope.junction_max(),

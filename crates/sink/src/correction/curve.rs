@@ -255,9 +255,8 @@ impl Curve {
         match round {
             Round::Down => low,
             Round::Up if below == 0 => low,
-            Round::Up => high,
             Round::Nearest if below < above => low,
-            Round::Nearest => high,
+            Round::Up | Round::Nearest => high,
         }
     }
 

@@ -303,7 +303,11 @@ fn any_curve() -> impl Strategy<Value = Curve> {
     let ends = (-2_000_000_i64..5_000_000, 1_i64..20_000_000);
     let bend = (any_line(), -1.0..1.0_f64, ends).prop_map(|(line, share, (from, width))| {
         let reach = from.abs().max((from + width).abs());
-        #[expect(clippy::cast_possible_truncation, reason = "below 10^14")]
+        #[expect(
+            clippy::cast_possible_truncation,
+            clippy::cast_precision_loss,
+            reason = "both are below 10^15"
+        )]
         let curvature_ppb_per_unit = (share * 1e14 / reach as f64) as i64;
         let bend = Bend {
             curvature_ppb_per_unit,

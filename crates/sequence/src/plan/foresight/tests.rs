@@ -76,7 +76,7 @@ fn a_long_repeat_settles_about_its_mean_power() {
 #[test]
 fn rounds_leapt_over_are_as_hot_as_rounds_written_out() {
     let round = r#"{ "draw": "2.5 A", "for": "20 s" }, { "draw": "1 A", "for": "40 s" }"#;
-    let written = vec![round; 12].join(", ");
+    let written = [round; 12].join(", ");
     let out = foresight(&written).peak.unwrap();
     let repeated = |times: u32, inner: &str| {
         format!(r#"{{ "repeat": {{ "times": {times}, "steps": [ {inner} ] }} }}"#)
