@@ -13,5 +13,6 @@ mod outside;
 mod predict;
 mod pulse;
 mod resistance;
+mod run_time;
 mod supply;
 mod unseen;
