@@ -107,10 +107,16 @@ function drawContact(): void {
 }
 setInterval(() => bench.contact.state === "lost" && drawContact(), 1000);
 
+/** Between two glances at the bench while nobody looks: the tab's title still tells of a trip. */
+const GLANCE_MS = 15_000;
+setInterval(() => document.visibilityState === "hidden" && void askAnew(), GLANCE_MS);
+
 async function askAnew(): Promise<void> {
   try {
     const [list, runs] = await Promise.all([daemon.sinks(), daemon.runs()]);
     bench = fold.asked(bench, list, runs);
+    // Nothing is drawn while nobody looks, bar the title.
+    drawTitle();
     draw();
   } catch {
     // The stream's own loss says it; it comes back with everything.
