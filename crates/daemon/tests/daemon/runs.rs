@@ -191,3 +191,25 @@ fn figures_are_worked_out_from_the_record_and_kept_beside_it() {
     let file = desk.records().join(&run.record).join("figures.json");
     desk.wait_for("figures.json", |_| file.exists());
 }
+
+#[test]
+fn a_report_is_a_page_and_groups_of_records_are_compared() {
+    let desk = Desk::open(50);
+    let run = desk.start(SHORT);
+    desk.wait_for_run(run.id, "the record", |run| run.sealed);
+    let report = desk.get(&format!("/v1/records/{}/report", run.id));
+    assert_eq!(report.status, 200, "{report:?}");
+    assert!(report.text.starts_with("<!DOCTYPE html>"));
+    assert!(report.text.contains(&run.id.to_string()));
+
+    let groups = format!("/v1/comparison?groups=K:{0};L:{0},{0}", run.id);
+    let compared = desk.get(&groups).json();
+    let figures = compared["comparison"]["figures"].as_array().unwrap();
+    let charge = figures
+        .iter()
+        .find(|figure| figure["name"] == "delivered_charge")
+        .unwrap();
+    assert_eq!(charge["groups"].as_array().unwrap().len(), 2);
+    let none = desk.get("/v1/comparison?groups=K");
+    assert_eq!(none.code(), "query-unreadable");
+}
