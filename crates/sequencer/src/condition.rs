@@ -191,7 +191,7 @@ impl State {
 fn range(evidence: &Evidence<'_>, touched: bool, wholly: bool) -> Verdict {
     Verdict {
         touched: touched && evidence.within,
-        wholly: wholly && evidence.within && evidence.observation.lost == 0,
+        wholly: wholly && evidence.within && !evidence.observation.partial,
     }
 }
 

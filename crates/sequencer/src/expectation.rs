@@ -197,7 +197,11 @@ impl Expectation {
             seen.time.min(end),
         );
         let whole = from == seen.from && to == seen.time;
-        if from >= to || seen.first || !step.acknowledged || (step.may_give_up && !whole) {
+        if from >= to || seen.first || !step.acknowledged {
+            return;
+        }
+        // A step that ended within the interval may have been over before the extremes began.
+        if (step.may_give_up || seen.partial) && !whole {
             return;
         }
         let (lagged, _) = step.bounds(to.saturating_sub(SETTLING).max(start), to, seen.voltage);

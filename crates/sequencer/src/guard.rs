@@ -441,7 +441,7 @@ fn ratio(part: i64, whole: i64, crossed: bool) -> u32 {
 fn stuck(seen: &Observation, counted: Option<Charge>) -> bool {
     let expected = seen.current_nominal.times(seen.interval());
     seen.on()
-        && seen.lost == 0
+        && !seen.partial
         && expected.microcoulombs() >= STUCK_CHARGE
         && counted == Some(Charge::ZERO)
 }

@@ -37,6 +37,9 @@ pub(crate) struct Observation {
     pub(crate) current_nominal: Current,
     /// Pairs lost since the previous one: the extremes do not cover the whole interval.
     pub(crate) lost: u16,
+    /// The extremes may not cover the beginning of the interval: pairs were lost, or the sink was
+    /// told another readback interval and began its window anew.
+    pub(crate) partial: bool,
     /// The first reading of a session.
     pub(crate) first: bool,
     /// A value that no working converter shows: at its stop, or out of order.
@@ -46,12 +49,14 @@ pub(crate) struct Observation {
 }
 
 impl Observation {
-    /// Turns a reading into true values; `previous` is the sink time of the one before.
+    /// Turns a reading into true values; `previous` is the sink time of the one before, `anew`
+    /// whether the sink may have begun its window anew since.
     pub(crate) fn new(
         plan: &Plan,
         reading: &Reading,
         at: HostTime,
         previous: Option<SinkTime>,
+        anew: bool,
     ) -> Self {
         let values = reading.values;
         let first = previous.is_none();
@@ -95,6 +100,7 @@ impl Observation {
             voltage_nominal: values.voltage,
             current_nominal: values.current,
             lost: reading.lost,
+            partial: anew || reading.lost > 0,
             first,
             current_at_stop,
             impossible: current_at_stop

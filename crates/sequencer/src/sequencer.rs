@@ -76,6 +76,8 @@ pub struct Sequencer {
     late: u32,
     /// Readback interval last ordered.
     pub(crate) readback: Span,
+    /// The sink begins its window anew by an order that no reading has followed yet.
+    new_window: Option<queue::NewWindow>,
     pub(crate) bursts: burst::Bursts,
     /// What the hand wants and the sink has not been told yet.
     hand: Option<hand::Wanted>,
@@ -99,6 +101,7 @@ impl Sequencer {
         let program = Program::new(plan, &limits)?;
         Ok(Self {
             readback: program.plan().readback,
+            new_window: None,
             program,
             limits,
             phase: Phase::Waiting,

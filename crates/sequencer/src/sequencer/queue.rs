@@ -17,6 +17,17 @@ use crate::orders::hold;
 use crate::phase::Phase;
 use crate::program::Slot;
 
+/// Another readback interval on its way to the sink.
+///
+/// From the order on the sink gathers extremes anew (protocol, section 3): what it had gathered
+/// since its last pair is in no pair. So the next reading speaks for less than its interval.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct NewWindow {
+    order: OrderId,
+    /// The sink has taken it: the next reading is the one.
+    pub(super) acknowledged: bool,
+}
+
 impl Sequencer {
     /// Keeps the sink's queue filled.
     pub(super) fn fill(&mut self) {
@@ -191,7 +202,11 @@ impl Sequencer {
         }
         if let Some(interval) = wanted.filter(|interval| *interval != self.readback) {
             self.readback = interval;
-            self.order(Order::Readback { interval });
+            let order = self.order(Order::Readback { interval });
+            self.new_window = Some(NewWindow {
+                order,
+                acknowledged: false,
+            });
         }
     }
 
@@ -235,6 +250,14 @@ impl Sequencer {
             let due = begun.map_or(SinkTime::ZERO, |step| step.hold_end);
             let early_by = due.saturating_since(time);
             self.trip_by(Interlock::Refusal, micros(early_by), 0);
+        }
+    }
+
+    pub(super) fn acknowledge_new_window(&mut self, order: OrderId) {
+        if let Some(window) = &mut self.new_window
+            && window.order == order
+        {
+            window.acknowledged = true;
         }
     }
 }

@@ -23,7 +23,10 @@ impl Sequencer {
             self.trip(&crossings);
             return;
         }
-        let seen = Observation::new(self.program.plan(), reading, self.now, self.previous);
+        let anew = self.new_window.is_some();
+        let (plan, previous) = (self.program.plan(), self.previous);
+        let seen = Observation::new(plan, reading, self.now, previous, anew);
+        self.new_window = self.new_window.filter(|window| !window.acknowledged);
         let silent = self.now.saturating_since(self.latest_at);
         let last = self.latest;
         if let Phase::Preparation(preparation) = &self.phase

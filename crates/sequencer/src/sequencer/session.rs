@@ -30,6 +30,7 @@ impl Sequencer {
         self.alignment.restart();
         self.guard.restart();
         self.readback = self.plan().readback;
+        self.new_window = None;
         let setup = self.limits.setup(self.plan());
         let mut awaited = None;
         for order in setup {
@@ -51,6 +52,7 @@ impl Sequencer {
     }
 
     pub(super) fn on_acknowledged(&mut self, order: OrderId) {
+        self.acknowledge_new_window(order);
         if let Phase::Preparation(preparation) = &mut self.phase {
             if preparation.awaited == Some(order) {
                 preparation.awaited = None;

@@ -251,6 +251,10 @@ impl Bench {
             Order::Readback { interval } => {
                 self.readbacks.push((self.now, interval));
                 self.interval = interval;
+                self.window = Window {
+                    began: self.now,
+                    ..Window::default()
+                };
                 self.next_readback = Some(self.now + interval);
             }
             Order::Step(step) => {

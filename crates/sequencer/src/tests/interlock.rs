@@ -157,6 +157,32 @@ fn a_source_that_gives_up_trips_as_not_following() {
 }
 
 #[test]
+fn what_no_reading_shows_is_not_asked_of_one() {
+    // The draw ends in an interval of which the sink gathers the extremes anew, since the rest
+    // is read back more slowly; then in one whose pair is lost.
+    let draws = |readback| {
+        let mut resting = rest(millis(20_000));
+        if let sequence::plan::Op::Step(step) = &mut resting {
+            step.readback = readback;
+        }
+        let mut plan = plan(vec![draw(500, millis(10_050)), resting]);
+        plan.interlocks.not_following = armed(milliamperes(10), Span::ZERO);
+        plan
+    };
+    let mut bench = Bench::connected(draws(Some(Span::from_secs(1))));
+    assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
+    assert!(bench.readbacks.len() > 1, "the interval was changed");
+
+    let mut bench = Bench::connected(draws(None));
+    bench.run(millis(10_250));
+    bench.lose_readings = true;
+    bench.run(millis(300));
+    bench.lose_readings = false;
+    assert_eq!(bench.run(Span::from_secs(60)), Some(Ending::Finished));
+    assert!(bench.chronicle().contains("ReadbacksLost"));
+}
+
+#[test]
 fn pulses_shorter_than_a_readback_that_are_not_reached_trip_as_not_following() {
     let mut bench = Bench::connected(plan(pulses(1_000)));
     bench.run(Span::from_secs(3));
