@@ -84,9 +84,7 @@ struct Course {
 impl Course {
     fn of(record: &Record) -> Result<Self, FiguresError> {
         let plan = &record.manifest().plan;
-        let others = record
-            .entries_without_readings()
-            .collect::<Result<Vec<_>, _>>()?;
+        let others = record.others()?;
         let stages = stages(plan, &others, SinkTime::MAX);
         let walked = walk(record, &stages)?;
         let time_base = TimeBase::of(&others);

@@ -54,9 +54,7 @@ pub fn work_out_with_input(
 ) -> Result<Figures, FiguresError> {
     let manifest = record.manifest();
     let entry = SinkEntry::deserialize(&manifest.bench).map_err(FiguresError::Bench)?;
-    let others = record
-        .entries_without_readings()
-        .collect::<Result<Vec<Entry>, _>>()?;
+    let others = record.others()?;
     let plan = &manifest.plan;
     let stages = stages(plan, &others, SinkTime::MAX);
     let walked = walk(record, &stages)?;

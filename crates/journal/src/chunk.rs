@@ -145,6 +145,19 @@ impl Record {
         self.chunks_of(0..self.segments().len())
     }
 
+    /// All entries in order but the readbacks, which are passed over; on as many threads as the
+    /// machine has cores. A torn end of an unsealed record is no error.
+    ///
+    /// # Errors
+    /// As [`Record::chunks`], or the damage.
+    pub fn others(&self) -> Result<Vec<Entry>, JournalError> {
+        let mut others = Vec::new();
+        for chunk in self.lanes(0..self.segments().len(), others_of)? {
+            others.extend(chunk?.others);
+        }
+        Ok(others)
+    }
+
     /// As [`Record::chunks`], from a segment on, counted from 0.
     ///
     /// # Errors
@@ -155,6 +168,10 @@ impl Record {
 
     /// As [`Record::chunks`], for some of the segments.
     pub(crate) fn chunks_of(&self, range: Range<usize>) -> Result<Chunks, JournalError> {
+        self.lanes(range, decode)
+    }
+
+    fn lanes(&self, range: Range<usize>, work: Work) -> Result<Chunks, JournalError> {
         let last = self.segments().last().copied();
         let jobs: Vec<Job> = self
             .segments()
@@ -175,7 +192,7 @@ impl Record {
             let record = self.clone();
             thread::Builder::new()
                 .name("record-reader".into())
-                .spawn(move || decode_lane(&record, &mine, &sender))
+                .spawn(move || work_lane(&record, &mine, work, &sender))
                 .map_err(|error| {
                     JournalError::io("starting a thread to read", self.folder(), error)
                 })?;
@@ -255,9 +272,17 @@ struct Decoded {
     chunk: Chunk,
 }
 
-fn decode_lane(record: &Record, jobs: &[Job], sender: &SyncSender<Result<Decoded, JournalError>>) {
+/// What a thread does with a segment.
+type Work = fn(&Record, Job) -> Result<Decoded, JournalError>;
+
+fn work_lane(
+    record: &Record,
+    jobs: &[Job],
+    work: Work,
+    sender: &SyncSender<Result<Decoded, JournalError>>,
+) {
     for job in jobs {
-        let decoded = decode(record, *job);
+        let decoded = work(record, *job);
         let failed = decoded.is_err();
         // Nobody wants more when the receiver is gone.
         if sender.send(decoded).is_err() || failed {
@@ -306,6 +331,25 @@ fn decode(record: &Record, job: Job) -> Result<Decoded, JournalError> {
         file: reader.file().to_owned(),
         first,
         next_number,
+        chunk,
+    })
+}
+
+/// The same without the readbacks.
+fn others_of(record: &Record, job: Job) -> Result<Decoded, JournalError> {
+    let segment = ReadSegment::load(&layout::journal(record.folder()), job.segment)?;
+    let expected = segment.expected(&record.manifest().record, None);
+    let mut chunk = Chunk::default();
+    let others = &mut chunk.others;
+    let read = segment.read(&expected, job.open_ended, true, |entry| others.push(entry))?;
+    chunk.tail = read.tail;
+    let reader = segment.reader(&expected).ok();
+    Ok(Decoded {
+        file: reader
+            .as_ref()
+            .map_or_else(String::new, |reader| reader.file().to_owned()),
+        first: reader.as_ref().map(|reader| reader.header().first),
+        next_number: reader.is_some().then_some(read.next_number),
         chunk,
     })
 }

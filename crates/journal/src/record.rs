@@ -93,25 +93,11 @@ impl Record {
 
     /// All entries in order.
     pub fn entries(&self) -> Entries {
-        self.entries_of(0, false)
-    }
-
-    /// All entries in order but the readbacks, which are passed over at the speed of the disk.
-    pub fn entries_without_readings(&self) -> Entries {
-        self.entries_of(0, true)
-    }
-
-    fn entries_of(&self, from_segment: usize, skip_readings: bool) -> Entries {
         Entries {
             journal: layout::journal(&self.folder),
             record: self.manifest.record.clone(),
-            segments: self
-                .segments
-                .get(from_segment..)
-                .unwrap_or_default()
-                .to_vec(),
+            segments: self.segments.clone(),
             open_ended: !self.sealed,
-            skip_readings,
             next_segment: 0,
             next_number: Some(1),
             waiting: Vec::new().into_iter(),
@@ -128,7 +114,6 @@ pub struct Entries {
     record: String,
     segments: Vec<u32>,
     open_ended: bool,
-    skip_readings: bool,
     next_segment: usize,
     next_number: Option<u64>,
     waiting: std::vec::IntoIter<Entry>,
@@ -149,8 +134,7 @@ impl Entries {
         let expected = segment.expected(&self.record, self.next_number);
         let open_ended = self.open_ended && is_last;
         let mut entries = Vec::new();
-        let skip = self.skip_readings;
-        let read = segment.read(&expected, open_ended, skip, |entry| entries.push(entry))?;
+        let read = segment.read(&expected, open_ended, false, |entry| entries.push(entry))?;
         self.next_number = Some(read.next_number);
         self.tail = read.tail;
         Ok(entries)

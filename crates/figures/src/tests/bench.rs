@@ -37,8 +37,8 @@ pub(crate) struct Night {
 impl Night {
     /// When the step at this place of the plan began, seconds of the sink's clock.
     pub(crate) fn step_began_s(&self, place: u32) -> f64 {
-        let began = self.record.entries_without_readings().find_map(|entry| {
-            if let Body::Finding(Finding::StepBegan { op, time }) = entry.unwrap().body {
+        let began = self.record.others().unwrap().into_iter().find_map(|entry| {
+            if let Body::Finding(Finding::StepBegan { op, time }) = entry.body {
                 (op == place).then_some(time)
             } else {
                 None

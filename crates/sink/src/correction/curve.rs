@@ -261,8 +261,8 @@ impl Curve {
     }
 
     /// A straight line that is nowhere below the curve from nominal zero to a
-    /// nominal value, and whose magnitude is nowhere below the curve's where
-    /// both are negative.
+    /// nominal value. Below zero, where no converter of a sink reads, it says
+    /// nothing.
     ///
     /// A curve that bends upwards lies below its chord, one that bends
     /// downwards below its tangents.

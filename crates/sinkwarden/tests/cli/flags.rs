@@ -32,8 +32,11 @@ fn the_help_names_every_command_and_every_exit_code() {
           records       List the records of a folder, the latest last
           figures       Work out a record's figures, each with its uncertainty and method
           replay        Replay a record: the same readings must give the same orders, bit for bit
+          compare       Compare groups of records: means, spreads, differences, fit for three of each
+          predict       Predict how long a load runs on a cell, with an interval and what dominates it
           verify        Verify that nothing in a record was altered since it was written
           export        Export a record's readbacks as CSV or Parquet, with units in the column names
+          report        Make the report of a record: one HTML page to read, to print, to keep
 
         Options:
               --json     Answer with JSON on stdout instead of text
