@@ -1,7 +1,7 @@
 // Quantities, times and words as a person reads them: every figure with its unit, a real minus
 // sign, and figures that keep their width while they change.
 
-import type { Clock } from "../api/types.ts";
+import type { Clock, Margin } from "../api/types.ts";
 
 /** Between a number and its unit: never broken. */
 const GAP = "\u00a0";
@@ -62,6 +62,16 @@ export function ofInterlock(value: number, unit: string): string {
     default:
       return significant(value, 3);
   }
+}
+
+/** How an interlock stands, in words: now, the limit, the worst so far. */
+export function standing(margin: Margin): string {
+  if (margin.interlock === "sensor_fault") {
+    // Nothing between sound and faulty: there is no value to give.
+    return margin.worst_nearness >= 1 ? "faulty" : "none so far";
+  }
+  const [value, limit] = [margin.value, margin.threshold].map((each) => ofInterlock(each, margin.unit));
+  return `${value} of ${limit}; worst ${percent(Math.max(0, margin.worst_nearness))}`;
 }
 
 /** Two values of an interlock with as many digits as it takes to tell them apart. */

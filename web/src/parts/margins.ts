@@ -2,7 +2,7 @@
 // at the right end; the nearest first. The numbers stand beside it.
 
 import type { Margin } from "../api/types.ts";
-import { ofInterlock, percent, words } from "../core/format.ts";
+import { percent, standing, words } from "../core/format.ts";
 import { List, type Part, attribute, h, show, write } from "../dom.ts";
 
 /** Margins that are always seen; the others are folded away, with how near the nearest is. */
@@ -38,31 +38,26 @@ function one(first: Margin): Part<Margin> {
     now,
     worst,
   );
-  const [value, limit, share, extreme] = [h("span"), h("span"), h("span"), h("span")];
+  const [values, share] = [h("span", { class: "margin-values figures" }), h("span")];
   const element = h(
     "li",
     {},
     h("span", { class: "margin-name" }, name),
     bar,
     h("span", { class: "margin-share figures" }, share),
-    h("span", { class: "margin-values figures" }, value, " of ", limit, "; worst ", extreme),
+    values,
   );
   return {
     element,
     update(margin) {
       now.style.width = place(margin.nearness);
       worst.style.left = place(margin.worst_nearness);
-      write(value, ofInterlock(margin.value, margin.unit));
-      write(limit, ofInterlock(margin.threshold, margin.unit));
+      const text = standing(margin);
+      write(values, text);
       write(share, percent(Math.max(0, margin.nearness)));
-      write(extreme, percent(Math.max(0, margin.worst_nearness)));
       attribute(element, "data-near", margin.nearness >= 0.9);
       attribute(bar, "aria-valuenow", Math.round(Math.min(1, Math.max(0, margin.nearness)) * 100));
-      attribute(
-        bar,
-        "aria-valuetext",
-        `${percent(margin.nearness)} of the way: ${value.textContent} of ${limit.textContent}, worst ${extreme.textContent}`,
-      );
+      attribute(bar, "aria-valuetext", `${percent(margin.nearness)} of the way: ${text}`);
     },
   };
 }

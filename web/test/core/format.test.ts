@@ -51,3 +51,14 @@ test("the expected end names the day only where it is another", () => {
   assert.equal(format.expectedEnd(at, 0, 6 * 3600), "2026-12-02 04:15");
   assert.equal(format.expectedEnd(at, 1200, 600), "");
 });
+
+test("an interlock without a value says whether it has been touched", () => {
+  const margin = { unit: "V", value: 2.6, worst_value: 2.55, threshold: 2.5, nearness: 0.9, worst_nearness: 0.95 };
+  assert.equal(
+    plain(format.standing({ ...margin, interlock: "undervoltage" })),
+    "2.600 V of 2.500 V; worst 95 %",
+  );
+  const sensor = { ...margin, interlock: "sensor_fault", unit: "s", value: 0, threshold: 0 };
+  assert.equal(format.standing({ ...sensor, worst_nearness: 0 }), "none so far");
+  assert.equal(format.standing({ ...sensor, worst_nearness: 1 }), "faulty");
+});
