@@ -1,6 +1,6 @@
 //! From a record to its figures.
 
-use journal::{Entry, JournalError, Record};
+use journal::{JournalError, Record};
 use quantity::SinkTime;
 use sequence::plan::{DutKind, Plan};
 use serde::Deserialize as _;

@@ -11,7 +11,7 @@ use sink::correction::Correction;
 use wire::TemperatureReading;
 
 use crate::account::Counted;
-use crate::observation::Observation;
+use crate::observation::{Cover, Observation};
 use crate::settled::Window;
 
 /// The conditions of one step or loop, from its beginning on.
@@ -191,7 +191,7 @@ impl State {
 fn range(evidence: &Evidence<'_>, touched: bool, wholly: bool) -> Verdict {
     Verdict {
         touched: touched && evidence.within,
-        wholly: wholly && evidence.within && !evidence.observation.partial,
+        wholly: wholly && evidence.within && evidence.observation.cover == Cover::Whole,
     }
 }
 

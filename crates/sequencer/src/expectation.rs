@@ -9,7 +9,7 @@ use quantity::{Current, SinkTime, Span};
 use sequence::plan::Action;
 use wire::OrderId;
 
-use crate::observation::{Observation, Spread};
+use crate::observation::{Cover, Observation, Spread};
 use crate::program::Slot;
 
 /// After an edge or a change of slope the readback may lag behind the setpoint for this long:
@@ -201,7 +201,7 @@ impl Expectation {
             return;
         }
         // A step that ended within the interval may have been over before the extremes began.
-        if (step.may_give_up || seen.partial) && !whole {
+        if (step.may_give_up || seen.cover == Cover::End) && !whole {
             return;
         }
         let (lagged, _) = step.bounds(to.saturating_sub(SETTLING).max(start), to, seen.voltage);

@@ -13,7 +13,7 @@ use wire::{Cause, SinkState, TemperatureReading};
 
 use crate::event::{Crossing, Interlock};
 use crate::expectation::Expectation;
-use crate::observation::Observation;
+use crate::observation::{Cover, Observation};
 
 /// Temperatures outside this no sensor on a heat sink reports while it works (m°C).
 const TEMPERATURES: std::ops::RangeInclusive<i64> = -60_000..=300_000;
@@ -441,7 +441,7 @@ fn ratio(part: i64, whole: i64, crossed: bool) -> u32 {
 fn stuck(seen: &Observation, counted: Option<Charge>) -> bool {
     let expected = seen.current_nominal.times(seen.interval());
     seen.on()
-        && !seen.partial
+        && seen.cover == Cover::Whole
         && expected.microcoulombs() >= STUCK_CHARGE
         && counted == Some(Charge::ZERO)
 }

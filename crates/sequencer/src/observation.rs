@@ -16,6 +16,16 @@ pub(crate) struct Spread<T> {
     pub(crate) max: T,
 }
 
+/// How much of an interval its extremes are of.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(crate) enum Cover {
+    /// All of it.
+    Whole,
+    /// Perhaps only its end: pairs were lost, or the sink was told another readback interval and
+    /// began its window anew.
+    End,
+}
+
 /// A reading in true values.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(crate) struct Observation {
@@ -37,9 +47,8 @@ pub(crate) struct Observation {
     pub(crate) current_nominal: Current,
     /// Pairs lost since the previous one: the extremes do not cover the whole interval.
     pub(crate) lost: u16,
-    /// The extremes may not cover the beginning of the interval: pairs were lost, or the sink was
-    /// told another readback interval and began its window anew.
-    pub(crate) partial: bool,
+    /// How much of the interval the extremes are of.
+    pub(crate) cover: Cover,
     /// The first reading of a session.
     pub(crate) first: bool,
     /// A value that no working converter shows: at its stop, or out of order.
@@ -100,7 +109,11 @@ impl Observation {
             voltage_nominal: values.voltage,
             current_nominal: values.current,
             lost: reading.lost,
-            partial: anew || reading.lost > 0,
+            cover: if anew || reading.lost > 0 {
+                Cover::End
+            } else {
+                Cover::Whole
+            },
             first,
             current_at_stop,
             impossible: current_at_stop
