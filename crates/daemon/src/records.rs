@@ -31,7 +31,7 @@ const PART_CHARS_MAX: usize = 32;
 pub(crate) struct Records {
     folder: PathBuf,
     known: Mutex<BTreeMap<String, Known>>,
-    _lock: File,
+    lock: File,
 }
 
 /// A record in short, and by what it is seen whether that still holds.
@@ -39,6 +39,14 @@ pub(crate) struct Records {
 struct Known {
     changed: Option<SystemTime>,
     summary: Arc<RecordSummary>,
+}
+
+impl Drop for Records {
+    /// A program that is just being started holds a copy of the file until then: closing it
+    /// would not do.
+    fn drop(&mut self) {
+        let _ = self.lock.unlock();
+    }
 }
 
 impl Records {
@@ -62,7 +70,7 @@ impl Records {
         Ok(Self {
             folder: folder.to_path_buf(),
             known: Mutex::default(),
-            _lock: lock,
+            lock,
         })
     }
 

@@ -145,7 +145,7 @@ impl Storage for Disk {
             .truncate(false)
             .open(path)?;
         match file.try_lock() {
-            Ok(()) => Ok(Some(Box::new(DiskLock { _file: file }))),
+            Ok(()) => Ok(Some(Box::new(DiskLock { file }))),
             Err(TryLockError::WouldBlock) => Ok(None),
             Err(TryLockError::Error(error)) => Err(error),
         }
@@ -178,10 +178,18 @@ impl StoredFile for DiskFile {
 
 #[derive(Debug)]
 struct DiskLock {
-    _file: File,
+    file: File,
 }
 
 impl Lock for DiskLock {}
+
+impl Drop for DiskLock {
+    /// Closing the file would do, but for a program that is just being started: until then it
+    /// holds a copy of it, and the lock with it.
+    fn drop(&mut self) {
+        let _ = self.file.unlock();
+    }
+}
 
 /// Writes all the bytes, however often the disk writes short.
 pub(crate) fn write_all(file: &mut dyn StoredFile, bytes: &[u8]) -> io::Result<()> {
