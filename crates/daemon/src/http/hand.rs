@@ -26,6 +26,7 @@ use crate::view::{Code, HandRequest, Problem, RunView, SetpointRequest};
     responses(
         (status = 201, body = RunView, description = "Begun; Location names the run"),
         (status = 200, body = RunView, description = "Begun before, with the same key"),
+        (status = 303, description = "Begun before and over since; Location names its record"),
         (status = 404, body = Problem),
         (status = 409, body = Problem),
         (status = 422, body = Problem),
