@@ -14,8 +14,8 @@ use std::ops::Range;
 use std::path::Path;
 use std::sync::{Arc, Mutex, MutexGuard, PoisonError};
 
-use journal::{Grain, Grains, JournalError, Record, gather};
-use quantity::{Charge, HostTime};
+use journal::{Grain, Grains, JournalError, Near, Record, gather};
+use quantity::{Charge, HostTime, Span};
 use serde::{Deserialize, Serialize};
 
 use self::course::Course;
@@ -26,6 +26,8 @@ const FILE: &str = "sketch";
 /// Grains held in memory over all records: some 70 MB, the most of one 12 h record at 100 Hz
 /// being a quarter of it. One record is always held.
 const GRAINS_MAX: usize = 500_000;
+/// Single readbacks held in memory over all records, some 50 MB: what was looked at closely last.
+const POINTS_MAX: usize = 600_000;
 /// Records held.
 const RECORDS_MAX: usize = 32;
 
@@ -44,18 +46,13 @@ impl Sketch {
     }
 
     /// When the last readback came.
-    pub(crate) fn last_at(&self) -> Option<HostTime> {
+    fn last_at(&self) -> Option<HostTime> {
         let last = self.growing.last().or(self.complete.last())?;
         Some(last.bucket.last_at)
     }
 
-    /// How it went.
-    pub(crate) fn course(&self) -> &CourseView {
-        &self.course
-    }
-
     /// How many grains begin in a stretch.
-    pub(crate) fn grains_in(&self, stretch: &Range<HostTime>) -> usize {
+    fn grains_in(&self, stretch: &Range<HostTime>) -> usize {
         let before = |grains: &[Grain], at: HostTime| {
             grains.partition_point(|grain| grain.bucket.first_at < at)
         };
@@ -66,12 +63,20 @@ impl Sketch {
     }
 
     /// A stretch in at most so many buckets.
-    pub(crate) fn gather(&self, stretch: &Range<HostTime>, most: u32) -> Vec<Grain> {
-        gather(self.all().copied(), stretch, most)
+    fn gather(&self, stretch: &Range<HostTime>, most: u32) -> Vec<Grain> {
+        let within = |grains: &'_ [Grain]| -> Range<usize> {
+            let before = |at: HostTime| grains.partition_point(|grain| grain.bucket.first_at < at);
+            before(stretch.start)..before(stretch.end)
+        };
+        let parts = [&self.complete, &self.growing].map(|grains| {
+            let within = within(grains);
+            grains.get(within).unwrap_or_default()
+        });
+        gather(parts.into_iter().flatten().copied(), stretch, most)
     }
 
     /// The charge at an instant, between two grains by the straight line.
-    pub(crate) fn charge_at(&self, at: HostTime) -> Option<Charge> {
+    fn charge_at(&self, at: HostTime) -> Option<Charge> {
         let grains = match self.growing.first() {
             Some(first) if first.bucket.first_at <= at => &self.growing,
             Some(_) | None => &self.complete,
@@ -100,6 +105,16 @@ struct Making {
     course: Course,
     segments: usize,
     sealed: bool,
+    near: Near,
+}
+
+/// A stretch of a record in few points.
+#[derive(Debug)]
+pub(crate) struct Look {
+    /// From the start of the run to just behind the last readback.
+    pub(crate) length: Span,
+    /// The points.
+    pub(crate) grains: Vec<Grain>,
 }
 
 impl Making {
@@ -115,7 +130,35 @@ impl Making {
             course: Course::new(start),
             segments: 0,
             sealed: false,
+            near: Near::default(),
         }
+    }
+
+    /// A stretch in at most so many points.
+    fn look(
+        &mut self,
+        record: &Record,
+        stretch: &Range<Option<HostTime>>,
+        points: u32,
+    ) -> Result<Look, JournalError> {
+        let start = crate::records::started(record);
+        let last = self.sketch.last_at().unwrap_or(start);
+        let end = last.saturating_add(Span::from_micros(1));
+        let length = end.saturating_since(start);
+        let stretch = stretch.start.unwrap_or(start)..stretch.end.unwrap_or(end);
+        // Grains are fine enough while each point has two; where they are not, the stretch is
+        // short, and the record itself is read.
+        if self.sketch.grains_in(&stretch) as u64 >= u64::from(points) * 2 {
+            let grains = self.sketch.gather(&stretch, points);
+            return Ok(Look { length, grains });
+        }
+        let buckets = self.near.thin(record, &stretch, points)?;
+        let charged = buckets.into_iter().map(|bucket| Grain {
+            bucket,
+            charge: self.sketch.charge_at(bucket.first_at).unwrap_or_default(),
+        });
+        let grains = charged.collect();
+        Ok(Look { length, grains })
     }
 
     /// Reads what is new in the record.
@@ -222,11 +265,26 @@ pub(crate) struct Sketches {
 }
 
 impl Sketches {
-    /// Works with the sketch of a record as it is now. Not for a thread that answers others.
-    pub(crate) fn with<T>(
+    /// A stretch of a record as it is now, in at most so many points; its beginning and its end
+    /// are those of the record unless said. Not for a thread that answers others.
+    pub(crate) fn look(
         &self,
         record: &Record,
-        work: impl FnOnce(&Sketch) -> T,
+        stretch: &Range<Option<HostTime>>,
+        points: u32,
+    ) -> Result<Look, JournalError> {
+        self.with(record, |making| making.look(record, stretch, points))?
+    }
+
+    /// How a record went, as it is now. Not for a thread that answers others.
+    pub(crate) fn course(&self, record: &Record) -> Result<CourseView, JournalError> {
+        self.with(record, |making| making.sketch.course.clone())
+    }
+
+    fn with<T>(
+        &self,
+        record: &Record,
+        work: impl FnOnce(&mut Making) -> T,
     ) -> Result<T, JournalError> {
         let one = self.one(record);
         // Whoever else wants this record waits for its sketch instead of making another.
@@ -244,7 +302,7 @@ impl Sketches {
         } else {
             making.go_on(record)?;
         }
-        let result = work(&making.sketch);
+        let result = work(&mut making);
         drop(making);
         self.bound();
         Ok(result)
@@ -266,15 +324,20 @@ impl Sketches {
     fn bound(&self) {
         let mut held = lock(&self.held);
         held.truncate(RECORDS_MAX);
-        let mut grains = 0;
+        let (mut grains, mut points) = (0, 0);
         let mut first = true;
         held.retain(|(_, making)| {
+            let is_first = std::mem::take(&mut first);
             // One that is being made is in use and is counted the next time.
-            let size = making
-                .try_lock()
-                .map_or(0, |making| making.sketch.all().count());
-            grains += size;
-            std::mem::take(&mut first) || grains <= GRAINS_MAX
+            if let Ok(mut making) = making.try_lock() {
+                grains += making.sketch.all().count();
+                points += making.near.points();
+                if points > POINTS_MAX && !is_first {
+                    points -= making.near.points();
+                    making.near.clear();
+                }
+            }
+            is_first || grains <= GRAINS_MAX
         });
     }
 }

@@ -62,47 +62,57 @@ pub fn thin(
     stretch: Range<HostTime>,
     buckets_max: u32,
 ) -> Result<Vec<Bucket>, JournalError> {
-    let Some(length) = stretch.end.checked_since(stretch.start) else {
+    let Some(mut thinning) = Thinning::new(&stretch, buckets_max) else {
         return Ok(Vec::new());
     };
-    if length.micros() == 0 || buckets_max == 0 {
-        return Ok(Vec::new());
-    }
-    let width = length.micros().div_ceil(u64::from(buckets_max));
     let correction = record.manifest().plan.correction;
-    let mut buckets = Vec::new();
-    let mut filling: Option<(u64, Filling)> = None;
-    for chunk in record.chunks_of(touched(record, &stretch)?)? {
+    let begins: Vec<Option<HostTime>> = (0..record.segments().len())
+        .map(|segment| begins(record, segment))
+        .collect::<Result<_, _>>()?;
+    for chunk in record.chunks_of(touched(&begins, &stretch))? {
         let readings = chunk?.readings;
         for (index, &at) in readings.at.iter().enumerate() {
-            if !stretch.contains(&at) {
-                continue;
-            }
-            let Some(reading) = readings.get(index) else {
-                break;
-            };
-            let place = at.saturating_since(stretch.start).micros() / width;
-            let point = Point::new(at, &reading, &correction);
-            match &mut filling {
-                Some((open, bucket)) if *open == place => bucket.take(&point),
-                _ => {
-                    let full = filling.replace((place, Filling::new(&point)));
-                    buckets.extend(full.map(|(_, full)| full.bucket()));
-                }
+            if stretch.contains(&at)
+                && let Some(reading) = readings.get(index)
+            {
+                thinning.add(&Point::new(at, &reading, &correction));
             }
         }
     }
-    buckets.extend(filling.map(|(_, last)| last.bucket()));
-    Ok(buckets)
+    Ok(thinning.finish())
 }
 
-/// The segments that can hold something of the stretch, from the times in their first lines.
-fn touched(record: &Record, stretch: &Range<HostTime>) -> Result<Range<usize>, JournalError> {
-    let journal = layout::journal(record.folder());
+/// The readbacks of one segment, counted from 0, as points.
+pub(crate) fn points_of(record: &Record, segment: usize) -> Result<Vec<Point>, JournalError> {
+    let correction = record.manifest().plan.correction;
+    let mut points = Vec::new();
+    for chunk in record.chunks_of(segment..segment + 1)? {
+        let readings = chunk?.readings;
+        points.reserve(readings.len());
+        for (index, &at) in readings.at.iter().enumerate() {
+            if let Some(reading) = readings.get(index) {
+                points.push(Point::new(at, &reading, &correction));
+            }
+        }
+    }
+    Ok(points)
+}
+
+/// When a segment begins, by its first line. One that cannot be read ends nothing: the reader
+/// will say what is wrong.
+pub(crate) fn begins(record: &Record, segment: usize) -> Result<Option<HostTime>, JournalError> {
+    let Some(&number) = record.segments().get(segment) else {
+        return Ok(None);
+    };
+    let header = segment::peek(&layout::journal(record.folder()), number)?;
+    Ok(header.map(|header| header.at))
+}
+
+/// The segments that can hold something of the stretch, by when each begins.
+pub(crate) fn touched(begins: &[Option<HostTime>], stretch: &Range<HostTime>) -> Range<usize> {
     let mut range = 0..0;
-    for (index, &number) in record.segments().iter().enumerate() {
-        // A first line that cannot be read ends nothing: the reader will say what is wrong.
-        let begins = segment::peek(&journal, number)?.map_or(stretch.start, |header| header.at);
+    for (index, begins) in begins.iter().enumerate() {
+        let begins = begins.unwrap_or(stretch.start);
         if begins <= stretch.start {
             range.start = index;
         }
@@ -110,10 +120,60 @@ fn touched(record: &Record, stretch: &Range<HostTime>) -> Result<Range<usize>, J
             range.end = index + 1;
         }
     }
-    Ok(range)
+    range
+}
+
+/// Points that come in order, cut into equal buckets.
+pub(crate) struct Thinning<'a> {
+    stretch: &'a Range<HostTime>,
+    /// Microseconds of a bucket.
+    width: u64,
+    full: Vec<Bucket>,
+    filling: Option<(u64, Filling)>,
+}
+
+impl<'a> Thinning<'a> {
+    /// `None` where there is nothing to fill.
+    pub(crate) fn new(stretch: &'a Range<HostTime>, buckets_max: u32) -> Option<Self> {
+        let length = stretch.end.checked_since(stretch.start)?.micros();
+        (length > 0 && buckets_max > 0).then(|| Self {
+            stretch,
+            width: length.div_ceil(u64::from(buckets_max)),
+            full: Vec::new(),
+            filling: None,
+        })
+    }
+
+    /// Takes those points that arrived in the stretch.
+    pub(crate) fn take(&mut self, points: &[Point]) {
+        for point in points {
+            if self.stretch.contains(&point.at) {
+                self.add(point);
+            }
+        }
+    }
+
+    /// Takes a point that arrived in the stretch.
+    fn add(&mut self, point: &Point) {
+        let place = point.at.saturating_since(self.stretch.start).micros() / self.width;
+        match &mut self.filling {
+            Some((open, bucket)) if *open == place => bucket.take(point),
+            _ => {
+                let full = self.filling.replace((place, Filling::new(point)));
+                self.full.extend(full.map(|(_, full)| full.bucket()));
+            }
+        }
+    }
+
+    pub(crate) fn finish(mut self) -> Vec<Bucket> {
+        self.full
+            .extend(self.filling.map(|(_, last)| last.bucket()));
+        self.full
+    }
 }
 
 /// One readback, true: least, mean and largest, in micro-units (thousandths for temperature).
+#[derive(Debug, Clone)]
 pub(crate) struct Point {
     at: HostTime,
     time: SinkTime,

@@ -23,6 +23,7 @@ export class Figure {
   readonly element: HTMLElement;
   #drawing: Drawing = NOTHING;
   #zoom: Range | null = null;
+  #busy = 0;
   readonly #panels: Panel[];
   readonly #readOff = h("output", { class: "read-off figures" });
   readonly #slider = h("input", { type: "range", min: 0, max: POSITIONS, value: 0, "aria-label": "Read off" });
@@ -86,9 +87,13 @@ export class Figure {
     return Math.min(2000, Math.max(300, Math.round(this.#plots.clientWidth)));
   }
 
-  /** More is being asked for. */
-  busy(is: boolean): void {
-    attribute(this.element, "aria-busy", is ? "true" : null);
+  /** Says that more is being asked for, until the last of those who ask has it. */
+  async whileBusy(work: () => Promise<void>): Promise<void> {
+    this.#busy += 1;
+    attribute(this.element, "aria-busy", "true");
+    await work();
+    this.#busy -= 1;
+    if (this.#busy === 0) attribute(this.element, "aria-busy", null);
   }
 
   draw(drawing: Drawing): void {

@@ -1,5 +1,9 @@
 // Drawing a trace into a plot: a thin line for the mean, a shade from the least to the largest
 // value of each stretch, so that a dip of 40 ms in twelve hours is seen.
+//
+// A shade is filled in rectangles of whole pixels, one after the other. As one path of a thousand
+// rectangles with fractions of pixels it took the browser a hundred milliseconds: where the
+// noise fills the panel, every row of pixels crosses all of them.
 
 import type uPlot from "uplot";
 import { type Quantity, type Trace, firstFrom } from "../core/curve.ts";
@@ -28,20 +32,17 @@ export function drawTrace(plot: uPlot, trace: Trace, quantity: Quantity, stroke:
   ctx.clip();
   if (stroke.shade !== null) {
     ctx.fillStyle = stroke.shade;
-    ctx.beginPath();
     for (let index = from; index <= to; index += 1) {
       const [least, largest] = [column.min[index], column.max[index]];
       if (least === null || largest === null || least === undefined || largest === undefined) continue;
-      const right = index < to ? x(index + 1) : x(index) + scale;
-      const upper = y(largest);
-      const wide = Math.max(right - x(index), scale * 0.5);
-      ctx.rect(x(index), upper, wide, Math.max(y(least) - upper, 0));
+      const [begin, upper] = [Math.round(x(index)), Math.round(y(largest))];
+      const end = index < to ? Math.round(x(index + 1)) : begin;
+      ctx.fillRect(begin, upper, Math.max(1, end - begin), Math.max(1, Math.round(y(least)) - upper));
     }
-    ctx.fill();
   }
   ctx.strokeStyle = stroke.colour;
   ctx.lineWidth = stroke.width * scale;
-  ctx.lineJoin = "round";
+  ctx.lineJoin = "bevel";
   ctx.setLineDash(stroke.dash.map((length) => length * scale));
   ctx.beginPath();
   let broken = true;

@@ -1,15 +1,18 @@
 // The readbacks of one record: all of it in few points, and the stretch that is looked at in
-// more. The latest question wins; an older one is given up.
+// more. One question at a time is asked: of those that come meanwhile, as while two fingers move,
+// only the latest. An answer is taken even if a later question waits: it is nearer than nothing.
 
 import { daemon } from "../api/client.ts";
 import type { Curve, Readings } from "../api/types.ts";
 import { type Range, spliced } from "../core/curve.ts";
 import { isAbort } from "../dom.ts";
+import { LatestFirst } from "../core/turns.ts";
 
 export class Source {
   #overview: Readings | null = null;
   #detail: Curve | null = null;
-  #asking: AbortController | null = null;
+  readonly #turns = new LatestFirst();
+  readonly #closing = new AbortController();
 
   constructor(readonly id: string) {}
 
@@ -22,16 +25,15 @@ export class Source {
     return this.#overview?.in_progress ?? false;
   }
 
-  /** All of it; true if there is something new to draw. */
+  /** All of it, over which what is known in detail stays; true if there is something new. */
   async whole(points: number): Promise<boolean> {
     const found = await this.#ask({ points });
     if (found === null) return false;
     this.#overview = found;
-    this.#detail = null;
     return true;
   }
 
-  /** A stretch of time in detail, over what is known of the whole. */
+  /** A stretch of time in detail, over what is known of the whole; true if it is new. */
   async stretch(time: Range, points: number): Promise<boolean> {
     const found = await this.#ask({ from_s: Math.max(0, time.from), to_s: time.to, points });
     if (found === null) return false;
@@ -39,16 +41,19 @@ export class Source {
     return true;
   }
 
+  /** No stretch of it is looked at any more. */
+  forget(): void {
+    this.#detail = null;
+  }
+
   close(): void {
-    this.#asking?.abort();
+    this.#closing.abort();
   }
 
   async #ask(stretch: { from_s?: number; to_s?: number; points: number }): Promise<Readings | null> {
-    this.#asking?.abort();
-    const asking = new AbortController();
-    this.#asking = asking;
+    const { signal } = this.#closing;
     try {
-      return await daemon.readings(this.id, stretch, asking.signal);
+      return await this.#turns.take(() => daemon.readings(this.id, stretch, signal));
     } catch (error) {
       if (isAbort(error)) return null;
       throw error;

@@ -55,20 +55,22 @@ export function compareView(ids: readonly string[]): View {
   }
 
   async function detail(range: Range | null): Promise<void> {
-    figure.busy(true);
-    try {
-      await Promise.all(
-        all.map(({ source }) => {
-          const { curve } = source;
-          if (range === null || curve === null) return source.whole(figure.points);
-          return source.stretch(timeOf(traceOf("", curve, against), range), figure.points);
-        }),
-      );
+    if (range === null) {
+      for (const { source } of all) source.forget();
       draw();
-    } catch (error) {
-      write(said, reasonOf(error));
+      return;
     }
-    figure.busy(false);
+    await figure.whileBusy(async () => {
+      try {
+        const stretches = all.map(async ({ source }) => {
+          const { curve } = source;
+          return curve !== null && source.stretch(timeOf(traceOf("", curve, against), range), figure.points);
+        });
+        if ((await Promise.all(stretches)).includes(true)) draw();
+      } catch (error) {
+        write(said, reasonOf(error));
+      }
+    });
   }
 
   async function load(): Promise<void> {

@@ -165,9 +165,10 @@ class RecordPage implements View {
       try {
         const [, course] = await Promise.all([this.#source.whole(this.#figure.points), this.#courseNow()]);
         this.#course = course;
-        this.#draw();
+        // One picture: where it is zoomed, with the detail.
         const zoomed = this.#figure.zoomed;
         if (zoomed) await this.#detail(zoomed);
+        else this.#draw();
       } catch (error) {
         this.#fail(error);
       }
@@ -204,21 +205,23 @@ class RecordPage implements View {
     }
   }
 
+  /** Another stretch is shown: what is known of it stands there already, more is asked for. */
   async #detail(range: Range | null): Promise<void> {
     const curve = this.#source.curve;
     if (curve === null) return;
-    this.#figure.busy(true);
-    try {
-      const time = range === null ? null : timeOf(traceOf("", curve, this.#against), range);
-      const points = this.#figure.points;
-      const fresh = time === null ? await this.#source.whole(points) : await this.#source.stretch(time, points);
-      // If not, a later question is under way.
-      if (!fresh) return;
+    if (range === null) {
+      this.#source.forget();
       this.#draw();
-    } catch (error) {
-      this.#fail(error);
+      return;
     }
-    this.#figure.busy(false);
+    await this.#figure.whileBusy(async () => {
+      try {
+        const time = timeOf(traceOf("", curve, this.#against), range);
+        if (await this.#source.stretch(time, this.#figure.points)) this.#draw();
+      } catch (error) {
+        this.#fail(error);
+      }
+    });
   }
 
   #draw(): void {

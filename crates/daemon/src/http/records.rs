@@ -10,7 +10,7 @@ use axum::extract::{Path, State};
 use axum::http::{HeaderMap, header};
 use axum::response::{IntoResponse, Response};
 use columnar::export_parquet;
-use journal::{Grain, Record, export_csv, thin};
+use journal::{Grain, Record, export_csv};
 use quantity::{HostTime, Span};
 use serde::Deserialize;
 use tokio::runtime::Handle;
@@ -24,6 +24,7 @@ use super::problem::aside;
 use crate::app::App;
 use crate::figures_file;
 use crate::records::started;
+use crate::sketch::Look;
 use crate::view::{
     Code, ComparisonView, CourseView, CurveView, EndingWord, FiguresView, Problem, ReadingsView,
     RecordList, RecordSummary, RecordView, VerifyView,
@@ -188,12 +189,10 @@ pub(super) async fn course(
 ) -> Result<Json<CourseView>, Problem> {
     let working = Arc::clone(&app);
     with_record(&app, &id, move |record, id| {
-        let course = working
-            .sketches
-            .with(record, |sketch| sketch.course().clone());
         let unreadable = |error: journal::JournalError| {
             Problem::new(Code::RecordUnreadable, format!("record {id}: {error}"))
         };
+        let course = working.sketches.course(record);
         course.map(Json).map_err(unreadable)
     })
     .await
@@ -222,33 +221,15 @@ fn thinned(
         .sinks
         .iter()
         .any(|sink| sink.view().run.is_some_and(|run| run.id == id));
-    let found = app.sketches.with(record, |sketch| {
-        let end = sketch
-            .last_at()
-            .unwrap_or(start)
-            .saturating_add(Span::from_micros(1));
-        let stretch = from.unwrap_or(start)..to.unwrap_or(end);
-        let length_s = end.saturating_since(start).seconds();
-        // Grains are fine enough while each point has two; where they are not, the stretch is
-        // short, and the record itself is read.
-        if sketch.grains_in(&stretch) as u64 >= u64::from(points) * 2 {
-            let grains = sketch.gather(&stretch, points);
-            return Ok((length_s, curve_of(&grains, start)));
-        }
-        let buckets = thin(record, stretch, points)?;
-        let charged = buckets.iter().map(|bucket| Grain {
-            bucket: *bucket,
-            charge: sketch.charge_at(bucket.first_at).unwrap_or_default(),
-        });
-        let grains: Vec<Grain> = charged.collect();
-        Ok((length_s, curve_of(&grains, start)))
-    });
-    let (length_s, curve) = found.and_then(|found| found).map_err(unreadable)?;
+    let Look { length, grains } = app
+        .sketches
+        .look(record, &(from..to), points)
+        .map_err(unreadable)?;
     Ok(ReadingsView {
         id,
         in_progress: running,
-        length_s,
-        curve,
+        length_s: length.seconds(),
+        curve: curve_of(&grains, start),
     })
 }
 

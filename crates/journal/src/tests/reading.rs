@@ -6,7 +6,7 @@ use sequencer::event::Happening;
 use wire::Counters;
 
 use super::fixture::{SMALL, START, ended, entry, manifest, reading, written};
-use crate::{Body, Entry, Options, Record, Writer, export_csv, thin};
+use crate::{Body, Entry, Near, Options, Record, Writer, export_csv, thin};
 
 #[test]
 fn columns_hold_the_same_as_entries() {
@@ -168,6 +168,68 @@ fn thinning_keeps_a_dip_that_one_readback_in_thousands_saw() {
             .all(|bucket| bucket.count == 1 && part.contains(&bucket.first_at))
     );
     assert_eq!(thin(&record, START..START, 10).expect("nothing asked"), []);
+}
+
+#[test]
+fn what_is_kept_of_a_record_answers_as_the_record_itself() {
+    let parent = tempfile::tempdir().expect("a folder");
+    let folder = parent.path().join("record");
+    let options = Options {
+        segment_bytes: 20_000,
+    };
+    let mut writer = Writer::create(&folder, manifest(), options).expect("room");
+    let at = |number: u64| START + Span::from_millis(number * 100);
+    let write = |writer: &mut Writer, numbers: std::ops::RangeInclusive<u64>| {
+        for number in numbers {
+            let body = Body::Event(Happening::Reading(reading(number)));
+            let at = at(number);
+            writer.append(&Entry { number, at, body }).expect("room");
+        }
+        writer.commit().expect("room");
+    };
+    let mut near = Near::default();
+    let mut check = |from: u64, to: u64| {
+        let record = Record::open(&folder).expect("a record");
+        for buckets in [1, 7, 400] {
+            let stretch = at(from)..at(to);
+            let kept = near
+                .thin(&record, &stretch, buckets)
+                .expect("a whole record");
+            let read = thin(&record, stretch, buckets).expect("a whole record");
+            assert_eq!(kept, read, "{buckets} buckets from {from} to {to}");
+        }
+    };
+    write(&mut writer, 1..=1_000);
+    check(900, 1_100);
+    // The segment that still grew is asked again.
+    write(&mut writer, 1_001..=2_000);
+    for (from, to) in [
+        (900, 1_100),
+        (1, 50),
+        (0, 2_000),
+        (30, 40),
+        (1_990, 2_500),
+        (7, 7),
+    ] {
+        check(from, to);
+    }
+    writer.seal(ended()).expect("room");
+    check(1_900, 2_100);
+    // A look at a segment that is kept reads nothing: its file may be gone.
+    let record = Record::open(&folder).expect("a record");
+    let mut near = Near::default();
+    let close = at(100)..at(120);
+    let read = near.thin(&record, &close, 20).expect("a whole record");
+    assert!(near.points() > 20);
+    for file in std::fs::read_dir(folder.join("journal")).expect("a folder") {
+        std::fs::remove_file(file.expect("a file").path()).expect("allowed");
+    }
+    let closer = at(105)..at(110);
+    assert_eq!(near.thin(&record, &close, 20).expect("kept"), read);
+    assert_eq!(near.thin(&record, &closer, 5).expect("kept").len(), 5);
+    assert!(near.thin(&record, &(at(1_500)..at(1_510)), 5).is_err());
+    near.clear();
+    assert!(near.thin(&record, &close, 20).is_err());
 }
 
 #[test]
