@@ -179,7 +179,7 @@ function make(route: Route): View {
     case "record":
       return recordView(route.id);
     case "compare":
-      return compareView(route.ids);
+      return compareView(route.groups);
   }
 }
 

@@ -29,8 +29,8 @@ pub use plan::{PlanStepView, PlannedMarginView, TemperaturesView};
 pub use problem::{Code, Problem};
 pub use reading::{ReadingView, StateWord};
 pub use record::{
-    ComparisonView, CourseView, DamageView, FiguresView, HappeningView, ReadingsView, RecordList,
-    RecordSummary, RecordView, StretchView, VerifyView,
+    ComparisonView, CourseView, DamageView, FiguresView, HappeningView, PeukertView, ReadingsView,
+    RecordList, RecordSummary, RecordView, StretchView, VerifyView,
 };
 pub use run::{
     ClockWord, CrossingView, EndingView, EndingWord, HandView, LoopView, RunList, RunState,

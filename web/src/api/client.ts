@@ -3,6 +3,7 @@
 
 import type {
   Check,
+  Comparison,
   Course,
   Figure,
   Off,
@@ -163,6 +164,11 @@ export const daemon = {
       ask<{ figures: { figures: Figure[]; warnings: string[] } }>("GET", at(id, "/figures")),
     );
     return answer.figures;
+  },
+  comparison: (groups: readonly { name: string; ids: readonly string[] }[]): Promise<Comparison> => {
+    // What parts groups and records in the question cannot be in a name.
+    const text = groups.map(({ name, ids }) => `${name.replaceAll(/[:;,]/g, " ")}:${ids.join(",")}`).join(";");
+    return inTurn(() => ask("GET", `/v1/comparison?${new URLSearchParams({ groups: text }).toString()}`));
   },
   readings: (id: string, stretch: Stretch, signal: AbortSignal): Promise<Readings> => {
     const query = new URLSearchParams({ points: String(stretch.points) });

@@ -264,3 +264,50 @@ export interface Figure {
   expanded: { half_width: number; coverage_factor: number; probability: number } | null;
   method: { how: string; source: string };
 }
+
+/** One figure in one group of records. */
+export interface Group {
+  name: string;
+  /** The records and their values. */
+  values: [string, number][];
+  mean: number;
+  standard_deviation: number | null;
+  interval: [number, number] | null;
+  /** Standard uncertainty of measuring one value. */
+  measurement: number | null;
+  outliers: string[];
+  notes: string[];
+}
+
+/** The mean of the group `of` less that of the group `from`. */
+export interface Difference {
+  from: string;
+  of: string;
+  difference: number;
+  standard_error: number;
+  degrees_of_freedom: number;
+  interval: [number, number];
+  /** How probable so large a difference is if there is none. */
+  probability: number;
+  measurement: number | null;
+}
+
+export interface Compared {
+  name: string;
+  label: string | null;
+  unit: string;
+  groups: Group[];
+  differences: Difference[];
+}
+
+export interface Comparison {
+  comparison: { figures: Compared[]; probability: number; methods: string[] };
+  peukert: {
+    group: string;
+    law: {
+      exponent: { value: number; standard_uncertainty: number };
+      capacity_at_one_ampere_ah: number;
+      discharges: [number, number][];
+    };
+  }[];
+}

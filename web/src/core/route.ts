@@ -6,7 +6,13 @@ export type Route =
   | { view: "sequence" }
   | { view: "records" }
   | { view: "record"; id: string }
-  | { view: "compare"; ids: string[] };
+  | { view: "compare"; groups: Grouped[] };
+
+/** Records under a name; without one, whoever compares them finds the groups. */
+export interface Grouped {
+  name: string;
+  ids: string[];
+}
 
 const ID = /^[0-9a-f-]{36}$/;
 
@@ -20,8 +26,8 @@ export function parse(hash: string): Route {
     case "record":
       return rest !== undefined && ID.test(rest) ? { view: "record", id: rest } : { view: "records" };
     case "compare": {
-      const ids = (rest ?? "").split(",").filter((id) => ID.test(id));
-      return ids.length > 0 ? { view: "compare", ids } : { view: "records" };
+      const groups = (rest ?? "").split(";").map(grouped).filter(({ ids }) => ids.length > 0);
+      return groups.length > 0 ? { view: "compare", groups } : { view: "records" };
     }
     default:
       return { view: "bench" };
@@ -35,9 +41,22 @@ export function link(route: Route): string {
     case "record":
       return `#/record/${route.id}`;
     case "compare":
-      return `#/compare/${route.ids.join(",")}`;
+      return `#/compare/${route.groups.map(({ name, ids }) => (name === "" ? "" : `${encodeURIComponent(name)}:`) + ids.join(",")).join(";")}`;
     case "sequence":
     case "records":
       return `#/${route.view}`;
+  }
+}
+
+function grouped(text: string): Grouped {
+  const [name, ids] = text.includes(":") ? text.split(":", 2) : ["", text];
+  return { name: decoded(name ?? ""), ids: (ids ?? "").split(",").filter((id) => ID.test(id)) };
+}
+
+function decoded(text: string): string {
+  try {
+    return decodeURIComponent(text);
+  } catch {
+    return text;
   }
 }

@@ -7,7 +7,7 @@ let choices = 0;
 export function choice<T extends string>(
   name: string,
   options: readonly [T, string][],
-  first: T,
+  first: T | null,
   chosen: (value: T) => void,
 ): HTMLElement {
   choices += 1;

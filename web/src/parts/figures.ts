@@ -1,31 +1,11 @@
 // Figures of a record, each with its uncertainty and its method.
 
 import type { Figure } from "../api/types.ts";
-import { fixed, significant } from "../core/format.ts";
+import { nameOf, valueOf } from "../core/figures.ts";
 import { h } from "../dom.ts";
 
-const UNITS: Record<string, string> = { ohm: "Ω", degC: "°C", "1": "" };
 /** Figures shown at once: a record of pulses has hundreds, and the report has all. */
 export const FIGURES_MAX = 40;
-
-export const unitOf = (unit: string): string => UNITS[unit] ?? unit;
-
-/** What a figure is of, with the step it belongs to. */
-export function nameOf(figure: Figure): string {
-  const name = figure.name.replaceAll("_", " ");
-  const label = figure.label ? `, ${figure.label}` : "";
-  const which = figure.occurrence ? ` ${figure.occurrence}` : "";
-  return name.charAt(0).toUpperCase() + name.slice(1) + label + which;
-}
-
-/** Value and expanded uncertainty, to two digits of the uncertainty (JCGM 100, 7.2.6). */
-export function valueOf(figure: Figure): string {
-  const unit = unitOf(figure.unit);
-  const { expanded } = figure;
-  if (!expanded || !(expanded.half_width > 0)) return `${significant(figure.value, 5)} ${unit}`;
-  const digits = Math.min(9, Math.max(0, 1 - Math.floor(Math.log10(expanded.half_width))));
-  return `${fixed(figure.value, digits)} ± ${fixed(expanded.half_width, digits)} ${unit}`;
-}
 
 export function figuresTable(figures: readonly Figure[], warnings: readonly string[]): HTMLElement {
   const rows = figures.slice(0, FIGURES_MAX).map((figure) =>

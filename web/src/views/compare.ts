@@ -1,20 +1,19 @@
-// Two or more records in one plot, and their figures side by side.
+// Two or more records in one plot, their figures side by side, and what groups of them show.
 
 import { daemon } from "../api/client.ts";
 import type { Figure as FigureOf, RecordSummary } from "../api/types.ts";
 import { type Against, type Range, timeOf, traceOf } from "../core/curve.ts";
-import { moment } from "../core/format.ts";
+import { cautions } from "../core/groups.ts";
 import { namesOf } from "../core/records.ts";
-import { link } from "../core/route.ts";
-import { h, reasonOf, write } from "../dom.ts";
+import { type Grouped, link } from "../core/route.ts";
+import { attribute, h, reasonOf, show, write } from "../dom.ts";
 import { choice } from "../parts/choice.ts";
-import { nameOf, valueOf } from "../parts/figures.ts";
+import { FIRST, contrasts } from "../parts/contrast.ts";
+import { groupsOf } from "../parts/groups.ts";
+import { sideBySide } from "../parts/side_by_side.ts";
 import { Figure } from "../plot/figure.ts";
 import { Source } from "../plot/source.ts";
 import type { View } from "../view.ts";
-
-/** Figures that make sense side by side without more ado. */
-const SHOWN = ["capacity", "energy", "mean_voltage", "delivered_charge", "duration", "dc_resistance", "peak_temperature"];
 
 interface One {
   summary: RecordSummary;
@@ -22,11 +21,15 @@ interface One {
   source: Source;
 }
 
-export function compareView(ids: readonly string[]): View {
+export function compareView(given: readonly Grouped[]): View {
   let against: Against = "charge";
   let all: One[] = [];
+  let asked = 0;
   const said = h("p", { class: "quiet", role: "status" }, "Reading the records …");
-  const list = h("ul", { class: "compared" });
+  const chosen = h("div");
+  const shown = h("section", { "aria-labelledby": "shown", hidden: true }, h("h3", { id: "shown" }, "What the groups show"));
+  const statistics = h("div", { "aria-live": "polite" });
+  shown.append(statistics);
   const table = h("div");
   const figure = new Figure("Voltage, current and heat sink temperature of the records", ["voltage", "current", "temperature"], (range) =>
     void detail(range),
@@ -35,7 +38,6 @@ export function compareView(ids: readonly string[]): View {
     "main",
     { id: "main", tabindex: -1 },
     h("h2", {}, "Compared"),
-    list,
     h(
       "div",
       { class: "controls" },
@@ -46,6 +48,8 @@ export function compareView(ids: readonly string[]): View {
     ),
     said,
     figure.element,
+    chosen,
+    shown,
     table,
   );
 
@@ -75,52 +79,50 @@ export function compareView(ids: readonly string[]): View {
 
   async function load(): Promise<void> {
     try {
+      const ids = given.flatMap((group) => group.ids);
       const summaries = await Promise.all(ids.map(async (id) => (await daemon.record(id)).summary));
       const names = namesOf(summaries);
       all = summaries.map((summary, index) => ({ summary, name: names[index] ?? summary.dut, source: new Source(summary.id) }));
-      list.replaceChildren(
-        ...all.map(({ summary, name }) =>
-          h("li", {}, h("a", { href: link({ view: "record", id: summary.id }) }, name), ` ${summary.title}, ${summary.sink}, ${moment(new Date(summary.started))}`),
-        ),
-      );
+      const groups = groupsOf(summaries, names, given, () => {
+        const now = groups.now();
+        // The address says it, and can be sent to a colleague.
+        history.replaceState(null, "", link({ view: "compare", groups: now }));
+        void compare(now);
+      });
+      chosen.replaceChildren(groups.element);
       await Promise.all(all.map(({ source }) => source.whole(figure.points)));
       write(said, "");
       draw();
-      await figures();
+      await Promise.all([compare(groups.now()), figures()]);
     } catch (error) {
       write(said, reasonOf(error));
     }
+  }
+
+  async function compare(groups: readonly Grouped[]): Promise<void> {
+    asked += 1;
+    const mine = asked;
+    show(shown, true);
+    attribute(shown, "aria-busy", "true");
+    const summaries = all.map(({ summary }) => summary);
+    let content: HTMLElement;
+    try {
+      const name = (id: string): string => all.find(({ summary }) => summary.id === id)?.name ?? id;
+      content = contrasts(await daemon.comparison(groups), { name, oneSink: new Set(summaries.map(({ sink }) => sink)).size === 1 });
+    } catch (error) {
+      content = h("p", { class: "note" }, reasonOf(error));
+    }
+    if (mine !== asked) return;
+    statistics.replaceChildren(...cautions(groups, summaries).map((text) => h("p", { class: "note" }, text)), content);
+    attribute(shown, "aria-busy", null);
   }
 
   async function figures(): Promise<void> {
     const found = await Promise.all(
       all.map(({ summary }) => daemon.figures(summary.id).then((one) => one.figures, () => [] as FigureOf[])),
     );
-    const names = [...new Set(found.flat().filter(({ name }) => SHOWN.includes(name)).map(nameOf))];
-    if (names.length === 0) return;
-    const cell = (figures: readonly FigureOf[], name: string): string => {
-      const figure = figures.find((one) => nameOf(one) === name);
-      return figure ? valueOf(figure) : "–";
-    };
-    table.replaceChildren(
-      h("h3", {}, "Figures side by side"),
-      h(
-        "div",
-        { class: "scroll", tabindex: 0, role: "region", "aria-label": "Figures side by side" },
-        h(
-          "table",
-          {},
-          h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "Figure, with 95 %"), ...all.map(({ name }) => h("th", { scope: "col", class: "number" }, name)))),
-          h(
-            "tbody",
-            {},
-            ...names.map((name) =>
-              h("tr", {}, h("th", { scope: "row" }, name), ...found.map((figures) => h("td", { class: "figures number" }, cell(figures, name)))),
-            ),
-          ),
-        ),
-      ),
-    );
+    const made = sideBySide(all.map(({ name }) => name), found, FIRST);
+    if (made) table.replaceChildren(made);
   }
 
   void load();

@@ -83,7 +83,7 @@ export function recordsView(): View {
   function drawCompare(): void {
     const ids = all.filter(({ id }) => picked.has(id)).map(({ id }) => id);
     write(compare, ids.length < 2 ? "Choose two or more to compare" : `Compare ${ids.length} records`);
-    attribute(compare, "href", ids.length < 2 ? null : link({ view: "compare", ids }));
+    attribute(compare, "href", ids.length < 2 ? null : link({ view: "compare", groups: [{ name: "", ids }] }));
     attribute(compare, "role", ids.length < 2 ? "link" : null);
     attribute(compare, "aria-disabled", ids.length < 2 ? "true" : null);
   }

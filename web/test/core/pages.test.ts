@@ -14,7 +14,8 @@ test("every place has an address that leads back to it", () => {
     { view: "sequence" },
     { view: "records" },
     { view: "record", id: ID },
-    { view: "compare", ids: [ID, ID.replace("0", "1")] },
+    { view: "compare", groups: [{ name: "", ids: [ID, ID.replace("0", "1")] }] },
+    { view: "compare", groups: [{ name: "K: cold, 5/6", ids: [ID] }, { name: "M;1", ids: [ID.replace("0", "1")] }] },
   ];
   for (const route of routes) assert.deepEqual(parse(link(route)), route);
 });

@@ -26,8 +26,8 @@ use crate::figures_file;
 use crate::records::started;
 use crate::sketch::Look;
 use crate::view::{
-    Code, ComparisonView, CourseView, CurveView, EndingWord, FiguresView, Problem, ReadingsView,
-    RecordList, RecordSummary, RecordView, VerifyView,
+    Code, ComparisonView, CourseView, CurveView, EndingWord, FiguresView, PeukertView, Problem,
+    ReadingsView, RecordList, RecordSummary, RecordView, VerifyView,
 };
 
 /// Points unless said.
@@ -466,7 +466,14 @@ pub(super) async fn comparison(
         }
         groups.push((name, records));
     }
+    // Records at one rate, or without a cut-off, are no fault: they have no exponent.
+    let peukert = groups.iter().filter_map(|(name, records)| {
+        let law = figures::peukert(records).ok()?;
+        let group = (*name).to_owned();
+        Some(PeukertView { group, law })
+    });
     Ok(Json(ComparisonView {
+        peukert: peukert.collect(),
         comparison: figures::compare(&groups),
     }))
 }

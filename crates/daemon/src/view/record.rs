@@ -128,6 +128,18 @@ pub struct ComparisonView {
     /// Figure by figure: what the groups show, and their differences.
     #[schema(value_type = Object)]
     pub comparison: figures::Comparison,
+    /// Peukert's exponent of every group whose discharges to the cut-off are at different rates.
+    pub peukert: Vec<PeukertView>,
+}
+
+/// Peukert's exponent of a group.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct PeukertView {
+    /// The group's name.
+    pub group: String,
+    /// What its discharges show.
+    #[schema(value_type = Object)]
+    pub law: figures::Peukert,
 }
 
 /// Figures of a record.

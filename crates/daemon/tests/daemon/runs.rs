@@ -210,6 +210,8 @@ fn a_report_is_a_page_and_groups_of_records_are_compared() {
         .find(|figure| figure["name"] == "delivered_charge")
         .unwrap();
     assert_eq!(charge["groups"].as_array().unwrap().len(), 2);
+    // Discharges that no cut-off ended have no exponent.
+    assert!(compared["peukert"].as_array().unwrap().is_empty());
     let none = desk.get("/v1/comparison?groups=K");
     assert_eq!(none.code(), "query-unreadable");
 }
