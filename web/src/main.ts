@@ -1,7 +1,7 @@
 // The page: keeps what is known of the bench, shows one view of it at a time, and the way to
 // turn everything off at any time.
 
-import { daemon } from "./api/client.ts";
+import { Unreachable, daemon } from "./api/client.ts";
 import { follow } from "./api/stream.ts";
 import type { LinkEvent, RunEvent, Sink } from "./api/types.ts";
 import * as fold from "./core/bench.ts";
@@ -107,21 +107,30 @@ function drawContact(): void {
 }
 setInterval(() => bench.contact.state === "lost" && drawContact(), 1000);
 
-/** Between two glances at the bench while nobody looks: the tab's title still tells of a trip. */
+/** Between two glances at the bench while nobody looks: the tab's title still tells of a trip, and
+ * of a daemon that is gone. */
 const GLANCE_MS = 15_000;
-setInterval(() => document.visibilityState === "hidden" && void askAnew(), GLANCE_MS);
+setInterval(() => document.visibilityState === "hidden" && void glance(), GLANCE_MS);
+
+async function glance(): Promise<void> {
+  try {
+    await askAnew();
+    turn(fold.contactMade(bench));
+  } catch (error) {
+    if (error instanceof Unreachable) turn(fold.contactLost(bench, Date.now()));
+  }
+  // A page out of sight draws nothing, bar its title.
+  drawTitle();
+}
 
 async function askAnew(): Promise<void> {
-  try {
-    const [list, runs] = await Promise.all([daemon.sinks(), daemon.runs()]);
-    bench = fold.asked(bench, list, runs);
-    // Nothing is drawn while nobody looks, bar the title.
-    drawTitle();
-    draw();
-  } catch {
-    // The stream's own loss says it; it comes back with everything.
-  }
+  const [list, runs] = await Promise.all([daemon.sinks(), daemon.runs()]);
+  bench = fold.asked(bench, list, runs);
+  draw();
 }
+
+/** The same where the stream stands, whose own loss says it if there is no answer. */
+const catchUp = (): Promise<void> => askAnew().catch(() => undefined);
 
 function heard(message: Message): void {
   switch (message.event) {
@@ -137,7 +146,7 @@ function heard(message: Message): void {
     case "link":
       return turn(fold.linkHeard(bench, message.id, JSON.parse(message.data) as LinkEvent));
     case "gone":
-      return void askAnew();
+      return void catchUp();
   }
 }
 
@@ -160,7 +169,7 @@ async function endedRun(id: string): Promise<void> {
 follow({
   open(resumed) {
     turn(fold.contactMade(bench));
-    if (!resumed) void askAnew();
+    if (!resumed) void catchUp();
   },
   message: heard,
   lost() {
