@@ -13,8 +13,8 @@ use sequencer::event::Happening;
 use wire::{Counters, Readback, Reading, SinkState, TemperatureReading};
 
 use crate::record::ReadSegment;
-use crate::segment::Reader;
-use crate::{Body, Damage, Entry, JournalError, LineFault, Record, compact, layout, line};
+use crate::segment::{self, Expected, Reader};
+use crate::{Body, Damage, Entry, JournalError, LineFault, Record, compact, layout, line, packed};
 
 /// Segments a thread may have ready before they are taken.
 const AHEAD: usize = 1;
@@ -252,7 +252,7 @@ impl Chunks {
                 },
             }));
         }
-        self.next_number = decoded.next_number.or(self.next_number);
+        self.next_number = decoded.next_number;
         Ok(decoded.chunk)
     }
 }
@@ -268,6 +268,7 @@ struct Decoded {
     file: String,
     /// The number of its first entry; unknown if not even its first line held.
     first: Option<u64>,
+    /// The number that the next segment must begin with; unknown where only an extract was read.
     next_number: Option<u64>,
     chunk: Chunk,
 }
@@ -316,7 +317,12 @@ fn decode(record: &Record, job: Job) -> Result<Decoded, JournalError> {
         ..Chunk::default()
     };
     let base = reader.header().at;
+    let mut extracted = segment.first_line().to_vec();
     while let Some(line) = reader.next_line() {
+        if packed::is_extracted(line.bytes) {
+            extracted.extend_from_slice(line.bytes);
+            extracted.push(b'\n');
+        }
         if let Err(fault) = take(&mut reader, line, base, &mut chunk) {
             let why = line.damage(reader.file(), fault);
             if job.open_ended && reader.whole_lines_left() == 0 {
@@ -326,6 +332,7 @@ fn decode(record: &Record, job: Job) -> Result<Decoded, JournalError> {
             return Err(JournalError::Damaged(why));
         }
     }
+    segment.check_extract(&extracted)?;
     let next_number = Some(reader.next_number());
     Ok(Decoded {
         file: reader.file().to_owned(),
@@ -335,30 +342,52 @@ fn decode(record: &Record, job: Job) -> Result<Decoded, JournalError> {
     })
 }
 
-/// The same without the readbacks.
+/// The same without the readbacks: from the extract where there is one.
 fn others_of(record: &Record, job: Job) -> Result<Decoded, JournalError> {
-    let segment = ReadSegment::load(&layout::journal(record.folder()), job.segment)?;
-    let expected = segment.expected(&record.manifest().record, None);
+    if let Some(decoded) = others_of_extract(record, job)? {
+        return Ok(decoded);
+    }
+    let mut decoded = decode(record, job)?;
+    decoded.chunk.readings = Readings::default();
+    Ok(decoded)
+}
+
+/// `None` where the whole text has to be read. What is missing from an extract is found by whoever
+/// reads the text.
+fn others_of_extract(record: &Record, job: Job) -> Result<Option<Decoded>, JournalError> {
+    let journal = layout::journal(record.folder());
+    let Some((file, lines)) = segment::load_extract(&journal, job.segment)? else {
+        return Ok(None);
+    };
+    let expected = Expected {
+        record: Some(&record.manifest().record),
+        segment: job.segment,
+        first: None,
+    };
+    let Ok(mut reader) = Reader::open(&file, &lines, &expected) else {
+        return Ok(None);
+    };
+    let first = Some(reader.header().first);
     let mut chunk = Chunk::default();
-    let others = &mut chunk.others;
-    let read = segment.read(&expected, job.open_ended, true, |entry| others.push(entry))?;
-    chunk.tail = read.tail;
-    let reader = segment.reader(&expected).ok();
-    Ok(Decoded {
-        file: reader
-            .as_ref()
-            .map_or_else(String::new, |reader| reader.file().to_owned()),
-        first: reader.as_ref().map(|reader| reader.header().first),
-        next_number: reader.is_some().then_some(read.next_number),
+    while let Some(entry) = reader.next_extracted() {
+        let Ok(entry) = entry else { return Ok(None) };
+        if entry.reading().is_none() {
+            chunk.others.push(entry);
+        }
+    }
+    Ok(Some(Decoded {
+        file,
+        first,
+        next_number: None,
         chunk,
-    })
+    }))
 }
 
 /// Takes one line into the chunk.
 #[inline]
 fn take(
     reader: &mut Reader<'_>,
-    line: crate::segment::Line<'_>,
+    line: segment::Line<'_>,
     base: HostTime,
     chunk: &mut Chunk,
 ) -> Result<(), LineFault> {

@@ -118,7 +118,7 @@ impl Damage {
     pub(crate) fn is_cut_off(&self) -> bool {
         match self.fault {
             LineFault::Unfinished | LineFault::Checksum { .. } => true,
-            LineFault::Form(_) | LineFault::Number { .. } => false,
+            LineFault::Form(_) | LineFault::Number { .. } | LineFault::Extract => false,
         }
     }
 }

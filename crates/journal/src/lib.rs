@@ -33,6 +33,7 @@ mod layout;
 mod line;
 mod manifest;
 mod near;
+mod packed;
 mod record;
 mod recovery;
 mod seal;

@@ -46,6 +46,9 @@ pub enum LineFault {
         /// The number in the line.
         found: u64,
     },
+    /// The lines of a compressed segment hold, but its extract is not what they give.
+    #[error("the extract in front of the text is not what its lines give")]
+    Extract,
 }
 
 /// Appends an entry as a line with its line end. `base` is the segment's own time.
@@ -150,15 +153,6 @@ pub(crate) fn decode(line: &[u8], base: HostTime) -> Result<Entry, LineFault> {
 pub(crate) fn decode_object<'de, T: Deserialize<'de>>(line: &'de [u8]) -> Result<T, LineFault> {
     check(line)?;
     serde_json::from_slice(line).map_err(|error| LineFault::Form(error.to_string()))
-}
-
-/// The number a line claims, without believing or reading the rest; for reports on damage.
-pub(crate) fn claimed_number(line: &[u8]) -> Option<u64> {
-    let rest = line
-        .strip_prefix(b"[")
-        .or_else(|| line.strip_prefix(b"{\"n\":"))?;
-    let length = rest.iter().take_while(|byte| byte.is_ascii_digit()).count();
-    std::str::from_utf8(rest.get(..length)?).ok()?.parse().ok()
 }
 
 #[derive(Serialize)]

@@ -7,8 +7,11 @@
 
 use std::path::{Path, PathBuf};
 
+use crate::packed::Extract;
 use crate::segment::{self, Expected, Reader};
-use crate::{Damage, Disk, Entry, JournalError, Manifest, Seal, Storage as _, checked, layout};
+use crate::{
+    Damage, Disk, Entry, JournalError, LineFault, Manifest, Seal, Storage as _, checked, layout,
+};
 
 /// A record opened for reading.
 #[derive(Debug, Clone)]
@@ -134,7 +137,7 @@ impl Entries {
         let expected = segment.expected(&self.record, self.next_number);
         let open_ended = self.open_ended && is_last;
         let mut entries = Vec::new();
-        let read = segment.read(&expected, open_ended, false, |entry| entries.push(entry))?;
+        let read = segment.read(&expected, open_ended, |entry| entries.push(entry))?;
         self.next_number = Some(read.next_number);
         self.tail = read.tail;
         Ok(entries)
@@ -205,7 +208,6 @@ impl ReadSegment {
         &self,
         expected: &Expected<'_>,
         open_ended: bool,
-        skip_readings: bool,
         mut take: impl FnMut(Entry),
     ) -> Result<ReadEnd, JournalError> {
         let (file, plain) = (self.loaded.file.as_str(), &self.loaded.plain);
@@ -221,12 +223,7 @@ impl ReadSegment {
             Err(why) => return Err(JournalError::Damaged(why)),
         };
         loop {
-            let entry = if skip_readings {
-                reader.next_but_readings()
-            } else {
-                reader.next_entry()
-            };
-            match entry {
+            match reader.next_entry() {
                 None => {
                     return Ok(ReadEnd {
                         next_number: reader.next_number(),
@@ -243,6 +240,26 @@ impl ReadSegment {
                 Some(Err(why)) => return Err(JournalError::Damaged(why)),
             }
         }
+    }
+
+    /// The text's first line, with its line end.
+    pub(crate) fn first_line(&self) -> &[u8] {
+        let mut lines = self.loaded.plain.split_inclusive(|byte| *byte == b'\n');
+        lines.next().unwrap_or_default()
+    }
+
+    /// Holds the extract against the lines of the text that belong into it.
+    pub(crate) fn check_extract(&self, lines: &[u8]) -> Result<(), JournalError> {
+        let holds = self.loaded.compressed.as_deref();
+        if holds.is_none_or(|packed| Extract::of(packed).agrees_with(lines)) {
+            return Ok(());
+        }
+        Err(JournalError::Damaged(Damage {
+            file: self.loaded.file.clone(),
+            line: 1,
+            offset: 0,
+            fault: LineFault::Extract,
+        }))
     }
 
     pub(crate) fn plain_len(&self) -> usize {

@@ -15,13 +15,9 @@ use quantity::HostTime;
 use serde::{Deserialize, Serialize};
 
 use crate::layout::{self, Named};
+use crate::packed::{self, Extract};
 use crate::storage::{Storage, replace};
 use crate::{Damage, Entry, FORMAT, JournalError, LineFault, compact, line};
-
-/// How hard closed segments are compressed: the library's own default.
-const COMPRESSION_LEVEL: i32 = 3;
-/// What a damaged compressed segment may claim to hold before it is not believed.
-const PLAIN_BYTES_MAX: u64 = 1 << 30;
 
 /// No first line is longer.
 const HEADER_BYTES_MAX: u64 = 1 << 16;
@@ -170,30 +166,15 @@ impl<'a> Reader<'a> {
         )
     }
 
-    /// As [`Reader::next_entry`], readbacks checked and counted but passed over.
-    pub(crate) fn next_but_readings(&mut self) -> Option<Result<Entry, Damage>> {
-        loop {
-            let line = self.lines.next()?;
-            if !line.bytes.starts_with(b"[") {
-                return Some(
-                    self.entry(&line)
-                        .map_err(|fault| line.damage(self.file, fault)),
-                );
-            }
-            if let Err(fault) = self.pass(&line) {
-                return Some(Err(line.damage(self.file, fault)));
-            }
-        }
-    }
-
-    fn pass(&mut self, line: &Line<'_>) -> Result<(), LineFault> {
-        if !line.whole {
-            return Err(LineFault::Unfinished);
-        }
-        line::check(line.bytes)?;
-        let number = line::claimed_number(line.bytes)
-            .ok_or_else(|| LineFault::Form("it has no number".into()))?;
-        self.count(number)
+    /// As [`Reader::next_entry`], for an extract: readbacks are missing between the lines.
+    pub(crate) fn next_extracted(&mut self) -> Option<Result<Entry, Damage>> {
+        let line = self.lines.next()?;
+        let entry = line::decode(line.bytes, self.header.at).and_then(|entry| {
+            self.next_number = self.next_number.max(entry.number);
+            self.count(entry.number)?;
+            Ok(entry)
+        });
+        Some(entry.map_err(|fault| line.damage(self.file, fault)))
     }
 
     fn entry(&mut self, line: &Line<'_>) -> Result<Entry, LineFault> {
@@ -409,7 +390,7 @@ pub(crate) fn load(
                 });
             }
             Ok(compressed) => {
-                let (plain, unreadable) = decompress(&compressed);
+                let (plain, unreadable) = packed::unpack(&compressed);
                 return Ok(Loaded {
                     file,
                     stored,
@@ -424,6 +405,26 @@ pub(crate) fn load(
     }
     let (path, error) = missing.unwrap_or((journal.to_path_buf(), io::ErrorKind::NotFound.into()));
     Err(JournalError::io("reading", &path, error))
+}
+
+/// A compressed segment's file and the lines in it that are no readbacks, without reading the
+/// others; `None` where there is no extract that holds, and the whole text has to be read.
+pub(crate) fn load_extract(
+    journal: &Path,
+    segment: u32,
+) -> Result<Option<(String, Vec<u8>)>, JournalError> {
+    // While both files are there, the plain one is the original.
+    if journal.join(Stored::Plain.name(segment)).exists() {
+        return Ok(None);
+    }
+    let file = Stored::Compressed.name(segment);
+    let path = journal.join(&file);
+    match Extract::load(&path) {
+        Ok(Extract::Lines(lines)) => Ok(Some((file, lines))),
+        Ok(Extract::Absent | Extract::Damaged) => Ok(None),
+        Err(error) if error.kind() == io::ErrorKind::NotFound => Ok(None),
+        Err(error) => Err(JournalError::io("reading", &path, error)),
+    }
 }
 
 /// Reads only a segment's first line; `None` if it does not hold.
@@ -452,33 +453,6 @@ pub(crate) fn peek(journal: &Path, segment: u32) -> Result<Option<Header>, Journ
     Ok(None)
 }
 
-/// The plain bytes, or what could be had of them and why not more.
-fn decompress(compressed: &[u8]) -> (Vec<u8>, Option<String>) {
-    let claimed = zstd::zstd_safe::get_frame_content_size(compressed)
-        .ok()
-        .flatten();
-    if let Some(size) = claimed.filter(|size| *size <= PLAIN_BYTES_MAX)
-        && let Ok(capacity) = usize::try_from(size)
-        && zstd::zstd_safe::find_frame_compressed_size(compressed) == Ok(compressed.len())
-        && let Ok(plain) = zstd::bulk::decompress(compressed, capacity)
-    {
-        return (plain, None);
-    }
-    // Slowly, then: what comes before the damage is wanted to say where it is.
-    let mut plain = Vec::new();
-    let why = match zstd::stream::read::Decoder::new(compressed) {
-        Ok(decoder) => {
-            let read = decoder.take(PLAIN_BYTES_MAX).read_to_end(&mut plain);
-            read.err().map_or_else(
-                || "the compressed file is not as it was written".to_owned(),
-                |error| format!("the compressed file cannot be read on: {error}"),
-            )
-        }
-        Err(error) => format!("the compressed file cannot be read: {error}"),
-    };
-    (plain, Some(why))
-}
-
 /// Compresses a closed segment: the compressed file is made durable and read back to the same
 /// bytes before the plain one goes.
 pub(crate) fn compress(
@@ -492,10 +466,12 @@ pub(crate) fn compress(
         .read(&plain_path)
         .map_err(|error| JournalError::io("reading", &plain_path, error))?;
     let failed = |error| JournalError::io("compressing", &compressed_path, error);
-    let compressed = pack(&plain).map_err(failed)?;
+    let compressed = packed::pack(&plain).map_err(failed)?;
     replace(storage, &compressed_path, &compressed).map_err(failed)?;
     let back = storage.read(&compressed_path).map_err(failed)?;
-    if decompress(&back) != (plain, None) {
+    if !Extract::of(&back).agrees_with(&packed::extract_of(&plain))
+        || packed::unpack(&back) != (plain, None)
+    {
         return Err(failed(io::Error::new(
             io::ErrorKind::InvalidData,
             "what was written does not read back as the same bytes",
@@ -507,11 +483,4 @@ pub(crate) fn compress(
     storage
         .sync_folder(journal)
         .map_err(|error| JournalError::io("flushing", journal, error))
-}
-
-fn pack(plain: &[u8]) -> io::Result<Vec<u8>> {
-    let mut compressor = zstd::bulk::Compressor::new(COMPRESSION_LEVEL)?;
-    compressor.include_checksum(true)?;
-    compressor.include_contentsize(true)?;
-    compressor.compress(plain)
 }

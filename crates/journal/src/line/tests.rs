@@ -6,7 +6,7 @@ use quantity::{Charge, Current, HostTime, SinkTime, Span, Voltage};
 use sequencer::event::{Crossing, Ending, Finding, Happening, Interlock};
 use wire::{OrderId, SinkState, TemperatureReading};
 
-use super::{LineFault, claimed_number, decode, encode};
+use super::{LineFault, decode, encode};
 use crate::tests::fixture::{START, any_reading, entry, order, reading};
 use crate::{Body, ClockAlignment, Entry, Note, Side};
 
@@ -281,13 +281,6 @@ fn a_checksum_that_holds_makes_no_entry_of_what_is_none() {
             "{content}"
         );
     }
-}
-
-#[test]
-fn the_number_of_a_damaged_line_can_still_be_told() {
-    assert_eq!(claimed_number(b"[412,77,"), Some(412));
-    assert_eq!(claimed_number(b"{\"n\":413,\"at\":1"), Some(413));
-    assert_eq!(claimed_number(b"garbage"), None);
 }
 
 proptest! {

@@ -152,18 +152,63 @@ fn a_rewritten_line_with_a_checksum_of_its_own_breaks_the_chain() {
     let path = folder.join("journal/000001.jsonl");
     let text = fs::read_to_string(&path).expect("a segment");
     let last = text.lines().last().expect("a line");
-    let mut forged = entry(crate::line::claimed_number(last.as_bytes()).expect("a number"));
-    forged.at += quantity::Span::from_micros(1);
     let header = text.lines().next().expect("a line");
     let base = crate::line::decode_object::<crate::segment::Header>(header.as_bytes())
         .expect("a first line")
         .at;
+    let mut forged = crate::line::decode(last.as_bytes(), base).expect("an entry");
+    forged.at += quantity::Span::from_micros(1);
     let mut bytes = text.as_bytes()[..text.len() - last.len() - 1].to_vec();
     crate::line::encode(&mut bytes, base, &forged);
     fs::write(&path, bytes).expect("room");
     let report = verify(&folder).expect("readable");
     assert_eq!(kinds(&report), [FindingKind::SegmentHash]);
     assert_eq!(report.findings[0].place.file, "journal/000001.jsonl");
+}
+
+#[test]
+fn an_extract_that_leaves_something_out_is_told() {
+    let parent = tempfile::tempdir().expect("a folder");
+    let folder = sealed(parent.path());
+    let path = folder
+        .join("journal")
+        .join(crate::layout::compressed_name(1));
+    let (text, why) = crate::packed::unpack(&fs::read(&path).expect("a segment"));
+    assert_eq!(why, None);
+    // The extract of another text, every line of which holds, in front of the true one.
+    let kept: Vec<u8> = text
+        .split_inclusive(|byte| *byte == b'\n')
+        .enumerate()
+        .filter(|(index, line)| *index == 0 || line.starts_with(b"["))
+        .flat_map(|(_, line)| line)
+        .copied()
+        .collect();
+    let frame_of = |packed: &[u8]| {
+        let length = u32::from_le_bytes(packed[4..8].try_into().expect("four bytes"));
+        8 + length as usize
+    };
+    let (false_one, true_one) = (
+        crate::packed::pack(&kept).expect("memory"),
+        crate::packed::pack(&text).expect("memory"),
+    );
+    let mut forged = false_one[..frame_of(&false_one)].to_vec();
+    forged.extend_from_slice(&true_one[frame_of(&true_one)..]);
+    fs::write(&path, forged).expect("room");
+
+    let report = verify(&folder).expect("readable");
+    assert!(
+        report.findings.iter().any(|finding| {
+            finding.place.file == "journal/000001.jsonl.zst" && finding.detail.contains("extract")
+        }),
+        "{report:?}"
+    );
+    let record = crate::Record::open(&folder).expect("a record");
+    let read: Result<Vec<_>, _> = record.chunks().expect("threads").collect();
+    assert!(
+        read.expect_err("it is altered")
+            .to_string()
+            .contains("extract")
+    );
 }
 
 #[test]

@@ -1,5 +1,7 @@
 //! Reading back.
 
+use std::fs;
+
 use expect_test::expect;
 use quantity::{Charge, SinkTime, Span, Voltage};
 use sequencer::event::Happening;
@@ -39,11 +41,33 @@ fn readbacks_can_be_passed_over() {
     let (folder, _writer) = written(parent.path(), 120, SMALL);
     let record = Record::open(&folder).expect("a record");
     let others = record.others().expect("a whole record");
-    let wanted: Vec<Entry> = (1..=120)
-        .map(entry)
-        .filter(|entry| entry.reading().is_none())
-        .collect();
-    assert_eq!(others, wanted);
+    assert_eq!(others, but_readings(120));
+}
+
+#[test]
+fn what_is_no_readback_is_told_by_the_extracts_alone() {
+    let parent = tempfile::tempdir().expect("a folder");
+    let (folder, writer) = written(parent.path(), 333, SMALL);
+    writer.seal(ended()).expect("room");
+    let journal = folder.join("journal");
+    for segment in crate::segment::list(&crate::Disk, &journal).expect("readable") {
+        // The text behind the extract is cut away: whoever needed it would fail.
+        let path = journal.join(crate::layout::compressed_name(segment));
+        let packed = fs::read(&path).expect("a segment");
+        let extract = crate::packed::Extract::of(&packed);
+        assert!(matches!(extract, crate::packed::Extract::Lines(_)));
+        let length = u32::from_le_bytes(packed[4..8].try_into().expect("four bytes"));
+        fs::write(&path, &packed[..8 + length as usize]).expect("room");
+    }
+    let record = Record::open(&folder).expect("a record");
+    assert_eq!(record.others().expect("extracts"), but_readings(333));
+    let read: Result<Vec<_>, _> = record.chunks().expect("threads").collect();
+    assert!(read.is_err());
+}
+
+fn but_readings(entries: u64) -> Vec<Entry> {
+    let all = (1..=entries).map(entry);
+    all.filter(|entry| entry.reading().is_none()).collect()
 }
 
 #[test]

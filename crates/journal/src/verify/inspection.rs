@@ -3,6 +3,7 @@
 use std::path::Path;
 
 use super::{Finding, FindingKind, in_journal};
+use crate::packed::{self, Extract};
 use crate::segment::{self, Expected, Loaded, Reader};
 use crate::{Disk, JournalError, LineFault, checksum};
 
@@ -109,7 +110,10 @@ impl Inspection {
                     reader.go_on_after(found);
                     FindingKind::Numbers
                 }
-                LineFault::Unfinished | LineFault::Checksum { .. } | LineFault::Form(_) => {
+                LineFault::Unfinished
+                | LineFault::Checksum { .. }
+                | LineFault::Form(_)
+                | LineFault::Extract => {
                     reader.go_on_after(reader.next_number());
                     FindingKind::Line
                 }
@@ -129,6 +133,20 @@ impl Inspection {
         self.next_number = Some(reader.next_number());
         let (line, offset) = reader.place();
         self.unreadable(loaded, offset, line);
+        self.extract(loaded);
+    }
+
+    /// Holds the extract of a compressed file against its text.
+    fn extract(&mut self, loaded: &Loaded) {
+        let agrees = loaded.compressed.as_deref().is_none_or(|packed| {
+            Extract::of(packed).agrees_with(&packed::extract_of(&loaded.plain))
+        });
+        if !agrees && loaded.unreadable.is_none() {
+            let file = in_journal(&self.file);
+            let detail = LineFault::Extract.to_string();
+            self.findings
+                .push(Finding::of_file(FindingKind::Compressed, &file, detail));
+        }
     }
 
     /// Tells where a compressed file could not be read on.
