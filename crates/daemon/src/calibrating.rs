@@ -379,7 +379,8 @@ pub(crate) async fn take(
             let detail = "another reading of this point has just been taken";
             return Err(Problem::new(Code::NotRunning, detail));
         };
-        known.points.take(set, &read, latest);
+        let tick = sink.entry.front_end.tick;
+        known.points.take(set, &read, latest, tick);
         known.setpoint().map(|nominal| known.current_of(nominal).0)
     };
     let wanted = SetpointRequest {

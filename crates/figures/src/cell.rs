@@ -14,6 +14,7 @@ use serde_json::Value;
 
 use crate::cell_fit::{Mean, Pulse, put_together};
 use crate::charge::Amount;
+use crate::contribution::End;
 use crate::figure::Rows;
 use crate::least_squares::{Fitted, number};
 use crate::look::is_model_pulse;
@@ -289,7 +290,7 @@ impl Workbench<'_> {
     /// Standard uncertainty of all charge delivered, ampere hour.
     fn whole_charge_u(&self) -> f64 {
         let together = self.together_of(|_, stage| stage.draws());
-        let combined = self.charge_budget(&together, 0.0).combined();
+        let combined = self.charge_budget(&together, End::default()).combined();
         combined.map_or(0.0, |combined| combined.standard_uncertainty)
     }
 

@@ -334,6 +334,7 @@ impl Source {
                 gain: standard(error.of_reading.0.fraction()),
                 correlation: 1.0,
             },
+            shape: error.stated.shape(),
             ..Self::type_b(name, 0.0, 0.0)
         }
     }
@@ -412,10 +413,7 @@ fn of_meter<T: Textual + Quantity>(name: &'static str, meter: &ReferenceMeter<T>
             gain: of_reading,
             correlation: 1.0,
         },
-        shape: match meter.stated {
-            Stated::Rectangular => Shape::Rectangular,
-            Stated::Triangular | Stated::ArcSine | Stated::Normal { .. } => Shape::Normal,
-        },
+        shape: meter.stated.shape(),
         ..Source::type_b(name, 0.0, 0.0)
     }
 }

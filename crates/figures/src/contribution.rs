@@ -15,20 +15,19 @@ pub(crate) struct Conditions {
     pub(crate) per_ampere: f64,
     /// How much of the figure's unit a steady volt would have added; `None` for a charge.
     pub(crate) per_volt: Option<f64>,
-    /// Uncertainty of the end, in the figure's unit: the cut-off instant, where the voltage
-    /// enters by it alone.
-    pub(crate) cut_off: f64,
-    /// The cut-off where the voltage enters by more.
+    /// The cut-off that ended it.
     pub(crate) end: End,
     /// What a bent correction may hide, at most, in the figure's unit.
     pub(crate) hidden: f64,
 }
 
-/// What a cut-off does to an energy.
+/// What a cut-off does to a charge or an energy; nothing where there was none.
 #[derive(Debug, Clone, Copy, Default)]
 pub(crate) struct End {
     /// The cut-off voltage, volt.
     pub(crate) volts: f64,
+    /// The current there, ampere.
+    pub(crate) amperes: f64,
     /// How much more of the figure's unit a volt read too high lets through before the cut-off.
     pub(crate) per_volt: f64,
 }
@@ -36,9 +35,9 @@ pub(crate) struct End {
 /// The budget of a charge, `Q = a T + b Q_nominal`, or of an energy.
 pub(crate) fn of_delivery(instrument: &Instrument, time_base: TimeBase, of: &Conditions) -> Budget {
     let mut lines = instrument.current.over(of.per_ampere, of.value);
+    let end = of.end;
     if let Some(per_volt) = of.per_volt {
         // A voltage read too high counts too much energy, and ends too late as well.
-        let end = of.end;
         lines.extend(
             instrument
                 .voltage
@@ -47,13 +46,21 @@ pub(crate) fn of_delivery(instrument: &Instrument, time_base: TimeBase, of: &Con
         if of.per_ampere > 0.0 {
             // A steady ohm would have added the mean current times the charge.
             let amperes = of.value / of.per_ampere;
-            lines.extend(of_leads(instrument, amperes * per_volt));
+            let per_ohm = amperes * per_volt + end.amperes * end.per_volt;
+            lines.extend(of_leads(instrument, per_ohm));
         }
+    } else {
+        // Each of the voltage's errors by itself: one that is a bound stays one.
+        let voltage = instrument
+            .voltage
+            .over(end.per_volt, end.volts * end.per_volt);
+        let leads = of_leads(instrument, end.amperes * end.per_volt);
+        lines.extend(voltage.into_iter().chain(leads).map(|line| Contribution {
+            name: format!("cut-off instant: {}", line.name),
+            ..line
+        }));
     }
     lines.push(clocks((of.value * time_base.uncertainty).abs()));
-    if of.cut_off > 0.0 {
-        lines.push(stated("cut-off instant", of.cut_off));
-    }
     if of.hidden > 0.0 {
         lines.push(bounded("bend and leads within steps", of.hidden));
     }

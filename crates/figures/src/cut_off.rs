@@ -16,8 +16,10 @@ const SOURCE: &str = "IEC 61960-3, discharge performance (from memory): time to 
 /// Where a stage reached its cut-off.
 struct CutOff {
     amount: Amount,
-    uncertainty_ah: f64,
-    end: End,
+    /// What it does to the charge.
+    charge: End,
+    /// What it does to the energy.
+    energy: End,
 }
 
 impl Workbench<'_> {
@@ -52,7 +54,7 @@ impl Workbench<'_> {
             Name::Capacity,
             None,
             (together.amount.charge_ah, Unit::AmpereHour),
-            self.charge_budget(&together, cut_off.uncertainty_ah),
+            self.charge_budget(&together, cut_off.charge),
             method,
             rows,
         ));
@@ -60,14 +62,14 @@ impl Workbench<'_> {
             Name::Energy,
             None,
             (together.amount.energy_wh, Unit::WattHour),
-            self.energy_budget(&together, cut_off.end),
+            self.energy_budget(&together, cut_off.energy),
             method,
             rows,
         ));
     }
 
     /// What the stage delivered up to the instant at which the voltage crossed, and how well
-    /// that instant is known: `I u(V) / |dV/dt|`.
+    /// that instant is known: by `u(V) / |dV/dt|`.
     fn cut_off(&self, index: usize) -> Option<CutOff> {
         let stage = self.stages.get(index)?;
         let delivered = self.walked.get(index)?;
@@ -98,10 +100,11 @@ impl Workbench<'_> {
         let correction = &self.plan.correction;
         let whole =
             Amount::between(begin, end, correction, self.time_base).hiding(delivered, correction);
-        let leads = self.instrument.leads_ohm * current;
-        let standard = self.instrument.voltage.standard(limit.volts()).hypot(leads);
-        let instant_s = standard / slope.abs();
-        let power = current * limit.volts();
+        let charge = End {
+            volts: limit.volts(),
+            amperes: current,
+            per_volt: current / slope.abs() / 3600.0,
+        };
         let beyond_v = limit.volts() - 0.5 * slope * beyond_s;
         Some(CutOff {
             amount: Amount {
@@ -110,10 +113,10 @@ impl Workbench<'_> {
                 seconds: whole.seconds - beyond_s,
                 ..whole
             },
-            uncertainty_ah: current * instant_s / 3600.0,
-            end: End {
-                volts: limit.volts(),
-                per_volt: power / slope.abs() / 3600.0,
+            charge,
+            energy: End {
+                per_volt: charge.per_volt * limit.volts(),
+                ..charge
             },
         })
     }

@@ -80,7 +80,7 @@ impl Workbench<'_> {
             Name::DeliveredCharge,
             label.clone(),
             (amount.charge_ah, Unit::AmpereHour),
-            self.charge_budget(together, 0.0),
+            self.charge_budget(together, End::default()),
             method,
             rows,
         ));
@@ -183,13 +183,12 @@ impl Workbench<'_> {
         together
     }
 
-    pub(crate) fn charge_budget(&self, together: &Together, cut_off_ah: f64) -> Budget {
+    pub(crate) fn charge_budget(&self, together: &Together, end: End) -> Budget {
         let conditions = Conditions {
             value: together.amount.charge_ah,
             per_ampere: together.amount.seconds / 3600.0,
             per_volt: None,
-            cut_off: cut_off_ah,
-            end: End::default(),
+            end,
             hidden: together.amount.hidden_ah,
         };
         of_delivery(self.instrument, self.time_base, &conditions)
@@ -206,7 +205,6 @@ impl Workbench<'_> {
             value: amount.energy_wh,
             per_ampere: mean_voltage * amount.seconds / 3600.0,
             per_volt: Some(amount.charge_ah),
-            cut_off: 0.0,
             end,
             hidden: amount.hidden_wh,
         };

@@ -345,8 +345,16 @@ impl Delivered {
             self.last = (self.last.1, Some(*sample));
             self.ranges.add(
                 sample.time.saturating_since(sample.from).seconds(),
-                sample.current_max.amperes() - sample.current_min.amperes(),
-                sample.voltage_max.volts() - sample.voltage_min.volts(),
+                [
+                    sample.current_min.amperes(),
+                    sample.current.amperes(),
+                    sample.current_max.amperes(),
+                ],
+                [
+                    sample.voltage_min.volts(),
+                    sample.voltage.volts(),
+                    sample.voltage_max.volts(),
+                ],
             );
         }
         let Some(previous) = previous else { return };

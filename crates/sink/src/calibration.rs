@@ -16,6 +16,7 @@ mod channel;
 mod drift;
 mod meter;
 mod settling;
+mod spread;
 mod statement;
 mod table;
 mod verify;
@@ -27,9 +28,11 @@ use crate::correction::{Correction, Curve, CurveError};
 use crate::regression::RegressionError;
 
 pub use channel::{Channel, ChannelSummary, CurvatureSummary, SecondOrder};
+use channel::{Readings, Stated, Steps};
 pub use drift::{Drift, DriftError, drift};
 pub use meter::ReferenceMeter;
 pub use settling::{Unsettled, settled};
+pub use spread::Spread;
 pub use statement::{Identity, Statement, StatementError, current_step};
 pub use table::{Table, TableError};
 pub use verify::{Verification, VerificationPoint, verify};
@@ -37,8 +40,13 @@ pub use verify::{Verification, VerificationPoint, verify};
 /// Fewest points of a channel: two make a line, on the stated word of the meters alone. It takes
 /// a third before anything shows a wrong point, and a fourth before anything shows a bend.
 pub const POINTS_MIN: usize = 2;
-/// The version of the certificate's form.
-pub const FORM: u32 = 1;
+/// The version of the certificate's form that is written.
+///
+/// In form 1 the converter's step counts whole in the weights of the points; from form 2 on as far
+/// as the noise of the readbacks leaves it. A certificate of form 1 is computed again as it was.
+pub const FORM: u32 = 2;
+/// The versions that can be read.
+const FORMS: std::ops::RangeInclusive<u32> = 1..=FORM;
 
 /// Everything that was measured and stated for a calibration.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -99,6 +107,9 @@ pub struct CurrentPoint {
     pub reference: Vec<Text<Current>>,
     /// The sink's nominal readbacks.
     pub readback: Vec<Text<Current>>,
+    /// How far the samples behind them lay apart, if that is known.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub spread: Option<Spread<Current>>,
 }
 
 /// One voltage, what the meter read and what the sink read.
@@ -109,6 +120,9 @@ pub struct VoltagePoint {
     pub reference: Vec<Text<Voltage>>,
     /// The sink's nominal readbacks.
     pub readback: Vec<Text<Voltage>>,
+    /// How far the samples behind them lay apart, if that is known.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub spread: Option<Spread<Voltage>>,
 }
 
 /// A calibration certificate.
@@ -219,7 +233,7 @@ pub enum CertificateError {
     Json(#[from] serde_json::Error),
     /// A form of another version.
     #[error(
-        "the certificate has form {found}, but form {FORM} is known; use the version that wrote it"
+        "the certificate has form {found}, and forms up to {FORM} are known; use the version that wrote it"
     )]
     Form {
         /// The form found.
@@ -253,12 +267,16 @@ pub enum Validity {
 /// # Errors
 /// [`CalibrationError`] with the point or figure that prevents it.
 pub fn calibrate(measurements: Measurements) -> Result<Certificate, CalibrationError> {
+    computed(FORM, measurements)
+}
+
+fn computed(form: u32, measurements: Measurements) -> Result<Certificate, CalibrationError> {
     if measurements.valid_until_unix_s <= measurements.issued_unix_s {
         return Err(CalibrationError::Dates);
     }
-    let channels = Channels::of(&measurements)?;
+    let channels = Channels::of(form, &measurements)?;
     Ok(Certificate {
-        form: FORM,
+        form,
         correction: Correction {
             current_set: channels.current_set.curve()?,
             current_read: channels.current_read.curve()?,
@@ -278,7 +296,7 @@ impl Channels {
     ///
     /// # Errors
     /// As [`calibrate`].
-    pub fn of(measurements: &Measurements) -> Result<Self, CalibrationError> {
+    fn of(form: u32, measurements: &Measurements) -> Result<Self, CalibrationError> {
         let spread = measurements.temperature_spread_k;
         if !(spread.is_finite() && spread >= 0.0) {
             return Err(CalibrationError::Stated {
@@ -298,38 +316,54 @@ impl Channels {
         let set = setpoints
             .iter()
             .zip(&measurements.current_points)
-            .map(|(setpoint, point)| (setpoint.as_slice(), point.reference.as_slice()));
-        let read = measurements
-            .current_points
-            .iter()
-            .map(|point| (point.readback.as_slice(), point.reference.as_slice()));
-        let voltage = measurements
-            .voltage_points
-            .iter()
-            .map(|point| (point.readback.as_slice(), point.reference.as_slice()));
-        let current_meter = &measurements.current_meter;
+            .map(|(setpoint, point)| Readings {
+                nominal: setpoint,
+                reference: &point.reference,
+                spread: None,
+            });
+        let read = measurements.current_points.iter().map(|point| Readings {
+            nominal: &point.readback,
+            reference: &point.reference,
+            spread: point.spread.as_ref(),
+        });
+        let voltage = measurements.voltage_points.iter().map(|point| Readings {
+            nominal: &point.readback,
+            reference: &point.reference,
+            spread: point.spread.as_ref(),
+        });
+        let of_current = |step, steps| Stated {
+            meter: &measurements.current_meter,
+            step,
+            steps,
+            drift,
+        };
+        let read_steps = if form == 1 {
+            Steps::Whole
+        } else {
+            Steps::Dithered
+        };
         Ok(Self {
+            // A setpoint has no noise that could spread the codes it is rounded to.
             current_set: Channel::fit(
                 "current set",
                 &set.collect::<Vec<_>>(),
-                current_meter,
-                measurements.set_step,
-                drift,
+                &of_current(measurements.set_step, Steps::Whole),
             )?,
             current_read: Channel::fit(
                 "current read",
                 &read.collect::<Vec<_>>(),
-                current_meter,
-                measurements.current_step,
-                drift,
+                &of_current(measurements.current_step, read_steps),
             )?,
-            // The voltage does not pass through the sense resistor.
             voltage_read: Channel::fit(
                 "voltage read",
                 &voltage.collect::<Vec<_>>(),
-                &measurements.voltage_meter,
-                measurements.voltage_step,
-                0.0,
+                &Stated {
+                    meter: &measurements.voltage_meter,
+                    step: measurements.voltage_step,
+                    steps: read_steps,
+                    // The voltage does not pass through the sense resistor.
+                    drift: 0.0,
+                },
             )?,
         })
     }
@@ -343,12 +377,12 @@ impl Certificate {
     /// corrections do not follow from its points.
     pub fn from_json(text: &str) -> Result<Self, CertificateError> {
         let certificate: Self = serde_json::from_str(text)?;
-        if certificate.form != FORM {
+        if !FORMS.contains(&certificate.form) {
             return Err(CertificateError::Form {
                 found: certificate.form,
             });
         }
-        let again = calibrate(certificate.measurements.clone())?;
+        let again = computed(certificate.form, certificate.measurements.clone())?;
         if !same_but_for_rounding(&again.correction, &certificate.correction) {
             return Err(CertificateError::Altered);
         }
@@ -374,7 +408,7 @@ impl Certificate {
     /// # Errors
     /// As [`calibrate`]; none for a certificate that came from it.
     pub fn channels(&self) -> Result<Channels, CalibrationError> {
-        Channels::of(&self.measurements)
+        Channels::of(self.form, &self.measurements)
     }
 
     /// Whether it holds at a time.

@@ -10,6 +10,7 @@
 mod budget;
 mod coverage;
 mod propagate;
+mod quantisation;
 
 use std::fmt;
 
@@ -20,6 +21,7 @@ use crate::accumulate::{Moments, count};
 pub use budget::{Budget, BudgetError, Combined, Contribution, Evaluation, Expanded, Shape};
 pub use coverage::coverage_factor;
 pub use propagate::{PropagateError, Propagated, propagate, second_order_variance};
+pub use quantisation::{expected_range, noise_before_steps, noise_of_range, of_dithered_step};
 
 /// A value with its standard uncertainty.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
@@ -147,6 +149,15 @@ impl Stated {
             Self::Normal { coverage_factor } => {
                 coverage_factor.is_finite() && coverage_factor > 0.0
             }
+        }
+    }
+
+    /// The shape that a budget takes it for. A triangle is near enough to a normal distribution;
+    /// taking an arc-sine for one claims too much rather than too little.
+    pub const fn shape(self) -> Shape {
+        match self {
+            Self::Rectangular => Shape::Rectangular,
+            Self::Triangular | Self::ArcSine | Self::Normal { .. } => Shape::Normal,
         }
     }
 

@@ -4,7 +4,7 @@ use quantity::{Current, Ratio, Resistance, Temperature, TemperatureCoefficient, 
 use simulator::front_end::Errors;
 use sink::bench::{Conductor, Leads, ReadError, Sensing};
 use sink::calibration::{
-    Certificate, CurrentPoint, Measurements, ReferenceMeter, VoltagePoint, calibrate,
+    Certificate, CurrentPoint, Measurements, ReferenceMeter, Spread, VoltagePoint, calibrate,
 };
 use sink::montecarlo::Random;
 use sink::uncertainty::{Contribution, DegreesOfFreedom, Evaluation, Stated};
@@ -15,6 +15,9 @@ use crate::{Figures, Name, Standing, work_out};
 
 /// 2026-12-01T20:00:00Z, when the rehearsals begin.
 const EVENING_UNIX_S: i64 = 1_796_155_200;
+
+/// Samples of a readback.
+const SAMPLES: u32 = 100;
 
 /// How a reference meter errs, within what it states: 500 ppm of the reading, 50 ppm of the range.
 #[derive(Debug, Clone, Copy, Default)]
@@ -35,6 +38,19 @@ fn meter<T>(range: T, resolution: T) -> ReferenceMeter<T> {
     }
 }
 
+/// What a converter makes of one value: four readbacks, each the mean of a hundred samples with
+/// this much noise, rounded to steps; and least and largest sample of each.
+fn read(value: f64, noise: f64, step: f64, random: &mut Random) -> [(f64, f64, f64); 4] {
+    [(); 4].map(|()| {
+        let (mut sum, mut least, mut largest) = (0.0, f64::INFINITY, f64::NEG_INFINITY);
+        for _ in 0..SAMPLES {
+            let sample = ((value + noise * random.normal()) / step).round() * step;
+            (sum, least, largest) = (sum + sample, least.min(sample), largest.max(sample));
+        }
+        (sum / f64::from(SAMPLES), least, largest)
+    })
+}
+
 /// A calibration of a sink that errs so, on a 3 A and a 10 V range.
 pub(crate) fn certificate(errors: &Errors, meter_errors: MeterErrors, seed: u64) -> Certificate {
     let mut random = Random::from_seed(seed);
@@ -42,33 +58,33 @@ pub(crate) fn certificate(errors: &Errors, meter_errors: MeterErrors, seed: u64)
     let volts = |value: f64| Text(Voltage::from_volts(value).unwrap());
     let current_points = (1..=12)
         .map(|step| {
-            let flowing = 0.24 * f64::from(step);
+            // No setpoint is met to a code, so each point lies somewhere between two.
+            let flowing = 0.24 * f64::from(step) + 806e-6 * random.unit();
             let shown = flowing + meter_errors.current * (500e-6 * flowing + 50e-6 * 3.0);
-            // Each point lies somewhere between two codes of the converter.
-            let code = 806e-6 * (random.unit() - 0.5);
-            let read = flowing * (1.0 + errors.current_gain) + errors.current_offset_a + code;
+            let there = flowing * (1.0 + errors.current_gain) + errors.current_offset_a;
+            let read = read(there, errors.current_noise_a, 806e-6, &mut random);
+            let extremes = read.map(|(_, least, largest)| (amperes(least).0, amperes(largest).0));
             CurrentPoint {
                 setpoint: amperes(flowing).0,
                 reference: (0..4)
                     .map(|_| amperes(shown + 20e-6 * random.normal()))
                     .collect(),
-                readback: (0..4)
-                    .map(|_| amperes(read + 200e-6 * random.normal()))
-                    .collect(),
+                readback: read.map(|(mean, ..)| amperes(mean)).to_vec(),
+                spread: Spread::of(extremes.into_iter(), SAMPLES),
             }
         })
         .collect();
     let voltage_points = (2..=9)
         .map(|step| {
-            let there = 0.5 * f64::from(step);
-            let shown = there + meter_errors.voltage * (500e-6 * there + 50e-6 * 10.0);
-            let code = 2417e-6 * (random.unit() - 0.5);
-            let read = there * (1.0 + errors.voltage_gain) + errors.voltage_offset_v + code;
+            let terminal = 0.5 * f64::from(step) + 2417e-6 * random.unit();
+            let shown = terminal + meter_errors.voltage * (500e-6 * terminal + 50e-6 * 10.0);
+            let there = terminal * (1.0 + errors.voltage_gain) + errors.voltage_offset_v;
+            let read = read(there, errors.voltage_noise_v, 2417e-6, &mut random);
+            let extremes = read.map(|(_, least, largest)| (volts(least).0, volts(largest).0));
             VoltagePoint {
                 reference: vec![volts(shown)],
-                readback: (0..4)
-                    .map(|_| volts(read + 500e-6 * random.normal()))
-                    .collect(),
+                readback: read.map(|(mean, ..)| volts(mean)).to_vec(),
+                spread: Spread::of(extremes.into_iter(), SAMPLES),
             }
         })
         .collect();

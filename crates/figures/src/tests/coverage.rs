@@ -27,7 +27,8 @@ const SEQUENCE: &str = r#"{ "sequence": 1, "title": "Small cell",
                "at_most": "10 min", "label": "discharge" },
              { "rest": "2 s" } ] }"#;
 
-/// As many as a test can wait for; 1,000 have been seen to hold, too.
+/// As many as a test can wait for. Of 1,000 there were 944 covered with a certificate and 938
+/// without.
 const NIGHTS: u64 = 250;
 
 /// The capacity's error over its standard uncertainty, and over its interval's half-width.
@@ -63,6 +64,11 @@ fn one(seed: u64, calibrated: bool) -> (f64, f64) {
         voltage: uniform(),
     };
     setup.certificate = calibrated.then(|| certificate(&setup.parts.errors, meter, seed));
+    if calibrated {
+        // Since then the sense resistor was warmed or cooled by up to the 5 K that the certificate
+        // allows for, at 50 ppm/K.
+        setup.parts.errors.current_gain += 250e-6 * uniform();
+    }
     let night = setup.night();
     let figures = work_out(&night.record).unwrap();
     let wanted = if calibrated {
@@ -83,10 +89,9 @@ fn one(seed: u64, calibrated: bool) -> (f64, f64) {
     )
 }
 
-/// Claimed are 95 %. Bounds within which all values are as likely reach no farther than 1.73
-/// standard uncertainties, so more may be covered, but never fewer than chance allows: of 250
-/// intervals at 95 %, fewer than 227 are covered once in a few hundred times. And the errors must be
-/// as large as the standard uncertainty says, or it would be useless.
+/// Claimed are 95 %. Of 250 intervals fewer than 227 are covered once in five hundred times, and
+/// more than 246 once in eight hundred. And the errors must be as large as the standard uncertainty
+/// says, or it would be useless.
 fn check(calibrated: bool) {
     let mut errors = Moments::new();
     let mut covered = 0;
@@ -96,9 +101,12 @@ fn check(calibrated: bool) {
         covered += u32::from(share <= 1.0);
     }
     let rms = errors.mean().unwrap().sqrt();
-    assert!(covered >= 227, "{covered} of {NIGHTS} covered");
     assert!(
-        (0.7..1.25).contains(&rms),
+        (227..=246).contains(&covered),
+        "{covered} of {NIGHTS} covered"
+    );
+    assert!(
+        (0.85..1.15).contains(&rms),
         "errors are {rms} standard uncertainties, root mean square"
     );
 }

@@ -2,7 +2,7 @@
 //! hidden gain, offset, floor, noise and temperature coefficient are calibrated through the whole
 //! stack with a simulated meter, and then measured over their range at another temperature.
 
-use quantity::{Current, SinkTime, Span, Text, Voltage};
+use quantity::{Current, Quantity, SinkTime, Span, Text, Textual, Voltage};
 use run::KeeperConfig;
 use run::rehearse::{Observer, rehearse};
 use sequence::plan::Plan;
@@ -17,7 +17,7 @@ use simulator::source::Source;
 use simulator::supply::{Supply, SupplySpec};
 use sink::bench::SinkEntry;
 use sink::calibration::{
-    Certificate, Channel, CurrentPoint, Identity, Statement, VoltagePoint, calibrate,
+    Certificate, Channel, CurrentPoint, Identity, Spread, Statement, VoltagePoint, calibrate,
 };
 use sink::montecarlo::Random;
 use wire::Readback;
@@ -27,6 +27,8 @@ use crate::bench::{EVENING, sink};
 const SEEDS: u64 = 1_000;
 /// The supply: volts open, ohms inside.
 const SUPPLY: (f64, f64) = (4.2, 0.5);
+/// Samples of a readback: 100 ms of a tick of 1 ms.
+const SAMPLES: u32 = 100;
 /// By how many kelvins a sink may be warmer or cooler in use.
 const SPREAD_K: f64 = 10.0;
 /// The sense resistor's temperature coefficient, as its data sheet has it.
@@ -62,6 +64,13 @@ struct Held {
 impl Held {
     fn true_v(&self) -> f64 {
         SUPPLY.0 - SUPPLY.1 * self.true_a
+    }
+
+    fn spread<T: Textual + Quantity>(
+        &self,
+        extremes: impl Fn(&Readback) -> (T, T),
+    ) -> Option<Spread<T>> {
+        Spread::of(self.readings.iter().map(extremes), SAMPLES)
     }
 }
 
@@ -159,8 +168,45 @@ fn warmer(errors: Errors, kelvin: f64) -> Errors {
     }
 }
 
+/// What a thousand sinks and meters are drawn with.
+#[derive(Debug, Clone, Copy)]
+struct Case {
+    /// Noise of one sample of the converter that reads the current.
+    current_noise_a: f64,
+    /// The same of the voltage.
+    voltage_noise_v: f64,
+    /// Whether the meters' accuracy is a bound within which all errors are as likely, or else
+    /// twice a standard deviation.
+    bounded: bool,
+}
+
+impl Case {
+    fn statement(self) -> Statement {
+        let text = if self.bounded {
+            STATEMENT.replace("{ normal = { coverage_factor = 2 } }", "\"rectangular\"")
+        } else {
+            STATEMENT.to_owned()
+        };
+        Statement::from_toml(&text).unwrap()
+    }
+
+    /// A meter's error as a share of its stated accuracy.
+    fn meter_error(self, random: &mut Random) -> f64 {
+        if self.bounded {
+            2.0 * random.unit() - 1.0
+        } else {
+            0.5 * random.normal()
+        }
+    }
+}
+
 /// Draws a sink and a meter, calibrates the one with the other.
-fn calibrated(entry: &SinkEntry, random: &mut Random, seed: u64) -> (Errors, Certificate) {
+fn calibrated(
+    entry: &SinkEntry,
+    case: Case,
+    random: &mut Random,
+    seed: u64,
+) -> (Errors, Certificate) {
     let mut uniform = || 2.0 * random.unit() - 1.0;
     let errors = Errors {
         set_gain: 0.02 * uniform(),
@@ -168,16 +214,15 @@ fn calibrated(entry: &SinkEntry, random: &mut Random, seed: u64) -> (Errors, Cer
         drive_floor_v: 0.0005 * (1.0 + uniform()),
         current_gain: 0.02 * uniform(),
         current_offset_a: 0.004 * uniform(),
-        // Below half a code: where noise spreads the codes, a mean errs less than is claimed.
-        current_noise_a: 100e-6,
+        current_noise_a: case.current_noise_a,
         voltage_gain: 0.01 * uniform(),
         voltage_offset_v: 0.005 * uniform(),
-        voltage_noise_v: 300e-6,
+        voltage_noise_v: case.voltage_noise_v,
         sense_per_k: if uniform() < 0.0 { -PER_K } else { PER_K },
         loop_time_constant_s: 150e-6,
         ..Errors::default()
     };
-    let (current_error, voltage_error) = (random.normal(), random.normal());
+    let (current_error, voltage_error) = (case.meter_error(random), case.meter_error(random));
     let nominal: Vec<f64> = (0..12)
         .map(|point| 0.02 + 0.25 * f64::from(point))
         .collect();
@@ -196,16 +241,18 @@ fn calibrated(entry: &SinkEntry, random: &mut Random, seed: u64) -> (Errors, Cer
     let mut current_points = Vec::new();
     let mut voltage_points = Vec::new();
     for (nominal, held) in nominal.iter().zip(&held) {
-        let accuracy = 0.000_25 * held.true_a + 0.000_05 * 3.0;
+        let accuracy = 0.000_5 * held.true_a + 0.000_1 * 3.0;
         current_points.push(CurrentPoint {
             setpoint: Current::from_amperes(*nominal).unwrap(),
             reference: vec![amperes(held.true_a + accuracy * current_error)],
             readback: held.readings.iter().map(|one| Text(one.current)).collect(),
+            spread: held.spread(|one| (one.current_min, one.current_max)),
         });
-        let accuracy = 0.000_25 * held.true_v() + 0.000_05 * 10.0;
+        let accuracy = 0.000_5 * held.true_v() + 0.000_1 * 10.0;
         voltage_points.push(VoltagePoint {
             reference: vec![volts(held.true_v() + accuracy * voltage_error)],
             readback: held.readings.iter().map(|one| Text(one.voltage)).collect(),
+            spread: held.spread(|one| (one.voltage_min, one.voltage_max)),
         });
     }
     let identity = Identity {
@@ -214,8 +261,9 @@ fn calibrated(entry: &SinkEntry, random: &mut Random, seed: u64) -> (Errors, Cer
         issued_unix_s: 1_796_155_200,
         record: None,
     };
-    let statement = Statement::from_toml(STATEMENT).unwrap();
-    let measurements = statement.measurements(entry, identity, current_points, voltage_points);
+    let measurements =
+        case.statement()
+            .measurements(entry, identity, current_points, voltage_points);
     (errors, calibrate(measurements).unwrap())
 }
 
@@ -228,7 +276,7 @@ struct Count {
 
 impl Count {
     fn judge(&mut self, error: f64, channel: &Channel, nominal_micro: f64) {
-        let budget = channel.budget(nominal_micro).combined().unwrap();
+        let budget = channel.budget(nominal_micro);
         let half_width = budget.expanded(0.95).unwrap().half_width / 1e6;
         self.within += u32::from(error.abs() <= half_width);
         self.all += 1;
@@ -239,8 +287,7 @@ impl Count {
     }
 }
 
-#[test]
-fn set_and_read_values_of_calibrated_sinks_are_covered_as_claimed() {
+fn check(case: Case) {
     let mut entry = sink("left");
     // An uncalibrated sink may be this far off; a narrower interlock would trip while calibrating.
     entry.interlocks.not_following.threshold = Current::from_milliamperes(300);
@@ -249,7 +296,7 @@ fn set_and_read_values_of_calibrated_sinks_are_covered_as_claimed() {
     let (mut bottom, mut top) = (Count::default(), Count::default());
     for seed in 0..SEEDS {
         let mut random = Random::from_seed(seed);
-        let (errors, certificate) = calibrated(&entry, &mut random, seed);
+        let (errors, certificate) = calibrated(&entry, case, &mut random, seed);
         let channels = certificate.channels().unwrap();
         let correction = certificate.correction;
         let wanted: Vec<f64> = (0..6).map(|_| 0.05 + 2.65 * random.unit()).collect();
@@ -301,5 +348,38 @@ fn set_and_read_values_of_calibrated_sinks_are_covered_as_claimed() {
             "{what}: {share} of {}",
             count.all
         );
+    }
+}
+
+/// An eighth of a code: every sample of a held current is the same one or two codes, and the mean
+/// errs by what rounding leaves.
+#[test]
+fn set_and_read_values_of_calibrated_quiet_sinks_are_covered_as_claimed() {
+    check(Case {
+        current_noise_a: 100e-6,
+        voltage_noise_v: 300e-6,
+        bounded: false,
+    });
+}
+
+/// A third of a code: some of the step is averaged away, and some is left.
+#[test]
+fn set_and_read_values_of_calibrated_sinks_are_covered_as_claimed() {
+    check(Case {
+        current_noise_a: 270e-6,
+        voltage_noise_v: 800e-6,
+        bounded: true,
+    });
+}
+
+/// More than half a code: noise averages the steps away.
+#[test]
+fn set_and_read_values_of_calibrated_noisy_sinks_are_covered_as_claimed() {
+    for bounded in [false, true] {
+        check(Case {
+            current_noise_a: 500e-6,
+            voltage_noise_v: 1_500e-6,
+            bounded,
+        });
     }
 }

@@ -10,12 +10,13 @@
 use quantity::{Quantity, Text, Textual};
 use serde::{Deserialize, Serialize};
 
-use super::{CalibrationError, POINTS_MIN, ReferenceMeter, micro};
+use super::{CalibrationError, POINTS_MIN, ReferenceMeter, Spread, micro, spread};
 use crate::accumulate::{Moments, count};
 use crate::correction::{Bend, Curve};
 use crate::regression::{Fit, Form, Point, Weights, f_test, fit};
 use crate::uncertainty::{
-    Budget, Contribution, DegreesOfFreedom, Estimate, Evaluation, of_resolution,
+    Budget, Contribution, DegreesOfFreedom, Estimate, Evaluation, Shape, of_dithered_step,
+    of_resolution,
 };
 
 /// The F-test's level below which a line is not straight enough.
@@ -34,9 +35,10 @@ pub struct Channel {
     point_uncertainties: Vec<f64>,
     range: (f64, f64),
     second_order: SecondOrder,
-    /// Stated accuracy of the meter: constant part and part of the reading.
-    meter: (f64, f64),
-    step: f64,
+    /// Stated accuracy of the meter: constant part, part of the reading, and its distribution.
+    meter: (f64, f64, Shape),
+    /// Standard uncertainty of what the converter's step leaves in a reading.
+    resolution: f64,
     /// Standard deviation of one nominal reading and what it was told by.
     repeatability: (f64, DegreesOfFreedom),
     /// Degrees of freedom of the fit's covariance.
@@ -105,17 +107,42 @@ pub struct CurvatureSummary {
     pub correlations: [f64; 2],
 }
 
-/// Nominal readings and reference readings of one point.
-type Readings<'a, T> = (&'a [Text<T>], &'a [Text<T>]);
+/// What was read at one point.
+#[derive(Debug)]
+pub(super) struct Readings<'a, T> {
+    pub(super) nominal: &'a [Text<T>],
+    pub(super) reference: &'a [Text<T>],
+    /// Of the samples behind the nominal readings.
+    pub(super) spread: Option<&'a Spread<T>>,
+}
+
+/// What is stated beside a channel's points.
+#[derive(Debug)]
+pub(super) struct Stated<'a, T> {
+    pub(super) meter: &'a ReferenceMeter<T>,
+    /// The converter's.
+    pub(super) step: T,
+    pub(super) steps: Steps,
+    /// Relative change with the sense resistor's temperature, half-width.
+    pub(super) drift: f64,
+}
+
+/// How the steps of a converter count.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Steps {
+    /// Whole.
+    Whole,
+    /// As far as the noise of the readings leaves them.
+    Dithered,
+}
 
 impl Channel {
     pub(super) fn fit<T: Textual + Quantity + Ord>(
         name: &'static str,
         readings: &[Readings<'_, T>],
-        meter: &ReferenceMeter<T>,
-        step: T,
-        drift: f64,
+        stated: &Stated<'_, T>,
     ) -> Result<Self, CalibrationError> {
+        let meter = stated.meter;
         if readings.len() < POINTS_MIN {
             return Err(CalibrationError::TooFewPoints {
                 channel: name,
@@ -127,22 +154,28 @@ impl Channel {
                 what: "the reference meter's accuracy",
             });
         }
-        let step = micro(step);
+        let step = micro(stated.step);
         if step <= 0.0 || meter.resolution.base_units() <= 0 {
             return Err(CalibrationError::NoResolution { channel: name });
         }
-        let resolution = of_resolution(step).hypot(meter.resolution_uncertainty());
-        let nominal = pooled_deviation(readings.iter().map(|(nominal, _)| *nominal));
-        let reference = pooled_deviation(readings.iter().map(|(_, reference)| *reference));
+        let nominal = pooled_deviation(readings.iter().map(|point| point.nominal));
+        let reference = pooled_deviation(readings.iter().map(|point| point.reference));
+        let resolution = match stated.steps {
+            Steps::Whole => of_resolution(step),
+            Steps::Dithered => {
+                let spreads = readings.iter().filter_map(|point| point.spread);
+                of_dithered_step(step, spread::noise(spreads, nominal, step))
+            }
+        };
         let repeatability = Repeatability {
-            resolution,
+            resolution: resolution.hypot(meter.resolution_uncertainty()),
             nominal: nominal.0,
             reference: reference.0,
         };
         let points = readings
             .iter()
             .enumerate()
-            .map(|(index, readings)| point(name, index + 1, *readings, meter, &repeatability))
+            .map(|(index, readings)| point(name, index + 1, readings, meter, &repeatability))
             .collect::<Result<Vec<Point>, _>>()?;
         let failed = |cause| CalibrationError::Fit {
             channel: name,
@@ -173,11 +206,12 @@ impl Channel {
             meter: (
                 meter.accuracy(0.0),
                 meter.accuracy(1e6) - meter.accuracy(0.0),
+                meter.stated.shape(),
             ),
-            step,
+            resolution,
             repeatability: nominal,
             freedom,
-            drift,
+            drift: stated.drift,
         })
     }
 
@@ -244,10 +278,10 @@ impl Channel {
     }
 
     /// The uncertainty budget of a true value got from one nominal value, in
-    /// micro-units.
+    /// micro-units; [`Budget::expanded`] states its interval.
     pub fn budget(&self, nominal_micro: f64) -> Budget {
         let predicted = self.predict(nominal_micro);
-        let (constant, per_million) = self.meter;
+        let (constant, per_million, shape) = self.meter;
         let infinite = DegreesOfFreedom::INFINITE;
         let stated = |name: &str, u: f64| Contribution::new(name, Evaluation::TypeB, u, infinite);
         let mut lines = vec![
@@ -264,8 +298,10 @@ impl Channel {
             stated(
                 "reference meter",
                 constant + per_million * predicted.value.abs() / 1e6,
-            ),
-            stated("converter's resolution", of_resolution(self.step)),
+            )
+            .shaped(shape),
+            // What noise leaves of it is a wave, and bounded as well.
+            stated("converter's resolution", self.resolution).rectangular(),
         ];
         if self.repeatability.0 > 0.0 {
             lines.push(Contribution::new(
@@ -276,10 +312,13 @@ impl Channel {
             ));
         }
         if self.drift > 0.0 {
-            lines.push(stated(
-                "sense resistor's temperature",
-                self.drift * predicted.value.abs() / 3_f64.sqrt(),
-            ));
+            lines.push(
+                stated(
+                    "sense resistor's temperature",
+                    self.drift * predicted.value.abs() / 3_f64.sqrt(),
+                )
+                .rectangular(),
+            );
         }
         Budget::new(lines)
     }
@@ -316,10 +355,11 @@ impl Channel {
 fn point<T: Textual + Quantity + Ord>(
     channel: &'static str,
     index: usize,
-    (nominal, reference): Readings<'_, T>,
+    readings: &Readings<'_, T>,
     meter: &ReferenceMeter<T>,
     repeatability: &Repeatability,
 ) -> Result<Point, CalibrationError> {
+    let (nominal, reference) = (readings.nominal, readings.reference);
     if let Some(beyond) = reference
         .iter()
         .find(|reading| reading.0.base_units().abs() > meter.range.base_units())

@@ -4,7 +4,7 @@ use quantity::{Quantity, Ratio, Textual};
 use serde::{Deserialize, Serialize};
 
 use super::micro;
-use crate::uncertainty::{Stated, of_resolution};
+use crate::uncertainty::{Contribution, DegreesOfFreedom, Evaluation, Stated, of_resolution};
 
 /// A reference meter on one range, as its own certificate or data sheet states
 /// it.
@@ -40,6 +40,14 @@ impl<T: Textual + Quantity> ReferenceMeter<T> {
     /// The standard uncertainty of its resolution, in micro-units.
     pub fn resolution_uncertainty(&self) -> f64 {
         of_resolution(micro(self.resolution))
+    }
+
+    /// Its stated accuracy at a reading as a line of a budget, in micro-units, with the
+    /// distribution that it is stated with.
+    pub fn contribution(&self, name: &str, reading_micro: f64) -> Contribution {
+        let accuracy = self.accuracy(reading_micro);
+        let infinite = DegreesOfFreedom::INFINITE;
+        Contribution::new(name, Evaluation::TypeB, accuracy, infinite).shaped(self.stated.shape())
     }
 
     /// Whether the stated figures make sense.

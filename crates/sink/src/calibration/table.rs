@@ -140,6 +140,7 @@ impl Table {
                         setpoint,
                         reference: vec![Text(meter)],
                         readback: vec![Text(readback)],
+                        spread: None,
                     });
                 }
             }
@@ -162,6 +163,7 @@ impl Table {
                 Some(_) | None => self.voltage_points.push(VoltagePoint {
                     reference: vec![Text(meter)],
                     readback: vec![Text(readback)],
+                    spread: None,
                 }),
             },
             (None, None) => {}

@@ -59,8 +59,14 @@ pub fn verify<T: Textual + Quantity>(
             let own = expanded(&channel.budget(micro(point.nominal.0)))?;
             let reference = micro(point.reference.0);
             let meters = expanded(&Budget::new(vec![
-                stated("accuracy", meter.accuracy(reference)),
-                stated("resolution", meter.resolution_uncertainty()),
+                meter.contribution("accuracy", reference),
+                Contribution::new(
+                    "resolution",
+                    Evaluation::TypeB,
+                    meter.resolution_uncertainty(),
+                    DegreesOfFreedom::INFINITE,
+                )
+                .rectangular(),
             ]))?;
             let error = micro(point.corrected.0) - reference;
             let normalised = error / own.hypot(meters);
@@ -75,15 +81,11 @@ pub fn verify<T: Textual + Quantity>(
         .collect()
 }
 
-fn stated(name: &str, u: f64) -> Contribution {
-    Contribution::new(name, Evaluation::TypeB, u, DegreesOfFreedom::INFINITE)
-}
-
 /// The expanded uncertainty; without a coverage factor (fewer than one degree
 /// of freedom) it is infinite, and nothing is disproved by it.
 pub(super) fn expanded(budget: &Budget) -> Result<f64, BudgetError> {
-    let combined = budget.combined()?;
-    Ok(combined
+    budget.combined()?;
+    Ok(budget
         .expanded(PROBABILITY)
         .map_or(f64::INFINITY, |expanded| expanded.half_width))
 }

@@ -85,6 +85,13 @@ impl Contribution {
         self
     }
 
+    /// The same line with another distribution.
+    #[must_use]
+    pub const fn shaped(mut self, shape: Shape) -> Self {
+        self.shape = shape;
+        self
+    }
+
     /// The same line, its effect on the result times a factor.
     #[must_use]
     pub fn scaled(mut self, factor: f64) -> Self {

@@ -134,7 +134,7 @@ fn uncertainties(certificate: &Certificate) -> Result<Vec<Uncertainty>> {
         let (low, high) = of.range();
         for nominal in [low, f64::midpoint(low, high), high] {
             let budget = of.budget(nominal);
-            let expanded = budget.combined()?.expanded(0.95);
+            let expanded = budget.expanded(0.95);
             all.push(Uncertainty {
                 channel,
                 unit,
