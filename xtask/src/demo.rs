@@ -26,7 +26,7 @@ const TIME_FACTOR: &str = "1000";
     reason = "the demo talks to the person who started it"
 )]
 pub(crate) fn run_through() -> Result<()> {
-    println!("Building (a minute or two the first time) ...");
+    println!("Building (five minutes on two cores the first time, then seconds) ...");
     page::build_if_possible()?;
     run(&mut cargo(&["build", "--quiet", "--package", "sinkwarden"]))?;
     let program = program();

@@ -12,6 +12,7 @@ mod envelope;
 mod flow;
 mod import;
 mod interlock;
+mod order;
 mod port;
 mod record;
 mod target;
@@ -95,6 +96,7 @@ const DRAFT_RULES: &[DraftRule] = &[
 const PLAN_RULES: &[PlanRule] = &[
     flow::reachable,
     port::queue_refilled,
+    burst::apart,
     record::fits_disk,
     record::charge_within_rated,
     record::limits_within_reach,

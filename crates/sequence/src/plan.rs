@@ -192,6 +192,27 @@ pub struct BurstRequest {
     pub after: Span,
 }
 
+impl BurstRequest {
+    /// Time that a capture's samples take on their way, for each sample: an 80-byte line of four
+    /// at 115 200 baud is 7 ms, and other lines share the port.
+    const SAMPLE: Span = Span::from_millis(4);
+
+    /// Samples before the edge and from it on, at a sink's tick; held at what the wire can ask for.
+    pub fn samples(&self, tick: Span) -> (u16, u16) {
+        let tick = tick.micros().max(1);
+        let samples = |span: Span| u16::try_from(span.micros() / tick).unwrap_or(u16::MAX);
+        (samples(self.before), samples(self.after))
+    }
+
+    /// How long after the edge the sink has sent all of it and can be asked for the next.
+    pub fn busy(&self, tick: Span) -> Span {
+        let (before, after) = self.samples(tick);
+        let count = u64::from(before) + u64::from(after);
+        let sending = Span::from_micros(Self::SAMPLE.micros() * count);
+        self.after.saturating_add(sending)
+    }
+}
+
 /// A condition, how long it must hold, and what follows.
 #[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]

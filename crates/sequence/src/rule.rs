@@ -175,6 +175,8 @@ rules! {
         "Times are whole ticks of the sink; else an edge moves by up to one tick."
     BurstTooLong "burst-too-long" Error
         "A burst fits into the sink's memory and into its step."
+    BurstMissed "burst-missed" Warning
+        "A burst has been sent before the next is taken."
     QueueRunsDry "queue-runs-dry" Error
         "Short steps come no faster than the port can refill the sink's queue."
     ReadbackTooFast "readback-too-fast" Error

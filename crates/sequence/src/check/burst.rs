@@ -1,8 +1,11 @@
-//! Rules on bursts: the sink can capture, and the capture fits.
+//! Rules on bursts: the sink can capture, the capture fits, and it is sent before the next.
+
+use std::collections::BTreeSet;
 
 use quantity::Span;
 
-use super::Scene;
+use super::order::in_order;
+use super::{PlanScene, Scene};
 use crate::draft::ActionDraft;
 use crate::finding::{Finding, Findings};
 use crate::rule::Rule;
@@ -56,6 +59,44 @@ pub(super) fn fits(scene: &Scene<'_>, findings: &mut Findings) {
                 )
                 .numbers(after, time),
             );
+        }
+    });
+}
+
+/// A sink takes no second capture while it sends one: the sequencer then asks for none, and the
+/// record says that it was missed.
+pub(super) fn apart(scene: &PlanScene<'_>, findings: &mut Findings) {
+    let plan = scene.plan;
+    // Time since the edge of the capture before, and how long the sink is busy with it.
+    let mut before: Option<(Span, Span)> = None;
+    let mut told = BTreeSet::new();
+    in_order(plan, &mut |step| {
+        if let Some(burst) = step.burst {
+            let needed = before.map(|(since, busy)| (since, busy.saturating_add(burst.before)));
+            match needed {
+                Some((since, needed)) if since < needed => {
+                    if told.insert(&step.pointer) {
+                        findings.push(
+                            Finding::new(
+                                Rule::BurstMissed,
+                                format!("{}/burst", step.pointer),
+                                format!(
+                                    "the capture comes {since} after the one before it, but the \
+                                     sink `{}` needs {needed} to send that: it will be missed",
+                                    scene.facts.name
+                                ),
+                                "capture fewer samples, or not every edge: one at its beginning, \
+                                 the next at its end",
+                            )
+                            .numbers(since, needed),
+                        );
+                    }
+                }
+                Some(_) | None => before = Some((Span::ZERO, burst.busy(plan.tick))),
+            }
+        }
+        if let Some((since, _)) = &mut before {
+            *since = since.saturating_add(step.duration);
         }
     });
 }

@@ -4,9 +4,10 @@ use std::collections::VecDeque;
 
 use quantity::Span;
 
+use super::order::in_order;
 use super::{PlanScene, Scene};
 use crate::finding::{Finding, Findings};
-use crate::plan::{Op, Plan, PlanStep};
+use crate::plan::{Plan, PlanStep};
 use crate::rule::Rule;
 
 /// The longest readback pair: two lines of at most 96 bytes each, as far as their fields can
@@ -100,9 +101,6 @@ pub(super) fn readback_within_port(scene: &Scene<'_>, findings: &mut Findings) {
     }
 }
 
-/// Most steps gone through: repeats inside repeats double each time.
-const STEPS_MOST: usize = 400_000;
-
 /// The last so many steps in the order in which the sink gets them.
 struct Window<'a> {
     plan: &'a Plan,
@@ -110,7 +108,6 @@ struct Window<'a> {
     steps: VecDeque<&'a PlanStep>,
     /// How long they last in all, in microseconds.
     held: u128,
-    seen: usize,
     worst: Option<Shortage<'a>>,
 }
 
@@ -123,33 +120,8 @@ struct Shortage<'a> {
 }
 
 impl<'a> Window<'a> {
-    /// Goes through a block, each repeat twice: what happens at its joint happens then.
-    fn block(&mut self, begin: usize, end: usize) {
-        let plan = self.plan;
-        let mut at = begin;
-        while at < end && self.seen < STEPS_MOST {
-            at = match plan.ops.get(at) {
-                Some(Op::Step(step)) => {
-                    self.push(step);
-                    at + 1
-                }
-                Some(Op::LoopBegin(head)) => {
-                    let foot = usize::try_from(head.end).unwrap_or(usize::MAX);
-                    self.block(at + 1, foot);
-                    if head.times != Some(1) {
-                        self.block(at + 1, foot);
-                    }
-                    foot + 1
-                }
-                Some(Op::LoopEnd { .. }) => at + 1,
-                None => return,
-            };
-        }
-    }
-
     fn push(&mut self, step: &'a PlanStep) {
         let depth = usize::from(self.plan.queue.max(1));
-        self.seen += 1;
         self.steps.push_back(step);
         self.held += u128::from(step.duration.micros());
         if self.steps.len() > depth
@@ -192,10 +164,9 @@ pub(super) fn queue_refilled(scene: &PlanScene<'_>, findings: &mut Findings) {
         baud: scene.facts.baud,
         steps: VecDeque::new(),
         held: 0,
-        seen: 0,
         worst: None,
     };
-    window.block(0, plan.ops.len());
+    in_order(plan, &mut |step| window.push(step));
     let Some(Shortage {
         held,
         needed,

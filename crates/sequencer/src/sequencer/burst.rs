@@ -10,10 +10,6 @@ use super::Sequencer;
 use crate::event::Finding;
 use crate::program::Slot;
 
-/// Time that the samples of a capture take on their way, for each sample: an 80-byte line of four
-/// at 115 200 baud is 7 ms, and other lines share the port.
-const BURST_SAMPLE: Span = Span::from_millis(4);
-
 /// Captures that are wanted, and the one that is under way.
 #[derive(Debug, Clone, Default)]
 pub(crate) struct Bursts {
@@ -30,7 +26,8 @@ struct Burst {
     at: SinkTime,
     before: u16,
     after: u16,
-    length: Span,
+    /// How long from its edge on the sink can be asked for no other.
+    busy: Span,
 }
 
 impl Bursts {
@@ -64,17 +61,14 @@ impl Bursts {
 
 impl Sequencer {
     pub(super) fn want_burst(&mut self, slot: &Slot, request: BurstRequest) {
-        let tick = self.plan().tick.micros().max(1);
-        let samples = |span: Span| u16::try_from(span.micros() / tick).unwrap_or(u16::MAX);
-        let (before, after) = (samples(request.before), samples(request.after));
-        let count = u64::from(before) + u64::from(after);
-        let sending = Span::from_micros(BURST_SAMPLE.micros() * count);
+        let tick = self.plan().tick;
+        let (before, after) = request.samples(tick);
         self.bursts.wanted.push_back(Burst {
             op: slot.op,
             at: slot.start,
             before,
             after,
-            length: request.after.saturating_add(sending),
+            busy: request.busy(tick),
         });
     }
 
@@ -92,7 +86,7 @@ impl Sequencer {
                 return;
             }
             self.bursts.wanted.pop_front();
-            self.bursts.busy_until = burst.at.saturating_add(burst.length);
+            self.bursts.busy_until = burst.at.saturating_add(burst.busy);
             let order = self.order(Order::Burst {
                 at: burst.at,
                 before: burst.before,

@@ -16,6 +16,14 @@ fn short_steps(bed: &mut Bed, micros: u64) {
     ] } }]));
 }
 
+/// A pulse so often, its beginning captured each time.
+fn captured_pulses(bed: &mut Bed, millis: u64) {
+    bed.steps(json!([{ "repeat": { "times": 3, "steps": [
+        { "draw": "1 A", "for": "50 ms", "burst": { "before": "10 ms", "after": "10 ms" } },
+        { "rest": format!("{} ms", millis - 50) },
+    ] } }]));
+}
+
 /// A sink whose heat sink can get rid of 2.5 W, and one step of ten hours.
 fn small_heat_sink(bed: &mut Bed, above: i64) {
     let bench = Bench::from_toml(include_str!("../../../../sink/src/bench/weir.toml")).unwrap();
@@ -187,6 +195,13 @@ pub(super) const CASES: &[Case] = &[
             bed.step(json!({ "draw": "1 A", "for": "1 s",
                 "burst": { "before": "12 ms", "after": "500 ms" } }));
         },
+    ),
+    case(
+        // 20 samples of 1 ms, 4 ms each to send, from 10 ms after the edge; the next begins 10 ms
+        // before its own: 100 ms.
+        Rule::BurstMissed,
+        |bed| captured_pulses(bed, 99),
+        |bed| captured_pulses(bed, 100),
     ),
     case(
         // Four steps of 96 bytes at 86.8 us a byte, slowed by readbacks, and 100 ms: 136.2 ms.
