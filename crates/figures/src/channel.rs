@@ -65,6 +65,8 @@ pub(crate) struct Channel {
     /// One step of the converter that reads, ampere or volt.
     pub(crate) step: f64,
     resolution: f64,
+    /// What the readbacks tell of a sample's noise.
+    noise: Option<Noise>,
     /// Smallest and largest true value that is vouched for; `None`: no certificate says.
     pub(crate) range: Option<(f64, f64)>,
 }
@@ -197,6 +199,7 @@ impl Channel {
             sources,
             step,
             resolution: of_resolution(step),
+            noise: None,
             range: None,
         }
     }
@@ -210,6 +213,21 @@ impl Channel {
     /// The contributions to one reading of a value.
     pub(crate) fn of_reading(&self, value: f64) -> Vec<Contribution> {
         self.over(1.0, value)
+    }
+
+    /// The contributions to a mean of so many readings of a value, in which noise that averages out
+    /// counts the less.
+    pub(crate) fn of_mean(&self, value: f64, readings: f64) -> Vec<Contribution> {
+        let averages_out = self.noise.is_some_and(|noise| noise.dithers(self.step));
+        let weight = if averages_out {
+            1.0 / readings.sqrt()
+        } else {
+            1.0
+        };
+        self.contributions(|source| {
+            let offset = if source.fresh { weight } else { 1.0 };
+            source.share(offset, value)
+        })
     }
 
     /// The contributions to a difference of readings, each times `sensitivity`. An offset that
@@ -244,8 +262,21 @@ impl Channel {
         self.resolution
     }
 
+    /// Standard uncertainty of what differs from one mean of so many captured samples to the next.
+    pub(crate) fn resolution_of(&self, samples: f64) -> f64 {
+        self.noise.map_or(self.resolution, |noise| {
+            noise.of_samples(samples).of_mean(self.step)
+        })
+    }
+
+    /// Samples in the shortest readbacks; one where nothing tells.
+    pub(crate) fn samples(&self) -> f64 {
+        self.noise.map_or(1.0, |noise| noise.samples())
+    }
+
     /// The same channel, its steps as far as the noise of the readbacks leaves them.
     fn with_noise(mut self, noise: Noise) -> Self {
+        self.noise = Some(noise);
         self.resolution = noise.of_mean(self.step);
         for source in self.sources.iter_mut().filter(|source| source.fresh) {
             source.law = Law::Straight {
@@ -253,7 +284,7 @@ impl Channel {
                 gain: 0.0,
                 correlation: 0.0,
             };
-            if self.resolution < of_resolution(self.step) {
+            if noise.dithers(self.step) {
                 source.shape = Shape::Normal;
             }
         }

@@ -91,6 +91,24 @@ pub(crate) fn of_resistance(
     Budget::new(lines)
 }
 
+/// What noise and steps leave of a mean of so many captured samples, in ohms.
+pub(crate) fn of_samples(
+    instrument: &Instrument,
+    resistance: f64,
+    current: f64,
+    samples: f64,
+) -> [Contribution; 2] {
+    let voltage = instrument.voltage.resolution_of(samples);
+    let amperes = instrument.current.resolution_of(samples);
+    [
+        stated("captured samples, voltage", voltage / current),
+        stated(
+            "captured samples, current",
+            (amperes * resistance / current).abs(),
+        ),
+    ]
+}
+
 /// The share of two-wire leads in a figure to which an ohm would have added so much; none over
 /// four wires.
 pub(crate) fn of_leads(instrument: &Instrument, per_ohm: f64) -> Option<Contribution> {

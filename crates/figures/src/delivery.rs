@@ -6,14 +6,15 @@ use sink::uncertainty::Budget;
 use crate::charge::Amount;
 use crate::contribution::{Conditions, End, clocks, of_delivery, of_leads, stated};
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
+use crate::least_squares::number;
 use crate::stage::Stage;
 use crate::walk::Delivered;
 use crate::work::Workbench;
 
 const BY_COUNTERS: &str = "difference of the sink's own counters, which integrate what it \
                            measured, corrected by the record's correction and time base";
-const BY_TRAPEZOID: &str =
-    "trapezoid over the readbacks' mean currents, as a check of the counters";
+const BY_TRAPEZOID: &str = "trapezoid over the readbacks' mean currents, each at the middle of its interval, as a check of \
+     the counters";
 
 /// Several stages taken together.
 #[derive(Default)]
@@ -133,17 +134,25 @@ impl Workbench<'_> {
             * factor;
         let doubt = together.trapezoid_doubt.sqrt() * factor;
         let counted = together.amount.charge_ah;
-        let line = stated("jumps of current between readbacks", doubt);
+        // The readings err as the counters do, and so does the clock.
+        let mut budget = self.charge_budget(together, End::default());
+        if doubt > 0.0 {
+            let line = stated("jumps of current between readbacks", doubt);
+            budget.contributions.push(line);
+        }
         figures.figures.push(Figure::new(
             Name::ChargeByTrapezoid,
             None,
             (value, Unit::AmpereHour),
-            Budget::new(vec![line]),
+            budget,
             (BY_TRAPEZOID, "trapezoidal rule, summed after Neumaier"),
             rows,
         ));
         let readback_step = 1e-6 * together.amount.seconds / 3600.0;
-        let bound = 3.0 * doubt + readback_step;
+        // Each edge is known to a tick.
+        let edges = 2.0 * number(self.stages.len()) * self.plan.tick.seconds();
+        let steady = counted / together.amount.seconds;
+        let bound = 3.0 * doubt + readback_step + edges * steady.abs();
         if (value - counted).abs() > bound {
             figures.warnings.push(format!(
                 "the counters give {counted:.6} Ah and the trapezoid {value:.6} Ah: they differ by \

@@ -5,12 +5,16 @@
 
 use sequence::plan::DutKind;
 use sink::accumulate::Moments;
-use sink::uncertainty::{Budget, DegreesOfFreedom};
+use sink::regression::{Form, Point, Weights, fit};
+use sink::uncertainty::{
+    Budget, DegreesOfFreedom, noise_before_steps, of_dithered_step, of_resolution,
+};
 
 use crate::capture::{Capture, of_stage};
-use crate::contribution::{bounded, observed};
+use crate::contribution::{ONE_EACH, bounded, clocks, observed, stated};
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Unit};
 use crate::least_squares::number;
+use crate::noise::{expected_largest, scatter_of_largest};
 use crate::stage::Stage;
 use crate::work::Workbench;
 
@@ -20,6 +24,18 @@ const BAND: f64 = 0.005;
 const NOT_CAPTURED: &str = "the samples around the edge were not captured: the sink takes one \
                             capture at a time and was still sending the one before; set the \
                             edges farther apart";
+
+const DROWNED: &str = "the voltage comes back so slowly that noise hides when it is in the band; \
+                       a quieter front end would tell";
+
+/// The band reaches so many times the noise of a sample at least, or noise alone would leave it.
+const BEYOND_NOISE: f64 = 5.0;
+
+/// The slope of the line that meets the band must be so many times its own uncertainty.
+const CLEAR: f64 = 8.0;
+
+/// Samples nearer to the largest than so many times the noise might as well have been it.
+const AS_LARGE: f64 = 2.0;
 
 /// Fewest samples after the edge.
 const LEAST: usize = 8;
@@ -61,18 +77,19 @@ impl Workbench<'_> {
             Err(reason) => return none(name, reason),
         };
         let recovery = self.recovery(&edge);
-        if let Err(reason) = recovery {
+        if let Err(reason) = &recovery {
             none(Name::RecoveryTime, reason);
         }
         let interval = self.plan.tick;
         let how = format!(
             "largest departure of the voltage from its mean before the edge, of samples every \
-             {interval}: what is shorter is not seen"
+             {interval}, less half of what noise adds to the largest of several: what is shorter \
+             is not seen"
         );
         figures.figures.push(Figure::of_stage(
             name,
             stage,
-            (edge.largest, Unit::Volt),
+            (edge.largest - edge.excess(), Unit::Volt),
             self.droop_budget(&edge),
             (&how, COMMON),
             capture.rows(),
@@ -88,19 +105,19 @@ impl Workbench<'_> {
                 figures.warnings.push(warning);
             }
         }
-        let Ok(seconds) = recovery else { return };
+        let Ok(recovered) = recovery else { return };
         let how = format!(
-            "from the edge to the first sample within {} % of the settled voltage (but two steps \
-             of the converter at least) after which none lies outside, of samples every \
-             {interval}; settled: mean of the last quarter of the capture",
+            "from the edge to the instant at which the voltage came within {} % of the settled \
+             voltage (but two steps of the converter, and five times the noise of a sample, at \
+             least) to stay: where a straight line through the samples around it, one every \
+             {interval}, meets that band; settled: mean of the last quarter of the capture",
             BAND * 100.0
         );
-        let budget = Budget::new(vec![bounded("sampling interval", interval.seconds())]);
         figures.figures.push(Figure::of_stage(
             Name::RecoveryTime,
             stage,
-            (seconds, Unit::Second),
-            budget,
+            (recovered.seconds, Unit::Second),
+            self.recovery_budget(&recovered),
             (&how, COMMON),
             capture.rows(),
         ));
@@ -143,24 +160,28 @@ impl Workbench<'_> {
 
     fn droop_budget(&self, edge: &Edge) -> Budget {
         let weight = (1.0 + 1.0 / number(edge.samples_before)).sqrt();
+        // Steps that no noise averages out err in the level as in the sample.
         let mut lines = self
             .instrument
             .voltage
-            .of_difference(edge.largest, weight, 1.0);
-        let next = edge.after.get(edge.place + 1).map_or(0.0, |after| after.1);
-        lines.push(bounded(
-            "extreme between two samples",
-            (edge.largest - next).abs(),
-        ));
+            .of_difference(edge.largest, ONE_EACH, 1.0);
+        let between = edge.between_samples();
+        if between > 0.0 {
+            lines.push(bounded("extreme between two samples", between));
+        }
+        if edge.excess() > 0.0 {
+            lines.push(bounded("largest of several noisy samples", edge.excess()));
+        }
         if let Some(noise) = edge.noise.filter(|noise| *noise > 0.0) {
             let freedom = DegreesOfFreedom::finite(number(edge.samples_before - 1));
-            lines.push(observed("noise of a sample", noise * weight, freedom));
+            let noise = noise * weight * edge.scatter();
+            lines.push(observed("noise of a sample", noise, freedom));
         }
         Budget::new(lines)
     }
 
-    /// Seconds from the edge to the first sample in the band after which none is outside.
-    fn recovery(&self, edge: &Edge) -> Result<f64, &'static str> {
+    /// When the voltage came into the band about where it settles, to stay.
+    fn recovery(&self, edge: &Edge) -> Result<Recovered, &'static str> {
         let quarter = edge.after.len() / 4;
         let mean = |samples: &[(f64, f64)]| {
             samples.iter().map(|sample| sample.1).sum::<f64>() / number(samples.len())
@@ -169,23 +190,115 @@ impl Workbench<'_> {
         let (_, before_last) = rest.split_at(rest.len() - quarter);
         let settled = mean(last);
         let level = edge.level - edge.sign * settled;
-        let band = (BAND * level.abs()).max(2.0 * self.instrument.voltage.step);
+        let step = self.instrument.voltage.step;
+        let scatter: Moments = last.iter().map(|sample| sample.1).collect();
+        let scatter = scatter.standard_deviation().unwrap_or(0.0);
+        let noise = scatter.max(of_resolution(step));
+        let band = (BAND * level.abs())
+            .max(2.0 * step)
+            .max(BEYOND_NOISE * noise);
         if (mean(before_last) - settled).abs() > 0.5 * band {
             return Err("the capture ends before the voltage has settled; capture for longer");
         }
-        let outside = edge
-            .after
-            .iter()
-            .rposition(|sample| (sample.1 - settled).abs() > band);
+        let beyond = |sample: &(f64, f64)| (sample.1 - settled).abs() - band;
+        let outside = edge.after.iter().rposition(|sample| beyond(sample) > 0.0);
         let Some(outside) = outside else {
             return Err("no sample after the edge lies outside the band");
         };
-        let first = edge
-            .after
-            .get(outside + 1)
-            .ok_or("the voltage is outside the band at the end of the capture")?;
-        Ok(first.0 * self.plan.tick.seconds() * self.time_base.factor)
+        if outside + 1 >= edge.after.len() {
+            return Err("the voltage is outside the band at the end of the capture");
+        }
+        // Steps that no noise averages out err in the mean as in every sample.
+        let left = of_dithered_step(step, noise_before_steps(step, scatter));
+        let noise_of_settled = left.hypot(scatter / number(quarter).sqrt());
+        let crossing = crossing(&edge.after, outside, &beyond, (band, noise)).ok_or(DROWNED)?;
+        let tick_s = self.plan.tick.seconds() * self.time_base.factor;
+        // The line through an exponential course meets the band so much later than the course; one
+        // through another course by up to half as much again, or half of it.
+        let off_centre = crossing.ticks - crossing.centre;
+        let spread = crossing.around.powi(2) / 6.0 - 0.5 * off_centre.powi(2);
+        let later = spread.max(0.0) * crossing.fall / band;
+        Ok(Recovered {
+            seconds: (crossing.ticks - later) * tick_s,
+            by_line: crossing.standard * tick_s,
+            by_bend: 0.5 * later * tick_s,
+            by_settled: noise_of_settled / crossing.fall * tick_s,
+        })
     }
+
+    fn recovery_budget(&self, recovered: &Recovered) -> Budget {
+        Budget::new(vec![
+            stated("line through the samples", recovered.by_line),
+            bounded("course that is not straight", recovered.by_bend),
+            stated("settled voltage", recovered.by_settled),
+            clocks(recovered.seconds * self.time_base.uncertainty),
+        ])
+    }
+}
+
+/// When a voltage had recovered.
+struct Recovered {
+    seconds: f64,
+    /// Standard uncertainty from the line that meets the band, seconds.
+    by_line: f64,
+    /// At most from a course that is not straight there, seconds.
+    by_bend: f64,
+    /// Standard uncertainty from the band's own middle, seconds.
+    by_settled: f64,
+}
+
+/// Where a straight line through samples meets the band.
+struct Crossing {
+    ticks: f64,
+    /// Standard uncertainty of the ticks.
+    standard: f64,
+    /// Volts a tick.
+    fall: f64,
+    /// Ticks on either side whose samples the line goes through.
+    around: f64,
+    /// The middle of those ticks.
+    centre: f64,
+}
+
+/// The line through the last sample outside the band, the one after it, and as many on either side
+/// as it takes to see its slope; `None` where so many reach over the whole band.
+fn crossing(
+    after: &[(f64, f64)],
+    outside: usize,
+    beyond: &impl Fn(&(f64, f64)) -> f64,
+    (band, noise): (f64, f64),
+) -> Option<Crossing> {
+    let most = (outside + 1).min(after.len() - outside - 1);
+    for around in 1..=most {
+        let points: Vec<Point> = after
+            .iter()
+            .skip(outside + 1 - around)
+            .take(2 * around)
+            .map(|sample| Point {
+                x: sample.0,
+                y: beyond(sample),
+                u: noise,
+            })
+            .collect();
+        let line = fit(&points, Form::Polynomial(1), Weights::Known).ok()?;
+        let slope = line.slope(0.0);
+        let fall = -slope.value;
+        if fall <= CLEAR * slope.standard_uncertainty {
+            continue;
+        }
+        // The line's value at no ticks is what it has to fall.
+        let ticks = line.value(0.0) / fall;
+        let centre = points.iter().map(|point| point.x).sum::<f64>() / number(points.len());
+        let around = number(around);
+        return (around < 2.0 || around * fall < 2.0 * band).then_some(Crossing {
+            ticks,
+            standard: line.predict(ticks).standard_uncertainty / fall,
+            fall,
+            around,
+            centre,
+        });
+    }
+    None
 }
 
 /// An edge as a capture shows it, true volts.
@@ -202,6 +315,40 @@ struct Edge {
     largest: f64,
     /// -1 where the current fell.
     sign: f64,
+}
+
+impl Edge {
+    /// How many samples noise might as well have made the largest.
+    fn alike(&self) -> f64 {
+        let least = self.largest - AS_LARGE * self.noise.unwrap_or(0.0);
+        let alike = self.after.iter().filter(|sample| sample.1 > least);
+        number(alike.count().max(1))
+    }
+
+    /// Half of what noise adds, on average, to the largest sample if all that might have been it
+    /// were truly alike: nothing is added to one that stands out, all to one of a plateau.
+    fn excess(&self) -> f64 {
+        0.5 * self.noise.unwrap_or(0.0) * expected_largest(self.alike())
+    }
+
+    /// How the largest sample scatters against any sample: halfway, too, between one that stands
+    /// out and one of a plateau.
+    fn scatter(&self) -> f64 {
+        f64::midpoint(1.0, scatter_of_largest(self.alike()))
+    }
+
+    /// How far the extreme may lie above its sample: what a parabola through it and its neighbours
+    /// rises at most; at the first sample, as far as the fall to the next.
+    fn between_samples(&self) -> f64 {
+        let at = |place: Option<usize>| self.after.get(place?).map(|sample| sample.1);
+        let before = at(self.place.checked_sub(1));
+        let next = at(self.place.checked_add(1));
+        match (before, next) {
+            (Some(before), Some(next)) => (2.0 * self.largest - before - next).abs() / 8.0,
+            (None, Some(next)) => (self.largest - next).abs(),
+            (_, None) => 0.0,
+        }
+    }
 }
 
 fn rises(one: f64, other: f64) -> Option<bool> {

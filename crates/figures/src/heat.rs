@@ -9,7 +9,7 @@
 use quantity::Resistance;
 use sink::bench::{Sensing, SinkEntry};
 use sink::leads::loop_resistance;
-use sink::uncertainty::{Budget, DegreesOfFreedom};
+use sink::uncertainty::{Budget, Contribution, DegreesOfFreedom, Stated};
 
 use crate::charge::Amount;
 use crate::contribution::{bounded, observed, stated};
@@ -25,6 +25,14 @@ const STEADY: f64 = 0.05;
 
 /// A soak shorter than this share of its time constant does not tell where it leads.
 const LEAST: f64 = 0.7;
+
+/// Leads are known to this share of their resistance: a table has the largest that flexible copper
+/// may have, a fifth above that of solid copper of the same cross-section (common practice, no
+/// source).
+const LEADS_KNOWN: f64 = 0.2;
+
+/// Noise sets two ends farther apart than so many standard deviations once in twenty times.
+const BY_CHANCE: f64 = 1.96;
 
 /// Smallest rise that is looked at, kelvins.
 const LEAST_RISE_K: f64 = 1.0;
@@ -75,7 +83,8 @@ struct Soak {
     residual_k: f64,
     residual_freedom: DegreesOfFreedom,
     watts: f64,
-    relative_watts: f64,
+    /// What the power is uncertain by, as shares of it.
+    power: Vec<Contribution>,
     rows: Rows,
 }
 
@@ -86,6 +95,12 @@ impl Soak {
             .map_or(DegreesOfFreedom::INFINITE, |combined| {
                 combined.degrees_of_freedom
             })
+    }
+
+    /// The share of the power in something in proportion to it.
+    fn of_power(&self, amount: f64) -> impl Iterator<Item = Contribution> {
+        let lines = self.power.iter().cloned();
+        lines.map(move |line| line.scaled(amount))
     }
 }
 
@@ -159,7 +174,9 @@ impl Workbench<'_> {
         // Where half the soak leads is only told by a half that still moves.
         if let Ok(later) = exponential(from(0.5)) {
             let apart = (later.parameter(0) - settled_degc).abs();
-            if later.standard(0) < apart {
+            // What both have in common does not set them apart.
+            let by_noise = (later.standard(0).powi(2) - fitted.standard(0).powi(2)).max(0.0);
+            if apart > BY_CHANCE * by_noise.sqrt() {
                 lines.push(bounded("departure from one exponential", apart));
             }
         }
@@ -167,7 +184,7 @@ impl Workbench<'_> {
         let standard_k = budget
             .combined()
             .map_or(f64::NAN, |combined| combined.standard_uncertainty);
-        let (watts, relative_watts) = self
+        let (watts, power) = self
             .mean_power(delivered, entry)
             .ok_or("the record does not tell the power of the step")?;
         Ok(Soak {
@@ -178,15 +195,19 @@ impl Workbench<'_> {
             residual_k: fitted.residual_rms(),
             residual_freedom: fitted.degrees_of_freedom(),
             watts,
-            relative_watts,
+            power,
             rows: Rows { first, last },
         })
     }
 
-    /// Mean power in the MOSFET by the counters, and its relative standard uncertainty: what the
-    /// sense resistor, and with four-wire sensing the leads, turn into heat does not go through
+    /// Mean power in the MOSFET by the counters, and what it is uncertain by, as shares of it: what
+    /// the sense resistor, and with four-wire sensing the leads, turn into heat does not go through
     /// the heat sink.
-    fn mean_power(&self, delivered: &Delivered, entry: &SinkEntry) -> Option<(f64, f64)> {
+    fn mean_power(
+        &self,
+        delivered: &Delivered,
+        entry: &SinkEntry,
+    ) -> Option<(f64, Vec<Contribution>)> {
         let correction = &self.plan.correction;
         let amount = Amount::of(delivered, correction, self.time_base)?;
         if amount.seconds <= 0.0 || amount.charge_ah <= 0.0 {
@@ -194,18 +215,29 @@ impl Workbench<'_> {
         }
         let amperes = amount.charge_ah * 3600.0 / amount.seconds;
         let volts = amount.energy_wh / amount.charge_ah;
-        let current = self.instrument.current.standard(amperes) / amperes;
-        let voltage = self.instrument.voltage.standard(volts) / volts;
         let sense = entry.front_end.sense_resistor.resistance.ohms();
-        let leads = match entry.leads.sensing {
+        let (leads, leads_standard) = match entry.leads.sensing {
             // The voltage is the device's as far as the leads' drop was added.
-            Sensing::TwoWire => correction.leads.ohms(),
+            Sensing::TwoWire => (correction.leads.ohms(), self.instrument.leads_ohm),
             Sensing::FourWire => {
-                loop_resistance(&entry.leads.conductor, entry.ambient).map_or(0.0, Resistance::ohms)
+                let leads = loop_resistance(&entry.leads.conductor, entry.ambient)
+                    .map_or(0.0, Resistance::ohms);
+                let bound = LEADS_KNOWN * leads;
+                (leads, Stated::Rectangular.standard_uncertainty(bound))
             }
         };
-        let elsewhere = amperes * amperes * (sense + leads);
-        Some((amperes * volts - elsewhere, current.hypot(voltage)))
+        let elsewhere = sense + leads;
+        let watts = amperes * (volts - amperes * elsewhere);
+        let by_ampere = (volts - 2.0 * amperes * elsewhere) / watts;
+        let current = self.instrument.current.of_reading(amperes).into_iter();
+        let voltage = self.instrument.voltage.of_reading(volts).into_iter();
+        let lines = current
+            .map(|line| line.scaled(by_ampere))
+            .chain(voltage.map(|line| line.scaled(amperes / watts)))
+            .chain([stated("heat of the leads", leads_standard)
+                .rectangular()
+                .scaled(amperes * amperes / watts)]);
+        Some((watts, lines.collect()))
     }
 
     /// The air's temperature: that of the heat sink at the end of a rest before which nothing
@@ -229,7 +261,7 @@ impl Workbench<'_> {
 
 fn resistance(stage: &Stage<'_>, soak: &Soak, ambient_degc: f64) -> Figure {
     let value = (soak.settled_degc - ambient_degc) / soak.watts;
-    let lines = vec![
+    let mut lines = vec![
         observed(
             "settled temperature",
             soak.standard_k / soak.watts,
@@ -240,8 +272,8 @@ fn resistance(stage: &Stage<'_>, soak: &Soak, ambient_degc: f64) -> Figure {
             soak.residual_k / soak.watts,
             soak.residual_freedom,
         ),
-        stated("power", (value * soak.relative_watts).abs()),
     ];
+    lines.extend(soak.of_power(value));
     Figure::of_stage(
         Name::ThermalResistance,
         stage,
@@ -257,10 +289,9 @@ fn margin(stage: &Stage<'_>, soak: &Soak, entry: &SinkEntry) -> Figure {
         + entry.heat_sink.from_case.kelvins_per_watt();
     let limit = entry.mosfet.junction_max.degrees_celsius();
     let value = limit - soak.settled_degc - soak.watts * inner;
-    let lines = vec![
-        observed("settled temperature", soak.standard_k, soak.freedom()),
-        stated("power", soak.watts * inner * soak.relative_watts),
-    ];
+    let settled = observed("settled temperature", soak.standard_k, soak.freedom());
+    let mut lines = vec![settled];
+    lines.extend(soak.of_power(soak.watts * inner));
     Figure::of_stage(
         Name::JunctionMargin,
         stage,

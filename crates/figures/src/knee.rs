@@ -5,11 +5,13 @@
 //! still flows is the supply's own.
 
 use sequence::plan::{Action, DutKind};
-use sink::uncertainty::Budget;
+use sink::accumulate::Moments;
+use sink::uncertainty::{Budget, Contribution};
 
-use crate::contribution::bounded;
+use crate::contribution::{bounded, stated};
 use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
 use crate::least_squares::number;
+use crate::noise::expected_largest;
 use crate::stage::Stage;
 use crate::walk::Sample;
 use crate::work::Workbench;
@@ -21,10 +23,13 @@ const GIVEN_WAY: f64 = 0.9;
 const FOLDS: f64 = 0.95;
 
 const KNEE: &str = "largest mean current of a readback up to the one in which the voltage (its \
-                    smallest sample) fell below 90 % of the mean of the readback before, in a \
-                    step that raises the current";
-const FOLD: &str = "smallest sample of the current beyond the knee, the sink still asking for \
-                    more; below 95 % of the knee the limit folds back";
+                    smallest sample) fell below 90 % of the mean of the readback before (of one \
+                    that folds back: of the readback before), and on to where the rise met the \
+                    limit, in a step that raises the current";
+const FOLD: &str = "mean current of the readbacks beyond the one in which the voltage fell, the \
+                    sink still asking for more (where the step ended there: its smallest sample, \
+                    with half of what noise takes from it put back); below 95 % of the knee the \
+                    limit folds back";
 
 /// A readback of the sweep, true values.
 struct Seen {
@@ -105,16 +110,24 @@ impl Workbench<'_> {
                 .push(Missing::of(Name::CurrentLimitKnee, stage.label, reason));
             return;
         }
+        let (folded, readings, doubt) = self.folded(beyond);
+        let folds = folded < FOLDS * knee;
+        // Where a limit folds back, the readback in which it does is a mean of both.
+        let place = match fallen {
+            Some(fallen) if folds => fallen - 1,
+            Some(_) | None => place,
+        };
+        let knee = points.get(place).map_or(knee, |point| point.amperes);
         let before = place.checked_sub(1).and_then(|before| points.get(before));
         // By the whole ramp: a difference of two readbacks is noisy, and the limit may cut the last
         // one short.
         let climb = before.map_or(0.0, |before| {
             (before.amperes - first.amperes).abs() / number(place.max(2) - 1)
         });
-        // A readback is a mean over a rise. Where the one in which the voltage gave way is the
-        // largest, the limit was reached in it, at an instant as likely as any: at most half a rise
-        // above its mean, and in 95 % of cases within the interval about 0.22 of one. Else it was
-        // reached right after the largest one: from half a rise to one and a half above.
+        // A readback is a mean over a rise. Where the one in which the voltage gave way tells the
+        // limit, it was reached in it, at an instant as likely as any: at most half a rise above its
+        // mean, and in 95 % of cases within the interval about 0.22 of one. Else it was reached right
+        // after the one before: from half a rise to one and a half above.
         let within = fallen == Some(place);
         let (on, bound) = if within { (0.22, 0.25) } else { (1.0, 0.5) };
         let knee = knee + on * climb;
@@ -128,16 +141,14 @@ impl Workbench<'_> {
             (KNEE, COMMON),
             rows,
         ));
-        let folded = beyond
-            .iter()
-            .map(|seen| seen.least_amperes)
-            .fold(f64::INFINITY, f64::min);
-        if folded < FOLDS * knee {
+        if folds {
+            let mut lines = self.instrument.current.of_mean(folded, readings);
+            lines.extend(doubt);
             figures.figures.push(Figure::of_stage(
                 Name::FoldBackCurrent,
                 stage,
                 (folded, Unit::Ampere),
-                Budget::new(self.instrument.current.of_reading(folded)),
+                Budget::new(lines),
                 (FOLD, COMMON),
                 rows,
             ));
@@ -151,5 +162,25 @@ impl Workbench<'_> {
                 .missing
                 .push(Missing::of(Name::FoldBackCurrent, stage.label, reason));
         }
+    }
+    /// The current beyond the knee: the mean of the readbacks that lie wholly there. Where the step
+    /// ended in the readback in which the voltage fell, its smallest sample is all there is: one of
+    /// an unknown number, of which noise made it the smallest. Beside it of how many readings it is.
+    fn folded(&self, beyond: &[Seen]) -> (f64, f64, Vec<Contribution>) {
+        let whole: Moments = beyond.iter().skip(1).map(|seen| seen.amperes).collect();
+        if let Some(mean) = whole.mean() {
+            return (mean, number(beyond.len() - 1), Vec::new());
+        }
+        let sample = beyond
+            .iter()
+            .map(|seen| seen.least_amperes)
+            .fold(f64::INFINITY, f64::min);
+        let noise = self.instrument.current.resolution_of(1.0);
+        let excess = 0.5 * noise * expected_largest(self.instrument.current.samples().max(1.0));
+        let doubt = vec![
+            stated("noise of a sample", noise),
+            bounded("smallest of several noisy samples", excess),
+        ];
+        (sample + excess, 1.0, doubt)
     }
 }

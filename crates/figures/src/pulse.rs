@@ -8,7 +8,7 @@ use quantity::{Current, SinkTime, Span, Voltage};
 use sequence::plan::DutKind;
 
 use crate::capture::{Capture, of_stage};
-use crate::contribution::of_resistance;
+use crate::contribution::{of_resistance, of_samples};
 use crate::figure::{Figure, Figures, Missing, Name, Rows, Unit};
 use crate::resistance::{LEAST_RISE, ended};
 use crate::stage::{EACH_MAX, Stage};
@@ -101,7 +101,9 @@ impl Workbench<'_> {
             return None;
         }
         let resistance = (low_v - seen.volts) / rise;
-        let mut budget = of_resistance(self.instrument, resistance, rise, weight.hypot(1.0));
+        // Captured samples are fewer than a readback is made of.
+        let weight = weight.hypot(seen.weight);
+        let mut budget = of_resistance(self.instrument, resistance, rise, weight);
         if rested {
             // The one current that was read errs by its offset, too.
             let of_current = self.instrument.current.of_reading(rise);
@@ -111,6 +113,10 @@ impl Workbench<'_> {
                     *line = read.clone().scaled(resistance / rise);
                 }
             }
+        }
+        if let Some(samples) = seen.samples {
+            let lines = of_samples(self.instrument, resistance, rise, samples);
+            budget.contributions.extend(lines);
         }
         Some(Figure::of_stage(
             name,
@@ -158,6 +164,8 @@ impl Workbench<'_> {
             amperes: from.0 + share * (to.0 - from.0),
             volts: from.1 + share * (to.1 - from.1),
             row: other.row,
+            weight: share.hypot(1.0 - share),
+            samples: None,
             how: BY_READBACKS,
         })
     }
@@ -183,11 +191,12 @@ impl Workbench<'_> {
             amperes: sum.0 / count,
             volts: sum.1 / count,
             row: capture.rows().last,
+            weight: 0.0,
+            samples: Some(count),
             how: BY_SAMPLES,
         })
     }
 
-    /// Ampere and volt of a readback, corrected.
     /// The true values of nominal means, ampere and volt.
     pub(crate) fn true_means(&self, amperes: f64, volts: f64) -> (f64, f64) {
         let current = Current::from_amperes(amperes).unwrap_or(Current::ZERO);
@@ -195,6 +204,7 @@ impl Workbench<'_> {
         self.true_pair(current, voltage)
     }
 
+    /// Ampere and volt of a readback, corrected.
     pub(crate) fn true_values(&self, sample: &Sample) -> (f64, f64) {
         self.true_pair(sample.current, sample.voltage)
     }
@@ -214,6 +224,10 @@ struct Seen {
     amperes: f64,
     volts: f64,
     row: u64,
+    /// How often the errors of single readbacks count in it.
+    weight: f64,
+    /// How many captured samples it is the mean of; `None`: of readbacks.
+    samples: Option<f64>,
     how: &'static str,
 }
 

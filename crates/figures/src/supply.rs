@@ -4,11 +4,12 @@
 //! in a step is not asked there.
 
 use sequence::plan::DutKind;
-use sink::regression::{Form, Point, Weights, fit};
+use sink::regression::{Fit, Form, Point, Weights, fit};
 use sink::uncertainty::{Budget, DegreesOfFreedom};
+use statrs::distribution::{ChiSquared, ContinuousCDF};
 
 use crate::contribution::{ONE_EACH, observed, of_leads};
-use crate::figure::{COMMON, Figure, Figures, Missing, Name, Rows, Unit};
+use crate::figure::{COMMON, Figure, Figures, Missing, Name, PROBABILITY, Rows, Unit};
 use crate::walk::Sample;
 use crate::work::Workbench;
 
@@ -123,6 +124,11 @@ impl Workbench<'_> {
         let (coefficients, covariance) = line.coefficients_about(0.0);
         let slope = coefficients.get(1).copied().unwrap_or(f64::NAN);
         let standard = covariance.get((1, 1)).copied().unwrap_or(f64::NAN).sqrt();
+        let standard = if by_chance(&line) {
+            standard / line.residual_deviation().max(1.0)
+        } else {
+            standard
+        };
         let mut lines = vec![observed(
             "fit of the line",
             standard,
@@ -140,4 +146,12 @@ impl Workbench<'_> {
             rows,
         ))
     }
+}
+
+/// Whether the points lie about the line as their noise lets expect, 95 times in a hundred. The fit
+/// takes whatever they lie farther for a sign that they are worse known (Birge's ratio); without
+/// such a sign the noise is believed.
+fn by_chance(line: &Fit) -> bool {
+    let freedom = line.degrees_of_freedom().number();
+    ChiSquared::new(freedom).is_ok_and(|chance| chance.cdf(line.chi_square()) <= PROBABILITY)
 }

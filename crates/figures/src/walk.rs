@@ -80,6 +80,8 @@ pub(crate) struct Delivered {
     pub(crate) hottest: Option<Temperature>,
     /// Trapezoid of the mean currents, ampere seconds.
     pub(crate) trapezoid: Sum,
+    /// Time at its beginning that is still to be given the current of the first whole readback.
+    held_back_s: f64,
     /// Sum of half the squared jumps of current times their intervals: the trapezoid's doubt.
     pub(crate) trapezoid_doubt: Sum,
     /// How far the current and the voltage went to and fro, nominal.
@@ -385,23 +387,33 @@ impl Delivered {
         );
     }
 
-    /// The mean current of each readback is taken to hold at the end of its interval, and to
-    /// change in a straight line between two ends; at the beginning of a step the current is an
-    /// edge, and held from there. Half the jump of current times the interval is what that may be
+    /// The mean current of each readback stands for the middle of its interval; between middles it
+    /// changes in a straight line, and from the outermost ones to the step's own ends it is held.
+    /// With equal intervals that is each mean times its interval. A readback that reaches over an
+    /// end of the step is a mean of what was before or after as well, so its part of the step goes
+    /// to its neighbour. Half the jumps within the step times their intervals is what that may be
     /// wrong by.
     fn add_trapezoid(&mut self, stretch: &Stretch, previous: Previous, sample: &Sample) {
         let from = sample.from.max(stretch.time.start);
         let until = sample.time.min(stretch.time.end);
         let seconds = until.saturating_since(from).seconds();
+        let (begins, ends) = (
+            sample.from >= stretch.time.start,
+            sample.time <= stretch.time.end,
+        );
         let (before, now) = (previous.current.amperes(), sample.current.amperes());
-        let held = if sample.from <= stretch.time.start {
-            now
-        } else {
-            0.5 * (before + now)
-        };
-        self.trapezoid.add(held * seconds);
-        self.trapezoid_doubt
-            .add((0.5 * (now - before) * seconds).powi(2));
+        let whole_before = previous.sample.from >= stretch.time.start;
+        if !begins && ends {
+            self.held_back_s += seconds;
+            return;
+        }
+        let held = if ends || !whole_before { now } else { before };
+        let held_back_s = std::mem::take(&mut self.held_back_s);
+        self.trapezoid.add(held * (seconds + held_back_s));
+        if whole_before && ends {
+            self.trapezoid_doubt
+                .add((0.5 * (now - before) * seconds).powi(2));
+        }
     }
 }
 

@@ -80,7 +80,9 @@ fn the_trapezoid_agrees_with_the_counters() {
     let figures = work_out(&night.record).unwrap();
     let counted = of(&figures, Name::DeliveredCharge).value;
     let trapezoid = of(&figures, Name::ChargeByTrapezoid);
-    let doubt = trapezoid.uncertainty.unwrap().standard_uncertainty;
+    let lines = &trapezoid.budget.contributions;
+    let jumps = lines.iter().find(|line| line.name.starts_with("jumps"));
+    let doubt = jumps.unwrap().share();
     assert!((counted - trapezoid.value).abs() < 3.0 * doubt + 1e-6);
     assert!(
         !figures
