@@ -14,7 +14,9 @@ import { offStrip } from "./parts/off.ts";
 import { tokenDialog } from "./parts/token.ts";
 import type { View } from "./view.ts";
 import { benchView } from "./views/bench.ts";
+import { calibrationView } from "./views/calibration.ts";
 import { compareView } from "./views/compare.ts";
+import { handView } from "./views/hand.ts";
 import { recordView } from "./views/record.ts";
 import { recordsView } from "./views/records.ts";
 import { sequenceView } from "./views/sequence.ts";
@@ -29,7 +31,9 @@ const strip = offStrip();
 const NAVIGATION: readonly [string, Route][] = [
   ["Bench", { view: "bench" }],
   ["Sequence", { view: "sequence" }],
+  ["By hand", { view: "hand" }],
   ["Records", { view: "records" }],
+  ["Calibration", { view: "calibration" }],
 ];
 const links = NAVIGATION.map(([name, route]) => ({
   route,
@@ -183,6 +187,10 @@ function make(route: Route): View {
       return benchView();
     case "sequence":
       return sequenceView();
+    case "hand":
+      return handView();
+    case "calibration":
+      return calibrationView();
     case "records":
       return recordsView();
     case "record":

@@ -2,6 +2,9 @@
 // so that of the few a browser opens to one host some are always free: `off` waits for nothing.
 
 import type {
+  Calibration,
+  CalibrationOutcome,
+  CertificateList,
   Check,
   Comparison,
   Course,
@@ -107,6 +110,13 @@ async function inTurn<T>(work: () => Promise<T>): Promise<T> {
   }
 }
 
+/** A key for one intended start, 128 random bits: `crypto.randomUUID` is not there on a page
+ * without TLS. */
+export function newKey(): string {
+  const bytes = crypto.getRandomValues(new Uint8Array(16));
+  return Array.from(bytes, (byte) => byte.toString(16).padStart(2, "0")).join("");
+}
+
 /** What a sequence is asked about. */
 export interface SequenceRequest {
   sequence: string;
@@ -123,12 +133,14 @@ export interface Stretch {
 }
 
 const at = (id: string, what: string): string => `/v1/records/${encodeURIComponent(id)}${what}`;
+const runAt = (id: string, what: string): string => `/v1/runs/${encodeURIComponent(id)}${what}`;
+const calibrationAt = (id: string, what: string): string => `/v1/calibrations/${encodeURIComponent(id)}${what}`;
 const sinkAt = (name: string, what: string): string => `/v1/sinks/${encodeURIComponent(name)}${what}`;
 
 export const daemon = {
   sinks: (): Promise<SinkList> => ask("GET", "/v1/sinks"),
   runs: async (): Promise<Run[]> => (await ask<{ runs: Run[] }>("GET", "/v1/runs")).runs,
-  run: (id: string): Promise<Run> => ask("GET", `/v1/runs/${encodeURIComponent(id)}`),
+  run: (id: string): Promise<Run> => ask("GET", runAt(id, "")),
 
   /** One request without a body; `keepalive` lets it through even as the page is left. */
   off: async (sink: string | null): Promise<Off[]> => {
@@ -147,7 +159,7 @@ export const daemon = {
   },
   reset: (sink: string): Promise<unknown> => ask("POST", sinkAt(sink, "/reset")),
   command: (id: string, what: "stop" | "hold" | "continue"): Promise<Run> =>
-    ask("POST", `/v1/runs/${encodeURIComponent(id)}/${what}`),
+    ask("POST", runAt(id, `/${what}`)),
 
   check: (body: SequenceRequest, signal: AbortSignal): Promise<Check> =>
     ask("POST", "/v1/sequences/check", { body, signal }),
@@ -155,6 +167,20 @@ export const daemon = {
     inTurn(() => ask("POST", "/v1/sequences/rehearse", { body })),
   start: (body: SequenceRequest, key: string): Promise<Run> =>
     ask("POST", "/v1/runs", { body, headers: { "Idempotency-Key": key } }),
+
+  beginByHand: (body: unknown, key: string): Promise<Run> =>
+    ask("POST", "/v1/runs/by-hand", { body, headers: { "Idempotency-Key": key } }),
+  setpoint: (id: string, setpoint: string): Promise<Run> =>
+    ask("POST", runAt(id, "/setpoint"), { body: { setpoint } }),
+  /** Holds what is set for another interval. */
+  renew: (id: string): Promise<Run> => ask("POST", runAt(id, "/renew")),
+  beginCalibration: (body: unknown, key: string): Promise<Calibration> =>
+    ask("POST", "/v1/calibrations", { body, headers: { "Idempotency-Key": key } }),
+  calibration: (id: string): Promise<Calibration> => ask("GET", calibrationAt(id, "")),
+  meterReading: (id: string, body: { current?: string; voltage?: string }): Promise<Calibration> =>
+    ask("POST", calibrationAt(id, "/reading"), { body }),
+  finishCalibration: (id: string): Promise<CalibrationOutcome> => ask("POST", calibrationAt(id, "/finish")),
+  certificates: (): Promise<CertificateList> => ask("GET", "/v1/certificates"),
 
   records: (): Promise<RecordList> => inTurn(() => ask("GET", "/v1/records")),
   record: (id: string): Promise<RecordOne> => inTurn(() => ask("GET", at(id, ""))),

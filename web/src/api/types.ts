@@ -88,6 +88,8 @@ export interface Run {
   reading: Reading | null;
   margins: Margin[];
   crossings: Crossing[];
+  /** What was asked for last, of a run by hand. */
+  by_hand: { setpoint_a: number; interval_s: number } | null;
   ending: Ending | null;
   record: string;
   sealed: boolean;
@@ -310,4 +312,91 @@ export interface Comparison {
       discharges: [number, number][];
     };
   }[];
+}
+
+/** A calibration, or the verification of a certificate, under way. */
+export interface Calibration {
+  id: string;
+  sink: string;
+  certificate: string;
+  verifies: boolean;
+  state: "settling" | "settled" | "taken" | "ended" | "finished";
+  waits_for: string | null;
+  /** Which point is held, from 1. */
+  point: number;
+  points: number;
+  setpoint_a: number | null;
+  nominal: {
+    readbacks: number;
+    current_a: number;
+    current_deviation_a: number;
+    voltage_v: number;
+    voltage_deviation_v: number;
+    temperature_degc: number | null;
+  } | null;
+  current_points: number;
+  voltage_points: number;
+  run: Run | null;
+}
+
+/** One channel's line of a certificate. */
+export interface CertificateLine {
+  channel: string;
+  unit: string;
+  offset: number;
+  offset_uncertainty: number;
+  slope: number;
+  slope_uncertainty: number;
+  points: number;
+  largest_residual: number;
+  outliers: number[];
+  range: [number, number];
+  bent: boolean;
+}
+
+export interface Verification {
+  certificate: string;
+  at: string;
+  operator: string;
+  record: string | null;
+  passed: boolean;
+  points: {
+    channel: string;
+    unit: string;
+    nominal: number;
+    corrected: number;
+    reference: number;
+    error: number;
+    expanded: number;
+    reference_expanded: number;
+    normalised_error: number;
+    passed: boolean;
+  }[];
+}
+
+export interface Certificate {
+  identity: string;
+  sink: string;
+  operator: string;
+  issued: string;
+  valid_until: string;
+  validity: "valid" | "expired" | "not_yet";
+  meters: string[];
+  record: string | null;
+  lines: CertificateLine[];
+  drift: { channel: string; at_micro: number; change_micro: number; expanded_micro: number; normalised_change: number; significant: boolean }[];
+  verifications: Verification[];
+}
+
+export interface CertificateList {
+  certificates: Certificate[];
+  troubles: string[];
+}
+
+export interface CalibrationOutcome {
+  id: string;
+  file: string;
+  bench_entry: string | null;
+  certificate: Certificate | null;
+  verification: Verification | null;
 }

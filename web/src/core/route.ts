@@ -4,6 +4,8 @@
 export type Route =
   | { view: "bench" }
   | { view: "sequence" }
+  | { view: "hand" }
+  | { view: "calibration" }
   | { view: "records" }
   | { view: "record"; id: string }
   | { view: "compare"; groups: Grouped[] };
@@ -20,7 +22,9 @@ export function parse(hash: string): Route {
   const [view, rest] = hash.replace(/^#?\/?/, "").split("/", 2);
   switch (view) {
     case "sequence":
-      return { view: "sequence" };
+    case "hand":
+    case "calibration":
+      return { view };
     case "records":
       return { view: "records" };
     case "record":
@@ -43,6 +47,8 @@ export function link(route: Route): string {
     case "compare":
       return `#/compare/${route.groups.map(({ name, ids }) => (name === "" ? "" : `${encodeURIComponent(name)}:`) + ids.join(",")).join(";")}`;
     case "sequence":
+    case "hand":
+    case "calibration":
     case "records":
       return `#/${route.view}`;
   }

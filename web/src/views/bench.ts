@@ -4,24 +4,18 @@ import { daemon } from "../api/client.ts";
 import type { Crossing, Run, Sink } from "../api/types.ts";
 import { type Bench, type Line, linkText, standing } from "../core/bench.ts";
 import {
-  UNKNOWN,
-  ampereHours,
-  amperes,
   clockNote,
-  degrees,
   duration,
   expectedEnd,
   timeOfDay,
   toldApart,
-  volts,
-  watts,
-  wattHours,
   words,
 } from "../core/format.ts";
 import { link } from "../core/route.ts";
 import { List, type Part, attribute, h, reasonOf, show, write } from "../dom.ts";
 import { say } from "../parts/announce.ts";
 import { margins } from "../parts/margins.ts";
+import { readingList } from "../parts/readings.ts";
 import type { View } from "../view.ts";
 
 export function benchView(): View {
@@ -158,36 +152,6 @@ function crossingText(crossing: Crossing): string {
   const [value, limit] = toldApart(crossing.value, crossing.threshold, crossing.unit);
   const who = crossing.by_sink ? "; the sink itself acted first" : "";
   return `Tripped: ${words(crossing.interlock)}, ${value} where ${limit} is the limit${who}.`;
-}
-
-const READINGS: readonly [string, (sink: Sink, run: Run | null | undefined) => string][] = [
-  ["voltage", (sink) => volts(sink.reading?.voltage_v)],
-  ["current", (sink) => amperes(sink.reading?.current_a)],
-  ["power", (sink) => watts(sink.reading?.power_w)],
-  ["heat sink", temperatureOf],
-  ["charge", (_, run) => (run ? ampereHours(run.charge_ah) : UNKNOWN)],
-  ["energy", (_, run) => (run ? wattHours(run.energy_wh) : UNKNOWN)],
-];
-
-function temperatureOf(sink: Sink): string {
-  const fault = sink.reading?.sensor_fault;
-  return fault ? `sensor ${fault}` : degrees(sink.reading?.temperature_degc);
-}
-
-/** The latest readback, as a list of quantities. */
-function readingList(ended: () => Bench["ended"]): Part<Sink> {
-  const values = READINGS.map(([name, text]) => ({ name, text, cell: h("dd", { class: "figures" }) }));
-  const element = h(
-    "dl",
-    { class: "readings" },
-    ...values.map(({ name, cell }) => h("div", {}, h("dt", {}, name), cell)),
-  );
-  return {
-    element,
-    update(sink) {
-      for (const { text, cell } of values) write(cell, text(sink, sink.run ?? ended()[sink.name]));
-    },
-  };
 }
 
 function chronicleLine(line: Line): Part<Line> {

@@ -1,6 +1,6 @@
 // A sequence: pasted or picked, its findings and its shape, rehearsed, started.
 
-import { Refused, type SequenceRequest, daemon } from "../api/client.ts";
+import { Refused, type SequenceRequest, daemon, newKey } from "../api/client.ts";
 import type { Check, Finding, Rehearsal } from "../api/types.ts";
 import type { Bench } from "../core/bench.ts";
 import { traceOf } from "../core/curve.ts";
@@ -291,10 +291,4 @@ class SequencePage implements View {
       this.#start.disabled = false;
     }
   }
-}
-
-/** A key of 128 random bits: `crypto.randomUUID` is not there on a page without TLS. */
-function newKey(): string {
-  const bytes = crypto.getRandomValues(new Uint8Array(16));
-  return Array.from(bytes, (byte) => byte.toString(16).padStart(2, "0")).join("");
 }

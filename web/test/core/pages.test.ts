@@ -12,6 +12,8 @@ test("every place has an address that leads back to it", () => {
   const routes: Route[] = [
     { view: "bench" },
     { view: "sequence" },
+    { view: "hand" },
+    { view: "calibration" },
     { view: "records" },
     { view: "record", id: ID },
     { view: "compare", groups: [{ name: "", ids: [ID, ID.replace("0", "1")] }] },
