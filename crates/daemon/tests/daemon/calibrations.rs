@@ -203,6 +203,19 @@ fn a_sink_is_calibrated_over_http_and_everything_is_corrected_at_once() {
     assert_eq!(listed["certificates"][0]["validity"], "valid");
     let whole = desk.get("/v1/certificates/weir-left-1");
     let certificate = Certificate::from_json(&whole.text).unwrap();
+    // The samples behind the readbacks tell what noise leaves of the converter's step.
+    let points = &certificate.measurements;
+    let samples = points
+        .current_points
+        .iter()
+        .map(|point| point.spread.unwrap().samples);
+    assert!(samples.eq(points.current_points.iter().map(|_| 100)));
+    assert!(
+        points
+            .voltage_points
+            .iter()
+            .all(|point| point.spread.is_some())
+    );
     assert_eq!(
         desk.get("/v1/certificates/none").code(),
         "no-such-certificate"
