@@ -352,6 +352,10 @@ pub(crate) async fn take(
         let detail = "no meter's reading is given; name `current`, `voltage` or both";
         return Err(refused(detail));
     }
+    if !read.voltage.is_empty() && calibration.request.statement.voltage_meter.is_none() {
+        let detail = "a voltage is given, but no `voltage_meter` was stated; leave the voltage out";
+        return Err(refused(detail));
+    }
     let Some(back) = readbacks(sink, id).await? else {
         let run = sink.view().run.filter(|run| run.id == id);
         let ending = run.and_then(|run| run.ending);

@@ -13,9 +13,9 @@
 //! What a calibration would find beyond that is not in it, and the figures say so.
 
 use quantity::{Quantity, Textual};
-use sink::bench::{Codes, ReadError, SinkEntry};
+use sink::bench::{Adc, Codes, ReadError, SinkEntry};
 use sink::calibration::{
-    CalibrationError, Certificate, Channel as Fitted, ChannelSummary, ReferenceMeter,
+    CalibrationError, Certificate, Channel as Fitted, ChannelSummary, Measurements, ReferenceMeter,
 };
 use sink::uncertainty::{
     Budget, Contribution, DegreesOfFreedom, Evaluation, Shape, Stated, of_resolution,
@@ -85,11 +85,6 @@ impl Instrument {
     pub(crate) fn nominal(entry: &SinkEntry, hottest_degc: Option<f64>) -> Self {
         let front_end = &entry.front_end;
         let adc = front_end.adc;
-        let codes = f64::from(1_u32 << adc.bits.min(31));
-        let steps = match adc.codes {
-            Codes::PowerOfTwo => codes,
-            Codes::PowerOfTwoLessOne => codes - 1.0,
-        };
         let resistor = front_end.sense_resistor;
         let warming = hottest_degc.map_or(0.0, |hottest| (hottest - REFERENCE_DEGC).abs());
         let drift = resistor.temperature_coefficient.fraction_per_kelvin() * warming;
@@ -97,37 +92,30 @@ impl Instrument {
             Source::stated_gain("sense resistor, tolerance", resistor.tolerance.fraction()),
             Source::stated_gain("sense resistor, temperature", drift),
         ];
-        let mut voltage = Vec::new();
         current.extend(
             adc.current_error
                 .map(|error| Source::stated_error("reading converter, current", &error)),
         );
-        voltage.extend(
-            adc.voltage_error
-                .map(|error| Source::stated_error("reading converter, voltage", &error)),
-        );
-        let current_step = adc.current_full_scale.amperes() / steps;
-        let voltage_step = adc.voltage_full_scale.volts() / steps;
+        let current_step = adc.current_full_scale.amperes() / steps_of(&adc);
         current.push(Source::step(
             "converter step and noise, current",
             current_step,
         ));
-        voltage.push(Source::step(
-            "converter step and noise, voltage",
-            voltage_step,
-        ));
         Self {
             current: Channel::new(current, current_step),
-            voltage: Channel::new(voltage, voltage_step),
+            voltage: Channel::nominal_voltage(entry),
             leads_ohm: 0.0,
         }
     }
 
-    /// Of a sink with a valid certificate.
+    /// Of a sink with a valid certificate; what that says nothing of is nominal.
     ///
     /// # Errors
     /// Those of its fits; none for a certificate that was computed again from its points.
-    pub(crate) fn certified(certificate: &Certificate) -> Result<Self, CalibrationError> {
+    pub(crate) fn certified(
+        certificate: &Certificate,
+        entry: &SinkEntry,
+    ) -> Result<Self, CalibrationError> {
         let channels = certificate.channels()?;
         let measurements = &certificate.measurements;
         let mut current = vec![
@@ -152,30 +140,16 @@ impl Instrument {
             "converter step and noise, current",
             current_step,
         ));
-        let mut voltage = vec![
-            fitted(
-                [
-                    "certificate, voltage: offset and slope",
-                    "certificate, voltage: curve",
-                ],
-                &certificate.voltage_read,
-                channels.voltage_read,
-            ),
-            of_meter("reference meter, voltage", &measurements.voltage_meter),
-        ];
-        let voltage_step = measurements.voltage_step.volts();
-        voltage.push(Source::step(
-            "converter step and noise, voltage",
-            voltage_step,
-        ));
         Ok(Self {
             current: Channel {
                 range: Some(true_range(&certificate.current_read)),
                 ..Channel::new(current, current_step)
             },
-            voltage: Channel {
-                range: Some(true_range(&certificate.voltage_read)),
-                ..Channel::new(voltage, voltage_step)
+            voltage: match (&certificate.voltage_read, channels.voltage_read) {
+                (Some(summary), Some(fit)) => {
+                    Channel::certified_voltage(measurements, summary, fit)
+                }
+                _ => Channel::nominal_voltage(entry),
             },
             leads_ohm: 0.0,
         })
@@ -201,6 +175,40 @@ impl Channel {
             resolution: of_resolution(step),
             noise: None,
             range: None,
+        }
+    }
+
+    /// Of a voltage readback that nobody calibrated.
+    fn nominal_voltage(entry: &SinkEntry) -> Self {
+        let adc = entry.front_end.adc;
+        let step = adc.voltage_full_scale.volts() / steps_of(&adc);
+        let stated = adc
+            .voltage_error
+            .map(|error| Source::stated_error("reading converter, voltage", &error));
+        let step_alone = Source::step("converter step and noise, voltage", step);
+        Self::new(stated.into_iter().chain([step_alone]).collect(), step)
+    }
+
+    fn certified_voltage(
+        measurements: &Measurements,
+        summary: &ChannelSummary,
+        fit: Fitted,
+    ) -> Self {
+        let mut sources = vec![fitted(
+            [
+                "certificate, voltage: offset and slope",
+                "certificate, voltage: curve",
+            ],
+            summary,
+            fit,
+        )];
+        let meter = measurements.voltage_meter.as_ref();
+        sources.extend(meter.map(|meter| of_meter("reference meter, voltage", meter)));
+        let step = measurements.voltage_step.volts();
+        sources.push(Source::step("converter step and noise, voltage", step));
+        Self {
+            range: Some(true_range(summary)),
+            ..Self::new(sources, step)
         }
     }
 
@@ -375,6 +383,15 @@ impl Source {
             fresh: true,
             ..Self::type_b(name, of_resolution(step), 0.0)
         }
+    }
+}
+
+/// How many steps a converter's full scale has.
+fn steps_of(adc: &Adc) -> f64 {
+    let codes = f64::from(1_u32 << adc.bits.min(31));
+    match adc.codes {
+        Codes::PowerOfTwo => codes,
+        Codes::PowerOfTwoLessOne => codes - 1.0,
     }
 }
 

@@ -39,6 +39,8 @@ pub struct Figures {
 pub enum Standing {
     /// A valid certificate of the sink.
     Calibrated,
+    /// A valid certificate of the sink's current; the voltage is nominal, uncalibrated.
+    CurrentCalibrated,
     /// Nothing but the front end's nominal values and stated tolerances.
     NominalUncalibrated,
 }
@@ -134,6 +136,17 @@ pub enum Unit {
     /// Nothing: a ratio or an exponent.
     #[serde(rename = "1")]
     One,
+}
+
+impl Standing {
+    /// As it is written beside figures.
+    pub const fn words(self) -> &'static str {
+        match self {
+            Self::Calibrated => "calibrated",
+            Self::CurrentCalibrated => "current calibrated; voltage nominal, uncalibrated",
+            Self::NominalUncalibrated => "nominal, uncalibrated",
+        }
+    }
 }
 
 impl Unit {

@@ -55,9 +55,13 @@ impl Trust {
                 "certificate `{}` is not used: {objection}",
                 certificate.measurements.identity
             ))),
-            None => match Instrument::certified(&certificate) {
+            None => match Instrument::certified(&certificate, entry) {
                 Ok(instrument) => Self {
-                    standing: Standing::Calibrated,
+                    standing: if certificate.voltage_read.is_some() {
+                        Standing::Calibrated
+                    } else {
+                        Standing::CurrentCalibrated
+                    },
                     instrument: Instrument {
                         leads_ohm,
                         ..instrument

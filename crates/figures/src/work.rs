@@ -149,6 +149,15 @@ impl Workbench<'_> {
                     .to_owned(),
             );
         }
+        if figures.standing == Standing::CurrentCalibrated {
+            figures.warnings.push(
+                "the certificate is of the current alone: the voltage is nominal, uncalibrated, and \
+                 so is all that needs it (energies, voltages, resistances, powers, and the instant of \
+                 a cut-off); the uncertainty of the voltage holds what the bench file states of its \
+                 converter, and nothing that only a calibration would find"
+                    .to_owned(),
+            );
+        }
         self.warn_of_range(figures);
         let open = self
             .walked

@@ -2,7 +2,7 @@
 
 mod style;
 
-use figures::{Figures, Standing};
+use figures::Figures;
 use journal::{ClockKind, Manifest};
 
 use crate::curves::plots;
@@ -139,11 +139,6 @@ impl Report<'_> {
             .as_ref()
             .map(|ended| ended.how.clone())
             .or_else(|| self.evidence.course.ended.clone())
-    }
-
-    /// Whether a certificate stands behind the figures.
-    pub(crate) fn is_calibrated(&self) -> bool {
-        self.figures.standing == Standing::Calibrated
     }
 }
 

@@ -17,8 +17,8 @@ pub enum Calibration {
         valid_for: Span,
         /// The true currents between which it was calibrated.
         current: [Current; 2],
-        /// The true voltages between which it was calibrated.
-        voltage: [Voltage; 2],
+        /// The true voltages between which it was calibrated; `None`: the voltage was not.
+        voltage: Option<[Voltage; 2]>,
     },
 }
 
@@ -41,9 +41,11 @@ impl Calibration {
                 let nominal = Current::from_amperes(micro / 1e6).unwrap_or_default();
                 correction.current_from_setpoint(nominal)
             }),
-            voltage: certificate.voltage_read.range_micro.map(|micro| {
-                let nominal = Voltage::from_volts(micro / 1e6).unwrap_or_default();
-                correction.terminal_voltage(nominal)
+            voltage: certificate.voltage_read.as_ref().map(|line| {
+                line.range_micro.map(|micro| {
+                    let nominal = Voltage::from_volts(micro / 1e6).unwrap_or_default();
+                    correction.terminal_voltage(nominal)
+                })
             }),
         }
     }

@@ -1,7 +1,7 @@
 //! Calibration: from points against a reference meter to a certificate.
 //!
-//! Three curves are fitted (current set, current read, voltage read) by weighted
-//! least squares: straight lines, and second-order curves only where an F-test
+//! Three curves are fitted (current set, current read, and, where voltages were
+//! measured, voltage read) by weighted least squares: straight lines, and second-order curves only where an F-test
 //! says that the residuals demand them.
 //!
 //! Invariants:
@@ -85,14 +85,16 @@ pub struct Measurements {
     pub voltage_step: Voltage,
     /// The meter that measured the current.
     pub current_meter: ReferenceMeter<Current>,
-    /// The meter that measured the voltage.
-    pub voltage_meter: ReferenceMeter<Voltage>,
+    /// The meter that measured the voltage; none is needed where only the current is calibrated.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub voltage_meter: Option<ReferenceMeter<Voltage>>,
     /// The record of the run in which the points were taken, if there is one.
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub record: Option<String>,
     /// The current points.
     pub current_points: Vec<CurrentPoint>,
-    /// The voltage points.
+    /// The voltage points; none where only the current is calibrated.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
     pub voltage_points: Vec<VoltagePoint>,
 }
 
@@ -139,8 +141,10 @@ pub struct Certificate {
     pub current_set: ChannelSummary,
     /// The curve of the current readback, micro-units.
     pub current_read: ChannelSummary,
-    /// The curve of the voltage readback, micro-units.
-    pub voltage_read: ChannelSummary,
+    /// The curve of the voltage readback, micro-units; absent where it is not calibrated and its
+    /// nominal values stand.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub voltage_read: Option<ChannelSummary>,
 }
 
 /// The fitted channels of a certificate, for budgets at any reading.
@@ -150,8 +154,8 @@ pub struct Channels {
     pub current_set: Channel,
     /// The current readback.
     pub current_read: Channel,
-    /// The voltage readback.
-    pub voltage_read: Channel,
+    /// The voltage readback, if it is calibrated.
+    pub voltage_read: Option<Channel>,
 }
 
 /// A calibration that gives no certificate.
@@ -196,6 +200,12 @@ pub enum CalibrationError {
         /// Which figure.
         what: &'static str,
     },
+    /// Voltage points of a meter that nothing is stated of.
+    #[error(
+        "there are voltage points and no statement of the meter that read them; state it as \
+         `voltage_meter`, or leave the voltages out to calibrate the current alone"
+    )]
+    NoVoltageMeter,
     /// A step or resolution of zero.
     #[error(
         "{channel}: the converter's step and the meter's resolution are not above zero; state them"
@@ -280,13 +290,16 @@ fn computed(form: u32, measurements: Measurements) -> Result<Certificate, Calibr
         correction: Correction {
             current_set: channels.current_set.curve()?,
             current_read: channels.current_read.curve()?,
-            voltage_read: channels.voltage_read.curve()?,
+            voltage_read: match &channels.voltage_read {
+                Some(channel) => channel.curve()?,
+                None => Curve::IDENTITY,
+            },
             // The leads are the bench's, not the certificate's.
             ..Correction::IDENTITY
         },
         current_set: channels.current_set.summary(),
         current_read: channels.current_read.summary(),
-        voltage_read: channels.voltage_read.summary(),
+        voltage_read: channels.voltage_read.as_ref().map(Channel::summary),
         measurements,
     })
 }
@@ -354,17 +367,22 @@ impl Channels {
                 &read.collect::<Vec<_>>(),
                 &of_current(measurements.current_step, read_steps),
             )?,
-            voltage_read: Channel::fit(
-                "voltage read",
-                &voltage.collect::<Vec<_>>(),
-                &Stated {
-                    meter: &measurements.voltage_meter,
-                    step: measurements.voltage_step,
-                    steps: read_steps,
-                    // The voltage does not pass through the sense resistor.
-                    drift: 0.0,
-                },
-            )?,
+            voltage_read: if measurements.voltage_points.is_empty() {
+                None
+            } else {
+                let meter = measurements.voltage_meter.as_ref();
+                Some(Channel::fit(
+                    "voltage read",
+                    &voltage.collect::<Vec<_>>(),
+                    &Stated {
+                        meter: meter.ok_or(CalibrationError::NoVoltageMeter)?,
+                        step: measurements.voltage_step,
+                        steps: read_steps,
+                        // The voltage does not pass through the sense resistor.
+                        drift: 0.0,
+                    },
+                )?)
+            },
         })
     }
 }

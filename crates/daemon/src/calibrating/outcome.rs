@@ -6,8 +6,8 @@ use quantity::{Quantity, Text, Textual};
 use sequencer::event::Command;
 use sink::accumulate::Moments;
 use sink::calibration::{
-    Certificate, Channel, CurrentPoint, Identity, ReferenceMeter, VerificationPoint, calibrate,
-    verify,
+    CalibrationError, Certificate, Channel, CurrentPoint, Identity, ReferenceMeter,
+    VerificationPoint, calibrate, verify,
 };
 use tokio::sync::oneshot;
 use uuid::Uuid;
@@ -170,14 +170,17 @@ fn judged(
         })
     });
     let voltage: Vec<_> = voltage.collect();
-    let meter = &statement.voltage_meter;
-    all.extend(channel(
-        "voltage read",
-        "V",
-        &channels.voltage_read,
-        meter,
-        &voltage,
-    )?);
+    if voltage.is_empty() {
+        return Ok(all);
+    }
+    let Some(of) = &channels.voltage_read else {
+        return Err(refused(
+            "the certificate is of the current alone; verify it without voltages",
+        ));
+    };
+    let meter = statement.voltage_meter.as_ref();
+    let meter = meter.ok_or_else(|| refused(CalibrationError::NoVoltageMeter.to_string()))?;
+    all.extend(channel("voltage read", "V", of, meter, &voltage)?);
     Ok(all)
 }
 

@@ -265,16 +265,19 @@ impl CertificateSummary {
             issued: time(of.issued_unix_s),
             valid_until: time(of.valid_until_unix_s),
             validity: certificate.validity(at_unix_s),
-            meters: vec![
-                of.current_meter.identity.clone(),
-                of.voltage_meter.identity.clone(),
-            ],
+            meters: std::iter::once(&of.current_meter.identity)
+                .chain(of.voltage_meter.as_ref().map(|meter| &meter.identity))
+                .cloned()
+                .collect(),
             record: of.record.clone(),
-            lines: vec![
-                LineView::new("current set", "A", &certificate.current_set),
-                LineView::new("current read", "A", &certificate.current_read),
-                LineView::new("voltage read", "V", &certificate.voltage_read),
-            ],
+            lines: [
+                ("current set", "A", Some(&certificate.current_set)),
+                ("current read", "A", Some(&certificate.current_read)),
+                ("voltage read", "V", certificate.voltage_read.as_ref()),
+            ]
+            .into_iter()
+            .filter_map(|(name, unit, line)| Some(LineView::new(name, unit, line?)))
+            .collect(),
             drift: Vec::new(),
             verifications: Vec::new(),
         }

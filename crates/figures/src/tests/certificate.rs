@@ -105,10 +105,10 @@ pub(crate) fn certificate(errors: &Errors, meter_errors: MeterErrors, seed: u64)
             Current::from_milliamperes(3_000),
             Current::from_microamperes(10),
         ),
-        voltage_meter: meter(
+        voltage_meter: Some(meter(
             Voltage::from_millivolts(10_000),
             Voltage::from_microvolts(100),
-        ),
+        )),
         record: None,
         current_points,
         voltage_points,
@@ -176,12 +176,43 @@ fn a_valid_certificate_makes_figures_calibrated_and_right() {
     assert!((only(&figures, Name::Duration).value - 3600.0).abs() < 0.01);
 }
 
+/// Charge is calibrated and as certain as before; what needs the voltage is nominal, and said to be.
+#[test]
+fn a_certificate_of_the_current_alone_leaves_voltages_nominal() {
+    let whole = |figures: &Figures, name| {
+        let found = figures.figures.iter().find(|figure| figure.name == name);
+        found.unwrap().clone()
+    };
+    let (both, _) = hour(Certificate::clone);
+    let (figures, _) = hour(|issued| {
+        restated(issued, |stated| {
+            stated.voltage_points.clear();
+            stated.voltage_meter = None;
+        })
+    });
+    assert_eq!(figures.standing, Standing::CurrentCalibrated);
+    let warned = &figures.warnings;
+    assert!(
+        warned
+            .iter()
+            .any(|warning| warning.contains("current alone"))
+    );
+    let charge = whole(&figures, Name::DeliveredCharge);
+    assert_eq!(charge.budget, whole(&both, Name::DeliveredCharge).budget);
+    let mean = whole(&figures, Name::MeanVoltage);
+    let lines = mean.budget.contributions;
+    assert!(
+        lines.iter().all(|line| !line.name.contains("meter")),
+        "{lines:?}"
+    );
+}
+
 /// `Q = a T + b Q_nominal`: with the covariance of the fit, offset and slope together are better
 /// known than each alone would let expect, and as well as the fit predicts at the mean current.
 #[test]
 fn offset_and_slope_enter_with_their_covariance() {
     let certificate = certificate(&Errors::default(), MeterErrors::default(), 3);
-    let instrument = Instrument::certified(&certificate).unwrap();
+    let instrument = Instrument::certified(&certificate, &left()).unwrap();
     let summary = &certificate.current_read;
     for (amperes, hours) in [(0.3, 5.0), (1.5, 2.0), (2.8, 1.0)] {
         let lines = instrument.current.over(hours, amperes * hours);
@@ -220,7 +251,7 @@ fn a_bent_certificate_enters_as_its_fit_predicts() {
         }
     });
     assert!(bent.current_read.second_order.demanded);
-    let instrument = Instrument::certified(&bent).unwrap();
+    let instrument = Instrument::certified(&bent, &left()).unwrap();
     let fit = bent.channels().unwrap().current_read;
     for (amperes, hours) in [(0.3, 5.0), (1.5, 2.0), (2.8, 1.0)] {
         let lines = instrument.current.over(hours, amperes * hours);

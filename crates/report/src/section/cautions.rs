@@ -1,5 +1,6 @@
 //! What a reader must know before believing a number, and the usual cautions.
 
+use figures::Standing;
 use journal::ClockKind;
 use sequencer::event::{Ending, Interlock};
 
@@ -74,7 +75,7 @@ fn of_the_record(report: &Report<'_>, list: &mut List) {
 
 /// Whether the figures can be believed.
 fn of_the_figures(report: &Report<'_>, list: &mut List) {
-    if !report.is_calibrated() {
+    if report.figures.standing == Standing::NominalUncalibrated {
         list.grave(
             "Nominal, uncalibrated.",
             "No valid certificate stands behind the figures. Their uncertainty holds what the \

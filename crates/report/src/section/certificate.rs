@@ -41,7 +41,9 @@ pub(crate) fn certificate(report: &Report<'_>) -> Markup {
     );
     table.row("ambient", exact(&measured.ambient));
     table.row("current meter", meter(&measured.current_meter));
-    table.row("voltage meter", meter(&measured.voltage_meter));
+    if let Some(voltage_meter) = &measured.voltage_meter {
+        table.row("voltage meter", meter(voltage_meter));
+    }
     section.add(&table.table());
     section
         .raw("<div class=\"wide-table\"><table>\n")
@@ -53,13 +55,18 @@ pub(crate) fn certificate(report: &Report<'_>) -> Markup {
             ("", "straight?"),
         ]));
     for (name, line, symbol) in [
-        ("current set", &certificate.current_set, "A"),
-        ("current readback", &certificate.current_read, "A"),
-        ("voltage readback", &certificate.voltage_read, "V"),
+        ("current set", Some(&certificate.current_set), "A"),
+        ("current readback", Some(&certificate.current_read), "A"),
+        ("voltage readback", certificate.voltage_read.as_ref(), "V"),
     ] {
-        row(&mut section, name, line, symbol);
+        if let Some(line) = line {
+            row(&mut section, name, line, symbol);
+        }
     }
     section.raw("</tbody></table></div>\n");
+    if certificate.voltage_read.is_none() {
+        section.raw("<p>The voltage was not calibrated: its nominal values stand.</p>\n");
+    }
     section
 }
 

@@ -1,6 +1,6 @@
 //! The figures, those that the data cannot support, the methods and the budgets.
 
-use figures::{Figure, Figures, Unit, with_uncertainty};
+use figures::{Figure, Figures, Standing, Unit, with_uncertainty};
 use sink::uncertainty::Evaluation;
 
 use crate::page::Report;
@@ -21,10 +21,15 @@ pub(crate) fn results(report: &Report<'_>) -> Markup {
             .raw("<p>A value stands with its standard uncertainty in brackets, in units of its ");
         section.raw("last digits: 3.187(14)\u{202f}Ah is 3.187\u{202f}Ah with ");
         section.raw("u\u{202f}=\u{202f}0.014\u{202f}Ah (JCGM 100:2008, 7.2.2). ");
-        section.raw(if report.is_calibrated() {
-            "A valid certificate of the sink stands behind them.</p>\n"
-        } else {
-            "They are <strong>nominal, uncalibrated</strong>.</p>\n"
+        section.raw(match figures.standing {
+            Standing::Calibrated => "A valid certificate of the sink stands behind them.</p>\n",
+            Standing::CurrentCalibrated => {
+                "A valid certificate of the sink’s current stands behind them; the voltage, and all \
+                 that needs it, is <strong>nominal, uncalibrated</strong>.</p>\n"
+            }
+            Standing::NominalUncalibrated => {
+                "They are <strong>nominal, uncalibrated</strong>.</p>\n"
+            }
         });
         let methods = methods(figures);
         values(&mut section, figures, &methods);

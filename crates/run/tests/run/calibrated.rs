@@ -327,7 +327,7 @@ fn check(case: Case) {
             let shown = correction.terminal_voltage(one.voltage).volts();
             volts.judge(
                 shown - held.true_v(),
-                &channels.voltage_read,
+                channels.voltage_read.as_ref().unwrap(),
                 one.voltage.volts() * 1e6,
             );
         }

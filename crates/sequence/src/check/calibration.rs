@@ -58,6 +58,20 @@ pub(super) fn covers(scene: &PlanScene<'_>, findings: &mut Findings) {
     for (target, pointer) in ends_of_currents(scene) {
         outside(target, current, "a current of", pointer, findings);
     }
+    let Some(voltage) = voltage else {
+        findings.push(Finding::new(
+            Rule::BeyondCalibration,
+            "/dut",
+            format!(
+                "the certificate of the sink `{}` is of its current alone: voltages, energies and \
+                 resistances of this run will be nominal, uncalibrated, and so will a voltage that \
+                 ends a step",
+                scene.facts.name
+            ),
+            "calibrate the voltage as well if figures that need it are to decide something",
+        ));
+        return;
+    };
     let dut = &scene.plan.dut;
     for (volts, key) in [
         (dut.voltage_min, "voltage_min"),

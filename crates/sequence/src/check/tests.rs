@@ -62,12 +62,20 @@ impl Bed {
         self.sequence["dut"][key] = value;
     }
 
-    /// With a certificate: seconds it still holds, microamperes and microvolts it covers.
-    fn calibrated(&mut self, seconds: u64, current: [i64; 2], voltage: [i64; 2]) {
+    /// With a certificate: seconds it still holds, microamperes and microvolts it covers;
+    /// `None`: it is of the current alone.
+    fn calibrated(
+        &mut self,
+        seconds: u64,
+        current: [i64; 2],
+        voltage: impl Into<Option<[i64; 2]>>,
+    ) {
         self.options.calibration = Calibration::Certificate {
             valid_for: Span::from_secs(seconds),
             current: current.map(Current::from_microamperes),
-            voltage: voltage.map(Voltage::from_microvolts),
+            voltage: voltage
+                .into()
+                .map(|ends| ends.map(Voltage::from_microvolts)),
         };
     }
 

@@ -53,8 +53,8 @@ pub enum DriftError {
     Budget(#[from] BudgetError),
 }
 
-/// What has changed from one certificate to a later one of the same sink; a channel whose ranges
-/// do not meet is left out.
+/// What has changed from one certificate to a later one of the same sink; a channel that one of
+/// them lacks, or whose ranges do not meet, is left out.
 ///
 /// # Errors
 /// [`DriftError`] for certificates of different sinks.
@@ -70,12 +70,19 @@ pub fn drift(earlier: &Certificate, later: &Certificate) -> Result<Vec<Drift>, D
     }
     let (one, other) = (earlier.channels()?, later.channels()?);
     let pairs = [
-        ("current set", &one.current_set, &other.current_set),
-        ("current read", &one.current_read, &other.current_read),
-        ("voltage read", &one.voltage_read, &other.voltage_read),
+        ("current set", Some((&one.current_set, &other.current_set))),
+        (
+            "current read",
+            Some((&one.current_read, &other.current_read)),
+        ),
+        (
+            "voltage read",
+            one.voltage_read.as_ref().zip(other.voltage_read.as_ref()),
+        ),
     ];
     let mut drifts = Vec::new();
-    for (name, one, other) in pairs {
+    for (name, pair) in pairs {
+        let Some((one, other)) = pair else { continue };
         drifts.extend(of_channel(name, one, other)?);
     }
     Ok(drifts)

@@ -29,8 +29,9 @@ pub struct Statement {
     pub valid_for_days: u32,
     /// The meter that measures the current.
     pub current_meter: ReferenceMeter<Current>,
-    /// The meter that measures the voltage.
-    pub voltage_meter: ReferenceMeter<Voltage>,
+    /// The meter that measures the voltage; none is needed to calibrate the current alone.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub voltage_meter: Option<ReferenceMeter<Voltage>>,
 }
 
 /// Which certificate it will be.

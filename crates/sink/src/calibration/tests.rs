@@ -7,6 +7,7 @@ use super::{
     CalibrationError, Certificate, CertificateError, CurrentPoint, Measurements, ReferenceMeter,
     Spread, Validity, VerificationPoint, VoltagePoint, calibrate, computed, drift, micro, verify,
 };
+use crate::correction::Curve;
 use crate::montecarlo::Random;
 use crate::uncertainty::{Stated, coverage_factor};
 
@@ -75,10 +76,10 @@ fn measurements(bend: f64, noise: f64, seed: u64) -> Measurements {
             Current::from_milliamperes(3_000),
             Current::from_microamperes(10),
         ),
-        voltage_meter: meter(
+        voltage_meter: Some(meter(
             Voltage::from_millivolts(10_000),
             Voltage::from_microvolts(100),
-        ),
+        )),
         record: None,
         current_points,
         voltage_points,
@@ -208,7 +209,7 @@ fn a_budget_names_what_contributes() {
         .iter()
         .find(|line| line.name.contains("temperature"));
     assert!((drift.unwrap().share() - 2_022_000.0 * 1e-3 / 3_f64.sqrt()).abs() < 1.0);
-    let on_voltage = channels.voltage_read.budget(4e6);
+    let on_voltage = channels.voltage_read.unwrap().budget(4e6);
     assert!(
         on_voltage
             .contributions
@@ -388,13 +389,41 @@ fn what_gives_no_certificate_is_refused_with_the_reason() {
         the certificate would end before it begins; correct its dates
         current set: the points lie at too few different abscissas; spread them over the range
         current set: a gain error of -676666667 ppb is beyond the 500000000 ppb that a correction may be; check the sense resistor and the calibration points"]].assert_eq(&messages.join("\n"));
+    let mut inputs = measurements(0.0, 0.0, 8);
+    inputs.voltage_points.truncate(1);
     assert!(matches!(
-        calibrate(Measurements {
-            voltage_points: vec![],
-            ..measurements(0.0, 0.0, 8)
-        }),
-        Err(CalibrationError::TooFewPoints { points: 0, .. })
+        calibrate(inputs),
+        Err(CalibrationError::TooFewPoints { points: 1, .. })
     ));
+    let unknown = Measurements {
+        voltage_meter: None,
+        ..measurements(0.0, 0.0, 8)
+    };
+    assert_eq!(calibrate(unknown), Err(CalibrationError::NoVoltageMeter));
+}
+
+/// A builder with one meter: the current is corrected, and voltages stay nominal.
+#[test]
+fn the_current_alone_can_be_calibrated() {
+    let certificate = calibrate(Measurements {
+        voltage_points: Vec::new(),
+        voltage_meter: None,
+        ..measurements(0.0, 0.0, 1)
+    })
+    .unwrap();
+    assert_eq!(certificate.voltage_read, None);
+    assert_eq!(certificate.correction.voltage_read, Curve::IDENTITY);
+    let both = calibrate(measurements(0.0, 0.0, 1)).unwrap();
+    assert_eq!(
+        certificate.correction.current_set,
+        both.correction.current_set
+    );
+    let json = certificate.to_json().unwrap();
+    assert!(!json.contains("voltage_meter") && !json.contains("voltage_points"));
+    assert_eq!(Certificate::from_json(&json).unwrap(), certificate);
+    // The voltage cannot have drifted from what was never known.
+    let changes = drift(&certificate, &both).unwrap();
+    assert_eq!(changes.len(), 2);
 }
 
 /// |E_n| <= 1 (ISO/IEC 17043): a sink as calibrated passes, one that has

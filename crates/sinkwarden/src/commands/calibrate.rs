@@ -127,10 +127,11 @@ fn uncertainties(certificate: &Certificate) -> Result<Vec<Uncertainty>> {
     let channels = certificate.channels()?;
     let mut all = Vec::new();
     for (channel, unit, of) in [
-        ("current set", "A", &channels.current_set),
-        ("current read", "A", &channels.current_read),
-        ("voltage read", "V", &channels.voltage_read),
+        ("current set", "A", Some(&channels.current_set)),
+        ("current read", "A", Some(&channels.current_read)),
+        ("voltage read", "V", channels.voltage_read.as_ref()),
     ] {
+        let Some(of) = of else { continue };
         let (low, high) = of.range();
         for nominal in [low, f64::midpoint(low, high), high] {
             let budget = of.budget(nominal);

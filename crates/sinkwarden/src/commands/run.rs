@@ -104,7 +104,6 @@ fn capacity(client: &Client, id: Uuid) -> Option<String> {
             )
         })
         .collect();
-    let standing =
-        print::words(&figures.standing).replace("nominal uncalibrated", "nominal, uncalibrated");
+    let standing = figures.standing.words();
     (!texts.is_empty()).then(|| format!("from the record: {} ({standing})", texts.join(", ")))
 }

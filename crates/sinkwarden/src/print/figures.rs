@@ -3,7 +3,7 @@
 use std::collections::BTreeSet;
 use std::io::{self, Write};
 
-use figures::{Figure, Figures, Standing, with_uncertainty};
+use figures::{Figure, Figures, with_uncertainty};
 
 use super::table::{table, write};
 use super::unit::{count, words};
@@ -11,10 +11,7 @@ use super::unit::{count, words};
 /// Writes the figures, those that the data cannot support, and the warnings; with `budgets` also
 /// what contributes to each uncertainty.
 pub(crate) fn figures(out: &mut dyn Write, figures: &Figures, budgets: bool) -> io::Result<()> {
-    let standing = match figures.standing {
-        Standing::Calibrated => "calibrated",
-        Standing::NominalUncalibrated => "nominal, uncalibrated",
-    };
+    let standing = figures.standing.words();
     writeln!(out, "record {}, {standing}", figures.record)?;
     writeln!(out)?;
     let mut rows = table(&["figure", "of", "value", "dominated by", "readbacks"]);

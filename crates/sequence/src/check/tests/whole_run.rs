@@ -52,6 +52,11 @@ pub(super) const CASES: &[Case] = &[
         |bed| bed.calibrated(431 * 60, [1, 3_000_000], [2_500_000, 4_200_000]),
     ),
     case(
+        Rule::BeyondCalibration,
+        |bed| bed.calibrated(431 * 60, [1, 3_000_000], None),
+        |bed| bed.calibrated(431 * 60, [1, 3_000_000], [2_500_000, 4_200_000]),
+    ),
+    case(
         // 431 min of five readbacks a second, 400 bytes each: 51.72 MB.
         Rule::DiskSpace,
         |bed| bed.options.disk_free_bytes = Some(51_719_999),

@@ -47,6 +47,7 @@ pub(super) fn hold(
 ) -> Result<Exit> {
     let client = arguments.at.client()?;
     let view: SinkView = client.get(&format!("/v1/sinks/{sink}"))?;
+    let with_voltage = statement.voltage_meter.is_some();
     let request = request(arguments, &view, statement)?;
     tell(BEFORE);
     let ready = ask("Press Enter when all is connected")?;
@@ -59,7 +60,7 @@ pub(super) fn hold(
     let begun: CalibrationView = client.start("/v1/calibrations", &request, &key)?;
     let guard = Guard::begin(&client, begun.id, arguments.interval)?;
     tell(HOW);
-    let taken = take_points(&client, begun.id);
+    let taken = take_points(&client, begun.id, with_voltage);
     let outcome = match taken {
         Ok(true) => finish(&client, begun.id),
         Ok(false) => {
@@ -126,8 +127,9 @@ fn request(
     })
 }
 
-/// Asks for one point after the other; `false`: the user gave up.
-fn take_points(client: &Client, id: Uuid) -> Result<bool> {
+/// Asks for one point after the other, of both meters or of the current's alone; `false`: the user
+/// gave up.
+fn take_points(client: &Client, id: Uuid, with_voltage: bool) -> Result<bool> {
     let path = format!("/v1/calibrations/{id}");
     let mut told: Option<String> = None;
     loop {
@@ -143,7 +145,7 @@ fn take_points(client: &Client, id: Uuid) -> Result<bool> {
             }
             CalibrationState::Settled => {
                 told = None;
-                match point(&state)? {
+                match point(&state, with_voltage)? {
                     Some(Answered::Reading(read)) => {
                         let key = Uuid::now_v7().to_string();
                         let taken: Result<CalibrationView, _> =
@@ -180,7 +182,7 @@ enum Answered {
 }
 
 /// Asks for the readings of one point; `None`: the user gave up.
-fn point(state: &CalibrationView) -> Result<Option<Answered>> {
+fn point(state: &CalibrationView, with_voltage: bool) -> Result<Option<Answered>> {
     let setpoint = state.setpoint_a.unwrap_or(0.0);
     tell(format_args!(
         "\npoint {} of {}: {} nominal",
@@ -202,6 +204,9 @@ fn point(state: &CalibrationView) -> Result<Option<Answered>> {
         Said::Nothing => {}
         Said::Finish => return Ok(Some(Answered::Finish)),
         Said::Off => return Ok(None),
+    }
+    if !with_voltage {
+        return Ok(Some(Answered::Reading(read)));
     }
     match reading("  voltage meter")? {
         Said::Reading(voltage) => read.voltage.push(voltage),
