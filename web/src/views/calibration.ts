@@ -201,10 +201,13 @@ class CalibrationPage implements View {
     this.#now = next;
     write(this.#guide, guideOf(next));
     if (next.state !== before && next.state !== "settling") say(guideOf(next));
-    if (next.state === "ended" || next.state === "taken") {
-      const why = next.run?.ending?.reason;
-      if (next.state === "ended" && why) write(this.#guide, `${guideOf(next)} (${why})`);
-    }
+    const why = next.run?.ending?.reason;
+    if (next.state === "ended" && why) write(this.#guide, `${guideOf(next)} (${why})`);
+    // Another can begin.
+    show(this.#form, next.state === "ended");
+    // It ends: there is nothing to be asked for any more.
+    const run = next.run?.state;
+    if (run === undefined || run === "ending" || run === "ended") this.#hold?.letGo();
     this.#take.disabled = next.state !== "settled";
     this.#finish.disabled = Math.max(next.current_points, next.voltage_points) === 0;
     write(this.#finish, next.state === "taken" ? "Finish" : "Finish with what is taken");

@@ -130,9 +130,11 @@ export function handView(): View {
     hold = null;
     run = null;
     sessionStorage.removeItem(KEPT);
-    const { ending } = of;
+    const how = `${of.ending?.how ?? "ended"}${of.ending?.reason ? `, ${of.ending.reason}` : ""}`;
+    // A sink that was lost has not said that it is off.
+    const lost = of.ending?.how === "interrupted";
     over.replaceChildren(
-      `${of.sink} is off: ${ending?.how ?? "ended"}${ending?.reason ? `, ${ending.reason}` : ""}. `,
+      lost ? `The run on ${of.sink} has ended: ${how}. A sink that hears nothing turns itself off; in danger, cut the circuit by hand. ` : `${of.sink} is off: ${how}. `,
       h("a", { href: link({ view: "record", id: of.id }) }, "The record"),
     );
     show(held, false);
@@ -154,8 +156,11 @@ export function handView(): View {
       if (mine === null) return;
       const sink = sinks.find(({ name }) => name === mine.sink);
       const over = Object.values(ended).find(({ id }) => id === mine.id);
-      if (over) ends(over);
-      else if (sink?.run?.id === mine.id) draw(sink, sink.run);
+      if (over) return ends(over);
+      const here = sink?.run?.id === mine.id ? sink.run : null;
+      if (sink && here) draw(sink, here);
+      // It ends: there is nothing to be asked for any more.
+      if (here === null || here.state === "ending" || here.state === "ended") hold?.letGo();
     },
     close() {
       closed = true;

@@ -107,6 +107,13 @@ test("a page that is left takes nothing further: the sink goes off, and what is 
   await page.getByLabel("A new one is called").fill("weir-left-second");
   await page.getByRole("button", { name: "Hold the first point" }).click();
   await page.getByText(/^Point 1 of 2/).first().waitFor();
+  await page.getByRole("button", { name: "Off left" }).click();
+  await page.getByText(/^The run has ended before all points were taken/).first().waitFor();
+  assert.equal(await page.getByText(/Not held/).count(), 0);
+  await until("the sink to be free", async () => (await daemon.get<Sink>("/v1/sinks/left")).run === null);
+  // Another can begin, without a reload.
+  await page.getByRole("button", { name: "Hold the first point" }).click();
+  await page.getByText(/^Point 1 of 2/).first().waitFor();
   await page.getByRole("link", { name: "Bench", exact: true }).click();
   await until("the sink to be off", async () => (await daemon.get<Sink>("/v1/sinks/left")).run === null);
   await context.close();
