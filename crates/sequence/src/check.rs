@@ -12,6 +12,7 @@ mod envelope;
 mod flow;
 mod import;
 mod interlock;
+mod leads;
 mod order;
 mod port;
 mod record;
@@ -101,6 +102,7 @@ const PLAN_RULES: &[PlanRule] = &[
     record::charge_within_rated,
     record::limits_within_reach,
     record::limits_leave_room,
+    leads::trip_early,
     calibration::there,
     calibration::valid,
     calibration::covers,

@@ -209,6 +209,8 @@ rules! {
         "A limit on the time of the run is within what the run can take."
     LimitBeforeEnd "limit-before-end" Warning
         "The interlocks on charge, energy and time leave room for what the run will probably take."
+    LeadsTripEarly "leads-trip-early" Warning
+        "Over two wires, the sink's own undervoltage limit acts no earlier than the step's ending."
     CertificateAbsent "certificate-absent" Warning
         "The sink has a certificate; without one every figure is nominal, uncalibrated."
     CertificateExpires "certificate-expires" Warning

@@ -181,7 +181,8 @@ impl Correction {
     /// sense terminals, on the safe side as for
     /// [`Self::current_limit_to_nominal`]. Over two wires the terminals of a
     /// sink that draws lie below the device under test: its own limits judge
-    /// the terminals.
+    /// the terminals, and the drop is not taken off: at a smaller current than
+    /// it was taken for the device under test would go too low.
     pub fn voltage_limit_to_nominal(&self, limit: Voltage, bound: Bound) -> Voltage {
         let nominal = self
             .voltage_read

@@ -1,8 +1,9 @@
 //! The whole run: charge, limits, certificate, disk.
 
+use quantity::Resistance;
 use serde_json::json;
 
-use super::{Case, case};
+use super::{Bed, Case, case};
 use crate::calibration::Calibration;
 use crate::rule::Rule;
 
@@ -29,6 +30,36 @@ pub(super) const CASES: &[Case] = &[
         Rule::LimitBeforeEnd,
         |bed| bed.interlock("charge", json!("3.1999 Ah")),
         |bed| bed.interlock("charge", json!("3.2 Ah")),
+    ),
+    case(
+        // From 2.75 V down to 2.5 V is as much as 640 mA lose in 390.625 mohm.
+        Rule::LeadsTripEarly,
+        |bed| bed.facts.correction.leads = Resistance::from_microohms(390_626),
+        |bed| bed.facts.correction.leads = Resistance::from_microohms(390_625),
+    ),
+    case(
+        // A step with no ending on the voltage: a hundredth of 4.2 V.
+        Rule::LeadsTripEarly,
+        |bed| {
+            bed.sequence["steps"][1] = json!({ "draw": "500 mA", "for": "1 h" });
+            bed.facts.correction.leads = Resistance::from_microohms(84_002);
+        },
+        |bed| {
+            bed.sequence["steps"][1] = json!({ "draw": "500 mA", "for": "1 h" });
+            bed.facts.correction.leads = Resistance::from_microohms(84_000);
+        },
+    ),
+    case(
+        // 2 W at 2.75 V are 727 mA.
+        Rule::LeadsTripEarly,
+        |bed| {
+            hold_power(bed);
+            bed.facts.correction.leads = Resistance::from_microohms(343_760);
+        },
+        |bed| {
+            hold_power(bed);
+            bed.facts.correction.leads = Resistance::from_microohms(343_740);
+        },
     ),
     case(
         Rule::CertificateExpires,
@@ -68,3 +99,10 @@ pub(super) const CASES: &[Case] = &[
         |bed| bed.options.disk_free_bytes = Some(103_440_000),
     ),
 ];
+
+/// 2 W to the cut-off.
+fn hold_power(bed: &mut Bed) {
+    let step = &mut bed.sequence["steps"][1];
+    step.as_object_mut().unwrap().remove("draw");
+    step["draw_power"] = json!("2 W");
+}
