@@ -10,18 +10,20 @@ const STATED = [
   ["arc_sine", "arc-sine"],
 ] as const;
 
-const meter = (range: string, resolution: string): Wanted[] => [
-  { name: "identity", label: "Maker, model, number", first: "" },
-  { name: "range", label: "Range used", first: range },
-  { name: "of_reading", label: "Accuracy: share of the reading", first: "" },
-  { name: "of_range", label: "plus share of the range", first: "" },
+const meter = (range: string, resolution: string, optional = false): Wanted[] => [
+  { name: "identity", label: "Maker, model, number", first: "", optional },
+  { name: "range", label: "Range used", first: range, optional },
+  { name: "of_reading", label: "Accuracy: share of the reading", first: "", optional },
+  { name: "of_range", label: "plus share of the range", first: "", optional },
   { name: "stated", label: "Stated", first: "rectangular", options: STATED },
-  { name: "resolution", label: "Last digit", first: resolution },
+  { name: "resolution", label: "Last digit", first: resolution, optional },
 ];
 
 export interface StatementPart {
   element: HTMLElement;
   body(): unknown;
+  /** Whether the voltage is measured, too. */
+  readonly withVoltage: boolean;
 }
 
 export function statementFields(): StatementPart {
@@ -32,7 +34,7 @@ export function statementFields(): StatementPart {
     { name: "days", label: "Holds for, days", first: "365" },
   ]);
   const current = new Fields("calibration-current", "Current meter", meter("3 A", "100 uA"));
-  const voltage = new Fields("calibration-voltage", "Voltage meter", meter("10 V", "1 mV"));
+  const voltage = new Fields("calibration-voltage", "Voltage meter (none: leave its maker empty, and the voltage stays nominal)", meter("10 V", "1 mV", true));
   for (const fields of [current, voltage]) {
     fields.element.querySelector("[name=of_reading]")?.setAttribute("placeholder", "0.1 %");
     fields.element.querySelector("[name=of_range]")?.setAttribute("placeholder", "0.02 %");
@@ -46,13 +48,16 @@ export function statementFields(): StatementPart {
   };
   return {
     element: h("div", {}, who.element, current.element, voltage.element),
+    get withVoltage() {
+      return voltage.value("identity") !== "";
+    },
     body: () => ({
       operator: who.value("operator"),
       ambient: who.value("ambient"),
       temperature_spread_k: Number(who.value("spread")),
       valid_for_days: Number(who.value("days")),
       current_meter: meterOf(current),
-      voltage_meter: meterOf(voltage),
+      ...(voltage.value("identity") === "" ? {} : { voltage_meter: meterOf(voltage) }),
     }),
   };
 }

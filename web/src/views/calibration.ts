@@ -170,6 +170,7 @@ class CalibrationPage implements View {
         this.#outcome.replaceChildren();
         show(this.#form, false);
         show(this.#guided, true);
+        this.#voltage.disabled = !this.#statement.withVoltage;
         this.#draw(begun);
         this.#current.focus();
         this.#look();

@@ -32,7 +32,7 @@ async function fill(page: Page): Promise<void> {
   await page.getByLabel("Undervoltage: off below").fill("2.6 V");
   await page.getByLabel("Who measures").fill("A. Technician");
   for (const meter of ["Current meter", "Voltage meter"]) {
-    const fields = page.getByRole("group", { name: meter });
+    const fields = page.getByRole("group", { name: new RegExp(`^${meter}`) });
     await fields.getByLabel("Maker, model, number").fill(`invented ${meter.toLowerCase()}, no. 1`);
     await fields.getByLabel("Accuracy: share of the reading").fill("0.1 %");
     await fields.getByLabel("plus share of the range").fill("0.02 %");
@@ -93,6 +93,28 @@ test("a sink is calibrated point by point, and the certificate is shown, listed 
   await page.getByRole("region", { name: "Points of the verification" }).first().getByText("passed").first().waitFor();
   await page.locator(".certificate summary").filter({ hasText: "verified" }).waitFor();
   assert.deepEqual(complaints.filter((text) => !/4\d\d/.test(text)), []);
+  await context.close();
+});
+
+test("the current alone is calibrated where there is no voltage meter", async () => {
+  const { context, page, complaints } = await sit(daemon);
+  await fill(page);
+  await page.getByRole("group", { name: /^Voltage meter/ }).getByLabel("Maker, model, number").fill("");
+  await page.getByLabel("A new one is called").fill("weir-left-current");
+  await page.getByLabel("Nominal currents").fill("200 mA, 700 mA, 1.2 A");
+  await page.getByRole("button", { name: "Hold the first point" }).click();
+  for (const point of [1, 2, 3]) {
+    await page.getByText(new RegExp(`^Point ${point} of 3: .* Settled`)).first().waitFor();
+    assert.ok(await page.getByLabel("Voltage meter", { exact: true }).isDisabled());
+    await page.keyboard.type(["203.1 mA", "710.9 mA", "1.2187 A"][point - 1] ?? "");
+    await page.keyboard.press("Enter");
+  }
+  await page.getByText(/^All points are taken/).first().waitFor();
+  await page.getByRole("button", { name: "Finish", exact: true }).click();
+  await page.getByRole("heading", { name: "The certificate", exact: true }).waitFor();
+  const rows = page.getByRole("region", { name: "Lines of the certificate" }).first().locator("tbody tr");
+  assert.deepEqual(await rows.locator("th").allTextContents(), ["current set", "current read"]);
+  assert.deepEqual(complaints, []);
   await context.close();
 });
 
