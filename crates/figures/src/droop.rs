@@ -31,8 +31,10 @@ const DROWNED: &str = "the voltage comes back so slowly that noise hides when it
 /// The band reaches so many times the noise of a sample at least, or noise alone would leave it.
 const BEYOND_NOISE: f64 = 5.0;
 
-/// The slope of the line that meets the band must be so many times its own uncertainty.
+/// The slope of the line that meets the band is to be so many times its own uncertainty, and must
+/// be so many.
 const CLEAR: f64 = 8.0;
+const CLEAR_LEAST: f64 = 3.0;
 
 /// Samples nearer to the largest than so many times the noise might as well have been it.
 const AS_LARGE: f64 = 2.0;
@@ -261,7 +263,8 @@ struct Crossing {
 }
 
 /// The line through the last sample outside the band, the one after it, and as many on either side
-/// as it takes to see its slope; `None` where so many reach over the whole band.
+/// as it takes to see its slope well; where so many reach over the whole band, or there are not so
+/// many, as it takes to see it at all. `None` where noise hides it.
 fn crossing(
     after: &[(f64, f64)],
     outside: usize,
@@ -269,6 +272,7 @@ fn crossing(
     (band, noise): (f64, f64),
 ) -> Option<Crossing> {
     let most = (outside + 1).min(after.len() - outside - 1);
+    let mut seen = None;
     for around in 1..=most {
         let points: Vec<Point> = after
             .iter()
@@ -283,22 +287,28 @@ fn crossing(
         let line = fit(&points, Form::Polynomial(1), Weights::Known).ok()?;
         let slope = line.slope(0.0);
         let fall = -slope.value;
-        if fall <= CLEAR * slope.standard_uncertainty {
-            continue;
+        let clear = fall / slope.standard_uncertainty;
+        // The first of them is the last outside and the first inside: however fast, it is there.
+        if around > 1 && number(around) * fall > 2.0 * band {
+            break;
         }
-        // The line's value at no ticks is what it has to fall.
-        let ticks = line.value(0.0) / fall;
-        let centre = points.iter().map(|point| point.x).sum::<f64>() / number(points.len());
-        let around = number(around);
-        return (around < 2.0 || around * fall < 2.0 * band).then_some(Crossing {
-            ticks,
-            standard: line.predict(ticks).standard_uncertainty / fall,
-            fall,
-            around,
-            centre,
-        });
+        if clear > CLEAR_LEAST {
+            // The line's value at no ticks is what it has to fall.
+            let ticks = line.value(0.0) / fall;
+            let standard = line.predict(ticks).standard_uncertainty / fall;
+            seen = Some(Crossing {
+                ticks,
+                standard,
+                fall,
+                around: number(around),
+                centre: points.iter().map(|point| point.x).sum::<f64>() / number(points.len()),
+            });
+        }
+        if clear > CLEAR {
+            break;
+        }
     }
-    None
+    seen
 }
 
 /// An edge as a capture shows it, true volts.

@@ -8,6 +8,9 @@ use crate::scale::{Scale, Ticks};
 use crate::sheet::Sheet;
 use crate::trace::{Limit, Sample, Trace, thinned};
 
+/// Places along a limit where its name might stand.
+const LIMIT_PLACES: u32 = 24;
+
 /// Length of a tick, pixels.
 const TICK: f64 = 5.0;
 /// Ticks wanted along a panel's vertical axis.
@@ -179,14 +182,14 @@ impl Drawing {
     }
 
     /// A trace: shade, line, limits, and its name where there is room beside it and clear of
-    /// upright lines.
+    /// upright lines, and of borders if there is such a place.
     pub fn trace(
         &mut self,
         sheet: &Sheet,
         field: &Field,
         trace: &Trace,
         factor: f64,
-        lines: &[Area],
+        (lines, borders): (&[Area], &[Area]),
     ) {
         let runs: Vec<Vec<Sample>> = trace
             .runs
@@ -199,19 +202,31 @@ impl Drawing {
         let drawn = Drawn::of(field, &runs);
         let mut taken: Vec<Area> = lines.to_vec();
         for limit in &trace.limits {
-            taken.extend(self.limit(field, limit, factor, &drawn));
+            taken.extend(self.limit(field, limit, factor, &drawn, (lines, borders)));
         }
         for run in &runs {
             self.shade(field, run);
             self.curve(field, run);
         }
-        if let Some(place) = drawn.beside(field, trace.name, &taken) {
+        let clear: Vec<Area> = taken.iter().chain(borders).copied().collect();
+        let place = drawn
+            .beside(field, trace.name, &clear)
+            .or_else(|| drawn.beside(field, trace.name, &taken));
+        if let Some(place) = place {
             self.word("name", Anchor::Start, place, trace.name);
         }
     }
 
-    /// A dashed line, with its name where it covers no curve; gives the areas it takes.
-    fn limit(&mut self, field: &Field, limit: &Limit, factor: f64, drawn: &Drawn) -> Vec<Area> {
+    /// A dashed line, with its name where it covers no curve and no upright line, the nearer to an
+    /// end the better; gives the areas it takes.
+    fn limit(
+        &mut self,
+        field: &Field,
+        limit: &Limit,
+        factor: f64,
+        drawn: &Drawn,
+        (lines, borders): (&[Area], &[Area]),
+    ) -> Vec<Area> {
         let value = limit.value * factor;
         if !field.y.contains(value) {
             return Vec::new();
@@ -226,17 +241,26 @@ impl Drawing {
             top: y - 2.0,
             bottom: y + 2.0,
         };
-        let corner = |x: f64, base: f64| (Area::of_word(x, base, wide), (x, base));
-        let places = [
-            corner(right - wide - 10.0, y - 4.0),
-            corner(left + 10.0, y - 4.0),
-            corner(right - wide - 10.0, y + 12.0),
-            corner(left + 10.0, y + 12.0),
-        ];
+        let (first, last) = (left + 10.0, right - wide - 10.0);
+        let along = |part: u32| f64::from(part) / f64::from(LIMIT_PLACES);
+        let place = |x: f64, base: f64| (Area::of_word(x, base, wide), (x, base));
+        let places: Vec<(Area, (f64, f64))> = (0..=LIMIT_PLACES / 2)
+            .flat_map(|part| {
+                let away = along(part) * (last - first);
+                [last - away, first + away]
+            })
+            .flat_map(|x| [place(x, y - 4.0), place(x, y + 12.0)])
+            .collect();
         let inside = |area: &Area| area.top > field.y.to + 3.0 && area.bottom < field.y.from - 3.0;
         let mut fitting = places.iter().filter(|(area, _)| inside(area));
-        let free = fitting.clone().find(|(area, _)| !drawn.touches(area));
-        let Some((area, (x, base))) = free.or_else(|| fitting.next()).copied() else {
+        let clear_of = |areas: &[Area], area: &Area| areas.iter().all(|one| !one.overlaps(area));
+        let free = |area: &Area| !drawn.touches(area) && clear_of(lines, area);
+        let found = fitting
+            .clone()
+            .find(|(area, _)| free(area) && clear_of(borders, area))
+            .or_else(|| fitting.clone().find(|(area, _)| free(area)))
+            .or_else(|| fitting.next());
+        let Some((area, (x, base))) = found.copied() else {
             return vec![line];
         };
         self.word("limit-name", Anchor::Start, (x, base), &limit.name);

@@ -8,7 +8,7 @@ use journal::{ClockKind, Manifest};
 use crate::curves::plots;
 use crate::evidence::Evidence;
 use crate::section::{
-    cautions, certificate, course, defence, in_brief, interlocks, results, subject,
+    cautions, certificate, course, defence, in_brief, interlocks, results, subject, submitted,
 };
 use crate::wording::{duration, ending, rfc3339};
 use plot::Markup;
@@ -75,6 +75,7 @@ impl Report<'_> {
             "Hashes, and how to recompute this",
             &defence(self),
         ));
+        page.add(&section("submitted", "The sequence", &submitted(self)));
         page.raw("</main>\n<script>\n").raw(SCRIPT);
         page.raw("</script>\n</body>\n</html>\n");
         page.into_string()

@@ -10,6 +10,7 @@ mod defence;
 mod interlocks;
 mod results;
 mod subject;
+mod submitted;
 
 pub(crate) use brief::in_brief;
 pub(crate) use cautions::cautions;
@@ -19,6 +20,7 @@ pub(crate) use defence::defence;
 pub(crate) use interlocks::interlocks;
 pub(crate) use results::results;
 pub(crate) use subject::subject;
+pub(crate) use submitted::submitted;
 
 use plot::Markup;
 

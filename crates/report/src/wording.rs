@@ -294,5 +294,26 @@ fn condition(condition: &Condition) -> String {
     }
 }
 
+/// A message of ours with what it sets in backticks in quotation marks: print has no backticks. A
+/// message that quotes text with a backtick of its own stays as it is.
+pub(crate) fn quoted(message: &str) -> String {
+    let pieces: Vec<&str> = message.split('`').collect();
+    if pieces.len().is_multiple_of(2) {
+        return message.to_owned();
+    }
+    let mut quoted = String::with_capacity(message.len());
+    for (place, piece) in pieces.iter().enumerate() {
+        if place > 0 {
+            quoted.push(if place.is_multiple_of(2) {
+                '”'
+            } else {
+                '“'
+            });
+        }
+        quoted.push_str(piece);
+    }
+    quoted
+}
+
 #[cfg(test)]
 mod tests;

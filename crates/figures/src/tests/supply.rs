@@ -86,6 +86,26 @@ fn droop_and_recovery_are_those_of_the_samples() {
     assert_eq!(warned.count(), 2);
 }
 
+/// A regulator that makes good within three samples, read by converters with their noise: each time
+/// is told, to a sample or better.
+#[test]
+fn a_fast_recovery_is_told_through_noise() {
+    let fast = RECOVERING.replace("5 ms", "2 ms");
+    let figures = figures_of(PULSES, &fast, true);
+    let all: Vec<_> = figures
+        .figures
+        .iter()
+        .filter(|figure| figure.name == Name::RecoveryTime)
+        .collect();
+    assert_eq!(all.len(), 20, "{:#?}", figures.missing);
+    let truth = 0.002 * (0.385 * 0.150 / 0.0164_f64).ln();
+    for figure in all {
+        let standard = figure.uncertainty.unwrap().standard_uncertainty;
+        assert!(standard < 0.7e-3, "u = {standard} s");
+        assert_covers(figure, truth, 4.0);
+    }
+}
+
 #[test]
 fn an_edge_too_soon_after_a_captured_one_gives_a_reason() {
     // The capture of a pulse's beginning is still being sent when the pulse ends.

@@ -96,7 +96,7 @@ impl Plot {
             drawing.word("limit-name", Anchor::End, (place - 5.0, top + 16.0), text);
         }
         let field = Field { x, y };
-        drawing.trace(sheet, &field, &self.trace, 1.0, &lines);
+        drawing.trace(sheet, &field, &self.trace, 1.0, (&lines, &[]));
         drawing.numbers_below(&framed, &ticks, name);
         drawing.read_off(&[(field, 1.0)]);
         let description = format!(

@@ -104,13 +104,17 @@ impl Plot {
             fields.push((Field { x, y }, factor));
             bottom = frame_bottom;
         }
-        self.borders(&mut drawing, &x, (top + HEAD, bottom));
+        let borders = self.borders(&x, (top + HEAD, bottom));
+        for border in &borders {
+            let place = f64::midpoint(border.left, border.right);
+            drawing.line("border", (place, border.top), (place, border.bottom));
+        }
         let lines: Vec<Area> = events
             .iter()
             .map(|&(place, ..)| Area::of_line(place, top, bottom))
             .collect();
         for ((field, factor), trace) in fields.iter().zip(&self.traces) {
-            drawing.trace(sheet, field, trace, *factor, &lines);
+            drawing.trace(sheet, field, trace, *factor, (&lines, &borders));
         }
         for (place, row, word) in events {
             let base = 11.0 + rows(row) * ROW;
@@ -160,14 +164,15 @@ impl Plot {
         (placed, height)
     }
 
-    fn borders(&self, drawing: &mut Drawing, x: &Scale, (top, bottom): (f64, f64)) {
+    /// Where the steps' borders stand; none where there are too many.
+    fn borders(&self, x: &Scale, (top, bottom): (f64, f64)) -> Vec<Area> {
         if self.stretches.len() > BORDERS_MAX {
-            return;
+            return Vec::new();
         }
-        for stretch in self.stretches.iter().skip(1) {
-            let place = x.place(stretch.from);
-            drawing.line("border", (place, top), (place, bottom));
-        }
+        let borders = self.stretches.iter().skip(1);
+        borders
+            .map(|stretch| Area::of_line(x.place(stretch.from), top, bottom))
+            .collect()
     }
 
     /// Brackets under the time axis with the steps' labels; gives their height.

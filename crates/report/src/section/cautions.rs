@@ -5,7 +5,7 @@ use journal::ClockKind;
 use sequencer::event::{Ending, Interlock};
 
 use crate::page::Report;
-use crate::wording::{count, words};
+use crate::wording::{count, quoted, words};
 use plot::Markup;
 
 pub(crate) fn cautions(report: &Report<'_>) -> Markup {
@@ -88,7 +88,7 @@ fn of_the_figures(report: &Report<'_>, list: &mut List) {
     for warning in &report.figures.warnings {
         // The standing has been told above, in more words.
         if !warning.starts_with("nominal, uncalibrated") {
-            list.caution("Warning:", warning);
+            list.caution("Warning:", &quoted(warning));
         }
     }
 }

@@ -5,7 +5,7 @@ use sink::uncertainty::Evaluation;
 
 use crate::page::Report;
 use crate::section::table_head;
-use crate::wording::{count, significant, unit, with_unit, words};
+use crate::wording::{count, quoted, significant, unit, with_unit, words};
 use plot::Markup;
 
 /// Figures beyond which they are folded on the screen: a run of many labels has hundreds.
@@ -173,7 +173,7 @@ fn missing(section: &mut Markup, figures: &Figures) {
         }
         section
             .raw("</th><td>")
-            .text(&missing.reason)
+            .text(quoted(&missing.reason))
             .raw("</td></tr>\n");
     }
     section.raw("</tbody></table>\n");

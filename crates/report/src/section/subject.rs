@@ -1,4 +1,4 @@
-//! What was tested, on what, with what, by which sequence.
+//! What was tested, on what, with what.
 
 use journal::Manifest;
 use sequence::plan::{Dut, DutKind};
@@ -10,9 +10,6 @@ use crate::page::Report;
 use crate::section::WhatIs;
 use crate::wording::{count, duration, exact, rfc3339, words};
 use plot::Markup;
-
-/// Lines of a file named by the sequence that are shown; a profile can have thousands.
-const FILE_LINES_MAX: usize = 40;
 
 pub(crate) fn subject(report: &Report<'_>) -> Markup {
     let manifest = report.manifest;
@@ -38,9 +35,7 @@ pub(crate) fn subject(report: &Report<'_>) -> Markup {
     table.row("time", time(report));
     table.row("readbacks", readbacks(report));
     table.row("record", &manifest.record);
-    let mut section = table.table();
-    sequence(manifest, &mut section);
-    section
+    table.table()
 }
 
 fn device(dut: &Dut) -> String {
@@ -147,26 +142,4 @@ fn readbacks(report: &Report<'_>) -> String {
         count(evidence.readback_count),
         exact(&report.manifest.plan.readback)
     )
-}
-
-fn sequence(manifest: &Manifest, section: &mut Markup) {
-    section
-        .raw("<details class=\"long\"><summary>The sequence as it was submitted</summary>\n<pre>");
-    section.text(&manifest.sequence.text).raw("</pre>\n");
-    for (name, text) in &manifest.sequence.files {
-        section.raw("<p>").text(name).raw(":</p>\n<pre>");
-        let mut lines = text.lines();
-        for line in lines.by_ref().take(FILE_LINES_MAX) {
-            section.text(line).raw("\n");
-        }
-        let more = lines.count();
-        section.raw("</pre>\n");
-        if more > 0 {
-            section
-                .raw("<p>and ")
-                .text(count(u64::try_from(more).unwrap_or(u64::MAX)));
-            section.raw(" more lines, in the record’s manifest</p>\n");
-        }
-    }
-    section.raw("</details>\n");
 }

@@ -55,7 +55,6 @@ fn a_page_has_its_sections_in_order() {
         # A minute at 0.2 It (invented)
         ## Before you read on
         ## What was tested, on what
-          folded
         ## The curves
           drawn: Voltage, current and heat sink temperature against time
           drawn: Voltage against charge delivered
@@ -98,7 +97,9 @@ fn a_page_has_its_sections_in_order() {
           | file
           | entries
           | hash of its plain text
-        ### To recompute"]]
+        ### To recompute
+        ## The sequence
+          folded"]]
     .assert_eq(&skeleton(&page));
 }
 

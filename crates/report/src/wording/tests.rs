@@ -94,3 +94,14 @@ fn every_interlock_has_its_value_in_its_unit() {
     .assert_eq(&told.join("\n"));
     assert_eq!(words(&Interlock::OverTemperature), "over-temperature");
 }
+
+#[test]
+fn what_stands_in_backticks_is_quoted_on_paper() {
+    assert_eq!(
+        super::quoted("capture with `burst`"),
+        "capture with “burst”"
+    );
+    assert_eq!(super::quoted("`a` and `b`"), "“a” and “b”");
+    assert_eq!(super::quoted("nothing"), "nothing");
+    assert_eq!(super::quoted("one ` alone"), "one ` alone");
+}
