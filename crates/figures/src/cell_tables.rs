@@ -10,7 +10,8 @@ use serde_json::{Value, json};
 
 use crate::cell::{CellModel, CellPoint, Known, OpenCircuit, PairPoint};
 use crate::charge::Amount;
-use crate::draw::{Drawn, Factors, Node};
+use crate::draw::Factors;
+use crate::drawn::{Drawn, Node};
 use crate::predict::Terms;
 use crate::walk::Delivered;
 use crate::work::Workbench;
