@@ -115,6 +115,8 @@ pub(crate) struct Look {
     pub(crate) length: Span,
     /// The points.
     pub(crate) grains: Vec<Grain>,
+    /// Its middle half, if a look at that will read the record itself.
+    pub(crate) next: Option<Range<HostTime>>,
 }
 
 impl Making {
@@ -148,17 +150,32 @@ impl Making {
         let stretch = stretch.start.unwrap_or(start)..stretch.end.unwrap_or(end);
         // Grains are fine enough while each point has two; where they are not, the stretch is
         // short, and the record itself is read.
-        if self.sketch.grains_in(&stretch) as u64 >= u64::from(points) * 2 {
-            let grains = self.sketch.gather(&stretch, points);
-            return Ok(Look { length, grains });
+        let fine = |stretch: &Range<HostTime>| {
+            self.sketch.grains_in(stretch) as u64 >= u64::from(points) * 2
+        };
+        if fine(&stretch) {
+            let quarter = stretch.end.saturating_since(stretch.start).micros() / 4;
+            let at = |quarters| {
+                let since = Span::from_micros(quarter * quarters);
+                stretch.start.saturating_add(since)
+            };
+            let middle = at(1)..at(3);
+            return Ok(Look {
+                length,
+                grains: self.sketch.gather(&stretch, points),
+                next: (record.is_sealed() && !fine(&middle)).then_some(middle),
+            });
         }
         let buckets = self.near.thin(record, &stretch, points)?;
         let charged = buckets.into_iter().map(|bucket| Grain {
             bucket,
             charge: self.sketch.charge_at(bucket.first_at).unwrap_or_default(),
         });
-        let grains = charged.collect();
-        Ok(Look { length, grains })
+        Ok(Look {
+            length,
+            grains: charged.collect(),
+            next: None,
+        })
     }
 
     /// Reads what is new in the record.
@@ -274,6 +291,15 @@ impl Sketches {
         points: u32,
     ) -> Result<Look, JournalError> {
         self.with(record, |making| making.look(record, stretch, points))?
+    }
+
+    /// Reads a stretch of a record, so that a look at it finds it read. What is wrong with it the
+    /// look will say.
+    pub(crate) fn read_ahead(&self, record: &Record, stretch: &Range<HostTime>) {
+        let read = self.with(record, |making| making.near.thin(record, stretch, 1));
+        if let Err(why) = read.and_then(|read| read) {
+            tracing::debug!("nothing was read ahead: {why}");
+        }
     }
 
     /// How a record went, as it is now. Not for a thread that answers others.

@@ -67,7 +67,7 @@ export function lineOf(line: CertificateLine): { offset: string; slope: string; 
   const unit = `\u00a0${line.unit}`;
   const notes: string[] = [];
   if (line.bent) notes.push("the residuals ask for a bend");
-  if (line.outliers.length > 0) notes.push(`point ${line.outliers.join(", ")} lies farther off than it should`);
+  if (line.outliers.length > 0) notes.push(`farther off than expected: point ${line.outliers.join(", ")}`);
   if (line.points < 5) notes.push(`${line.points} points show little`);
   return {
     offset: within(line.offset, line.offset_uncertainty, unit),

@@ -1,6 +1,7 @@
 //! Records: the list, one, its readbacks, its figures, whether it is as it was written.
 
 use std::io::{self, Write};
+use std::ops::Range;
 use std::sync::Arc;
 use std::time::Duration;
 
@@ -201,7 +202,7 @@ pub(super) async fn course(
 const CSV: &str = "text/csv; charset=utf-8; header=present";
 
 fn thinned(
-    app: &App,
+    app: &Arc<App>,
     record: &Record,
     id: Uuid,
     stretch: &Stretch,
@@ -221,16 +222,36 @@ fn thinned(
         .sinks
         .iter()
         .any(|sink| sink.view().run.is_some_and(|run| run.id == id));
-    let Look { length, grains } = app
+    let Look {
+        length,
+        grains,
+        next,
+    } = app
         .sketches
         .look(record, &(from..to), points)
         .map_err(unreadable)?;
+    if let Some(next) = next {
+        read_ahead(app, record, next);
+    }
     Ok(ReadingsView {
         id,
         in_progress: running,
         length_s: length.seconds(),
         curve: curve_of(&grains, start),
     })
+}
+
+/// Reads what the next look will probably be at while this one is answered and looked at, if one
+/// of the readers is free.
+fn read_ahead(app: &Arc<App>, record: &Record, next: Range<HostTime>) {
+    let Ok(permit) = Arc::clone(&app.bounds.readers).try_acquire_owned() else {
+        return;
+    };
+    let (app, record) = (Arc::clone(app), record.clone());
+    tokio::task::spawn_blocking(move || {
+        let _permit: OwnedSemaphorePermit = permit;
+        app.sketches.read_ahead(&record, &next);
+    });
 }
 
 fn after(start: HostTime, seconds: f64) -> Result<HostTime, Problem> {

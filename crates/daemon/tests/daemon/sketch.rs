@@ -118,3 +118,39 @@ fn a_sketch_is_kept_beside_a_sealed_record_and_made_anew_where_it_is_damaged() {
         true
     );
 }
+
+#[test]
+fn what_the_next_look_will_want_is_read_before_it_comes() {
+    let desk = Desk::open(1000);
+    let run = desk.start(&hour());
+    let run = desk.wait_for_run(run.id, "the record", |run| run.sealed);
+    // Grains are just fine enough for all of it, and not for its middle half.
+    let whole = readings(&desk, run.id, "?points=150");
+    let (from, to) = (0.3 * whole.length_s, 0.6 * whole.length_s);
+    let middle = format!("?points=150&from_s={from}&to_s={to}");
+    // Read ahead it is there even while its files cannot be read.
+    let journal = desk.records().join(&run.record).join("journal");
+    let files: Vec<_> = std::fs::read_dir(&journal)
+        .unwrap()
+        .map(|file| file.unwrap().path())
+        .map(|path| (std::fs::read(&path).unwrap(), path))
+        .collect();
+    desk.wait_for("the middle to be read ahead", |desk| {
+        // Whoever asks for the same record waits until the reading ahead is done, if it has begun.
+        readings(desk, run.id, "?points=150");
+        course(desk, run.id);
+        for (bytes, path) in &files {
+            std::fs::write(path, vec![0; bytes.len()]).unwrap();
+        }
+        let answer = desk.get(&format!("/v1/records/{}/readings{middle}", run.id));
+        for (bytes, path) in &files {
+            std::fs::write(path, bytes).unwrap();
+        }
+        answer.status == 200
+    });
+    // And it is what the record says.
+    let kept = readings(&desk, run.id, &middle);
+    let folder = desk.close();
+    let desk = Desk::open_in(folder, 1000, |_| {});
+    assert_eq!(readings(&desk, run.id, &middle).curve, kept.curve);
+}
