@@ -2,7 +2,7 @@
 //!
 //! The ink line is what the sink holds for ever; under it each region bears the name of the limit
 //! that binds there. Above it stand thin lines for what it takes for a time, and dashed ones for
-//! limits that do not bind.
+//! limits that do not bind, each with its name at its end.
 
 use std::ops::Range;
 
@@ -18,6 +18,8 @@ const PLACES: u32 = 600;
 const ROWS: u32 = 12;
 /// Height of a row.
 const ROW: f64 = 14.0;
+/// Between a line's end and its name.
+const END_GAP: f64 = 8.0;
 
 /// Voltage and current along a line.
 type Points = Vec<(f64, f64)>;
@@ -116,19 +118,11 @@ impl Picture {
             .iter()
             .map(|(_, points)| highest(points))
             .fold(top, f64::max);
-        let field = Field {
-            x: Scale {
-                min: 0.0,
-                max: voltage_max * 1.06,
-                from: WIDE.left,
-                to: WIDE.width - WIDE.right,
-            },
-            y: Scale {
-                min: 0.0,
-                max: top * 1.45,
-                from: HEIGHT - 30.0,
-                to: 24.0,
-            },
+        let y = Scale {
+            min: 0.0,
+            max: top * 1.45,
+            from: HEIGHT - 30.0,
+            to: 24.0,
         };
         let binding: Vec<Limit> = stretches.iter().map(|stretch| stretch.limit).collect();
         let mut others: Vec<(Limit, Points)> = Vec::new();
@@ -144,7 +138,17 @@ impl Picture {
                 }
             }
         }
-        others.retain(|(_, points)| points.iter().any(|(_, amperes)| field.y.contains(*amperes)));
+        others.retain(|(_, points)| points.iter().any(|(_, amperes)| y.contains(*amperes)));
+        let (from, to) = (WIDE.left, WIDE.width - WIDE.right);
+        let field = Field {
+            x: Scale {
+                min: 0.0,
+                max: voltage_max / (1.0 - column(&others, y) / (to - from)),
+                from,
+                to,
+            },
+            y,
+        };
         Self {
             field,
             voltage_max,
@@ -210,6 +214,12 @@ impl Picture {
             names.above(&mut drawing, field, "limit-name", name, &own);
         }
         for (limit, points) in &self.others {
+            let last = points.last().filter(|last| field.y.contains(last.1));
+            let stands =
+                last.is_some_and(|&last| names.at_end(&mut drawing, field, limit.name(), last));
+            if stands {
+                continue;
+            }
             for run in inside(field, points).into_iter().take(1) {
                 names.above(&mut drawing, field, "limit-name", limit.name(), &run);
             }
@@ -314,20 +324,59 @@ impl Names {
         }
     }
 
-    /// A name left of an upright line, at its upper end.
-    fn beside_upright(&mut self, drawing: &mut Drawing, field: &Field, volts: f64, name: &str) {
-        let wide = width(name);
-        let x = field.x.place(volts) - wide - 5.0;
-        for row in 0..ROWS {
-            let base = field.y.to + 18.0 + f64::from(row) * ROW;
-            let area = Area::of_word(x, base, wide);
+    /// A name right of its line's end, as near to its height as there is room; whether there is.
+    fn at_end(
+        &mut self,
+        drawing: &mut Drawing,
+        field: &Field,
+        name: &str,
+        end: (f64, f64),
+    ) -> bool {
+        let x = field.x.place(end.0) + END_GAP;
+        let level = field.y.place(end.1) + 4.0;
+        for part in 0..=6 * ROWS {
+            // Down and up in turn, a third of a row further each time.
+            let by = f64::from(part.div_ceil(2)) * ROW / 3.0;
+            let base = if part % 2 == 0 {
+                level - by
+            } else {
+                level + by
+            };
+            let area = Area::of_word(x, base, width(name));
             if self.free(&area, field) {
                 drawing.word("limit-name", Anchor::Start, (x, base), name);
                 self.taken.push(area);
-                return;
+                return true;
+            }
+        }
+        false
+    }
+
+    /// A name beside an upright line, at its upper end.
+    fn beside_upright(&mut self, drawing: &mut Drawing, field: &Field, volts: f64, name: &str) {
+        let wide = width(name);
+        let line = field.x.place(volts);
+        for row in 0..ROWS {
+            let base = field.y.to + 18.0 + f64::from(row) * ROW;
+            for x in [line + END_GAP, line - wide - END_GAP] {
+                let area = Area::of_word(x, base, wide);
+                if self.free(&area, field) {
+                    drawing.word("limit-name", Anchor::Start, (x, base), name);
+                    self.taken.push(area);
+                    return;
+                }
             }
         }
     }
+}
+
+/// How wide the column right of the largest voltage is, in which names stand at their lines' ends.
+fn column(others: &[(Limit, Points)], y: Scale) -> f64 {
+    others
+        .iter()
+        .filter(|(_, points)| points.last().is_some_and(|last| y.contains(last.1)))
+        .map(|(limit, _)| width(limit.name()) + 2.0 * END_GAP)
+        .fold(WIDE.width * 0.05, f64::max)
 }
 
 /// The highest and the lowest ink of a line between two places: start is up.
