@@ -128,6 +128,20 @@ pub struct OutlineView {
     pub current_a: Vec<f64>,
     /// Stretches `[from_s, to_s, least_a, largest_a]` of repeats that are not drawn out.
     pub bands: Vec<[f64; 4]>,
+    /// Where each label's first step lies, in the order of time.
+    #[serde(default)]
+    pub labels: Vec<OutlineLabelView>,
+}
+
+/// The first step that bears a label.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct OutlineLabelView {
+    /// The label.
+    pub label: String,
+    /// When the step begins.
+    pub from_s: f64,
+    /// When it ends.
+    pub to_s: f64,
 }
 
 impl CheckView {
@@ -173,6 +187,18 @@ impl CheckView {
                     .map(|point| point.current.amperes())
                     .collect(),
                 bands: bands.collect(),
+                labels: outline
+                    .labels
+                    .iter()
+                    .filter_map(|labelled| {
+                        let label = plan.labels.get(usize::try_from(labelled.label).ok()?)?;
+                        Some(OutlineLabelView {
+                            label: label.clone(),
+                            from_s: labelled.from.seconds(),
+                            to_s: labelled.to.seconds(),
+                        })
+                    })
+                    .collect(),
             },
         }
     }

@@ -35,6 +35,20 @@ pub struct Outline {
     pub points: Vec<OutlinePoint>,
     /// Rounds of repeats that are not drawn out.
     pub bands: Vec<Band>,
+    /// Where each label's first step lies.
+    pub labels: Vec<Labelled>,
+}
+
+/// The first step that bears a label, with those of the same label right behind it.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Labelled {
+    /// The label, an index into [`Plan::labels`].
+    pub label: u32,
+    /// When the step begins.
+    pub from: Span,
+    /// When it ends.
+    pub to: Span,
 }
 
 /// A point of the planned shape.
@@ -232,8 +246,27 @@ impl<'a, 'h> Walk<'a, 'h> {
         if let Some(heat) = &mut self.heat {
             heat.step(step.action, from, target, span(lasts).seconds());
         }
+        let began = span(self.time);
         self.draw(from, target, lasts);
+        if let Some(label) = step.label {
+            self.label(label, began);
+        }
         way
+    }
+
+    /// A step with this label began then and has just ended.
+    fn label(&mut self, label: u32, from: Span) {
+        let labels = &mut self.outline.labels;
+        if self.points_max == 0 {
+            return;
+        }
+        let to = span(self.time);
+        match labels.iter_mut().find(|known| known.label == label) {
+            // A ramp from another current is an edge and a ramp, both with its label.
+            Some(known) if known.to == from => known.to = to,
+            Some(_) => {}
+            None => labels.push(Labelled { label, from, to }),
+        }
     }
 
     /// How long a current takes to meet a condition; `None` if charge does not decide it.
@@ -304,6 +337,7 @@ impl<'a, 'h> Walk<'a, 'h> {
         let end = span(self.time);
         self.outline.points.retain(|point| point.time <= end);
         self.outline.bands.retain(|band| band.from < end);
+        self.outline.labels.retain(|label| label.from < end);
         if let Some(band) = self.outline.bands.last_mut() {
             band.to = band.to.min(end);
         }

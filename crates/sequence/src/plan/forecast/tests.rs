@@ -114,3 +114,36 @@ fn an_outline_draws_what_fits_and_bands_the_rest() {
     assert_eq!(outline.points.last(), Some(&last));
     assert_eq!(plan.forecast().duration, Span::from_secs(2011));
 }
+
+/// A ramp from elsewhere is an edge and a ramp with one label; a label's second step is not told.
+#[test]
+fn an_outline_tells_where_each_label_s_first_step_lies() {
+    let plan = plan(&json!([
+        { "draw": "1 A", "for": "1 s", "label": "on" },
+        { "ramp": { "from": "2 A", "to": "0 A", "over": "10 s" }, "label": "back" },
+        { "draw": "1 A", "for": "1 s" },
+        { "draw": "1 A", "for": "1 s", "label": "later" }
+    ]));
+    let labels: Vec<_> = plan
+        .outline(50)
+        .labels
+        .iter()
+        .map(|labelled| {
+            let label = usize::try_from(labelled.label).unwrap();
+            (
+                plan.labels[label].clone(),
+                labelled.from.seconds(),
+                labelled.to.seconds(),
+            )
+        })
+        .collect();
+    let expected = [("on", 0.0, 1.0), ("back", 1.0, 11.0), ("later", 12.0, 13.0)];
+    assert_eq!(labels.len(), 3);
+    for ((label, from, to), (name, begins, ends)) in labels.iter().zip(expected) {
+        assert_eq!(label, name);
+        assert!(
+            (from - begins).abs() < 0.01 && (to - ends).abs() < 0.01,
+            "{labels:?}"
+        );
+    }
+}
