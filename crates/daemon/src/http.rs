@@ -8,12 +8,14 @@
 
 mod calibrations;
 mod events;
+mod export;
 mod extract;
 mod guard;
 mod hand;
 mod openapi;
 mod page;
 mod problem;
+mod readings;
 mod records;
 mod runs;
 mod sequences;

@@ -9,7 +9,7 @@ use utoipa::openapi::OpenApi as Document;
 use utoipa_axum::router::OpenApiRouter;
 use utoipa_axum::routes;
 
-use super::{calibrations, events, hand, records, runs, sequences, sinks, state};
+use super::{calibrations, events, hand, readings, records, runs, sequences, sinks, state};
 use crate::app::App;
 use crate::view::{Code, GoneEvent, LinkEvent, Problem, RunEvent};
 
@@ -50,8 +50,8 @@ pub(super) fn parts() -> (Router<Arc<App>>, Document) {
         .routes(routes!(calibrations::certificate))
         .routes(routes!(records::list))
         .routes(routes!(records::one))
-        .routes(routes!(records::readings))
-        .routes(routes!(records::course))
+        .routes(routes!(readings::readings))
+        .routes(routes!(readings::course))
         .routes(routes!(records::figures))
         .routes(routes!(records::report))
         .routes(routes!(records::comparison))
