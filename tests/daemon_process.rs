@@ -23,7 +23,7 @@ pub struct Daemon {
 pub fn program() -> PathBuf {
     let mut folder = std::env::current_exe().unwrap_or_default();
     folder.pop();
-    if folder.ends_with("deps") {
+    if folder.ends_with("deps") || folder.ends_with("examples") {
         folder.pop();
     }
     let program = folder.join(format!("sinkwarden{}", std::env::consts::EXE_SUFFIX));
