@@ -40,6 +40,9 @@ pub(crate) struct Pulse {
     pub(crate) slope: Option<(f64, f64)>,
     /// Voltage at rest before.
     pub(crate) rest_v: f64,
+    /// How much of the variance of a readback its neighbours share, 0 to 1: it is averaged out by
+    /// no number of them.
+    pub(crate) shared: f64,
 }
 
 /// Puts neighbouring readbacks together, the longer after `origin_s` the more, so that every
@@ -106,6 +109,14 @@ impl Pulse {
         least_squares(&residual, self.means.len() + tied, &start)
     }
 
+    /// How much better a mean is known than a single readback: the root of its count, or less where
+    /// its readbacks share what they err by.
+    fn root(&self, mean: &Mean) -> f64 {
+        ((1.0 - self.shared) / mean.count + self.shared)
+            .recip()
+            .sqrt()
+    }
+
     /// The fall in the pulse over its current, ohm.
     fn swing(&self) -> f64 {
         let in_pulse = self.means.iter().filter(|mean| self.holds(mean));
@@ -134,7 +145,7 @@ impl Pulse {
             *by_ah = weight;
             return weight * (per_ah - slope);
         };
-        let root = mean.count.sqrt();
+        let root = self.root(mean);
         let in_pulse = self.holds(mean);
         let seconds = if in_pulse {
             0.5 * (mean.from_s + mean.until_s)

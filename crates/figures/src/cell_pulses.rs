@@ -151,6 +151,7 @@ impl Workbench<'_> {
                         means,
                         slope: None,
                         rest_v,
+                        shared: self.instrument.voltage.shared(),
                     },
                     delivered_ah: until.charge_ah,
                     rows: Rows {

@@ -277,6 +277,15 @@ impl Channel {
         })
     }
 
+    /// How much of the variance of a readback's own errors its neighbours may share, 0 to 1: what
+    /// a step leaves that no number of readbacks averages out.
+    pub(crate) fn shared(&self) -> f64 {
+        let left = self
+            .noise
+            .map_or(self.resolution, |noise| noise.left_of(self.step));
+        (left / self.resolution).powi(2).min(1.0)
+    }
+
     /// Samples in the shortest readbacks; one where nothing tells.
     pub(crate) fn samples(&self) -> f64 {
         self.noise.map_or(1.0, |noise| noise.samples())

@@ -199,7 +199,7 @@ impl Noise {
     }
 
     /// What a converter's step leaves in a mean of any number of samples.
-    fn left_of(self, step: f64) -> f64 {
+    pub(crate) fn left_of(self, step: f64) -> f64 {
         // As many values as codes were passed, but no more than there are readbacks.
         let values = (self.moved / step).clamp(1.0, self.readbacks);
         of_dithered_step(

@@ -153,6 +153,7 @@ fn a_pulse_of_an_independent_circuit_simulation_gives_its_components() {
         means,
         slope: Some((1e-9, 1.0)),
         rest_v: 3.7,
+        shared: 0.0,
     };
     let fitted = pulse.fit(2).unwrap();
     let expected = [0.020, 0.015, 3.0, 0.025, 60.0];

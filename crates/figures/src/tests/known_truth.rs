@@ -8,6 +8,7 @@
 //! and prints the counts.
 
 mod cell;
+mod cell_model;
 mod heat;
 mod supply;
 
@@ -56,7 +57,7 @@ struct Claim {
 
 /// By figure, and which of its name.
 #[derive(Default)]
-struct Claims(BTreeMap<(Name, &'static str), Claim>);
+struct Claims(BTreeMap<String, Claim>);
 
 impl Claims {
     /// The figure of the whole run, or the only one.
@@ -83,15 +84,15 @@ impl Claims {
         let figure = found.find(|figure| figure.name == name && wanted(figure));
         let figure = figure.unwrap_or_else(|| panic!("no {name:?} {label}: {:?}", figures.missing));
         self.add(
-            (name, label),
+            format!("{name:?} {label}").trim_end(),
             figure.value - truth,
             figure.uncertainty.unwrap().standard_uncertainty,
             figure.expanded.unwrap().half_width,
         );
     }
 
-    fn add(&mut self, of: (Name, &'static str), error: f64, standard: f64, half_width: f64) {
-        let claim = self.0.entry(of).or_default();
+    fn add(&mut self, of: &str, error: f64, standard: f64, half_width: f64) {
+        let claim = self.0.entry(of.to_owned()).or_default();
         claim.errors.add(error);
         claim.standard.add(standard);
         claim.covered += u64::from(error.abs() <= half_width);
@@ -111,7 +112,7 @@ impl Claims {
             let standard = claim.standard.mean().unwrap();
             writeln!(
                 table,
-                "{what}: {of:?}: {} of {} covered, u = {standard:.2e} is {:.2} times the scatter, \
+                "{what}: {of}: {} of {} covered, u = {standard:.2e} is {:.2} times the scatter, \
                  off by {:.2e} on average",
                 claim.covered,
                 claim.count,
@@ -122,7 +123,7 @@ impl Claims {
             let expected = 0.95 * count;
             let chance = DEVIATIONS * (0.95 * 0.05 * count).sqrt();
             if (share - expected).abs() > chance || standard > 3.0 * scatter {
-                wrong.push(*of);
+                wrong.push(of);
             }
         }
         println!("{table}");
