@@ -163,6 +163,7 @@ impl Workbench<'_> {
                 .push(Missing::of(Name::FoldBackCurrent, stage.label, reason));
         }
     }
+
     /// The current beyond the knee: the mean of the readbacks that lie wholly there. Where the step
     /// ended in the readback in which the voltage fell, its smallest sample is all there is: one of
     /// an unknown number, of which noise made it the smallest. Beside it of how many readings it is.

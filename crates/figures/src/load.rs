@@ -3,7 +3,8 @@
 //! What it deliberately does not do: powers and resistances, whose current depends on the cell,
 //! and loads that change from cycle to cycle.
 
-use sequence::plan::{Action, Condition, LoopHead, Op, Plan, PlanStep, Until};
+use quantity::Voltage;
+use sequence::plan::{Action, LoopHead, Op, Plan, PlanStep, Until};
 
 use crate::predict::{Load, LoadStep};
 
@@ -179,11 +180,7 @@ fn pieces(step: &PlanStep, before: f64, cycle: &mut Vec<LoadStep>) -> Result<(),
 }
 
 fn voltage(until: &[Until]) -> Option<f64> {
-    until.iter().find_map(|until| {
-        if let Condition::VoltageBelow(voltage) = until.condition {
-            Some(voltage.volts())
-        } else {
-            None
-        }
-    })
+    let mut conditions = until.iter();
+    let cut_off = conditions.find_map(|until| until.condition.cut_off());
+    cut_off.map(Voltage::volts)
 }

@@ -5,7 +5,7 @@ use std::collections::BTreeMap;
 
 use journal::{Body, Entry};
 use quantity::{Current, SinkTime, Span, Voltage};
-use sequence::plan::{Action, Condition, Op, Plan, PlanStep};
+use sequence::plan::{Action, Op, Plan, PlanStep};
 use sequencer::event::{Finding, Happening, StepEnd};
 use wire::{Mode, Order, OrderId};
 
@@ -84,11 +84,7 @@ impl Stage<'_> {
             return None;
         };
         let until = self.step.until.get(usize::from(index))?;
-        if let Condition::VoltageBelow(voltage) = until.condition {
-            Some(voltage)
-        } else {
-            None
-        }
+        until.condition.cut_off()
     }
 }
 

@@ -261,6 +261,17 @@ pub enum Condition {
     },
 }
 
+impl Condition {
+    /// The voltage whose falling below meets it; `None` if it watches something else.
+    pub const fn cut_off(&self) -> Option<Voltage> {
+        if let Self::VoltageBelow(voltage) = self {
+            Some(*voltage)
+        } else {
+            None
+        }
+    }
+}
+
 /// What follows a step that has ended.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
 #[serde(rename_all = "snake_case")]

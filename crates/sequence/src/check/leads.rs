@@ -9,7 +9,7 @@ use quantity::{Current, Resistance, Voltage};
 
 use super::PlanScene;
 use crate::finding::{Finding, Findings};
-use crate::plan::{Action, Condition, Op, PlanStep};
+use crate::plan::{Action, Op, PlanStep};
 use crate::rule::Rule;
 
 /// Without an ending on the voltage a drop of this share of the DUT's largest voltage is told;
@@ -78,18 +78,8 @@ fn early(
     leads: Resistance,
     (limit, largest): (Voltage, Voltage),
 ) -> Option<Early> {
-    let ending = step.until.iter().find_map(|until| match until.condition {
-        Condition::VoltageBelow(value) => Some(value),
-        Condition::VoltageAbove(_)
-        | Condition::CurrentBelow(_)
-        | Condition::CurrentAbove(_)
-        | Condition::Charge(_)
-        | Condition::Energy(_)
-        | Condition::TemperatureAbove(_)
-        | Condition::TemperatureBelow(_)
-        | Condition::VoltageSettled { .. }
-        | Condition::TemperatureSettled { .. } => None,
-    });
+    let mut endings = step.until.iter();
+    let ending = endings.find_map(|until| until.condition.cut_off());
     let lowest = ending.unwrap_or(limit);
     let current = match step.action {
         Action::Rest => return None,

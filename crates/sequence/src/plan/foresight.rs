@@ -8,7 +8,7 @@ use quantity::{Current, Power, Temperature, Voltage};
 use sink::envelope::Envelope;
 use sink::thermal::Rise;
 
-use super::{Action, Condition, Forecast, Op, Plan};
+use super::{Action, Forecast, Op, Plan};
 
 /// What a plan will come to.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -67,18 +67,7 @@ impl Plan {
         };
         let cut_off = steps()
             .flat_map(|step| &step.until)
-            .filter_map(|until| match until.condition {
-                Condition::VoltageBelow(voltage) => Some(voltage),
-                Condition::VoltageAbove(_)
-                | Condition::CurrentBelow(_)
-                | Condition::CurrentAbove(_)
-                | Condition::Charge(_)
-                | Condition::Energy(_)
-                | Condition::TemperatureAbove(_)
-                | Condition::TemperatureBelow(_)
-                | Condition::VoltageSettled { .. }
-                | Condition::TemperatureSettled { .. } => None,
-            })
+            .filter_map(|until| until.condition.cut_off())
             .min();
         Foresight {
             forecast,
